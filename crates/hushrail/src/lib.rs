@@ -1,0 +1,5 @@
+//! hushrail computes the standby current of power-gated CMOS blocks.
+
+#![forbid(unsafe_code)]
+
+pub mod read;
