@@ -2,4 +2,6 @@
 
 #![forbid(unsafe_code)]
 
+pub mod device;
+pub mod physics;
 pub mod read;

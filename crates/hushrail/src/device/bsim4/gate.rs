@@ -1,0 +1,100 @@
+//! Tunnelling through the gate oxide: to the channel, at the edges, to the body.
+
+use super::channel::Channel;
+use super::prepare::{Prepared, Tunnel};
+use super::threshold::Threshold;
+use crate::device::dual::{Over, Real};
+
+/// Gate currents of all fingers, A, positive out of the gate.
+#[derive(Debug, Clone, Copy)]
+pub struct GateCurrents<R> {
+    /// Gate to source.
+    pub gs: R,
+    /// Gate to drain.
+    pub gd: R,
+    /// Gate to body.
+    pub gb: R,
+}
+
+/// `exp(B·(a + (a·c − b)·V − b·c·V²))`.
+fn attenuation<P: Real, R: Over<P>>(b_const: P, [a, b, c]: [P; 3], v: R) -> R {
+    ((v * (a * c - b) - v.sq() * (b * c) + a) * b_const).exp()
+}
+
+/// Edge current for one overlap; `v` is gate minus diffusion, signed.
+fn edge<P: Real, R: Over<P>>(t: &Tunnel<P>, scale: P, abc: [P; 3], v: R) -> R {
+    let away = ((v - t.vfbsd).sq() + 1e-4).sqrt();
+    v * away * scale * attenuation(t.b_edge, abc, away)
+}
+
+impl<R: Real> GateCurrents<R> {
+    /// All components at a bias with `vds ≥ 0`.
+    ///
+    /// Source: BSIM4.8.0 manual, sections 4.1 to 4.3.
+    pub fn at<P: Real>(
+        p: &Prepared<P>,
+        t: &Tunnel<P>,
+        th: &Threshold<R>,
+        ch: &Channel<R>,
+        vgs: R,
+        vds: R,
+    ) -> Self
+    where
+        R: Over<P>,
+    {
+        let zero = R::of(0.0);
+        let (vge, vbs) = (th.vgs_eff, th.vbseff);
+
+        // oxide voltage in accumulation and in depletion/inversion
+        let v3 = -(vge - vbs) + p.vfbzb - 0.02;
+        let sign = if p.vfbzb.val() <= 0.0 { -0.08 } else { 0.08 };
+        let root = (v3.sq() + R::lift(p.vfbzb) * sign).sqrt();
+        let vfbeff = -((v3 + root) * 0.5) + p.vfbzb;
+        let mut vox_acc = (v3 + root) * 0.5;
+        if vox_acc.val() < 0.0 {
+            vox_acc = zero;
+        }
+        let t3 = vge - vfbeff - vbs - th.vgsteff;
+        let half = R::lift(p.k1ox) * 0.5;
+        let vox_dep = if p.k1ox.val() == 0.0 {
+            zero
+        } else if t3.val() < 0.0 {
+            t3
+        } else {
+            ((half.sq() + t3).sqrt() - half) * p.k1ox
+        };
+        let vox_inv = vox_dep + th.vgsteff;
+
+        let (mut gs, mut gd, mut gb) = (zero, zero, zero);
+        if t.igc != 0 {
+            let onset = if t.igc == 1 { vge - p.vth0 } else { vge - th.vth };
+            let aux = (onset / t.vt_nigc).softplus() * t.vt_nigc;
+            let igc =
+                vge * aux * t.a_channel * attenuation(t.b_channel, [t.aigc, t.bigc, t.cigc], vox_inv);
+            let share = match t.pigcd {
+                Some(v) => R::lift(v),
+                None => {
+                    let over = th.vgsteff + 1e-20;
+                    -(over.recip().sq() * t.b_channel * t.bigc) * (-(ch.vdseff * 0.5 / over) + 1.0)
+                }
+            };
+            let x = share * ch.vdseff;
+            let e = (-x).exp();
+            let below = x.sq() + 2e-4;
+            gs = igc * (x + e - 1.0 + 1e-4) / below;
+            gd = igc * (-((x + 1.0) * e) + 1.0 + 1e-4) / below;
+            gs = gs + edge(t, t.a_edge_s, t.edge_s, vgs);
+            gd = gd + edge(t, t.a_edge_d, t.edge_d, vgs - vds);
+        }
+        if t.igb {
+            let across = vge - vbs;
+            let aux = ((vox_inv - t.eigbinv) / t.vt_nigbinv).softplus() * t.vt_nigbinv;
+            let inv = across * aux * t.a_bulk_inv * attenuation(t.b_bulk_inv, t.inv, vox_inv);
+            let aux = ((-across + p.vfbzb) / t.vt_nigbacc).softplus() * t.vt_nigbacc;
+            let acc = across * aux * t.a_bulk_acc * attenuation(t.b_bulk_acc, t.acc, vox_acc);
+            gb = inv + acc;
+        }
+        let nf = R::lift(p.nf);
+        Self { gs: gs * nf, gd: gd * nf, gb: gb * nf }
+    }
+}

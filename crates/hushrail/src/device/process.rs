@@ -1,0 +1,412 @@
+//! A process at one corner: decks of cards from which transistors and diodes are made.
+
+use std::sync::Arc;
+
+use indexmap::IndexMap;
+
+use super::bsim4::prepare::Prepared;
+use super::bsim4::table::{Id, ROWS};
+use super::bsim4::values::{Card, Values};
+use super::bsim4::{Bsim4, table};
+use super::diode::Diode;
+use super::{Device, Geometry};
+use crate::physics::Kelvin;
+use crate::read::deck::{Deck, DeckScope, Element, ModelText, Note, Subckt};
+use crate::read::source::{Place, ReadError, Source, nearest};
+use crate::read::spice::{DeckOptions, read_deck};
+
+/// Relative slack at the edges of bins: sizes written in micrometres do not always survive the conversion to metres.
+const BIN_SLACK: f64 = 1e-9;
+
+/// Cards and corner files of one technology at one process corner.
+#[derive(Debug, Clone)]
+pub struct Process {
+    /// Name used in reports, such as `tt`.
+    pub name: String,
+    /// The cards.
+    pub deck: Deck,
+    /// Names netlists use for a model, to the names of the deck; both in lower case.
+    pub aliases: IndexMap<String, String>,
+}
+
+/// A request for one device, as a netlist states it: SI units, names in lower case.
+#[derive(Debug, Clone)]
+pub struct Request {
+    /// Model or wrapper subcircuit.
+    pub model: Arc<str>,
+    /// Instance parameters.
+    pub params: Vec<(Arc<str>, f64)>,
+    /// Where it stands, for messages.
+    pub at: Place,
+}
+
+/// A transistor and how many stand in parallel.
+#[derive(Debug, Clone)]
+pub struct Transistor {
+    /// One device.
+    pub device: Arc<dyn Device>,
+    /// Number in parallel.
+    pub count: f64,
+    /// Drawn geometry.
+    pub geometry: Geometry,
+}
+
+/// Power of the length unit in an instance parameter: 1 for lengths, 2 for areas, 0 for plain numbers.
+fn length_power(name: &str) -> Option<i32> {
+    Some(match name {
+        "l" | "w" | "sa" | "sb" | "sd" | "pd" | "ps" | "pj" => 1,
+        "ad" | "as" | "area" => 2,
+        "nf" | "m" | "mult" | "nrd" | "nrs" | "delvto" | "mulu0" | "sca" | "scb" | "scc" | "geo" | "geomod"
+        | "rgeomod" | "min" | "dtemp" => 0,
+        _ => return None,
+    })
+}
+
+struct Found<'a> {
+    wrapper: Option<&'a Subckt>,
+    element: Option<&'a Element>,
+    bins: Vec<&'a ModelText>,
+}
+
+impl Process {
+    /// Reads the cards of one corner.
+    ///
+    /// # Errors
+    /// Whatever is wrong with the text; see [`ReadError`].
+    pub fn read(name: &str, sources: &[Source], options: &DeckOptions) -> Result<Self, ReadError> {
+        let deck = read_deck(sources, options)?;
+        Ok(Self { name: name.to_owned(), deck, aliases: IndexMap::new() })
+    }
+
+    /// Adds a name that netlists use for a model of the deck.
+    #[must_use]
+    pub fn alias(mut self, netlist_name: &str, deck_name: &str) -> Self {
+        self.aliases.insert(netlist_name.to_lowercase(), deck_name.to_lowercase());
+        self
+    }
+
+    /// Names of all transistor families and wrappers.
+    pub fn model_names(&self) -> Vec<String> {
+        let mut names: Vec<String> = self.deck.subckts.keys().map(ToString::to_string).collect();
+        for m in &self.deck.models {
+            if !names.iter().any(|n| n == m.family()) {
+                names.push(m.family().to_owned());
+            }
+        }
+        names.extend(self.aliases.keys().cloned());
+        names
+    }
+
+    /// Whether the deck (or an alias) defines this name.
+    pub fn defines(&self, model: &str) -> bool {
+        let name = self.resolve(model);
+        self.deck.subckts.contains_key(name.as_str()) || self.deck.models.iter().any(|m| m.family() == name || *m.name == *name)
+    }
+
+    fn resolve(&self, model: &str) -> String {
+        let lower = model.to_lowercase();
+        self.aliases.get(&lower).cloned().unwrap_or(lower)
+    }
+
+    fn find(&self, request: &Request) -> Result<Found<'_>, ReadError> {
+        let name = self.resolve(&request.model);
+        let family = |models: &'_ [ModelText], base: &str| -> Vec<usize> {
+            (0..models.len()).filter(|&i| models[i].family() == base || *models[i].name == *base).collect()
+        };
+        if let Some(sub) = self.deck.subckts.get(name.as_str()) {
+            let inner: Vec<&Element> = sub.elements.iter().filter(|e| matches!(e.kind, 'M' | 'D' | 'X')).collect();
+            let [element] = inner[..] else {
+                return Err(ReadError::Syntax {
+                    at: sub.loc.place(&self.deck.files),
+                    found: format!("subcircuit `{}` wraps {} devices", sub.name, inner.len()),
+                    wanted: "a device wrapper must hold exactly one transistor or diode".into(),
+                });
+            };
+            let local = family(&sub.models, &element.model);
+            let bins = if local.is_empty() {
+                family(&self.deck.models, &element.model).iter().map(|&i| &self.deck.models[i]).collect()
+            } else {
+                local.iter().map(|&i| &sub.models[i]).collect::<Vec<_>>()
+            };
+            if bins.is_empty() {
+                let names = sub.models.iter().chain(&self.deck.models).map(ModelText::family);
+                return Err(ReadError::Unknown {
+                    at: element.loc.place(&self.deck.files),
+                    kind: "model",
+                    name: element.model.to_string(),
+                    nearest: nearest(&element.model, names),
+                });
+            }
+            return Ok(Found { wrapper: Some(sub), element: Some(element), bins });
+        }
+        let bins: Vec<_> = family(&self.deck.models, &name).iter().map(|&i| &self.deck.models[i]).collect();
+        if bins.is_empty() {
+            let names = self.model_names();
+            return Err(ReadError::Unknown {
+                at: request.at.clone(),
+                kind: "model",
+                name: request.model.to_string(),
+                nearest: nearest(&request.model, names.iter().map(String::as_str)),
+            });
+        }
+        Ok(Found { wrapper: None, element: None, bins })
+    }
+
+    /// The model text type of a name: `nmos`, `pmos`, `d`.
+    ///
+    /// # Errors
+    /// No card defines the name.
+    pub fn kind(&self, request: &Request) -> Result<String, ReadError> {
+        Ok(self.find(request)?.bins[0].kind.to_string())
+    }
+
+    /// Values of the wrapper's parameters for this instance, in the deck's own units, and the SI parameters of the
+    /// transistor itself.
+    fn instance(
+        &self,
+        found: &Found<'_>,
+        request: &Request,
+        temp_c: f64,
+        notes: &mut Vec<Note>,
+    ) -> Result<(Vec<(Arc<str>, f64)>, Vec<(Arc<str>, f64)>), ReadError> {
+        let (Some(sub), Some(element)) = (found.wrapper, found.element) else {
+            return Ok((request.params.clone(), request.params.clone()));
+        };
+        let scale = self.deck.scale();
+        let mut values: Vec<(Arc<str>, f64)> = Vec::new();
+        for (name, v) in &request.params {
+            if sub.params.contains_key(name) {
+                let power = length_power(name).unwrap_or(0);
+                values.push((Arc::clone(name), v / scale.powi(power)));
+            } else if &**name != "m" {
+                let text = format!("instance parameter `{name}` is unknown to `{}` and has no effect", sub.name);
+                let note = Note::new("instance-parameter", text);
+                if !notes.contains(&note) {
+                    notes.push(note);
+                }
+            }
+        }
+        let scope = DeckScope::new(&self.deck, Some(sub), &values, temp_c);
+        let mut inner = Vec::new();
+        for (name, def) in &element.params {
+            let power = length_power(name).ok_or_else(|| ReadError::Unknown {
+                at: def.loc.place(&self.deck.files),
+                kind: "instance parameter",
+                name: name.to_string(),
+                nearest: None,
+            })?;
+            inner.push((Arc::clone(name), self.deck.eval(def, &scope)? * scale.powi(power)));
+        }
+        if let Some((name, v)) = request.params.iter().find(|(n, _)| &**n == "m") {
+            if !sub.params.contains_key(name) {
+                inner.push((Arc::clone(name), *v));
+            }
+        }
+        Ok((values, inner))
+    }
+
+    /// Makes a transistor.
+    ///
+    /// # Errors
+    /// No card, no bin for the size, an impossible size, or a card that cannot be evaluated.
+    pub fn transistor(
+        &self,
+        request: &Request,
+        temp: Kelvin,
+        notes: &mut Vec<Note>,
+    ) -> Result<Transistor, ReadError> {
+        let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
+        let values = self.values(&card, &geometry, request)?;
+        let prepared = Prepared::new(&card, &values, &geometry, temp.get());
+        if !(prepared.phi > 0.0 && prepared.vsat > 0.0 && prepared.u0 > 0.0 && prepared.vth0.is_finite()) {
+            return Err(ReadError::Range {
+                at: request.at.clone(),
+                name: format!("model `{}` at {:.1} °C", request.model, temp.celsius()),
+                value: format!(
+                    "surface potential {:.3} V, saturation velocity {:.3e} m/s, mobility {:.3e} m²/Vs",
+                    prepared.phi, prepared.vsat, prepared.u0
+                ),
+                wanted: "all must be above zero; the card does not hold at this temperature".into(),
+            });
+        }
+        Ok(Transistor { device: Arc::new(Bsim4 { prepared }), count, geometry })
+    }
+
+    fn values(&self, card: &Card, g: &Geometry, request: &Request) -> Result<Values<f64>, ReadError> {
+        Values::at(card, g, |_, v| v).map_err(|(what, size)| ReadError::Range {
+            at: request.at.clone(),
+            name: format!("{what} of model `{}`", request.model),
+            value: format!("{size:.3e} m"),
+            wanted: "want a drawn size well above the offsets of the card".into(),
+        })
+    }
+
+    /// The card that covers a request, with the drawn geometry and the number in parallel.
+    ///
+    /// # Errors
+    /// As for [`Process::transistor`].
+    pub fn card(
+        &self,
+        request: &Request,
+        temp_c: f64,
+        notes: &mut Vec<Note>,
+    ) -> Result<(Card, Geometry, f64), ReadError> {
+        let found = self.find(request)?;
+        let (wrapper_values, inner) = self.instance(&found, request, temp_c, notes)?;
+        let get = |name: &str| inner.iter().rev().find(|(n, _)| &**n == name).map(|(_, v)| *v);
+        let g = Geometry {
+            width_m: get("w").unwrap_or(5e-6),
+            length_m: get("l").unwrap_or(5e-6),
+            fingers: get("nf").unwrap_or(1.0),
+            sa_m: get("sa").unwrap_or(0.0),
+            sb_m: get("sb").unwrap_or(0.0),
+            sd_m: get("sd").unwrap_or(0.0),
+            ad_m2: get("ad").unwrap_or(0.0),
+            as_m2: get("as").unwrap_or(0.0),
+            pd_m: get("pd").unwrap_or(0.0),
+            ps_m: get("ps").unwrap_or(0.0),
+            well_proximity: (
+                get("sca").unwrap_or(0.0),
+                get("scb").unwrap_or(0.0),
+                get("scc").unwrap_or(0.0),
+            ),
+            delvto_v: get("delvto").unwrap_or(0.0),
+        };
+        let count = get("m").unwrap_or(1.0);
+        check_size(&g, count, request)?;
+        let scope = DeckScope::new(&self.deck, found.wrapper, &wrapper_values, temp_c);
+        let (w, l) = (g.width_m / g.fingers, g.length_m);
+        let model = self.bin(&found.bins, w, l, &scope, request)?;
+        let card = Card::evaluate(model, &self.deck, &scope, notes)?;
+        Ok((card, g, count))
+    }
+
+    /// The one bin with `lmin ≤ L < lmax` and `wmin ≤ W < wmax`; never an interpolation between bins.
+    fn bin<'a>(
+        &self,
+        bins: &[&'a ModelText],
+        w: f64,
+        l: f64,
+        scope: &DeckScope<'_>,
+        request: &Request,
+    ) -> Result<&'a ModelText, ReadError> {
+        if let [one] = bins {
+            if !["lmin", "lmax", "wmin", "wmax"].iter().any(|n| one.get(n).is_some()) {
+                return Ok(one);
+            }
+        }
+        let limit = |m: &ModelText, name: &str, otherwise: f64| match m.get(name) {
+            Some(d) => self.deck.eval(d, scope),
+            None => Ok(otherwise),
+        };
+        let at_or_above = |x: f64, lo: f64| x >= lo * (1.0 - BIN_SLACK);
+        let mut edge = None;
+        let mut nearest_bin: Option<(f64, String)> = None;
+        for m in bins {
+            let (l0, l1) = (limit(m, "lmin", 0.0)?, limit(m, "lmax", 1.0)?);
+            let (w0, w1) = (limit(m, "wmin", 0.0)?, limit(m, "wmax", 1.0)?);
+            let inside = |x: f64, lo: f64, hi: f64| at_or_above(x, lo) && !at_or_above(x, hi);
+            if inside(l, l0, l1) && inside(w, w0, w1) {
+                return Ok(m);
+            }
+            // the top edge of the whole range belongs to the last bin
+            let touches = |x: f64, lo: f64, hi: f64| at_or_above(x, lo) && x <= hi * (1.0 + BIN_SLACK);
+            if touches(l, l0, l1) && touches(w, w0, w1) {
+                edge = Some(*m);
+            }
+            let off = |x: f64, lo: f64, hi: f64| ((lo - x) / lo.max(1e-9)).max((x - hi) / hi).max(0.0);
+            let far = off(l, l0, l1) + off(w, w0, w1);
+            if nearest_bin.as_ref().is_none_or(|(f, _)| far < *f) {
+                let um = |v: f64| v * 1e6;
+                let text = format!(
+                    "L {:.4} to {:.4} µm, W {:.4} to {:.4} µm (`{}`)",
+                    um(l0),
+                    um(l1),
+                    um(w0),
+                    um(w1),
+                    m.name
+                );
+                nearest_bin = Some((far, text));
+            }
+        }
+        edge.ok_or_else(|| ReadError::Range {
+            at: request.at.clone(),
+            name: format!("size of a `{}` transistor", request.model),
+            value: format!("L = {:.4} µm, W = {:.4} µm per finger", l * 1e6, w * 1e6),
+            wanted: format!("no bin covers it; the nearest is {}", nearest_bin.map_or_else(String::new, |b| b.1)),
+        })
+    }
+
+    /// Parameters of a card at a request's geometry, bins added: name and value.
+    ///
+    /// # Errors
+    /// As for [`Process::transistor`].
+    pub fn effective(&self, request: &Request) -> Result<IndexMap<&'static str, f64>, ReadError> {
+        let mut notes = Vec::new();
+        let (card, g, _) = self.card(request, 25.0, &mut notes)?;
+        let values = self.values(&card, &g, request)?;
+        Ok(table::IDS.iter().map(|&id: &Id| (ROWS[id as usize].name, values[id])).collect())
+    }
+
+    /// Makes a diode; `area` and `perimeter` come from the instance (`area`, `pj`), SI.
+    ///
+    /// # Errors
+    /// No model, or one that cannot be evaluated.
+    pub fn diode(&self, request: &Request, temp: Kelvin, notes: &mut Vec<Note>) -> Result<(Diode, f64), ReadError> {
+        let found = self.find(request)?;
+        let (wrapper_values, inner) = self.instance(&found, request, temp.celsius(), notes)?;
+        let get = |name: &str| inner.iter().rev().find(|(n, _)| &**n == name).map(|(_, v)| *v);
+        let (area, pj) = (get("area").or(get("a")).unwrap_or(0.0), get("pj").or(get("p")).unwrap_or(0.0));
+        if !(area >= 0.0 && pj >= 0.0) {
+            return Err(ReadError::Range {
+                at: request.at.clone(),
+                name: "diode area or perimeter".into(),
+                value: format!("{area:.3e} m², {pj:.3e} m"),
+                wanted: "want zero or more".into(),
+            });
+        }
+        let scale = self.deck.scale();
+        let model = found.bins[0];
+        let scope = DeckScope::new(&self.deck, found.wrapper, &wrapper_values, temp.celsius());
+        let d = Diode::evaluate(model, &self.deck, &scope, area / scale.powi(2), pj / scale, temp.get(), notes)?;
+        Ok((d, get("m").unwrap_or(1.0)))
+    }
+}
+
+fn check_size(g: &Geometry, count: f64, request: &Request) -> Result<(), ReadError> {
+    let wrong = |name: &str, value: String, wanted: &str| {
+        Err(ReadError::Range { at: request.at.clone(), name: name.into(), value, wanted: wanted.into() })
+    };
+    for (name, v) in [("width", g.width_m), ("length", g.length_m)] {
+        if !(v > 0.0) {
+            return wrong(name, format!("{v:.3e} m"), "want a size above zero");
+        }
+        if v > 0.02 {
+            return wrong(
+                name,
+                format!("{v:.3e} m"),
+                "want a transistor below 2 cm; is the scale of the netlist missing (1e-6 for micrometres)?",
+            );
+        }
+    }
+    if !(g.fingers >= 1.0) || g.fingers.fract() != 0.0 || g.fingers > 10_000.0 {
+        return wrong("nf", g.fingers.to_string(), "want a whole number of fingers, 1 or more");
+    }
+    if !(count > 0.0) {
+        return wrong("m", count.to_string(), "want a number of devices above zero");
+    }
+    for (name, v) in [
+        ("sa", g.sa_m),
+        ("sb", g.sb_m),
+        ("sd", g.sd_m),
+        ("ad", g.ad_m2),
+        ("as", g.as_m2),
+        ("pd", g.pd_m),
+        ("ps", g.ps_m),
+    ] {
+        if !(v >= 0.0) {
+            return wrong(name, format!("{v:.3e}"), "want zero or more");
+        }
+    }
+    Ok(())
+}
