@@ -2,6 +2,9 @@
 
 #![forbid(unsafe_code)]
 
+pub mod cell;
+pub mod check;
+pub mod circuit;
 pub mod device;
 pub mod physics;
 pub mod read;

@@ -48,9 +48,11 @@ fn rust_checks(place: &Place, steps: &mut Steps) {
     });
     steps.run("clippy", || {
         component(&mut cargo(&["clippy", "--version"]), "clippy")?;
-        passes(&mut cargo(&["clippy", "--workspace", "--all-targets", "--locked", "--", "-D", "warnings"]))
+        let whole =
+            ["clippy", "--workspace", "--all-targets", "--locked", "--keep-going", "--", "-D", "warnings"];
+        passes(&mut cargo(&whole))
     });
-    steps.run("rust tests", || passes(&mut cargo(&["test", "--workspace", "--locked"])));
+    steps.run("rust tests", || passes(&mut cargo(&["test", "--workspace", "--locked", "--no-fail-fast"])));
     steps.run("rust docs", || {
         passes(cargo(&["doc", "--no-deps", "--workspace", "--locked"]).env("RUSTDOCFLAGS", "-D warnings"))
     });

@@ -84,7 +84,10 @@ fn install(place: &Place, venv: &Venv) -> Result<(), Problem> {
     }
     let text = String::from_utf8_lossy(&output.stdout);
     let wanted: Vec<&str> = text.lines().map(str::trim).filter(|line| !line.is_empty()).collect();
-    println!("installing {} development packages into target/venv (once; needs the network)", wanted.len());
+    println!(
+        "installing {} development packages into target/venv (once; what is missing comes over the network)",
+        wanted.len()
+    );
     let mut pip = venv.module("pip");
     pip.args(["install", "--disable-pip-version-check", "--no-input"]);
     if !std::io::stdout().is_terminal() {

@@ -48,7 +48,7 @@ const COLUMNS: [&str; 2] = ["cell", "count"];
 
 /// Reads instance counts from a table with the header `cell,count`.
 ///
-/// Fields may be quoted and blanks around them do not count. A count of 0 is kept as a row.
+/// Fields may be quoted, and blanks around them do not count where there are no quotes. A count of 0 is kept as a row.
 ///
 /// # Errors
 /// The header is missing, lacks a column or has one that is unknown or doubled; a row has too few or too many
@@ -99,6 +99,15 @@ pub fn read_counts_csv(source: &Source) -> Result<InstanceCounts, ReadError> {
                 cell_column,
                 found,
                 "close the quote on the line that opens it",
+            ));
+        }
+        if cell.contains('"') {
+            let found = format!("the cell name is `{cell}`");
+            return Err(table.syntax(
+                &record,
+                cell_column,
+                found,
+                "want a quote at both ends of a field or none",
             ));
         }
         let count = table.count(&record, count_column)?;
@@ -206,7 +215,7 @@ impl Table<'_> {
         Place::of_offset(&self.source.path, &self.source.text, self.offset(record, column))
     }
 
-    /// Where a field begins in the source text: the reader keeps places of records only.
+    /// Where a field begins in the source text, for the reader keeps places of records only.
     fn offset(&self, record: &csv::StringRecord, column: usize) -> usize {
         let bytes = self.text.as_bytes();
         let start = record.position().map_or(0, |p| usize::try_from(p.byte()).unwrap_or(usize::MAX));
@@ -214,20 +223,30 @@ impl Table<'_> {
         while matches!(bytes.get(i), Some(b'\n' | b'\r')) {
             i += 1;
         }
-        let (mut left, mut quoted) = (column, false);
-        while left > 0 && i < bytes.len() {
-            match bytes[i] {
-                b'"' => quoted = !quoted,
-                b',' if !quoted => left -= 1,
-                _ => {}
-            }
-            i += 1;
+        for _ in 0..column {
+            i = field_end(bytes, i) + 1;
         }
         while matches!(bytes.get(i), Some(b' ' | b'\t')) {
             i += 1;
         }
         i + self.skipped
     }
+}
+
+/// Where the field that begins at `i` ends; a quote counts at its start only, as for the reader.
+fn field_end(bytes: &[u8], mut i: usize) -> usize {
+    let mut quoted = bytes.get(i) == Some(&b'"');
+    i += usize::from(quoted);
+    while let Some(&b) = bytes.get(i) {
+        match b {
+            b'"' if quoted && bytes.get(i + 1) == Some(&b'"') => i += 1,
+            b'"' => quoted = false,
+            b',' | b'\n' | b'\r' if !quoted => break,
+            _ => {}
+        }
+        i += 1;
+    }
+    i
 }
 
 #[cfg(test)]
@@ -260,7 +279,7 @@ mod tests {
     #[test]
     fn quotes_blanks_line_ends_and_a_byte_order_mark_do_not_matter() {
         let plain = read("cell,count\nz_1,3\ny_1,4\n").unwrap();
-        assert_eq!(read("\u{feff}cell , count\r\n\r\n \"z_1\",3\r\ny_1, 4").unwrap(), plain);
+        assert_eq!(read("\u{feff}cell , count\r\n\r\n\"z_1\",3\r\n  y_1, 4").unwrap(), plain);
         assert_eq!(read("\"cell\",\"count\"\n\"z_1\",\"3\"\n\"y_1\",+4\n").unwrap(), plain);
     }
 
@@ -342,6 +361,18 @@ mod tests {
         assert_eq!(
             message("cell,count\nz_1,\"3\",4\n"),
             format!("c.csv:2:5: this row has 3 fields; {wanted}")
+        );
+        assert_eq!(
+            message("cell,count\n \"z_1\",x\n"),
+            "c.csv:2:2: the cell name is `\"z_1\"`; want a quote at both ends of a field or none"
+        );
+        assert_eq!(
+            message("cell,count\n\"z,\"\"_1\"\"\",4\n"),
+            "c.csv:2:1: the cell name is `z,\"_1\"`; want a quote at both ends of a field or none"
+        );
+        assert_eq!(
+            message("cell,count\n\"z,,1\",x\n"),
+            "c.csv:2:8: the count is `x`; want a whole number from 0 up"
         );
         assert_eq!(message("cell,count\n,4\n"), "c.csv:2:1: the cell has no name; write its master name");
     }

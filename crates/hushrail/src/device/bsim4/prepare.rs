@@ -284,7 +284,7 @@ impl<P: Real> Prepared<P> {
         let poly = (ngate.val() > 1e18 && ngate.val() < 1e25)
             .then(|| (vfb + phi, ngate * (1e6 * MODEL_Q * EPS_SI) / coxe.sq()));
 
-        let mut gidl_of = |ids: [Id; 7]| {
+        let gidl_of = |ids: [Id; 7]| {
             let [a, b, c, e, r, k, f] = ids.map(|id| v[id]);
             let on = a.val() > 0.0 && b.val() > 0.0 && (c.val() > 0.0 || card.flag(Id::Gidlmod) == 1);
             on.then_some(Gidl { a, b, c, e, r, k, f })

@@ -168,11 +168,12 @@ impl Parser<'_> {
     /// Two names side by side mean that a semicolon is missing, and an instance would be lost.
     fn declaration(&mut self, head: Token) -> Result<bool, ReadError> {
         let (mut depth, mut has_equals) = (0usize, false);
-        // whether the token before ends an operand, and whether it is the quote of a based number
-        let (mut operand, mut quote) = (false, false);
+        // whether the token before ends an operand, and the symbol it is
+        let (mut operand, mut symbol_before) = (false, None);
         loop {
             let token = self.lex.next()?;
-            let after_quote = std::mem::replace(&mut quote, token.is(b'\''));
+            let symbol = if let Kind::Symbol(symbol) = token.kind { Some(symbol) } else { None };
+            let before = std::mem::replace(&mut symbol_before, symbol);
             match token.kind {
                 Kind::End => return Err(self.misfit(token, head.spot, "`;`")),
                 Kind::Word | Kind::Escaped | Kind::Number | Kind::Text => {
@@ -182,8 +183,14 @@ impl Parser<'_> {
                     match self.keyword(token) {
                         Some(Keyword::Declaration | Keyword::Supply | Keyword::Strength | Keyword::Inner) => {
                         }
-                        // `4'b 01`: the digits may stand apart from the base
-                        None => operand = !(after_quote && is_base(self.lex.text(token))),
+                        // the digits of `4'b 01` may stand apart from the base, and a name follows a delay
+                        None => {
+                            operand = match before {
+                                Some(b'\'') => !is_base(self.lex.text(token)),
+                                Some(b'#') => false,
+                                _ => true,
+                            }
+                        }
                         Some(_) => return Err(self.misfit(token, head.spot, "`;` before it")),
                     }
                 }

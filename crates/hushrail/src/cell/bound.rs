@@ -1,0 +1,389 @@
+//! A cell at a corner: its devices made, its plan worked out, its states enumerated and solved.
+
+use std::sync::Arc;
+
+use rustc_hash::FxHashMap;
+use serde::{Deserialize, Serialize};
+
+use super::cell::{Cell, Part, Role};
+use super::logic::{Logic, Switches};
+use crate::circuit::network::{Element, Network, Placed, Volt};
+use crate::circuit::newton::{Effort, SolveOptions, Solver, Workspace};
+use crate::circuit::plan::Plan;
+use crate::device::diode::Diode;
+use crate::device::process::{Process, Request, Transistor};
+use crate::physics::Kelvin;
+use crate::read::deck::Note;
+use crate::read::source::ReadError;
+
+/// A state of a cell could not be solved, or its states cannot be listed.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[non_exhaustive]
+pub enum CellError {
+    /// Kirchhoff's law is not met within the limits.
+    #[error(
+        "no operating point for cell `{cell}` in state {state} at {temp_c:.1} °C: residual {residual_a:.3e} A after \
+         {steps} steps (limit {allowed_a:.1e} A), worst at node `{node}`"
+    )]
+    Unbalanced {
+        /// The cell.
+        cell: String,
+        /// Its state.
+        state: String,
+        /// Temperature, degrees Celsius.
+        temp_c: f64,
+        /// The worst node.
+        node: String,
+        /// Its imbalance, A.
+        residual_a: f64,
+        /// What was allowed, A.
+        allowed_a: f64,
+        /// Steps taken.
+        steps: usize,
+    },
+    /// Too many inputs or loops to list every state.
+    #[error("cell `{cell}` has {count} {what}; at most {limit} can be enumerated: give the states that matter")]
+    TooMany {
+        /// The cell.
+        cell: String,
+        /// What there is too much of.
+        what: &'static str,
+        /// How many.
+        count: usize,
+        /// How many can be handled.
+        limit: usize,
+    },
+}
+
+/// Voltages the cell's surroundings hold, V.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct Levels {
+    /// Supply rail of the logic.
+    pub supply_v: f64,
+    /// Ground rail of the logic.
+    pub ground_v: f64,
+    /// n-well.
+    pub nwell_v: f64,
+    /// p-well.
+    pub pwell_v: f64,
+    /// Inputs at one.
+    pub high_v: f64,
+    /// Inputs at zero.
+    pub low_v: f64,
+}
+
+impl Levels {
+    /// Full supply, wells tied to the rails.
+    pub fn powered(vdd_v: f64) -> Self {
+        Self { supply_v: vdd_v, ground_v: 0.0, nwell_v: vdd_v, pwell_v: 0.0, high_v: vdd_v, low_v: 0.0 }
+    }
+}
+
+/// One state of a cell: input values and, where it stores, what it stores.
+#[derive(Debug, Clone, PartialEq)]
+pub struct State {
+    /// Input values in the order of the input ports.
+    pub inputs: Vec<bool>,
+    /// Logic value of every node.
+    pub logic: Vec<Logic>,
+    /// Pins and values, such as `A=0 B=1 Y=1`.
+    pub label: String,
+}
+
+/// Currents of one solved state.
+#[derive(Debug, Clone, PartialEq)]
+pub struct StateCurrents {
+    /// Current into the cell at each port by mechanism (order of [`crate::device::Mechanism::ALL`]), A; outputs carry none.
+    pub ports: Vec<[f64; 5]>,
+    /// Node voltages, V.
+    pub node_v: Vec<f64>,
+    /// Value of every port by its voltage against the middle of the rails.
+    pub port_bits: Vec<bool>,
+    /// Work done.
+    pub effort: Effort,
+    /// Whether the point is one the cell stays in.
+    pub stable: bool,
+}
+
+/// A device made once for each model, geometry and temperature.
+#[derive(Debug, Default)]
+pub struct DeviceShelf {
+    transistors: FxHashMap<(Arc<str>, Vec<(Arc<str>, u64)>), Transistor>,
+    diodes: FxHashMap<(Arc<str>, Vec<(Arc<str>, u64)>), (Diode, f64)>,
+    /// Remarks of the cards.
+    pub notes: Vec<Note>,
+}
+
+impl DeviceShelf {
+    fn key(r: &Request) -> (Arc<str>, Vec<(Arc<str>, u64)>) {
+        (Arc::clone(&r.model), r.params.iter().map(|(n, v)| (Arc::clone(n), v.to_bits())).collect())
+    }
+
+    /// The transistor asked for, made at most once.
+    ///
+    /// # Errors
+    /// See [`Process::transistor`].
+    pub fn transistor(&mut self, p: &Process, r: &Request, t: Kelvin) -> Result<Transistor, ReadError> {
+        let key = Self::key(r);
+        if let Some(found) = self.transistors.get(&key) {
+            return Ok(found.clone());
+        }
+        let made = p.transistor(r, t, &mut self.notes)?;
+        self.transistors.insert(key, made.clone());
+        Ok(made)
+    }
+
+    fn diode(&mut self, p: &Process, r: &Request, t: Kelvin) -> Result<(Diode, f64), ReadError> {
+        let key = Self::key(r);
+        if let Some(found) = self.diodes.get(&key) {
+            return Ok(*found);
+        }
+        let made = p.diode(r, t, &mut self.notes)?;
+        self.diodes.insert(key, made);
+        Ok(made)
+    }
+
+    /// Number of distinct devices.
+    pub fn len(&self) -> usize {
+        self.transistors.len() + self.diodes.len()
+    }
+    /// Whether nothing was made yet.
+    pub fn is_empty(&self) -> bool {
+        self.len() == 0
+    }
+}
+
+/// A cell with the devices of one process corner and temperature.
+#[derive(Debug, Clone)]
+pub struct BoundCell {
+    /// The cell.
+    pub cell: Arc<Cell>,
+    /// Its network.
+    pub net: Network,
+    /// Its plan.
+    pub plan: Plan,
+    /// Temperature.
+    pub temp: Kelvin,
+    /// Whether every transistor has GIDL in its card.
+    pub has_gidl: bool,
+}
+
+/// Most inputs of which all combinations are listed.
+pub const MAX_INPUTS: usize = 12;
+
+impl BoundCell {
+    /// Makes the devices of a cell.
+    ///
+    /// # Errors
+    /// A model, bin or size that cannot be made; the message names the line of the netlist.
+    pub fn new(
+        cell: &Arc<Cell>,
+        process: &Process,
+        temp: Kelvin,
+        floor_s: f64,
+        shelf: &mut DeviceShelf,
+    ) -> Result<Self, ReadError> {
+        let mut net = Network { n_nodes: cell.nodes.len(), elements: Vec::new(), floor_s };
+        let mut has_gidl = true;
+        for p in &cell.parts {
+            net.elements.push(match p {
+                Part::Transistor(r, nodes) => {
+                    let t = shelf.transistor(process, r, temp)?;
+                    has_gidl &= t.device.has_gidl();
+                    Element::Transistor(Placed { device: t.device, count: t.count, nodes: *nodes })
+                }
+                Part::Diode(r, nodes) => {
+                    let (d, m) = shelf.diode(process, r, temp)?;
+                    Element::Diode(d, m, *nodes)
+                }
+                Part::Conductance(g, nodes) => Element::Conductance(*g, *nodes),
+            });
+        }
+        let plan = Plan::new(&net, &cell.held());
+        Ok(Self { cell: Arc::clone(cell), net, plan, temp, has_gidl })
+    }
+
+    /// Every state: all input vectors, and for each every value the loops can hold.
+    ///
+    /// # Errors
+    /// More inputs or loops than can be listed.
+    pub fn states(&self) -> Result<Vec<State>, CellError> {
+        let inputs: Vec<usize> = self.cell.ports_of(Role::Input).collect();
+        if inputs.len() > MAX_INPUTS {
+            return Err(CellError::TooMany {
+                cell: self.cell.name.to_string(),
+                what: "inputs",
+                count: inputs.len(),
+                limit: MAX_INPUTS,
+            });
+        }
+        let mut out = Vec::new();
+        for code in 0..1u32 << inputs.len() {
+            // the first input is the most significant bit, as people write truth tables
+            let bits: Vec<bool> = (0..inputs.len()).map(|i| code >> (inputs.len() - 1 - i) & 1 == 1).collect();
+            out.extend(self.states_with(&bits)?);
+        }
+        Ok(out)
+    }
+
+    /// The states with the inputs at `bits`.
+    ///
+    /// # Errors
+    /// More loops than can be listed.
+    pub fn states_with(&self, bits: &[bool]) -> Result<Vec<State>, CellError> {
+        let held = self.held_logic(bits);
+        let fix = Switches::new(&self.net, &self.plan).fixpoints(&held).map_err(|count| CellError::TooMany {
+            cell: self.cell.name.to_string(),
+            what: "nets in loops",
+            count,
+            limit: super::logic::MAX_LOOP_NETS,
+        })?;
+        let many = fix.len() > 1;
+        Ok(fix
+            .into_iter()
+            .enumerate()
+            .map(|(k, logic)| {
+                let mut words = Vec::new();
+                for (i, r) in self.cell.roles.iter().enumerate() {
+                    let v = logic[self.cell.port_nodes[i]];
+                    match (r, v.bit()) {
+                        (Role::Input | Role::Output, Some(b)) => {
+                            words.push(format!("{}={}", self.cell.ports[i], u8::from(b)));
+                        }
+                        (Role::Output, None) => words.push(format!("{}=z", self.cell.ports[i])),
+                        _ => {}
+                    }
+                }
+                let mut label = words.join(" ");
+                if many {
+                    label = format!("{label} #{k}");
+                }
+                State { inputs: bits.to_vec(), logic, label }
+            })
+            .collect())
+    }
+
+    fn held_logic(&self, bits: &[bool]) -> Vec<Option<bool>> {
+        let mut held = vec![None; self.cell.nodes.len()];
+        let mut next = bits.iter();
+        for (r, &n) in self.cell.roles.iter().zip(&self.cell.port_nodes) {
+            let v = match r {
+                Role::Input => next.next().copied(),
+                Role::Output => None,
+                _ => continue,
+            };
+            if held[n].is_none() {
+                held[n] = v;
+            }
+        }
+        for (r, &n) in self.cell.roles.iter().zip(&self.cell.port_nodes) {
+            match r {
+                Role::Supply | Role::Nwell => held[n] = Some(true),
+                Role::Ground | Role::Pwell => held[n] = Some(false),
+                _ => {}
+            }
+        }
+        held
+    }
+
+    /// Solves one state at given levels.
+    ///
+    /// # Errors
+    /// No operating point within the limits.
+    pub fn solve(
+        &self,
+        state: &State,
+        levels: &Levels,
+        options: &SolveOptions,
+        w: &mut Workspace,
+    ) -> Result<StateCurrents, CellError> {
+        let cell = &self.cell;
+        let mut v = vec![Volt::default(); cell.nodes.len()];
+        let mut rails = Vec::with_capacity(cell.ports.len());
+        let held = cell.held();
+        let mut bits = state.inputs.iter();
+        for (r, &n) in cell.roles.iter().zip(&cell.port_nodes) {
+            if *r == Role::Input {
+                let high = bits.next().copied().unwrap_or(false);
+                v[n] = Volt::held(if high { levels.high_v } else { levels.low_v });
+                rails.push(v[n].rail);
+            }
+        }
+        for (r, &n) in cell.roles.iter().zip(&cell.port_nodes) {
+            let level = match r {
+                Role::Supply => levels.supply_v,
+                Role::Ground => levels.ground_v,
+                Role::Nwell => levels.nwell_v,
+                Role::Pwell => levels.pwell_v,
+                Role::Input | Role::Output => continue,
+            };
+            v[n] = Volt::held(level);
+            rails.push(level);
+        }
+        let vt = self.temp.thermal_voltage();
+        let (lo, hi) = (levels.ground_v, levels.supply_v);
+        for n in (0..v.len()).filter(|&n| !held[n]) {
+            v[n] = match (state.logic[n], self.plan.polarity[n]) {
+                (Logic::Low, _) => Volt { rail: lo, offset: 0.0 },
+                (Logic::High, _) => Volt { rail: hi, offset: 0.0 },
+                (Logic::Floating, Some(crate::device::Polarity::N)) => Volt { rail: lo, offset: 1.5 * vt },
+                (Logic::Floating, Some(crate::device::Polarity::P)) => Volt { rail: hi, offset: -1.5 * vt },
+                _ => Volt { rail: lo, offset: 0.5 * (hi - lo) },
+            };
+        }
+        let mut solver = Solver::new(&self.net, &self.plan, options, vt, &rails);
+        solver.solve(&mut v, w).map_err(|e| CellError::Unbalanced {
+            cell: cell.name.to_string(),
+            state: state.label.clone(),
+            temp_c: self.temp.celsius(),
+            node: cell.nodes[e.node].to_string(),
+            residual_a: e.residual_a,
+            allowed_a: e.allowed_a,
+            steps: e.steps,
+        })?;
+        let stable = solver.is_stable(&v, w);
+        let mut at_node = vec![[0.0; 5]; v.len()];
+        for e in &self.net.elements {
+            let split = self.net.by_mechanism(e, &v);
+            for (m, row) in split.iter().enumerate() {
+                for (t, &n) in e.nodes().iter().enumerate() {
+                    at_node[n][m] += row[t];
+                }
+            }
+        }
+        let mut counted = vec![false; v.len()];
+        let ports = cell
+            .roles
+            .iter()
+            .zip(&cell.port_nodes)
+            .map(|(r, &n)| {
+                // ports tied to one node share its current: the first takes it
+                if *r == Role::Output || counted[n] { [0.0; 5] } else {
+                    counted[n] = true;
+                    at_node[n]
+                }
+            })
+            .collect();
+        let middle = 0.5 * (lo + hi);
+        Ok(StateCurrents {
+            ports,
+            port_bits: cell.port_nodes.iter().map(|&n| v[n].get() > middle).collect(),
+            node_v: v.iter().map(|x| x.get()).collect(),
+            effort: solver.effort,
+            stable,
+        })
+    }
+}
+
+impl StateCurrents {
+    /// Current into all ports of a role by mechanism, A.
+    pub fn role(&self, cell: &Cell, role: Role) -> [f64; 5] {
+        let mut sum = [0.0; 5];
+        for i in cell.ports_of(role) {
+            for (s, x) in sum.iter_mut().zip(self.ports[i]) {
+                *s += x;
+            }
+        }
+        sum
+    }
+}

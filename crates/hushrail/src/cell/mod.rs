@@ -1,0 +1,8 @@
+//! Cells: topology, states, and the current of every terminal in every state.
+
+pub mod bound;
+#[expect(clippy::module_inception, reason = "the file holds the cell itself")]
+pub mod cell;
+pub mod logic;
+pub use bound::{BoundCell, CellError, DeviceShelf, Levels, State, StateCurrents};
+pub use cell::{Cell, CellReader, RailNames, Role};

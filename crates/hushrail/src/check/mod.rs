@@ -1,0 +1,3 @@
+//! Holding estimates against something: published tables, limits.
+
+pub mod compare;
