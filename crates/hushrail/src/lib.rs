@@ -2,9 +2,11 @@
 
 #![forbid(unsafe_code)]
 
+pub mod block;
 pub mod cell;
 pub mod check;
 pub mod circuit;
 pub mod device;
 pub mod physics;
 pub mod read;
+pub mod standby;

@@ -374,6 +374,10 @@ mod tests {
             message("cell,count\n\"z,,1\",x\n"),
             "c.csv:2:8: the count is `x`; want a whole number from 0 up"
         );
+        assert_eq!(
+            message("cell,count\n\"a\"\",b\",3,4\n"),
+            format!("c.csv:2:9: this row has 3 fields; {wanted}")
+        );
         assert_eq!(message("cell,count\n,4\n"), "c.csv:2:1: the cell has no name; write its master name");
     }
 

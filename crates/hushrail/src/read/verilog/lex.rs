@@ -107,9 +107,9 @@ pub(super) fn string_end(bytes: &[u8], i: usize) -> Result<usize, Unclosed> {
     }
 }
 
-/// Whether an attribute `(* … *)` begins at `i`; `(*)` does not begin one.
+/// Whether an attribute `(* … *)` begins with the parenthesis at `i`.
 fn is_attribute(bytes: &[u8], i: usize) -> bool {
-    bytes.get(i + 1) == Some(&b'*') && bytes.get(i + 2) != Some(&b')')
+    bytes.get(i + 1) == Some(&b'*')
 }
 
 /// The end of an attribute that begins at `i`.

@@ -47,6 +47,8 @@ fn conditional_text_is_read_when_it_holds() {
     assert_eq!(counts(&text("`define B 1\n")), "NOR=1 AND=1 OAI=1");
     assert_eq!(counts(&text("")), "OR=1 AND=1 OAI=1");
     assert_eq!(counts(&text("`define A\n`define B\n`undef A\n")), "NOR=1 AND=1 OAI=1");
+    let first = "`define B\n`define C\nmodule m; `ifdef A I1 u(); `elsif B I2 u(); `elsif C I3 u(); `else I4 u(); `endif";
+    assert_eq!(counts(&format!("{first} endmodule")), "I2=1");
 }
 
 #[test]

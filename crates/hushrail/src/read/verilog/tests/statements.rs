@@ -21,8 +21,8 @@ fn arrays_count_all_members_in_either_direction() {
 #[test]
 fn array_ends_may_be_based_numbers_sums_and_macros() {
     assert_eq!(
-        body("D d [8'h0f:'b0] (); E e ['d 9 : 0] (); F f [1_0-1:2+1] (); G g[4'sd3:0]();"),
-        "D=16 E=10 F=7 G=4"
+        body("D d [8'h0f:'b0] (); E e ['d 9 : 0] (); F f [1_0-1:2+1] (); G g[4'sd3:0](); H h[-1+3:0]();"),
+        "D=16 E=10 F=7 G=4 H=3"
     );
     assert_eq!(counts("`define W 8\nmodule m; D d [`W-1:0] (); E e[`W :1](); endmodule"), "D=8 E=8");
 }

@@ -1,0 +1,307 @@
+//! The current of a block at given rails and wells: count × state weight × current, summed in a fixed order.
+
+use std::sync::atomic::{AtomicBool, Ordering};
+
+use rayon::prelude::*;
+use serde::{Deserialize, Serialize};
+
+use super::build::{Block, Policy, StateWeights};
+use crate::cell::{BoundCell, CellError, DeviceShelf, Levels, Role, State};
+use crate::check::compare::product_term;
+use crate::circuit::newton::{Effort, SolveOptions, Workspace};
+use crate::device::process::Process;
+use crate::physics::Kelvin;
+use crate::read::deck::Note;
+use crate::read::source::ReadError;
+
+/// A block's current could not be computed.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[non_exhaustive]
+pub enum BlockError {
+    /// A cell failed.
+    #[error(transparent)]
+    Cell(#[from] CellError),
+    /// The user stopped the work.
+    #[error("stopped")]
+    Stopped,
+    /// State weights that fit no state or do not add up.
+    #[error("state weights of `{master}`: {reason}")]
+    Weights {
+        /// The cell.
+        master: String,
+        /// Why.
+        reason: String,
+    },
+}
+
+/// A cell of the block at a corner with its weighted states.
+#[derive(Debug)]
+struct Member {
+    master: String,
+    count: u64,
+    bound: BoundCell,
+    states: Vec<(State, f64)>,
+}
+
+/// A block with the devices of one corner.
+#[derive(Debug)]
+pub struct BoundBlock {
+    members: Vec<Member>,
+    /// Current of masters given by value, A at full supply.
+    given_a: f64,
+    /// Full supply the given currents refer to, V.
+    vdd_v: f64,
+    options: SolveOptions,
+    /// Whether all transistors have GIDL in their cards.
+    pub has_gidl: bool,
+}
+
+/// Share of one cell in the supply current.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct CellShare {
+    /// Master name.
+    pub master: String,
+    /// Instances.
+    pub count: u64,
+    /// Current from supply and n-well, A, all instances.
+    pub current_a: f64,
+}
+
+/// Currents of a block at one set of rails, A, by mechanism in the order of [`crate::device::Mechanism::ALL`].
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct BlockCurrents {
+    /// Into the block from its supply rail, inputs at one included.
+    pub supply: [f64; 5],
+    /// Into the block from its ground rail, inputs at zero included (negative: it flows out).
+    pub ground: [f64; 5],
+    /// Into the n-wells.
+    pub nwell: [f64; 5],
+    /// Into the p-wells.
+    pub pwell: [f64; 5],
+    /// Part of `supply` given by value and not computed, A.
+    pub given_a: f64,
+    /// By cell, in the order of the netlist.
+    pub cells: Vec<CellShare>,
+    /// States solved.
+    pub states: usize,
+    /// States whose operating point is not one the cell stays in.
+    pub unstable: usize,
+    /// Newton steps.
+    pub steps: usize,
+    /// Times a fallback of the solver was needed.
+    pub fallbacks: usize,
+}
+
+/// Sum over mechanisms.
+pub fn total(x: &[f64; 5]) -> f64 {
+    x.iter().sum()
+}
+
+impl BlockCurrents {
+    fn zero() -> Self {
+        Self {
+            supply: [0.0; 5],
+            ground: [0.0; 5],
+            nwell: [0.0; 5],
+            pwell: [0.0; 5],
+            given_a: 0.0,
+            cells: Vec::new(),
+            states: 0,
+            unstable: 0,
+            steps: 0,
+            fallbacks: 0,
+        }
+    }
+}
+
+fn add(to: &mut [f64; 5], x: &[f64; 5], weight: f64) {
+    for (t, v) in to.iter_mut().zip(x) {
+        *t += weight * v;
+    }
+}
+
+impl BoundBlock {
+    /// Makes the devices of every cell and lists its states with their weights.
+    ///
+    /// # Errors
+    /// A device that cannot be made (with the line of the netlist), or states that cannot be listed.
+    pub fn new(
+        block: &Block,
+        process: &Process,
+        temp: Kelvin,
+        vdd_v: f64,
+        shelf: &mut DeviceShelf,
+        options: &SolveOptions,
+    ) -> Result<Self, BindError> {
+        let mut members = Vec::new();
+        let mut has_gidl = true;
+        for c in &block.cells {
+            let bound = BoundCell::new(&c.cell, process, temp, 0.0, shelf)?;
+            has_gidl &= bound.has_gidl;
+            let states = bound.states().map_err(BlockError::Cell)?;
+            let states = weigh(&c.master, &bound, states, &c.weights)?;
+            members.push(Member { master: c.master.clone(), count: c.count, bound, states });
+        }
+        let given_a = block
+            .uncovered
+            .iter()
+            .map(|u| match u.policy {
+                Policy::CurrentA(a) => a * u.count as f64,
+                _ => 0.0,
+            })
+            .sum();
+        Ok(Self { members, given_a, vdd_v, options: options.clone(), has_gidl })
+    }
+
+    /// The currents at given levels. Work is shared over threads by cell and summed in order, so the bits do not depend on
+    /// their number.
+    ///
+    /// # Errors
+    /// A state without operating point, or `stop` raised.
+    pub fn currents(&self, levels: &Levels, stop: &AtomicBool) -> Result<BlockCurrents, BlockError> {
+        let parts: Vec<Result<BlockCurrents, BlockError>> = self
+            .members
+            .par_iter()
+            .map_init(Workspace::default, |w, m| m.currents(levels, &self.options, w, stop))
+            .collect();
+        let mut sum = BlockCurrents::zero();
+        for p in parts {
+            let p = p?;
+            for (to, x) in [
+                (&mut sum.supply, &p.supply),
+                (&mut sum.ground, &p.ground),
+                (&mut sum.nwell, &p.nwell),
+                (&mut sum.pwell, &p.pwell),
+            ] {
+                add(to, x, 1.0);
+            }
+            sum.cells.extend(p.cells);
+            sum.states += p.states;
+            sum.unstable += p.unstable;
+            sum.steps += p.steps;
+            sum.fallbacks += p.fallbacks;
+        }
+        if self.given_a != 0.0 {
+            let i = self.given_a * (levels.supply_v - levels.ground_v) / self.vdd_v;
+            sum.supply[0] += i;
+            sum.ground[0] -= i;
+            sum.given_a = i;
+        }
+        Ok(sum)
+    }
+}
+
+/// A block could not be bound to a corner.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[non_exhaustive]
+pub enum BindError {
+    /// Cards, bins or sizes.
+    #[error(transparent)]
+    Read(#[from] ReadError),
+    /// States or weights.
+    #[error(transparent)]
+    Block(#[from] BlockError),
+}
+
+/// Matches weights to states.
+fn weigh(
+    master: &str,
+    bound: &BoundCell,
+    states: Vec<State>,
+    weights: &StateWeights,
+) -> Result<Vec<(State, f64)>, BlockError> {
+    let wrong = |reason: String| BlockError::Weights { master: master.to_owned(), reason };
+    let StateWeights::Given(given) = weights else {
+        let n = states.len() as f64;
+        return Ok(states.into_iter().map(|s| (s, 1.0 / n)).collect());
+    };
+    let mut w = vec![0.0; states.len()];
+    for (when, weight) in given {
+        if !(*weight >= 0.0 && weight.is_finite()) {
+            return Err(wrong(format!("weight {weight} of `{when}` is not zero or more")));
+        }
+        let pins =
+            product_term(when).ok_or_else(|| wrong(format!("`{when}` is not a product of pins such as A&!B")))?;
+        let cell = &bound.cell;
+        if let Some(p) = pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
+            return Err(wrong(format!("`{when}`: the cell has no pin `{p}`")));
+        }
+        let fits: Vec<usize> = states
+            .iter()
+            .enumerate()
+            .filter(|(_, s)| {
+                pins.iter().all(|(p, want)| {
+                    let port = cell.ports.iter().position(|q| **q == **p);
+                    port.and_then(|i| s.logic[cell.port_nodes[i]].bit()) == Some(*want)
+                })
+            })
+            .map(|(i, _)| i)
+            .collect();
+        if fits.is_empty() && *weight > 0.0 {
+            return Err(wrong(format!("no state fits `{when}`")));
+        }
+        for &i in &fits {
+            w[i] += weight / fits.len() as f64;
+        }
+    }
+    let sum: f64 = w.iter().sum();
+    if !(sum > 0.0) {
+        return Err(wrong("all weights are zero".into()));
+    }
+    Ok(states.into_iter().zip(w).filter(|(_, x)| *x > 0.0).map(|(s, x)| (s, x / sum)).collect())
+}
+
+impl Member {
+    fn currents(
+        &self,
+        levels: &Levels,
+        options: &SolveOptions,
+        w: &mut Workspace,
+        stop: &AtomicBool,
+    ) -> Result<BlockCurrents, BlockError> {
+        let mut sum = BlockCurrents::zero();
+        let cell = &self.bound.cell;
+        let n = self.count as f64;
+        for (state, weight) in &self.states {
+            if stop.load(Ordering::Relaxed) {
+                return Err(BlockError::Stopped);
+            }
+            let c = self.bound.solve(state, levels, options, w)?;
+            let x = n * weight;
+            for (to, role) in [
+                (&mut sum.supply, Role::Supply),
+                (&mut sum.ground, Role::Ground),
+                (&mut sum.nwell, Role::Nwell),
+                (&mut sum.pwell, Role::Pwell),
+            ] {
+                add(to, &c.role(cell, role), x);
+            }
+            // an input at one is held by a driver on the supply, an input at zero by one on the ground
+            for (i, &high) in cell.ports_of(Role::Input).zip(&state.inputs) {
+                add(if high { &mut sum.supply } else { &mut sum.ground }, &c.ports[i], x);
+            }
+            sum.states += 1;
+            sum.unstable += usize::from(!c.stable);
+            let Effort { steps, transient, bisection, joint } = c.effort;
+            sum.steps += steps;
+            sum.fallbacks += transient + bisection + joint;
+        }
+        sum.cells.push(CellShare {
+            master: self.master.clone(),
+            count: self.count,
+            current_a: total(&sum.supply) + total(&sum.nwell),
+        });
+        Ok(sum)
+    }
+}
+
+/// The remark on cards without GIDL, when it matters.
+pub fn gidl_note(what: &str) -> Note {
+    Note::new(
+        "no-gidl",
+        format!(
+            "the card of {what} has gate-induced drain leakage switched off: with it, the current can only fall as the \
+             gate is driven past the rail; no optimum overdrive can be read from this card"
+        ),
+    )
+}

@@ -1,0 +1,7 @@
+//! Blocks: a bag of cells whose current is known as a function of its rails and wells.
+
+pub mod build;
+pub mod current;
+
+pub use build::{Block, BlockCell, Policy, StateWeights, Uncovered, build_block};
+pub use current::{BoundBlock, BlockCurrents, BlockError};

@@ -1,0 +1,386 @@
+//! The rest point: the voltages at which virtual rails settle, and every real supply's current there.
+//!
+//! Balance is taken with the device model's own currents on both sides: what the switch lets through (its GIDL, junction and
+//! gate currents at the collapsed rail included) is what the block draws at that rail. Both fall by decades over the range,
+//! so the root is sought on the logarithm of their ratio, which is nearly straight.
+
+use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
+
+use serde::{Deserialize, Serialize};
+
+use super::root::increasing;
+use super::scheme::{Scheme, SchemeError, WellTie};
+use super::switch::{Side, Switch};
+use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, gidl_note, total};
+use crate::cell::{DeviceShelf, Levels};
+use crate::device::process::Process;
+use crate::device::{Mechanism, Terminal};
+use crate::physics::Kelvin;
+use crate::read::deck::Note;
+use crate::read::source::ReadError;
+
+/// A domain could not be put to rest.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[non_exhaustive]
+pub enum RestError {
+    /// The scheme itself.
+    #[error(transparent)]
+    Scheme(#[from] SchemeError),
+    /// A card, bin or size.
+    #[error(transparent)]
+    Read(#[from] ReadError),
+    /// The block.
+    #[error(transparent)]
+    Block(#[from] BlockError),
+    /// The balance did not close.
+    #[error("scheme `{scheme}`: the virtual rails do not settle: imbalance {residual:.2e} of the current at {at_v:.4} V")]
+    NoRest {
+        /// The scheme.
+        scheme: String,
+        /// Relative imbalance left.
+        residual: f64,
+        /// Where.
+        at_v: f64,
+    },
+}
+
+impl From<BindError> for RestError {
+    fn from(e: BindError) -> Self {
+        match e {
+            BindError::Read(e) => Self::Read(e),
+            BindError::Block(e) => Self::Block(e),
+        }
+    }
+}
+
+/// Current and power of one real supply.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct SupplyCurrent {
+    /// `vdd`, `ground`, `header_gate`, `footer_gate`, `nwell`, `pwell`, `header_well`, `footer_well`.
+    pub supply: String,
+    /// Its voltage, V.
+    pub voltage_v: f64,
+    /// Current it delivers, A.
+    pub current_a: f64,
+    /// Power it delivers, W.
+    pub power_w: f64,
+}
+
+/// One way current takes out of the supplies, by mechanism.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct PathShare {
+    /// `block`, `block wells`, `header channel`, `header body`, `header gate`, …
+    pub path: String,
+    /// Mechanism.
+    pub mechanism: Mechanism,
+    /// Current, A.
+    pub current_a: f64,
+}
+
+/// A domain at rest.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Asleep {
+    /// Virtual supply (the supply itself without header), V.
+    pub virtual_supply_v: f64,
+    /// Virtual ground (the ground itself without footer), V.
+    pub virtual_ground_v: f64,
+    /// Every real supply.
+    pub supplies: Vec<SupplyCurrent>,
+    /// Current from all supplies above ground, A.
+    pub current_a: f64,
+    /// Power from all supplies, W.
+    pub power_w: f64,
+    /// By mechanism, A, of the current that `current_a` counts.
+    pub mechanisms: [f64; 5],
+    /// By path.
+    pub paths: Vec<PathShare>,
+    /// Largest oxide voltage of a switch, V; zero without switch.
+    pub oxide_v: f64,
+    /// Field it means over the electrical thickness, V/m.
+    pub oxide_field_v_m: f64,
+    /// The block's own currents at rest.
+    pub block: BlockCurrents,
+    /// Evaluations of the block.
+    pub evaluations: usize,
+    /// Relative imbalance left at the virtual rails.
+    pub residual: f64,
+    /// Remarks.
+    pub notes: Vec<Note>,
+}
+
+/// Relative imbalance accepted at a virtual rail.
+const BALANCE: f64 = 1e-9;
+/// Evaluations of the block before giving up.
+const EVALUATIONS: usize = 120;
+
+struct Domain<'a> {
+    scheme: &'a Scheme,
+    block: &'a BoundBlock,
+    vdd_v: f64,
+    header: Option<Switch>,
+    footer: Option<Switch>,
+    stop: &'a AtomicBool,
+    evaluations: usize,
+}
+
+impl Domain<'_> {
+    fn levels(&self, supply: f64, ground: f64) -> Levels {
+        let s = self.scheme;
+        let nwell = if s.nwell == WellTie::Virtual { supply } else { self.vdd_v };
+        let pwell = if s.pwell == WellTie::Virtual { ground } else { 0.0 };
+        Levels {
+            supply_v: supply,
+            ground_v: ground,
+            nwell_v: nwell + s.nwell_bias_v,
+            pwell_v: pwell - s.pwell_bias_v,
+            high_v: supply,
+            low_v: ground,
+        }
+    }
+
+    /// Current the block takes from its supply rail and what hangs on it, and returns into its ground rail.
+    fn block(&mut self, supply: f64, ground: f64) -> Result<(BlockCurrents, f64, f64), RestError> {
+        self.evaluations += 1;
+        let c = self.block.currents(&self.levels(supply, ground), self.stop)?;
+        let mut from_supply = total(&c.supply);
+        let mut into_ground = -total(&c.ground);
+        if self.scheme.nwell == WellTie::Virtual && self.scheme.nwell_bias_v == 0.0 {
+            from_supply += total(&c.nwell);
+        }
+        if self.scheme.pwell == WellTie::Virtual && self.scheme.pwell_bias_v == 0.0 {
+            into_ground -= total(&c.pwell);
+        }
+        Ok((c, from_supply, into_ground))
+    }
+
+    /// Current out of the header into the virtual supply.
+    fn header_gives(&self, v: f64) -> f64 {
+        self.header.as_ref().map_or(0.0, |h| -h.branches(v).terminals()[Terminal::Drain as usize])
+    }
+    /// Current out of the virtual ground into the footer.
+    fn footer_takes(&self, v: f64) -> f64 {
+        self.footer.as_ref().map_or(0.0, |f| f.branches(v).terminals()[Terminal::Drain as usize])
+    }
+}
+
+/// ln(a/b) where both are positive; signs decide otherwise.
+fn log_ratio(a: f64, b: f64) -> f64 {
+    match (a > 0.0, b > 0.0) {
+        (true, true) => (a / b).ln(),
+        (true, false) => 200.0,
+        (false, true) => -200.0,
+        (false, false) => (a - b) / (a.abs() + b.abs() + 1e-60),
+    }
+}
+
+/// Puts a domain to rest under a scheme.
+///
+/// # Errors
+/// The scheme or its devices are impossible, the block has no operating point, the rails do not settle, or `stop` was
+/// raised.
+#[expect(clippy::too_many_arguments, reason = "one point of the grid: everything that defines it")]
+pub fn settle(
+    scheme: &Scheme,
+    block: &BoundBlock,
+    process: &Process,
+    temp: Kelvin,
+    vdd_v: f64,
+    shelf: &mut DeviceShelf,
+    origin: &Arc<str>,
+    stop: &AtomicBool,
+) -> Result<Asleep, RestError> {
+    scheme.check()?;
+    let mut make = |spec, side| Switch::new(spec, side, process, temp, vdd_v, shelf, origin);
+    let header = scheme.header.as_ref().map(|s| make(s, Side::Header)).transpose()?;
+    let footer = scheme.footer.as_ref().map(|s| make(s, Side::Footer)).transpose()?;
+    let mut d = Domain { scheme, block, vdd_v, header, footer, stop, evaluations: 0 };
+    let (supply, ground) = rest_voltages(&mut d)?;
+    let (currents, from_supply, into_ground) = d.block(supply, ground)?;
+    let mut residual = 0.0f64;
+    if d.header.is_some() {
+        residual = residual.max((d.header_gives(supply) - from_supply).abs() / from_supply.abs().max(1e-40));
+    }
+    if d.footer.is_some() {
+        residual = residual.max((d.footer_takes(ground) - into_ground).abs() / into_ground.abs().max(1e-40));
+    }
+    if residual > 1e-6 {
+        return Err(RestError::NoRest { scheme: scheme.name.clone(), residual, at_v: supply - ground });
+    }
+    Ok(account(&d, currents, supply, ground, residual))
+}
+
+fn rest_voltages(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
+    let vdd = d.vdd_v;
+    match (d.header.is_some(), d.footer.is_some()) {
+        (false, false) => Ok((vdd, 0.0)),
+        (true, false) => {
+            let v = increasing(1e-9, vdd, 1e-14, BALANCE, EVALUATIONS, |v| {
+                let (_, i, _) = d.block(v, 0.0)?;
+                Ok::<f64, RestError>(log_ratio(i, d.header_gives(v)))
+            })?;
+            Ok((v, 0.0))
+        }
+        (false, true) => {
+            let u = increasing(1e-9, vdd, 1e-14, BALANCE, EVALUATIONS, |u| {
+                let (_, _, i) = d.block(vdd, vdd - u)?;
+                Ok::<f64, RestError>(log_ratio(i, d.footer_takes(vdd - u)))
+            })?;
+            Ok((vdd, vdd - u))
+        }
+        (true, true) => both_rails(d),
+    }
+}
+
+/// Two virtual rails: the span between them is sought outside, their common position inside. For a given span the block
+/// hardly depends on the position, while header and footer pull it up and down: both balances are monotone.
+fn both_rails(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
+    let vdd = d.vdd_v;
+    let mut at = (0.5 * vdd, 0.5 * vdd);
+    // span: the current of the block against that of the header
+    let span = increasing(1e-9, vdd, 1e-13, BALANCE, 60, |span| {
+        // position of the ground rail: what the footer takes against what the block returns
+        let ground = increasing(0.0, vdd - span, 1e-14, BALANCE, 60, |g| {
+            let (_, from, into) = d.block(g + span, g)?;
+            let gives = d.header_gives(g + span);
+            let takes = d.footer_takes(g);
+            // charge balance of the pair: higher position, less from the header and more into the footer
+            Ok::<f64, RestError>(log_ratio(takes + (from - into), gives))
+        })?;
+        at = (ground + span, ground);
+        let (_, from, _) = d.block(at.0, at.1)?;
+        Ok::<f64, RestError>(log_ratio(from, d.header_gives(at.0)))
+    })?;
+    at.0 = at.1 + span;
+    Ok(at)
+}
+
+/// Books every current to its supply, mechanism and path.
+fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual: f64) -> Asleep {
+    let s = d.scheme;
+    let mut supplies: Vec<SupplyCurrent> = Vec::new();
+    let mut book = |name: &str, v: f64, i: f64| match supplies.iter_mut().find(|x| x.supply == name) {
+        Some(x) => {
+            x.current_a += i;
+            x.power_w += i * v;
+        }
+        None => supplies.push(SupplyCurrent { supply: name.into(), voltage_v: v, current_a: i, power_w: i * v }),
+    };
+    let mut paths: Vec<PathShare> = Vec::new();
+    let mut mechanisms = [0.0; 5];
+    let mut way = |path: &str, m: Mechanism, i: f64, counts: bool| {
+        if i != 0.0 {
+            paths.push(PathShare { path: path.into(), mechanism: m, current_a: i });
+            if counts {
+                mechanisms[m as usize] += i;
+            }
+        }
+    };
+    let vdd = d.vdd_v;
+    let mut oxide = (0.0f64, 0.0f64);
+    let mut notes = Vec::new();
+
+    book("vdd", vdd, s.overhead_a);
+    book("ground", 0.0, 0.0);
+    for (sw, rail, name, v) in [
+        (&d.header, "vdd", "header", supply),
+        (&d.footer, "ground", "footer", ground),
+    ] {
+        let Some(sw) = sw else { continue };
+        let b = sw.branches(v);
+        let t = b.terminals();
+        book(rail, sw.rail_v, t[Terminal::Source as usize]);
+        let spec = if name == "header" { s.header.as_ref() } else { s.footer.as_ref() };
+        let (over, bias) = spec.map_or((0.0, 0.0), |x| (x.overdrive_v, x.well_bias_v));
+        let on_vdd = sw.gate_v > 0.5 * vdd;
+        let gate_supply = if over != 0.0 { format!("{name}_gate") } else { if on_vdd { "vdd" } else { "ground" }.into() };
+        book(&gate_supply, sw.gate_v, t[Terminal::Gate as usize]);
+        let body_supply = if bias != 0.0 { format!("{name}_well") } else { if on_vdd { "vdd" } else { "ground" }.into() };
+        book(&body_supply, sw.body_v, t[Terminal::Body as usize]);
+        let sign = if name == "header" { -1.0 } else { 1.0 };
+        for m in Mechanism::ALL {
+            let of = b.terminals_of(m);
+            let from_real = of[Terminal::Source as usize] * if name == "header" { 1.0 } else { -1.0 };
+            let counts = name == "header";
+            match m {
+                Mechanism::Channel => way(&format!("{name} channel"), m, from_real, counts),
+                Mechanism::Gate => {
+                    way(&format!("{name} gate"), m, sign * of[Terminal::Drain as usize], counts);
+                }
+                _ => way(&format!("{name} body"), m, sign * of[Terminal::Drain as usize], counts),
+            }
+        }
+        let ox = sw.oxide_v(v);
+        if ox > oxide.0 {
+            oxide = (ox, ox / sw.device.oxide_m());
+        }
+        if over > 0.0 && !sw.device.has_gidl() {
+            notes.push(gidl_note(&format!("the {name} switch")));
+        }
+        if spec.is_some_and(|x| x.diffusion_m.is_none()) {
+            notes.push(Note::new(
+                "switch-without-junctions",
+                format!("the {name} has no `diffusion_m`: its drain and source junctions are not counted"),
+            ));
+        }
+        if over > 0.0 {
+            notes.push(Note::new(
+                "oxide-caution",
+                "a gate driven past its rail stresses its oxide; the limit is the foundry's reliability rule, and only a \
+                 qualified sign-off can say that it is kept",
+            ));
+        }
+    }
+    // the block's rails: real ones are booked, virtual ones are inside
+    if d.header.is_none() {
+        book("vdd", vdd, total(&c.supply));
+        for (m, i) in Mechanism::ALL.iter().zip(c.supply) {
+            way("block", *m, i, true);
+        }
+    }
+    if d.footer.is_none() {
+        book("ground", 0.0, total(&c.ground));
+    }
+    let levels = d.levels(supply, ground);
+    for (well, tie, bias, switched, currents, rail, counts) in [
+        ("nwell", s.nwell, s.nwell_bias_v, d.header.is_some(), &c.nwell, "vdd", true),
+        ("pwell", s.pwell, s.pwell_bias_v, d.footer.is_some(), &c.pwell, "ground", false),
+    ] {
+        let inside = tie == WellTie::Virtual && switched && bias == 0.0;
+        if inside {
+            continue;
+        }
+        let v = if well == "nwell" { levels.nwell_v } else { levels.pwell_v };
+        let name = if bias == 0.0 { rail } else { well };
+        book(name, v, total(currents));
+        for (m, i) in Mechanism::ALL.iter().zip(currents) {
+            way("block wells", *m, *i, counts);
+        }
+    }
+    if s.overhead_a > 0.0 {
+        way("overhead", Mechanism::Channel, s.overhead_a, true);
+    }
+    let current_a = supplies.iter().filter(|x| x.voltage_v > 0.0).map(|x| x.current_a).sum();
+    let power_w = supplies.iter().map(|x| x.power_w).sum();
+    if c.unstable > 0 {
+        notes.push(Note::new(
+            "state-lost",
+            format!("{} states of cells are not stable at the rest point: what they stored may be lost", c.unstable),
+        ));
+    }
+    Asleep {
+        virtual_supply_v: supply,
+        virtual_ground_v: ground,
+        supplies,
+        current_a,
+        power_w,
+        mechanisms,
+        paths,
+        oxide_v: oxide.0,
+        oxide_field_v_m: oxide.1,
+        block: c,
+        evaluations: d.evaluations,
+        residual,
+        notes,
+    }
+}

@@ -1,0 +1,142 @@
+//! Schemes: everything done to a domain in standby.
+
+use serde::{Deserialize, Serialize};
+
+/// Where the wells of the block are tied.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum WellTie {
+    /// To the real rail: keeps its junction leakage, reverse-biases the collapsed devices.
+    #[default]
+    Real,
+    /// To the virtual rail: collapses with it.
+    Virtual,
+}
+
+/// One switch between a real and a virtual rail.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct SwitchSpec {
+    /// Transistor model, as the cards or an alias name it.
+    pub model: String,
+    /// Total width, m.
+    pub width_m: f64,
+    /// Channel length, m.
+    pub length_m: f64,
+    /// Width of one finger, m; the whole width when left out.
+    #[serde(default)]
+    pub finger_width_m: Option<f64>,
+    /// How far past its off rail the gate is driven asleep, V.
+    #[serde(default)]
+    pub overdrive_v: f64,
+    /// Body voltage beyond the rail, reverse positive, V.
+    #[serde(default)]
+    pub well_bias_v: f64,
+    /// Length of the drain and source diffusions of a finger, m, for its junctions; none when left out.
+    #[serde(default)]
+    pub diffusion_m: Option<f64>,
+    /// Gate to diffusion edge, m, for layout stress; none when left out.
+    #[serde(default)]
+    pub edge_m: Option<f64>,
+}
+
+/// Everything done to a domain in standby. Without header and footer the domain stays powered.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Scheme {
+    /// Name in reports.
+    pub name: String,
+    /// Switch between the supply and the virtual supply.
+    #[serde(default)]
+    pub header: Option<SwitchSpec>,
+    /// Switch between the virtual ground and the ground.
+    #[serde(default)]
+    pub footer: Option<SwitchSpec>,
+    /// Where the n-wells of the block are tied when there is a header.
+    #[serde(default)]
+    pub nwell: WellTie,
+    /// Where the p-wells of the block are tied when there is a footer.
+    #[serde(default)]
+    pub pwell: WellTie,
+    /// Block n-wells above their rail, reverse positive, V.
+    #[serde(default)]
+    pub nwell_bias_v: f64,
+    /// Block p-wells below their rail, reverse positive, V.
+    #[serde(default)]
+    pub pwell_bias_v: f64,
+    /// Supply current of what makes the scheme work (pump, level shifter, bias generator), A.
+    #[serde(default)]
+    pub overhead_a: f64,
+}
+
+/// A scheme that cannot be.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[error("scheme `{scheme}`: {what} is {value}; {wanted}")]
+pub struct SchemeError {
+    /// The scheme.
+    pub scheme: String,
+    /// The quantity.
+    pub what: String,
+    /// What was found.
+    pub value: String,
+    /// What would be right.
+    pub wanted: String,
+}
+
+impl Scheme {
+    /// A scheme that leaves the domain powered.
+    pub fn ungated(name: &str) -> Self {
+        Self { name: name.to_owned(), ..Self::default() }
+    }
+
+    /// Whether nothing is switched or biased.
+    pub fn is_ungated(&self) -> bool {
+        self.header.is_none() && self.footer.is_none() && self.nwell_bias_v == 0.0 && self.pwell_bias_v == 0.0
+    }
+
+    /// Checks every number.
+    ///
+    /// # Errors
+    /// Widths that are not positive, overdrives or biases outside −1 V to 5 V, an overhead below zero.
+    pub fn check(&self) -> Result<(), SchemeError> {
+        let wrong = |what: &str, value: String, wanted: &str| {
+            Err(SchemeError { scheme: self.name.clone(), what: what.into(), value, wanted: wanted.into() })
+        };
+        for (what, s) in [("header", &self.header), ("footer", &self.footer)] {
+            let Some(s) = s else { continue };
+            for (name, v) in [("width", s.width_m), ("length", s.length_m)] {
+                if !(v > 0.0 && v.is_finite()) {
+                    return wrong(&format!("{what} {name}"), format!("{v} m"), "want a size above zero");
+                }
+            }
+            if let Some(f) = s.finger_width_m {
+                if !(f > 0.0 && f <= s.width_m) {
+                    return wrong(
+                        &format!("{what} finger width"),
+                        format!("{f} m"),
+                        &format!("want a width above zero and not above the whole width ({} m)", s.width_m),
+                    );
+                }
+            }
+            for (name, v) in [("overdrive", s.overdrive_v), ("well bias", s.well_bias_v)] {
+                if !(v >= -1.0 && v <= 5.0) {
+                    return wrong(&format!("{what} {name}"), format!("{v} V"), "want -1 V to 5 V");
+                }
+            }
+            for (name, v) in [("diffusion", s.diffusion_m), ("edge", s.edge_m)] {
+                if v.is_some_and(|v| !(v > 0.0 && v < 1e-3)) {
+                    return wrong(&format!("{what} {name}"), format!("{v:?} m"), "want a length above zero");
+                }
+            }
+        }
+        for (name, v) in [("n-well bias", self.nwell_bias_v), ("p-well bias", self.pwell_bias_v)] {
+            if !(v >= -1.0 && v <= 5.0) {
+                return wrong(name, format!("{v} V"), "want -1 V to 5 V");
+            }
+        }
+        if !(self.overhead_a >= 0.0 && self.overhead_a.is_finite()) {
+            return wrong("overhead", format!("{} A", self.overhead_a), "want zero or more");
+        }
+        Ok(())
+    }
+}

@@ -1,0 +1,83 @@
+//! A switch at a corner: its transistor, and its currents when it is off.
+
+use std::sync::Arc;
+
+use super::scheme::SwitchSpec;
+use crate::cell::DeviceShelf;
+use crate::device::process::{Process, Request};
+use crate::device::{Bias, Branches, Device, Polarity};
+use crate::physics::Kelvin;
+use crate::read::source::{Place, ReadError};
+
+/// Which rail a switch stands on.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Side {
+    /// Between supply and virtual supply.
+    Header,
+    /// Between virtual ground and ground.
+    Footer,
+}
+
+/// A switch with its device.
+#[derive(Debug, Clone)]
+pub struct Switch {
+    /// One finger.
+    pub device: Arc<dyn Device>,
+    /// Fingers in parallel.
+    pub fingers: f64,
+    /// Where it stands.
+    pub side: Side,
+    /// Real rail, V.
+    pub rail_v: f64,
+    /// Gate asleep, V.
+    pub gate_v: f64,
+    /// Body, V.
+    pub body_v: f64,
+}
+
+impl Switch {
+    /// Makes the device of a switch; `vdd_v` is the supply, ground is 0 V.
+    ///
+    /// An n-channel header or p-channel footer is legal: its off rail is still the one on the far side of turning on.
+    ///
+    /// # Errors
+    /// No card or bin for the model and size.
+    pub fn new(
+        spec: &SwitchSpec,
+        side: Side,
+        process: &Process,
+        temp: Kelvin,
+        vdd_v: f64,
+        shelf: &mut DeviceShelf,
+        origin: &Arc<str>,
+    ) -> Result<Self, ReadError> {
+        let finger = spec.finger_width_m.unwrap_or(spec.width_m);
+        let mut params: Vec<(Arc<str>, f64)> = vec![("w".into(), finger), ("l".into(), spec.length_m)];
+        if let Some(d) = spec.diffusion_m {
+            // every diffusion is shared by two fingers; perimeters include the gate edges
+            let (area, perimeter) = (finger * d / 2.0, d + finger);
+            params.extend([("ad", area), ("as", area), ("pd", perimeter), ("ps", perimeter)].map(|(n, v)| (n.into(), v)));
+        }
+        if let Some(e) = spec.edge_m {
+            params.extend([("sa", e), ("sb", e)].map(|(n, v)| (n.into(), v)));
+        }
+        let request = Request { model: spec.model.to_lowercase().into(), params, at: Place::new(origin, 1, 1) };
+        let t = shelf.transistor(process, &request, temp)?;
+        let p_channel = t.device.polarity() == Polarity::P;
+        let gate_v = if p_channel { vdd_v + spec.overdrive_v } else { -spec.overdrive_v };
+        let body_v = if p_channel { vdd_v + spec.well_bias_v } else { -spec.well_bias_v };
+        let rail_v = if side == Side::Header { vdd_v } else { 0.0 };
+        Ok(Self { device: t.device, fingers: spec.width_m / finger * t.count, side, rail_v, gate_v, body_v })
+    }
+
+    /// Branch currents of the whole switch with its virtual rail at `v`; the source is on the real rail.
+    pub fn branches(&self, v: f64) -> Branches<f64> {
+        let bias = Bias::from_terminals(v, self.gate_v, self.rail_v, self.body_v);
+        self.device.branches(bias).map(|i| i * self.fingers)
+    }
+
+    /// Largest gate-to-drain or gate-to-source voltage with the virtual rail at `v`, V.
+    pub fn oxide_v(&self, v: f64) -> f64 {
+        (self.gate_v - v).abs().max((self.gate_v - self.rail_v).abs())
+    }
+}
