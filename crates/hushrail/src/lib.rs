@@ -2,10 +2,12 @@
 
 #![forbid(unsafe_code)]
 
+pub mod batch;
 pub mod block;
 pub mod cell;
 pub mod check;
 pub mod circuit;
+pub mod corner;
 pub mod device;
 pub mod physics;
 pub mod read;

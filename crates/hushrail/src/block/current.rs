@@ -6,8 +6,8 @@ use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
 use super::build::{Block, Policy, StateWeights};
+use crate::cell::when::product_term;
 use crate::cell::{BoundCell, CellError, DeviceShelf, Levels, Role, State};
-use crate::check::compare::product_term;
 use crate::circuit::newton::{Effort, SolveOptions, Workspace};
 use crate::device::process::Process;
 use crate::physics::Kelvin;

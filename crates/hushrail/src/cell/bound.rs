@@ -387,3 +387,16 @@ impl StateCurrents {
         sum
     }
 }
+
+/// Power drawn from supply and n-well with wells tied to the rails, W.
+pub fn supply_power(cell: &BoundCell, c: &StateCurrents, levels: &Levels) -> f64 {
+    let total = |r: Role| c.role(&cell.cell, r).iter().sum::<f64>();
+    let inputs: f64 = cell
+        .cell
+        .ports_of(Role::Input)
+        .filter(|&i| c.port_bits[i])
+        .map(|i| c.ports[i].iter().sum::<f64>())
+        .sum();
+    levels.supply_v * total(Role::Supply) + levels.nwell_v * total(Role::Nwell) + levels.high_v * inputs
+}
+

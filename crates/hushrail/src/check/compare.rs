@@ -1,13 +1,13 @@
 //! Predictions against a published leakage table: every row matched to a solved state, and statistics over them.
 
-use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use indexmap::IndexMap;
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
-use crate::cell::{BoundCell, Cell, CellError, DeviceShelf, Levels, Role, State};
+use crate::cell::when::product_term;
+use crate::cell::{BoundCell, Cell, CellError, DeviceShelf, Levels, State, supply_power};
 use crate::circuit::newton::{SolveOptions, Workspace};
 use crate::device::process::Process;
 use crate::physics::Kelvin;
@@ -263,41 +263,6 @@ impl Compared {
         rows.truncate(n);
         rows
     }
-}
-
-/// Pins a condition fixes: name and value. `None` when the text is not a product of pins.
-pub fn product_term(when: &str) -> Option<BTreeMap<String, bool>> {
-    let mut pins = BTreeMap::new();
-    let text = when.replace(['(', ')', ' '], "");
-    if text.is_empty() {
-        return Some(pins);
-    }
-    for factor in text.split(['&', '*']) {
-        let (name, value) = match factor.strip_prefix('!') {
-            Some(n) => (n, false),
-            None => match factor.strip_suffix('\'') {
-                Some(n) => (n, false),
-                None => (factor, true),
-            },
-        };
-        if name.is_empty() || !name.bytes().all(|b| b.is_ascii_alphanumeric() || b"_[]".contains(&b)) {
-            return None;
-        }
-        pins.insert(name.to_owned(), value);
-    }
-    Some(pins)
-}
-
-/// Power drawn from supply and n-well with wells tied to the rails, W.
-pub fn supply_power(cell: &BoundCell, c: &crate::cell::StateCurrents, levels: &Levels) -> f64 {
-    let total = |r: Role| c.role(&cell.cell, r).iter().sum::<f64>();
-    let inputs: f64 = cell
-        .cell
-        .ports_of(Role::Input)
-        .filter(|&i| c.port_bits[i])
-        .map(|i| c.ports[i].iter().sum::<f64>())
-        .sum();
-    levels.supply_v * total(Role::Supply) + levels.nwell_v * total(Role::Nwell) + levels.high_v * inputs
 }
 
 impl Comparison<'_> {

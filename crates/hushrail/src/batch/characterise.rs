@@ -1,0 +1,138 @@
+//! Leakage tables: cells × corners × states, every terminal, by mechanism.
+
+use std::sync::Arc;
+use std::sync::atomic::Ordering;
+
+use indexmap::IndexMap;
+use rayon::prelude::*;
+use serde::{Deserialize, Serialize};
+
+use super::run::Failure;
+use super::watch::{Progress, watched};
+use crate::cell::{BoundCell, Cell, DeviceShelf, Levels, Role};
+use crate::circuit::newton::{SolveOptions, Workspace};
+use crate::corner::Corner;
+use crate::device::process::Process;
+use crate::read::deck::Note;
+
+/// One state of one cell at one corner.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct LeakageRow {
+    /// Cell.
+    pub cell: String,
+    /// Corner.
+    pub corner: String,
+    /// Pins and values.
+    pub state: String,
+    /// Power drawn from supply, n-well and inputs at one, W.
+    pub power_w: f64,
+    /// Current into each port, A.
+    pub ports: IndexMap<String, f64>,
+    /// Current from supply, n-well and inputs at one by mechanism (channel, gidl, gate, junction, floor), A.
+    pub mechanisms: [f64; 5],
+    /// Whether the point is one the cell stays in.
+    pub stable: bool,
+}
+
+/// A leakage table.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+pub struct LeakageTable {
+    /// Rows: cells, then corners, then states.
+    pub rows: Vec<LeakageRow>,
+    /// Cells that failed at a corner.
+    pub failures: Vec<Failure>,
+    /// Remarks, each once.
+    pub notes: Vec<Note>,
+    /// Whether the run was stopped before its end.
+    pub stopped: bool,
+}
+
+/// Solves every state of every cell at every corner with the rails at full supply.
+pub fn characterise(
+    cells: &[Arc<Cell>],
+    processes: &IndexMap<String, Process>,
+    corners: &[Corner],
+    floor_s: f64,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> LeakageTable {
+    let tasks: Vec<(&Arc<Cell>, &Corner)> =
+        cells.iter().flat_map(|c| corners.iter().map(move |k| (c, k))).collect();
+    let parts = watched(tasks.len(), progress, |watch| {
+        tasks
+            .par_iter()
+            .map_init(Workspace::default, |w, (cell, corner)| {
+                if watch.stop.load(Ordering::Relaxed) {
+                    return None;
+                }
+                let r = one(cell, processes, corner, floor_s, options, w);
+                watch.done.fetch_add(1, Ordering::Relaxed);
+                Some(r)
+            })
+            .collect::<Vec<_>>()
+    });
+    let mut table = LeakageTable::default();
+    for (part, (cell, corner)) in parts.into_iter().zip(tasks) {
+        match part {
+            None => table.stopped = true,
+            Some(Ok((rows, notes))) => {
+                table.rows.extend(rows);
+                for n in notes {
+                    if !table.notes.contains(&n) {
+                        table.notes.push(n);
+                    }
+                }
+            }
+            Some(Err(reason)) => table.failures.push(Failure {
+                domain: cell.name.to_string(),
+                scheme: String::new(),
+                corner: corner.name.clone(),
+                reason,
+            }),
+        }
+    }
+    table
+}
+
+fn one(
+    cell: &Arc<Cell>,
+    processes: &IndexMap<String, Process>,
+    corner: &Corner,
+    floor_s: f64,
+    options: &SolveOptions,
+    w: &mut Workspace,
+) -> Result<(Vec<LeakageRow>, Vec<Note>), String> {
+    let temp = corner.check().map_err(|e| e.to_string())?;
+    let process = processes.get(&corner.process).ok_or_else(|| format!("no process `{}`", corner.process))?;
+    let mut shelf = DeviceShelf::default();
+    let bound = BoundCell::new(cell, process, temp, floor_s, &mut shelf).map_err(|e| e.to_string())?;
+    let levels = Levels::powered(corner.vdd_v);
+    let mut rows = Vec::new();
+    for s in bound.states().map_err(|e| e.to_string())? {
+        let c = bound.solve(&s, &levels, options, w).map_err(|e| e.to_string())?;
+        let mut mechanisms = [0.0; 5];
+        let mut ports = IndexMap::new();
+        let mut bits = s.inputs.iter();
+        for (i, role) in cell.roles.iter().enumerate() {
+            let high = *role == Role::Input && bits.next().copied().unwrap_or(false);
+            if *role != Role::Output {
+                ports.insert(cell.ports[i].to_string(), c.ports[i].iter().sum());
+            }
+            if high || matches!(role, Role::Supply | Role::Nwell) {
+                for (m, x) in mechanisms.iter_mut().zip(c.ports[i]) {
+                    *m += x;
+                }
+            }
+        }
+        rows.push(LeakageRow {
+            cell: cell.name.to_string(),
+            corner: corner.name.clone(),
+            state: s.label.clone(),
+            power_w: crate::cell::supply_power(&bound, &c, &levels),
+            ports,
+            mechanisms,
+            stable: c.stable,
+        });
+    }
+    Ok((rows, shelf.notes))
+}

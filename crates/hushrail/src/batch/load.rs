@@ -1,0 +1,147 @@
+//! What a study names, read: cards, cells, domains.
+
+use std::path::Path;
+use std::sync::Arc;
+
+use indexmap::IndexMap;
+use serde::{Deserialize, Serialize};
+
+use crate::block::{Block, Uncovered, build_block};
+use crate::cell::CellReader;
+use crate::corner::Corner;
+use crate::device::process::Process;
+use crate::read::counts::{InstanceCounts, read_counts_csv};
+use crate::read::deck::Note;
+use crate::read::source::{ReadError, Source};
+use crate::read::spice::{DeckOptions, read_deck};
+use super::study::{Limits, ProcessSpec, Study};
+use crate::read::verilog::read_verilog;
+use crate::standby::Scheme;
+
+/// A domain with its block.
+#[derive(Debug, Clone)]
+pub struct LoadedDomain {
+    /// Name.
+    pub name: String,
+    /// Its cells.
+    pub block: Block,
+    /// What the counts say.
+    pub summary: DomainSummary,
+}
+
+/// Numbers of a domain for reports.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct DomainSummary {
+    /// Name.
+    pub name: String,
+    /// All instances.
+    pub instances: u64,
+    /// Instances computed from transistors.
+    pub computed: u64,
+    /// Masters without transistors, and what was done.
+    pub uncovered: Vec<Uncovered>,
+}
+
+/// Everything a run needs, in memory.
+#[derive(Debug)]
+pub struct Loaded {
+    /// Heading.
+    pub title: String,
+    /// Processes by name.
+    pub processes: IndexMap<String, Process>,
+    /// Domains.
+    pub domains: Vec<LoadedDomain>,
+    /// Corners.
+    pub corners: Vec<Corner>,
+    /// Schemes.
+    pub schemes: Vec<Scheme>,
+    /// Limits.
+    pub limits: Limits,
+    /// Where messages about schemes point.
+    pub origin: Arc<str>,
+    /// Remarks of the readers.
+    pub notes: Vec<Note>,
+}
+
+/// Reads the cards of a process.
+///
+/// # Errors
+/// See [`Process::read`].
+pub fn load_process(
+    name: &str,
+    spec: &ProcessSpec,
+    aliases: &IndexMap<String, String>,
+    folder: &Path,
+) -> Result<Process, ReadError> {
+    let sources = spec.files.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
+    let mut options = DeckOptions { scale_m: spec.scale_m, ..DeckOptions::default() };
+    options.section.clone_from(&spec.section);
+    options.skip_includes.clone_from(&spec.skip_includes);
+    let mut p = Process::read(name, &sources, &options)?;
+    for (a, b) in aliases {
+        p = p.alias(a, b);
+    }
+    Ok(p)
+}
+
+/// Reads everything a study names; `folder` is where its relative paths start.
+///
+/// # Errors
+/// The first file that cannot be read or understood, or a domain that cannot be built.
+pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, ReadError> {
+    let mut notes = Vec::new();
+    let mut processes = IndexMap::new();
+    for (name, spec) in &study.process {
+        let p = load_process(name, spec, &study.models, folder)?;
+        notes.extend(p.deck.notes.iter().cloned());
+        processes.insert(name.clone(), p);
+    }
+    let sources =
+        study.cells.netlists.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
+    let mut options = DeckOptions::default();
+    options.scale_m = study.cells.scale_m;
+    let deck = read_deck(&sources, &options)?;
+    notes.extend(deck.notes.iter().cloned());
+    let first = processes.values().next();
+    let is_device = |name: &str| first.is_some_and(|p| p.defines(name));
+    let reader = CellReader { deck: &deck, rails: &study.cells.rails, is_device: &is_device };
+    let mut netlists: IndexMap<&[String], crate::read::verilog::Netlist> = IndexMap::new();
+    let mut domains = Vec::new();
+    for d in &study.domain {
+        let counts: InstanceCounts = match &d.counts {
+            Some(f) => read_counts_csv(&Source::open(&folder.join(f))?)?,
+            None => {
+                if !netlists.contains_key(d.verilog.as_slice()) {
+                    let sources =
+                        d.verilog.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
+                    netlists.insert(&d.verilog, read_verilog(&sources)?);
+                }
+                netlists[d.verilog.as_slice()].counts_under(d.top.as_deref(), &d.path)?
+            }
+        };
+        let block = build_block(&counts, &reader, &d.policy, &d.weights(), &mut notes)?;
+        let summary = DomainSummary {
+            name: d.name.clone(),
+            instances: block.instances(),
+            computed: block.covered(),
+            uncovered: block.uncovered.clone(),
+        };
+        domains.push(LoadedDomain { name: d.name.clone(), block, summary });
+    }
+    let mut distinct: Vec<Note> = Vec::new();
+    for n in notes {
+        if !distinct.contains(&n) {
+            distinct.push(n);
+        }
+    }
+    Ok(Loaded {
+        title: study.title.clone(),
+        processes,
+        domains,
+        corners: study.corners(),
+        schemes: study.scheme.clone(),
+        limits: study.limits.clone(),
+        origin: origin.into(),
+        notes: distinct,
+    })
+}

@@ -1,0 +1,289 @@
+//! Study files: one run described in TOML. Unknown keys are refused with the nearest known one.
+
+use indexmap::IndexMap;
+use serde::{Deserialize, Serialize};
+
+use crate::read::source::{Place, ReadError, Source, nearest};
+use crate::block::{Policy, StateWeights};
+use crate::cell::RailNames;
+use crate::corner::Corner;
+use crate::standby::Scheme;
+
+/// One run: domains × schemes × corners. Paths are relative to the study file.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Study {
+    /// Heading of reports.
+    #[serde(default)]
+    pub title: String,
+    /// Cards of each process corner.
+    pub process: IndexMap<String, ProcessSpec>,
+    /// Names netlists use for models → names in the cards.
+    #[serde(default)]
+    pub models: IndexMap<String, String>,
+    /// Transistor netlists of the cells.
+    pub cells: CellsSpec,
+    /// Corners one by one.
+    #[serde(default)]
+    pub corner: Vec<Corner>,
+    /// Corners as all combinations.
+    #[serde(default)]
+    pub grid: Option<Grid>,
+    /// Domains.
+    pub domain: Vec<DomainSpec>,
+    /// Schemes; every one is tried on every domain.
+    pub scheme: Vec<Scheme>,
+    /// Limits.
+    #[serde(default)]
+    pub limits: Limits,
+}
+
+/// Where the cards of one process corner are.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct ProcessSpec {
+    /// SPICE files, read in order.
+    pub files: Vec<String>,
+    /// `.lib` section to take.
+    #[serde(default)]
+    pub section: Option<String>,
+    /// `.include` paths to skip, as the files write them.
+    #[serde(default)]
+    pub skip_includes: Vec<String>,
+    /// Metres per unit of length, when the files have no `.option scale`.
+    #[serde(default)]
+    pub scale_m: Option<f64>,
+}
+
+/// Where the cells are.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct CellsSpec {
+    /// SPICE or CDL files.
+    pub netlists: Vec<String>,
+    /// Metres per unit of length, when the files have no `.option scale`.
+    #[serde(default)]
+    pub scale_m: Option<f64>,
+    /// Names of rails and wells.
+    #[serde(default)]
+    pub rails: RailNames,
+}
+
+/// All combinations of these.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Grid {
+    /// Processes.
+    pub process: Vec<String>,
+    /// Supplies, V.
+    pub vdd_v: Vec<f64>,
+    /// Temperatures, degrees Celsius.
+    pub temp_c: Vec<f64>,
+}
+
+/// A domain and where its instance counts come from: `verilog` (with `top`, `path`) or `counts`.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct DomainSpec {
+    /// Name in reports.
+    pub name: String,
+    /// Structural Verilog files.
+    #[serde(default)]
+    pub verilog: Vec<String>,
+    /// Top module, when it is not the only one.
+    #[serde(default)]
+    pub top: Option<String>,
+    /// Instance path of the domain below the top; the whole top when empty.
+    #[serde(default)]
+    pub path: String,
+    /// CSV file with `cell,count`.
+    #[serde(default)]
+    pub counts: Option<String>,
+    /// Masters without netlist: pattern → policy.
+    #[serde(default)]
+    pub policy: IndexMap<String, Policy>,
+    /// State weights: cell → condition → weight.
+    #[serde(default)]
+    pub states: IndexMap<String, IndexMap<String, f64>>,
+}
+
+impl DomainSpec {
+    /// Weights in the form blocks take.
+    pub fn weights(&self) -> IndexMap<String, StateWeights> {
+        self.states.iter().map(|(k, v)| (k.clone(), StateWeights::Given(v.clone()))).collect()
+    }
+}
+
+/// Limits that results are held against.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Limits {
+    /// Largest gate-to-drain or gate-to-source voltage of a switch, V; the foundry's number.
+    #[serde(default)]
+    pub oxide_v: Option<f64>,
+    /// Largest standby current of any domain, A.
+    #[serde(default)]
+    pub standby_a: Option<f64>,
+}
+
+/// Reads a study.
+///
+/// # Errors
+/// Text that is not TOML, an unknown or missing key, a value of the wrong kind: with line, column and the nearest key.
+pub fn read_study(source: &Source) -> Result<Study, ReadError> {
+    if source.text.trim().is_empty() {
+        return Err(source.nothing("study"));
+    }
+    let study: Study = toml::from_str(&source.text).map_err(|e| {
+        let at = Place::of_offset(&source.path, &source.text, e.span().map_or(0, |s| s.start));
+        let message = e.message().replace('\n', "; ");
+        if let Some(rest) = message.strip_prefix("unknown field `") {
+            let name = rest.split('`').next().unwrap_or("").to_owned();
+            let known: Vec<&str> = rest.split('`').skip(2).step_by(2).collect();
+            let near = nearest(&name, known.iter().copied()).or_else(|| Some(known.join("`, `")));
+            return ReadError::Unknown { at, kind: "key", name, nearest: near };
+        }
+        if let Some(rest) = message.strip_prefix("unknown variant `") {
+            let name = rest.split('`').next().unwrap_or("").to_owned();
+            let known: Vec<&str> = rest.split('`').skip(2).step_by(2).collect();
+            let near = nearest(&name, known.iter().copied()).or_else(|| Some(known.join("`, `")));
+            return ReadError::Unknown { at, kind: "value", name, nearest: near };
+        }
+        ReadError::Syntax { at, found: message, wanted: "see the study keys in the documentation".into() }
+    })?;
+    check(&study, source)?;
+    Ok(study)
+}
+
+fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
+    let at = || Place::new(&source.path, 1, 1);
+    let empty = |found: &str, wanted: &str| {
+        Err(ReadError::Syntax { at: at(), found: found.into(), wanted: wanted.into() })
+    };
+    if study.domain.is_empty() {
+        return empty("the study has no domain", "want at least one [[domain]]");
+    }
+    if study.scheme.is_empty() {
+        return empty("the study has no scheme", "want at least one [[scheme]]");
+    }
+    if study.corners().is_empty() {
+        return empty("the study has no corner", "want [[corner]] tables or a [grid] with three lists that are not empty");
+    }
+    for c in study.corners() {
+        if !study.process.contains_key(&c.process) {
+            return Err(ReadError::Unknown {
+                at: at(),
+                kind: "process",
+                name: c.process.clone(),
+                nearest: nearest(&c.process, study.process.keys().map(String::as_str)),
+            });
+        }
+        c.check().map_err(|e| ReadError::Range {
+            at: at(),
+            name: format!("{} of corner `{}`", e.what, e.corner),
+            value: e.value,
+            wanted: e.wanted,
+        })?;
+    }
+    for s in &study.scheme {
+        s.check().map_err(|e| ReadError::Range {
+            at: at(),
+            name: format!("{} of scheme `{}`", e.what, e.scheme),
+            value: e.value,
+            wanted: e.wanted,
+        })?;
+    }
+    for d in &study.domain {
+        if d.verilog.is_empty() == d.counts.is_none() {
+            return empty(
+                &format!("domain `{}` names {} sources of counts", d.name, if d.counts.is_none() { "no" } else { "two" }),
+                "want either `verilog` or `counts`",
+            );
+        }
+    }
+    let twice = |what: &str, names: Vec<&str>| {
+        for (i, n) in names.iter().enumerate() {
+            if names[..i].contains(n) {
+                return empty(&format!("{what} `{n}` stands twice"), "want each name once");
+            }
+        }
+        Ok(())
+    };
+    twice("domain", study.domain.iter().map(|d| d.name.as_str()).collect())?;
+    twice("scheme", study.scheme.iter().map(|d| d.name.as_str()).collect())?;
+    let corners = study.corners();
+    twice("corner", corners.iter().map(|d| d.name.as_str()).collect())
+}
+
+impl Study {
+    /// All corners: those given one by one, then the grid.
+    pub fn corners(&self) -> Vec<Corner> {
+        let mut all = self.corner.clone();
+        if let Some(g) = &self.grid {
+            for process in &g.process {
+                for &vdd_v in &g.vdd_v {
+                    for &temp_c in &g.temp_c {
+                        let name = format!("{process} {vdd_v:.2} V {temp_c:.0} °C");
+                        all.push(Corner { name, process: process.clone(), vdd_v, temp_c });
+                    }
+                }
+            }
+        }
+        all
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    const GOOD: &str = r#"
+title = "t"
+[process.tt]
+files = ["a.lib"]
+[cells]
+netlists = ["c.spice"]
+[grid]
+process = ["tt"]
+vdd_v = [1.1]
+temp_c = [25]
+[[domain]]
+name = "d"
+counts = "n.csv"
+[domain.policy]
+"FILL*" = "zero"
+"TIE" = { alias = "inv" }
+[[scheme]]
+name = "on"
+"#;
+
+    fn read(text: &str) -> Result<Study, ReadError> {
+        read_study(&Source::from_text("s.toml", text))
+    }
+
+    #[test]
+    fn a_study_reads_and_its_grid_unfolds() {
+        let s = read(GOOD).expect("good");
+        assert_eq!(s.corners().len(), 1);
+        assert_eq!(s.domain[0].policy["TIE"], Policy::Alias("inv".into()));
+    }
+
+    #[test]
+    fn mistakes_are_named_with_place_and_suggestion() {
+        for (from, to, wanted) in [
+            ("title", "titel", "s.toml:2:1: key `titel` is not defined; did you mean `title`?"),
+            ("netlists", "netlist", "did you mean `netlists`?"),
+            ("\"zero\"", "\"zer\"", "did you mean `zero`?"),
+            ("temp_c = [25]", "temp_c = [2500]", "temperature of corner"),
+            ("vdd_v = [1.1]", "vdd_v = []", "no corner"),
+            ("process = [\"tt\"]", "process = [\"ttt\"]", "process `ttt` is not defined; did you mean `tt`?"),
+            ("counts = \"n.csv\"", "top = \"x\"", "names no sources of counts"),
+            ("name = \"on\"", "nam = \"on\"", "did you mean `name`?"),
+            ("[[scheme]]", "[[scheme", "s.toml:"),
+        ] {
+            let e = read(&GOOD.replace(from, to)).expect_err(to).to_string();
+            assert!(e.contains(wanted), "{to}: {e}");
+        }
+        assert!(read("").expect_err("empty").to_string().contains("empty"));
+    }
+}
