@@ -1,6 +1,8 @@
 //! Two published netlists of chips count as they are known to: totals from the list that came with them, counts
 //! per master and sums from a script that shares no code with the reader.
 
+#![expect(clippy::print_stdout, clippy::unwrap_used, reason = "helpers of tests are not seen as tests")]
+
 use std::path::{Path, PathBuf};
 
 use hushrail::read::counts::InstanceCounts;

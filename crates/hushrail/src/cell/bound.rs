@@ -22,7 +22,7 @@ use crate::read::source::ReadError;
 pub enum CellError {
     /// Kirchhoff's law is not met within the limits.
     #[error(
-        "no operating point for cell `{cell}` in state {state} at {temp_c:.1} °C: residual {residual_a:.3e} A after \
+        "no operating point for cell `{cell}` in state {state} at {temp_c:.1} °C with rails at {supply_v} and {ground_v} V: residual {residual_a:.3e} A after \
          {steps} steps (limit {allowed_a:.1e} A), worst at node `{node}`"
     )]
     Unbalanced {
@@ -32,6 +32,10 @@ pub enum CellError {
         state: String,
         /// Temperature, degrees Celsius.
         temp_c: f64,
+        /// Supply rail, V.
+        supply_v: f64,
+        /// Ground rail, V.
+        ground_v: f64,
         /// The worst node.
         node: String,
         /// Its imbalance, A.
@@ -336,6 +340,8 @@ impl BoundCell {
             cell: cell.name.to_string(),
             state: state.label.clone(),
             temp_c: self.temp.celsius(),
+            supply_v: levels.supply_v,
+            ground_v: levels.ground_v,
             node: cell.nodes[e.node].to_string(),
             residual_a: e.residual_a,
             allowed_a: e.allowed_a,

@@ -64,6 +64,8 @@ pub struct Stamp {
     pub nodes: [Node; 4],
     /// Current into each, A.
     pub current: [f64; 4],
+    /// Largest single branch current at each, A: what meets there before it cancels.
+    pub gross: [f64; 4],
     /// `slope[t][u]`: derivative of the current into terminal `t` to the voltage of terminal `u`, S.
     pub slope: [[f64; 4]; 4],
 }
@@ -99,6 +101,18 @@ pub fn bias_of(nodes: &[Node; 4], v: &[Volt]) -> Bias<f64> {
     }
 }
 
+/// Largest branch at drain, gate, source and body, of magnitudes.
+fn gross(b: &Branches<f64>) -> [f64; 4] {
+    let db = b.impact_db.max(b.gidl_db).max(b.junction_db);
+    let sb = b.impact_sb.max(b.gidl_sb).max(b.junction_sb);
+    [
+        b.channel_ds.max(db).max(b.gate_gd),
+        b.gate_gd.max(b.gate_gs).max(b.gate_gb),
+        b.channel_ds.max(sb).max(b.gate_gs),
+        db.max(sb).max(b.gate_gb),
+    ]
+}
+
 /// Spreads derivatives to (vgs, vds, vbs) over the four terminals.
 fn spread(d: [f64; 3]) -> [f64; 4] {
     [d[1], d[0], -(d[0] + d[1] + d[2]), d[2]]
@@ -110,8 +124,10 @@ impl Network {
         match e {
             Element::Transistor(p) => {
                 let bias = bias_of(&p.nodes, v);
-                let t = p.device.branches_dual(bias.dual()).terminals();
-                let mut s = Stamp { n: 4, nodes: p.nodes, current: [0.0; 4], slope: [[0.0; 4]; 4] };
+                let b = p.device.branches_dual(bias.dual());
+                let t = b.terminals();
+                let gross = gross(&b.map(|x| x.v.abs() * p.count));
+                let mut s = Stamp { n: 4, nodes: p.nodes, current: [0.0; 4], gross, slope: [[0.0; 4]; 4] };
                 for (i, x) in t.iter().enumerate() {
                     s.current[i] = x.v * p.count;
                     s.slope[i] = spread(x.d).map(|d| d * p.count);
@@ -142,8 +158,13 @@ impl Network {
     }
 
     fn two(nodes: [Node; 2], i: f64, g: f64) -> Stamp {
-        let mut s = Stamp { n: 2, nodes: [nodes[0], nodes[1], 0, 0], current: [0.0; 4], slope: [[0.0; 4]; 4] };
-        s.current = [i, -i, 0.0, 0.0];
+        let mut s = Stamp {
+            n: 2,
+            nodes: [nodes[0], nodes[1], 0, 0],
+            current: [i, -i, 0.0, 0.0],
+            gross: [i.abs(), i.abs(), 0.0, 0.0],
+            slope: [[0.0; 4]; 4],
+        };
         s.slope[0] = [g, -g, 0.0, 0.0];
         s.slope[1] = [-g, g, 0.0, 0.0];
         s

@@ -203,7 +203,7 @@ impl<'a> Solver<'a> {
                     continue;
                 }
                 w.f[row] += s.current[t];
-                w.top[row] = w.top[row].max(s.current[t].abs());
+                w.top[row] = w.top[row].max(s.gross[t]);
                 w.noise[row] += s.slope[t][t].abs() * span * (4.0 * f64::EPSILON);
                 for u in 0..s.n {
                     let col = w.local[s.nodes[u]];
@@ -231,54 +231,35 @@ impl<'a> Solver<'a> {
     /// Newton on one component; returns whether anything had to move.
     fn component(&mut self, c: &Component, v: &mut [Volt], w: &mut Workspace) -> Result<bool, Unbalanced> {
         let start: Vec<Volt> = c.nodes.iter().map(|&i| v[i]).collect();
-        match self.newton(c, v, w, self.options.newton_steps, false) {
-            Ok(moved) => return Ok(moved),
-            Err(_) => self.effort.transient += 1,
+        let reset = |v: &mut [Volt]| {
+            for (&i, s) in c.nodes.iter().zip(&start) {
+                v[i] = *s;
+            }
+        };
+        if let Ok(moved) = self.newton(c, v, w) {
+            return Ok(moved);
         }
-        for (&i, s) in c.nodes.iter().zip(&start) {
-            v[i] = *s;
+        self.effort.transient += 1;
+        reset(v);
+        if self.transient(c, v, w).is_ok() {
+            return Ok(true);
         }
-        match self.newton(c, v, w, self.options.transient_steps, true) {
-            Ok(_) => return Ok(true),
-            Err(_) => self.effort.bisection += 1,
-        }
+        self.effort.bisection += 1;
+        reset(v);
         self.bisect(c, v, w);
-        self.newton(c, v, w, self.options.newton_steps, true).map(|_| true)
+        self.newton(c, v, w).map(|_| true)
     }
 
-    fn newton(
-        &mut self,
-        c: &Component,
-        v: &mut [Volt],
-        w: &mut Workspace,
-        limit: usize,
-        transient: bool,
-    ) -> Result<bool, Unbalanced> {
+    fn newton(&mut self, c: &Component, v: &mut [Volt], w: &mut Workspace) -> Result<bool, Unbalanced> {
         let n = c.nodes.len();
-        let mut drag: f64 = if transient { 1.0 } else { 0.0 };
-        let mut last = f64::INFINITY;
         let mut worst = (0, f64::INFINITY, 0.0);
-        for step in 0..limit {
+        for step in 0..self.options.newton_steps {
             self.assemble(c, v, w);
             worst = self.worst(n, w);
             if worst.1 <= worst.2 {
                 return Ok(step > 0);
             }
             self.effort.steps += 1;
-            if transient {
-                let now = worst.1 / worst.2;
-                drag = if now < last { drag / 3.0 } else { (drag * 4.0).min(1e6) };
-                if drag < 1e-6 {
-                    drag = 0.0;
-                }
-                last = now;
-            }
-            if drag > 0.0 {
-                for j in 0..n {
-                    let own: f64 = w.excess[j].abs() + (0..n).map(|k| w.a[k * n + j].abs()).sum::<f64>();
-                    w.excess[j] += drag * own + 1e-30;
-                }
-            }
             for x in &mut w.f[..n] {
                 *x = -*x;
             }
@@ -297,7 +278,58 @@ impl<'a> Solver<'a> {
                 self.rereference(&mut v[node]);
             }
         }
-        Err(Unbalanced { node: c.nodes[worst.0], residual_a: worst.1, allowed_a: worst.2, steps: limit })
+        Err(self.unbalanced(c, worst, self.options.newton_steps))
+    }
+
+    fn unbalanced(&self, c: &Component, worst: (usize, f64, f64), steps: usize) -> Unbalanced {
+        Unbalanced { node: c.nodes[worst.0], residual_a: worst.1, allowed_a: worst.2, steps }
+    }
+
+    /// Follows the circuit's own motion `C·dV/dt = −F(V)` with equal capacitances by implicit Euler, the time step growing
+    /// until it is Newton's method. Unlike Newton it leaves a state that has just ceased to exist, because the step is only
+    /// taken while `C/h + J` keeps the sign that the start of the motion has.
+    fn transient(&mut self, c: &Component, v: &mut [Volt], w: &mut Workspace) -> Result<bool, Unbalanced> {
+        let n = c.nodes.len();
+        let mut rate = f64::NAN;
+        let mut worst = (0, f64::INFINITY, 0.0);
+        for _ in 0..self.options.transient_steps {
+            self.assemble(c, v, w);
+            worst = self.worst(n, w);
+            if worst.1 <= worst.2 {
+                return Ok(true);
+            }
+            if rate.is_nan() {
+                // the first explicit step would move the fastest node by 50 mV
+                rate = w.f[..n].iter().fold(0.0f64, |m, f| m.max(f.abs())) / 0.05;
+            }
+            w.fill_diagonal(n);
+            let (a, f) = (w.a[..n * n].to_vec(), w.f[..n].to_vec());
+            loop {
+                self.effort.steps += 1;
+                w.a[..n * n].copy_from_slice(&a);
+                for k in 0..n {
+                    w.a[k * n + k] += rate;
+                    w.f[k] = -f[k];
+                }
+                let sign = solve_pivoting(n, &mut w.a[..n * n], &mut w.f[..n]);
+                let far = w.f[..n].iter().fold(0.0f64, |m, x| m.max(x.abs()));
+                if sign > 0.0 && far.is_finite() && far < 0.1 {
+                    if far < 0.03 {
+                        rate *= 0.3;
+                    }
+                    break;
+                }
+                rate *= 3.0;
+                if !(rate < 1e60) {
+                    return Err(self.unbalanced(c, worst, self.options.transient_steps));
+                }
+            }
+            for (k, &node) in c.nodes.iter().enumerate() {
+                v[node].offset += w.f[k];
+                self.rereference(&mut v[node]);
+            }
+        }
+        Err(self.unbalanced(c, worst, self.options.transient_steps))
     }
 
     /// The step in volts from the Newton step, taken in the variable in which channels are linear.
