@@ -1,11 +1,24 @@
-//! Python binding of `hushrail`: the private module `hushrail._core`.
+//! The Python binding of hushrail: conversion, errors, the interpreter lock and interrupts, nothing else.
 
-use pyo3::prelude::pymodule;
+mod device;
+mod error;
+mod run;
+mod study;
 
-/// What the Python package takes from the core crate.
+use pyo3::prelude::*;
+
+/// The compiled core of hushrail.
 #[pymodule(gil_used = false)]
 mod _core {
+    use super::{Bound, PyModule, PyModuleMethods, PyResult};
+
     #[pymodule_export]
-    #[expect(non_upper_case_globals, reason = "Python spells it so")]
-    const __version__: &str = env!("CARGO_PKG_VERSION");
+    use crate::device::{Device, Process};
+    #[pymodule_export]
+    use crate::study::{cell_table, compare, count, estimate};
+
+    #[pymodule_init]
+    fn init(m: &Bound<'_, PyModule>) -> PyResult<()> {
+        m.add("__version__", env!("CARGO_PKG_VERSION"))
+    }
 }

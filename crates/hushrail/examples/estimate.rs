@@ -33,7 +33,7 @@ fn run(path: &Path) -> Result<bool, ReadError> {
     let result = estimate(&loaded, &SolveOptions::default(), &mut |_, _| ControlFlow::Continue(()));
     for p in &result.points {
         println!(
-            "{:<10} {:<18} {:<16} {:>11.4e} A  ungated {:>11.4e} A  saved {:>8.4} %  rails {:.4} / {:.4} V",
+            "{:<10} {:<18} {:<16} {:>11.4e} A  ungated {:>11.4e} A  saved {:>8.4} %  rails {:.4} / {:.4} V  {} evaluations",
             p.domain,
             p.scheme,
             p.corner,
@@ -41,7 +41,8 @@ fn run(path: &Path) -> Result<bool, ReadError> {
             p.ungated_current_a,
             100.0 * p.saving,
             p.asleep.virtual_supply_v,
-            p.asleep.virtual_ground_v
+            p.asleep.virtual_ground_v,
+            p.asleep.evaluations
         );
     }
     for f in &result.failures {

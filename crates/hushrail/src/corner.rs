@@ -38,8 +38,7 @@ impl Corner {
     /// # Errors
     /// A supply outside 0.05 V to 20 V, or a temperature outside the range of the equations.
     pub fn check(&self) -> Result<Kelvin, CornerError> {
-        let wrong =
-            |what, value, wanted| CornerError { corner: self.name.clone(), what, value, wanted };
+        let wrong = |what, value, wanted| CornerError { corner: self.name.clone(), what, value, wanted };
         if !(self.vdd_v >= 0.05 && self.vdd_v <= 20.0) {
             return Err(wrong("supply", format!("{} V", self.vdd_v), "want 0.05 V to 20 V".into()));
         }

@@ -3,8 +3,8 @@
 use std::path::PathBuf;
 use std::sync::Arc;
 
-use hushrail::device::process::{Process, Request};
 use hushrail::device::Bias;
+use hushrail::device::process::{Process, Request};
 use hushrail::physics::Kelvin;
 use hushrail::read::{DeckOptions, Place, Source};
 

@@ -7,6 +7,7 @@
 use std::path::{Path, PathBuf};
 use std::process::ExitCode;
 use std::sync::Arc;
+use std::sync::atomic::{AtomicBool, AtomicUsize};
 use std::time::Instant;
 
 use hushrail::cell::{CellReader, RailNames};
@@ -94,9 +95,13 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     missing.dedup();
     let read_s = begin.elapsed().as_secs_f64();
     let solving = Instant::now();
-    let comparison =
-        Comparison { cells: &cells, processes: &processes, floor_s: setup.floor_s, options: SolveOptions::default() };
-    let result = comparison.run(&rows, &corners)?;
+    let comparison = Comparison {
+        cells: &cells,
+        processes: &processes,
+        floor_s: setup.floor_s,
+        options: SolveOptions::default(),
+    };
+    let result = comparison.run(&rows, &corners, &AtomicUsize::new(0), &AtomicBool::new(false))?;
     let solve_s = solving.elapsed().as_secs_f64();
 
     println!("{} cells, {} rows, {} predicted", cells.len(), rows.len(), result.rows.len());

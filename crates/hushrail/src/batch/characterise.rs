@@ -1,5 +1,6 @@
 //! Leakage tables: cells × corners × states, every terminal, by mechanism.
 
+use std::path::PathBuf;
 use std::sync::Arc;
 use std::sync::atomic::Ordering;
 
@@ -7,13 +8,16 @@ use indexmap::IndexMap;
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
+use super::load::Library;
 use super::run::Failure;
+use super::study::read_study;
 use super::watch::{Progress, watched};
 use crate::cell::{BoundCell, Cell, DeviceShelf, Levels, Role};
 use crate::circuit::newton::{SolveOptions, Workspace};
 use crate::corner::Corner;
 use crate::device::process::Process;
 use crate::read::deck::Note;
+use crate::read::source::{Place, ReadError, Source};
 
 /// One state of one cell at one corner.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -135,4 +139,57 @@ fn one(
         });
     }
     Ok((rows, shelf.notes))
+}
+
+/// A leakage table asked for through a study file.
+#[derive(Debug, Clone, Default)]
+pub struct TableRequest {
+    /// The study; its domains and schemes are not needed.
+    pub study: PathBuf,
+    /// Patterns of cell names; all cells when empty.
+    pub cells: Vec<String>,
+    /// Conductance across junctions, S; zero unless wanted.
+    pub floor_s: f64,
+}
+
+/// Why a table could not be made at all.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[non_exhaustive]
+pub enum TableError {
+    /// A file or a cell.
+    #[error(transparent)]
+    Read(#[from] ReadError),
+}
+
+/// Reads the study and solves its cells at its corners.
+///
+/// # Errors
+/// A file that cannot be read, a pattern that fits no cell, or a study without corner. Cells that fail at a corner are listed
+/// in the table.
+pub fn table_of_study(
+    request: &TableRequest,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<LeakageTable, TableError> {
+    let source = Source::open(&request.study)?;
+    let study = read_study(&source)?;
+    let library = Library::load(&study, &source.folder)?;
+    if library.corners.is_empty() {
+        return Err(ReadError::Syntax {
+            at: Place::new(&source.path, 1, 1),
+            found: "the study has no corner".into(),
+            wanted: "want [[corner]] tables or a [grid]".into(),
+        }
+        .into());
+    }
+    let mut notes = library.notes.clone();
+    let cells = library.cells(&request.cells, &mut notes)?;
+    let mut table =
+        characterise(&cells, &library.processes, &library.corners, request.floor_s, options, progress);
+    for n in notes.into_iter().rev() {
+        if !table.notes.contains(&n) {
+            table.notes.insert(0, n);
+        }
+    }
+    Ok(table)
 }

@@ -6,15 +6,16 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
+use super::study::{Limits, ProcessSpec, Study};
+use crate::block::build::fits_pattern;
 use crate::block::{Block, Uncovered, build_block};
-use crate::cell::CellReader;
+use crate::cell::{Cell, CellReader, RailNames};
 use crate::corner::Corner;
 use crate::device::process::Process;
 use crate::read::counts::{InstanceCounts, read_counts_csv};
-use crate::read::deck::Note;
-use crate::read::source::{ReadError, Source};
+use crate::read::deck::{Deck, Note};
+use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
-use super::study::{Limits, ProcessSpec, Study};
 use crate::read::verilog::read_verilog;
 use crate::standby::Scheme;
 
@@ -84,27 +85,97 @@ pub fn load_process(
     Ok(p)
 }
 
+/// Cards, cell netlists and corners: what is needed before any domain.
+#[derive(Debug)]
+pub struct Library {
+    /// Processes by name.
+    pub processes: IndexMap<String, Process>,
+    /// The cell netlists.
+    pub deck: Deck,
+    /// Names of rails and wells.
+    pub rails: RailNames,
+    /// Corners.
+    pub corners: Vec<Corner>,
+    /// Remarks of the readers.
+    pub notes: Vec<Note>,
+}
+
+impl Library {
+    /// Reads the cards and netlists of a study.
+    ///
+    /// # Errors
+    /// The first file that cannot be read or understood.
+    pub fn load(study: &Study, folder: &Path) -> Result<Self, ReadError> {
+        let mut notes = Vec::new();
+        let mut processes = IndexMap::new();
+        for (name, spec) in &study.process {
+            let p = load_process(name, spec, &study.models, folder)?;
+            notes.extend(p.deck.notes.iter().cloned());
+            processes.insert(name.clone(), p);
+        }
+        let sources = study
+            .cells
+            .netlists
+            .iter()
+            .map(|f| Source::open(&folder.join(f)))
+            .collect::<Result<Vec<_>, _>>()?;
+        let options = DeckOptions { scale_m: study.cells.scale_m, ..DeckOptions::default() };
+        let deck = read_deck(&sources, &options)?;
+        notes.extend(deck.notes.iter().cloned());
+        Ok(Self { processes, deck, rails: study.cells.rails.clone(), corners: study.corners(), notes })
+    }
+
+    /// Calls `f` with a reader of the cells.
+    pub fn with_reader<T>(&self, f: impl FnOnce(&CellReader<'_>) -> T) -> T {
+        let first = self.processes.values().next();
+        let is_device = |name: &str| first.is_some_and(|p| p.defines(name));
+        f(&CellReader { deck: &self.deck, rails: &self.rails, is_device: &is_device })
+    }
+
+    /// Cells whose names fit one of the patterns (`*` for any run); all cells without patterns.
+    ///
+    /// # Errors
+    /// A pattern that fits no cell, or a cell that cannot be read.
+    pub fn cells(&self, patterns: &[String], notes: &mut Vec<Note>) -> Result<Vec<Arc<Cell>>, ReadError> {
+        for p in patterns {
+            if !self.deck.subckts.values().any(|s| fits_pattern(p, &s.name)) {
+                let at = Place::new(self.deck.files.first().unwrap_or(&Arc::from("netlist")), 1, 1);
+                let near = nearest(p, self.deck.subckts.values().map(|s| &*s.name));
+                return Err(ReadError::Unknown { at, kind: "cell", name: p.clone(), nearest: near });
+            }
+        }
+        self.with_reader(|reader| {
+            self.deck
+                .subckts
+                .values()
+                .filter(|s| patterns.is_empty() || patterns.iter().any(|p| fits_pattern(p, &s.name)))
+                .map(|s| reader.cell(&s.name, notes).map(Arc::new))
+                .collect()
+        })
+    }
+}
+
 /// Reads everything a study names; `folder` is where its relative paths start.
 ///
 /// # Errors
-/// The first file that cannot be read or understood, or a domain that cannot be built.
+/// A study without domain, scheme or corner, the first file that cannot be read or understood, or a domain that cannot be
+/// built.
 pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, ReadError> {
-    let mut notes = Vec::new();
-    let mut processes = IndexMap::new();
-    for (name, spec) in &study.process {
-        let p = load_process(name, spec, &study.models, folder)?;
-        notes.extend(p.deck.notes.iter().cloned());
-        processes.insert(name.clone(), p);
+    for (empty, what) in [
+        (study.domain.is_empty(), "a [[domain]] table"),
+        (study.scheme.is_empty(), "a [[scheme]] table"),
+        (study.corners().is_empty(), "[[corner]] tables or a [grid] with three lists that are not empty"),
+    ] {
+        if empty {
+            return Err(ReadError::Syntax {
+                at: Place::new(&Arc::from(origin), 1, 1),
+                found: format!("the study lacks {what}"),
+                wanted: "want at least one".into(),
+            });
+        }
     }
-    let sources =
-        study.cells.netlists.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
-    let mut options = DeckOptions::default();
-    options.scale_m = study.cells.scale_m;
-    let deck = read_deck(&sources, &options)?;
-    notes.extend(deck.notes.iter().cloned());
-    let first = processes.values().next();
-    let is_device = |name: &str| first.is_some_and(|p| p.defines(name));
-    let reader = CellReader { deck: &deck, rails: &study.cells.rails, is_device: &is_device };
+    let library = Library::load(study, folder)?;
+    let mut notes = library.notes.clone();
     let mut netlists: IndexMap<&[String], crate::read::verilog::Netlist> = IndexMap::new();
     let mut domains = Vec::new();
     for d in &study.domain {
@@ -112,14 +183,18 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
             Some(f) => read_counts_csv(&Source::open(&folder.join(f))?)?,
             None => {
                 if !netlists.contains_key(d.verilog.as_slice()) {
-                    let sources =
-                        d.verilog.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
+                    let sources = d
+                        .verilog
+                        .iter()
+                        .map(|f| Source::open(&folder.join(f)))
+                        .collect::<Result<Vec<_>, _>>()?;
                     netlists.insert(&d.verilog, read_verilog(&sources)?);
                 }
                 netlists[d.verilog.as_slice()].counts_under(d.top.as_deref(), &d.path)?
             }
         };
-        let block = build_block(&counts, &reader, &d.policy, &d.weights(), &mut notes)?;
+        let block = library
+            .with_reader(|reader| build_block(&counts, reader, &d.policy, &d.weights(), &mut notes))?;
         let summary = DomainSummary {
             name: d.name.clone(),
             instances: block.instances(),
@@ -136,9 +211,9 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
     }
     Ok(Loaded {
         title: study.title.clone(),
-        processes,
+        processes: library.processes,
         domains,
-        corners: study.corners(),
+        corners: library.corners,
         schemes: study.scheme.clone(),
         limits: study.limits.clone(),
         origin: origin.into(),

@@ -1,12 +1,13 @@
 //! Studies in parallel: loading what a study names, planning its points, running them.
 
 pub mod characterise;
+pub mod compare;
 pub mod load;
 pub mod run;
 pub mod study;
 pub mod watch;
 
 pub use characterise::{LeakageRow, characterise};
-pub use load::{Loaded, LoadedDomain, load_study};
+pub use load::{Library, Loaded, LoadedDomain, load_study};
 pub use run::{Estimate, PointResult, estimate};
 pub use watch::Progress;

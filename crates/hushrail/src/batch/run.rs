@@ -171,17 +171,24 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
             return part;
         }
     };
-    let mut one =
-        |scheme: &Scheme| settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop);
+    let mut one = |scheme: &Scheme| {
+        settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop)
+    };
     let reference = one(&Scheme::ungated("ungated"));
     for scheme in &loaded.schemes {
-        let asleep = if scheme.is_ungated() && scheme.overhead_a == 0.0 { reference.clone() } else { one(scheme) };
+        let asleep =
+            if scheme.is_ungated() && scheme.overhead_a == 0.0 { reference.clone() } else { one(scheme) };
         match (&reference, asleep) {
             (Ok(r), Ok(a)) => {
                 let mut limits = Vec::new();
                 let mut hold = |name: &str, value: f64, allowed: Option<f64>| {
                     if let Some(allowed) = allowed {
-                        limits.push(LimitCheck { limit: name.into(), value, allowed, holds: value <= allowed });
+                        limits.push(LimitCheck {
+                            limit: name.into(),
+                            value,
+                            allowed,
+                            holds: value <= allowed,
+                        });
                     }
                 };
                 hold("oxide_v", a.oxide_v, loaded.limits.oxide_v);
@@ -213,4 +220,3 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
     part.notes = shelf.notes;
     part
 }
-

@@ -3,10 +3,10 @@
 use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
-use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::block::{Policy, StateWeights};
 use crate::cell::RailNames;
 use crate::corner::Corner;
+use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::standby::Scheme;
 
 /// One run: domains × schemes × corners. Paths are relative to the study file.
@@ -30,8 +30,10 @@ pub struct Study {
     #[serde(default)]
     pub grid: Option<Grid>,
     /// Domains.
+    #[serde(default)]
     pub domain: Vec<DomainSpec>,
     /// Schemes; every one is tried on every domain.
+    #[serde(default)]
     pub scheme: Vec<Scheme>,
     /// Limits.
     #[serde(default)]
@@ -160,15 +162,6 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
     let empty = |found: &str, wanted: &str| {
         Err(ReadError::Syntax { at: at(), found: found.into(), wanted: wanted.into() })
     };
-    if study.domain.is_empty() {
-        return empty("the study has no domain", "want at least one [[domain]]");
-    }
-    if study.scheme.is_empty() {
-        return empty("the study has no scheme", "want at least one [[scheme]]");
-    }
-    if study.corners().is_empty() {
-        return empty("the study has no corner", "want [[corner]] tables or a [grid] with three lists that are not empty");
-    }
     for c in study.corners() {
         if !study.process.contains_key(&c.process) {
             return Err(ReadError::Unknown {
@@ -196,7 +189,11 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
     for d in &study.domain {
         if d.verilog.is_empty() == d.counts.is_none() {
             return empty(
-                &format!("domain `{}` names {} sources of counts", d.name, if d.counts.is_none() { "no" } else { "two" }),
+                &format!(
+                    "domain `{}` names {} sources of counts",
+                    d.name,
+                    if d.counts.is_none() { "no" } else { "two" }
+                ),
                 "want either `verilog` or `counts`",
             );
         }
@@ -275,7 +272,6 @@ name = "on"
             ("netlists", "netlist", "did you mean `netlists`?"),
             ("\"zero\"", "\"zer\"", "did you mean `zero`?"),
             ("temp_c = [25]", "temp_c = [2500]", "temperature of corner"),
-            ("vdd_v = [1.1]", "vdd_v = []", "no corner"),
             ("process = [\"tt\"]", "process = [\"ttt\"]", "process `ttt` is not defined; did you mean `tt`?"),
             ("counts = \"n.csv\"", "top = \"x\"", "names no sources of counts"),
             ("name = \"on\"", "nam = \"on\"", "did you mean `name`?"),

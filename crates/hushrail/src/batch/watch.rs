@@ -18,7 +18,11 @@ pub struct Watch {
 
 /// Runs `work` on another thread while the calling thread reports progress; a break of `progress` raises `stop` and the
 /// work's own answer to that is returned.
-pub fn watched<T: Send>(total: usize, progress: &mut Progress<'_>, work: impl FnOnce(&Watch) -> T + Send) -> T {
+pub fn watched<T: Send>(
+    total: usize,
+    progress: &mut Progress<'_>,
+    work: impl FnOnce(&Watch) -> T + Send,
+) -> T {
     let watch = Watch::default();
     std::thread::scope(|s| {
         let handle = s.spawn(|| work(&watch));

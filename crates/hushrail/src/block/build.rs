@@ -141,7 +141,10 @@ pub fn build_block(
         match (source, policy) {
             (Some(name), policy) => {
                 if matches!(policy, Some(Policy::Alias(_))) {
-                    notes.push(Note::new("alias", format!("{count} instances of `{master}` computed as `{name}`")));
+                    notes.push(Note::new(
+                        "alias",
+                        format!("{count} instances of `{master}` computed as `{name}`"),
+                    ));
                 }
                 let cell = Arc::new(reader.cell(&name, notes)?);
                 let weights = weights.get(master).cloned().unwrap_or_default();

@@ -220,8 +220,8 @@ fn weigh(
         if !(*weight >= 0.0 && weight.is_finite()) {
             return Err(wrong(format!("weight {weight} of `{when}` is not zero or more")));
         }
-        let pins =
-            product_term(when).ok_or_else(|| wrong(format!("`{when}` is not a product of pins such as A&!B")))?;
+        let pins = product_term(when)
+            .ok_or_else(|| wrong(format!("`{when}` is not a product of pins such as A&!B")))?;
         let cell = &bound.cell;
         if let Some(p) = pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
             return Err(wrong(format!("`{when}`: the cell has no pin `{p}`")));

@@ -46,7 +46,9 @@ pub enum CellError {
         steps: usize,
     },
     /// Too many inputs or loops to list every state.
-    #[error("cell `{cell}` has {count} {what}; at most {limit} can be enumerated: give the states that matter")]
+    #[error(
+        "cell `{cell}` has {count} {what}; at most {limit} can be enumerated: give the states that matter"
+    )]
     TooMany {
         /// The cell.
         cell: String,
@@ -224,7 +226,8 @@ impl BoundCell {
         let mut out = Vec::new();
         for code in 0..1u32 << inputs.len() {
             // the first input is the most significant bit, as people write truth tables
-            let bits: Vec<bool> = (0..inputs.len()).map(|i| code >> (inputs.len() - 1 - i) & 1 == 1).collect();
+            let bits: Vec<bool> =
+                (0..inputs.len()).map(|i| code >> (inputs.len() - 1 - i) & 1 == 1).collect();
             out.extend(self.states_with(&bits)?);
         }
         Ok(out)
@@ -236,12 +239,13 @@ impl BoundCell {
     /// More loops than can be listed.
     pub fn states_with(&self, bits: &[bool]) -> Result<Vec<State>, CellError> {
         let held = self.held_logic(bits);
-        let fix = Switches::new(&self.net, &self.plan).fixpoints(&held).map_err(|count| CellError::TooMany {
-            cell: self.cell.name.to_string(),
-            what: "nets in loops",
-            count,
-            limit: super::logic::MAX_LOOP_NETS,
-        })?;
+        let fix =
+            Switches::new(&self.net, &self.plan).fixpoints(&held).map_err(|count| CellError::TooMany {
+                cell: self.cell.name.to_string(),
+                what: "nets in loops",
+                count,
+                limit: super::logic::MAX_LOOP_NETS,
+            })?;
         let many = fix.len() > 1;
         Ok(fix
             .into_iter()
@@ -364,7 +368,9 @@ impl BoundCell {
             .zip(&cell.port_nodes)
             .map(|(r, &n)| {
                 // ports tied to one node share its current: the first takes it
-                if *r == Role::Output || counted[n] { [0.0; 5] } else {
+                if *r == Role::Output || counted[n] {
+                    [0.0; 5]
+                } else {
                     counted[n] = true;
                     at_node[n]
                 }
@@ -405,4 +411,3 @@ pub fn supply_power(cell: &BoundCell, c: &StateCurrents, levels: &Levels) -> f64
         .sum();
     levels.supply_v * total(Role::Supply) + levels.nwell_v * total(Role::Nwell) + levels.high_v * inputs
 }
-

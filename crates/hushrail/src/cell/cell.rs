@@ -166,7 +166,12 @@ impl CellReader<'_> {
         let Some(sub) = self.deck.subckts.get(name.to_ascii_lowercase().as_str()) else {
             let at = Place::new(self.deck.files.first().unwrap_or(&Arc::from("netlist")), 1, 1);
             let names = self.deck.subckts.values().map(|s| &*s.name);
-            return Err(ReadError::Unknown { at, kind: "cell", name: name.into(), nearest: nearest(name, names) });
+            return Err(ReadError::Unknown {
+                at,
+                kind: "cell",
+                name: name.into(),
+                nearest: nearest(name, names),
+            });
         };
         let mut b =
             Builder { names: FxHashMap::default(), list: Vec::new(), parent: Vec::new(), parts: Vec::new() };
@@ -198,7 +203,8 @@ impl CellReader<'_> {
             }
         }
         let at = sub.loc.place(&self.deck.files);
-        let port_nodes: Vec<Node> = sub.ports.iter().map(|p| number[ports[&p.to_ascii_lowercase()]]).collect();
+        let port_nodes: Vec<Node> =
+            sub.ports.iter().map(|p| number[ports[&p.to_ascii_lowercase()]]).collect();
         let drains: Vec<bool> = (0..nodes.len())
             .map(|n| parts.iter().any(|p| matches!(p, Part::Transistor(_, t) if t[0] == n || t[2] == n)))
             .collect();
@@ -207,7 +213,8 @@ impl CellReader<'_> {
             .iter()
             .zip(&port_nodes)
             .map(|(p, &n)| {
-                let declared = sub.directions.iter().find(|(d, _)| d.eq_ignore_ascii_case(p)).map(|(_, d)| *d);
+                let declared =
+                    sub.directions.iter().find(|(d, _)| d.eq_ignore_ascii_case(p)).map(|(_, d)| *d);
                 match (self.rails.role(p), declared) {
                     (Some(r), _) => r,
                     (None, Some(PinDirection::Input)) => Role::Input,
@@ -225,7 +232,11 @@ impl CellReader<'_> {
                 let near = names.first().and_then(|n| nearest(n, sub.ports.iter().map(|p| &**p)));
                 return Err(ReadError::Syntax {
                     at,
-                    found: format!("cell `{}` has no port named {} (its ports: {port_list})", sub.name, names.join(" or ")),
+                    found: format!(
+                        "cell `{}` has no port named {} (its ports: {port_list})",
+                        sub.name,
+                        names.join(" or ")
+                    ),
                     wanted: near.map_or_else(
                         || format!("name the {what} port of the cells"),
                         |n| format!("name the {what} port of the cells; did you mean `{n}`?"),
@@ -239,14 +250,26 @@ impl CellReader<'_> {
                 if let Some(other) = rail_at.insert(port_nodes[i], *r).filter(|o| o != r) {
                     return Err(ReadError::Syntax {
                         at,
-                        found: format!("in cell `{}` {} and {} are tied together", sub.name, other.name(), r.name()),
+                        found: format!(
+                            "in cell `{}` {} and {} are tied together",
+                            sub.name,
+                            other.name(),
+                            r.name()
+                        ),
                         wanted: "remove the tie".into(),
                     });
                 }
             }
         }
-        let cell =
-            Cell { name: Arc::clone(&sub.name), ports: sub.ports.clone(), roles, port_nodes, nodes, parts, at };
+        let cell = Cell {
+            name: Arc::clone(&sub.name),
+            ports: sub.ports.clone(),
+            roles,
+            port_nodes,
+            nodes,
+            parts,
+            at,
+        };
         cell.check_gates()?;
         Ok(cell)
     }
@@ -275,7 +298,11 @@ impl CellReader<'_> {
                     None => b.node(&format!("{prefix}{n}")),
                 })
                 .collect();
-            let wrong = |found: String, wanted: &str| ReadError::Syntax { at: at.clone(), found, wanted: wanted.into() };
+            let wrong = |found: String, wanted: &str| ReadError::Syntax {
+                at: at.clone(),
+                found,
+                wanted: wanted.into(),
+            };
             // lengths and areas in SI; words that are not numbers (topology remarks) are left out with a note
             let numbers = |notes: &mut Vec<Note>| -> Result<Vec<(Arc<str>, f64)>, ReadError> {
                 let mut out = Vec::new();
@@ -317,7 +344,10 @@ impl CellReader<'_> {
                         }
                     };
                     if value < 0.0 {
-                        return Err(wrong(format!("resistor `{}` is {value} ohm", e.name), "want zero or more"));
+                        return Err(wrong(
+                            format!("resistor `{}` is {value} ohm", e.name),
+                            "want zero or more",
+                        ));
                     }
                     if value == 0.0 {
                         b.tie(nodes[0], nodes[1]);
@@ -335,7 +365,8 @@ impl CellReader<'_> {
                     b.parts.push(Part::Diode(request, [nodes[0], nodes[1]]));
                 }
                 'M' => {
-                    let request = Request { model: Arc::clone(&e.model), params: numbers(notes)?, at: at.clone() };
+                    let request =
+                        Request { model: Arc::clone(&e.model), params: numbers(notes)?, at: at.clone() };
                     b.parts.push(Part::Transistor(request, [nodes[0], nodes[1], nodes[2], nodes[3]]));
                 }
                 _ => {
@@ -343,7 +374,8 @@ impl CellReader<'_> {
                     if &*e.model == "short" && inner.is_none() && nodes.len() >= 2 {
                         b.tie(nodes[0], nodes[1]);
                     } else if (self.is_device)(&e.model) {
-                        let request = Request { model: Arc::clone(&e.model), params: numbers(notes)?, at: at.clone() };
+                        let request =
+                            Request { model: Arc::clone(&e.model), params: numbers(notes)?, at: at.clone() };
                         match nodes[..] {
                             [d, g, s, body] => b.parts.push(Part::Transistor(request, [d, g, s, body])),
                             [a, c] => b.parts.push(Part::Diode(request, [a, c])),

@@ -115,7 +115,9 @@ impl<'a> Switches<'a> {
                 for &k in &self.plan.components[c].elements {
                     if let Element::Transistor(p) = &self.net.elements[k] {
                         let gate = p.nodes[1];
-                        if self.plan.component_of[gate].is_some_and(|x| g.contains(&x)) && !nets.contains(&gate) {
+                        if self.plan.component_of[gate].is_some_and(|x| g.contains(&x))
+                            && !nets.contains(&gate)
+                        {
                             nets.push(gate);
                         }
                     }

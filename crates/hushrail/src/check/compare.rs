@@ -1,6 +1,7 @@
 //! Predictions against a published leakage table: every row matched to a solved state, and statistics over them.
 
 use std::sync::Arc;
+use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
 
 use indexmap::IndexMap;
 use rayon::prelude::*;
@@ -45,7 +46,11 @@ fn csv_error(source: &Source, e: &csv::Error) -> ReadError {
     let line = e.position().map_or(1, csv::Position::line);
     #[expect(clippy::cast_possible_truncation, reason = "line numbers")]
     let at = Place::new(&source.path, line as usize, 1);
-    ReadError::Syntax { at, found: e.to_string(), wanted: "want the same number of fields on every line".into() }
+    ReadError::Syntax {
+        at,
+        found: e.to_string(),
+        wanted: "want the same number of fields on every line".into(),
+    }
 }
 
 /// Reads a CSV table with a header into records by column name.
@@ -266,11 +271,18 @@ impl Compared {
 }
 
 impl Comparison<'_> {
-    /// Predicts every row, cells and corners in parallel; the result does not depend on the number of threads.
+    /// Predicts every row, cells and corners in parallel; the result does not depend on the number of threads. `done` counts
+    /// rows, `stop` ends the work early.
     ///
     /// # Errors
     /// A corner or process the comparison does not know, or a temperature out of range.
-    pub fn run(&self, rows: &[PublishedRow], corners: &[PublishedCorner]) -> Result<Compared, ReadError> {
+    pub fn run(
+        &self,
+        rows: &[PublishedRow],
+        corners: &[PublishedCorner],
+        done: &AtomicUsize,
+        stop: &AtomicBool,
+    ) -> Result<Compared, ReadError> {
         let mut tasks: IndexMap<(&str, &str), Vec<&PublishedRow>> = IndexMap::new();
         for r in rows {
             tasks.entry((&r.corner, &r.cell)).or_default().push(r);
@@ -298,7 +310,11 @@ impl Comparison<'_> {
         let done: Vec<(Vec<ComparedRow>, Vec<Unmatched>)> = list
             .par_iter()
             .map_init(Workspace::default, |w, ((corner, cell), rows)| {
+                if stop.load(Ordering::Relaxed) {
+                    return Default::default();
+                }
                 let c = corners.iter().find(|c| c.name == *corner);
+                done.fetch_add(rows.len(), Ordering::Relaxed);
                 c.map_or_else(Default::default, |c| self.cell(cell, c, rows, w))
             })
             .collect();

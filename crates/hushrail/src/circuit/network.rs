@@ -222,4 +222,3 @@ impl Network {
             .collect()
     }
 }
-

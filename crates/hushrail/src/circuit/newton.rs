@@ -184,9 +184,9 @@ impl<'a> Solver<'a> {
         }
         for &k in &c.elements {
             let s = self.net.stamp(&self.net.elements[k], v);
-            let (lo, hi) = s.nodes[..s.n].iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), &m| {
-                (l.min(v[m].rail), h.max(v[m].rail))
-            });
+            let (lo, hi) = s.nodes[..s.n]
+                .iter()
+                .fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), &m| (l.min(v[m].rail), h.max(v[m].rail)));
             let reach = s.nodes[..s.n].iter().fold(0.0f64, |m, &x| m.max(v[x].offset.abs()));
             // nodes of one rail differ by their offsets alone
             let same_ends = v[s.nodes[0]].rail == v[s.nodes[if s.n == 4 { 2 } else { 1 }]].rail;
@@ -356,7 +356,8 @@ impl<'a> Solver<'a> {
             }
         }
         // nothing settles far outside the held voltages
-        let (lo, hi) = (self.rails.first().copied().unwrap_or(0.0), self.rails.last().copied().unwrap_or(0.0));
+        let (lo, hi) =
+            (self.rails.first().copied().unwrap_or(0.0), self.rails.last().copied().unwrap_or(0.0));
         if at > hi + 1.5 {
             *v = Volt { rail: hi, offset: 1.5 };
         } else if at < lo - 1.5 {
@@ -366,7 +367,8 @@ impl<'a> Solver<'a> {
 
     /// Node by node, the balance of each found by bisection with the others held; a few sweeps.
     fn bisect(&mut self, c: &Component, v: &mut [Volt], w: &mut Workspace) {
-        let (lo, hi) = (self.rails.first().copied().unwrap_or(0.0), self.rails.last().copied().unwrap_or(0.0));
+        let (lo, hi) =
+            (self.rails.first().copied().unwrap_or(0.0), self.rails.last().copied().unwrap_or(0.0));
         for _ in 0..12 {
             for (k, &node) in c.nodes.iter().enumerate() {
                 let (mut a, mut b) = (lo - 0.7, hi + 0.7);
@@ -391,6 +393,7 @@ impl Workspace {
         }
     }
     fn has_wrong_sign(&self, n: usize) -> bool {
-        (0..n).any(|i| (0..n).any(|j| i != j && self.a[i * n + j] > 0.0)) || self.excess[..n].iter().any(|e| *e < 0.0)
+        (0..n).any(|i| (0..n).any(|j| i != j && self.a[i * n + j] > 0.0))
+            || self.excess[..n].iter().any(|e| *e < 0.0)
     }
 }

@@ -16,9 +16,10 @@ pub struct Diode {
 
 /// Parameters of a diode model that do not bear on its reverse and small forward current.
 const NO_STATIC_EFFECT: &[&str] = &[
-    "area", "bv", "cj", "cjo", "cj0", "cjp", "cjsw", "cta", "ctp", "fc", "fcs", "gap1", "gap2", "ibv", "ik", "ikf", "ikr", "kf",
-    "af", "lm", "lp", "m", "mj", "mjsw", "pb", "php", "pj", "rs", "tcv", "tlev", "tlevc", "tm1", "tm2", "tpb", "tphp", "trs",
-    "tt", "ttt1", "ttt2", "vb", "vj", "wm", "wp", "xm", "xoi", "xom", "xp", "xw",
+    "area", "bv", "cj", "cjo", "cj0", "cjp", "cjsw", "cta", "ctp", "fc", "fcs", "gap1", "gap2", "ibv", "ik",
+    "ikf", "ikr", "kf", "af", "lm", "lp", "m", "mj", "mjsw", "pb", "php", "pj", "rs", "tcv", "tlev", "tlevc",
+    "tm1", "tm2", "tpb", "tphp", "trs", "tt", "ttt1", "ttt2", "vb", "vj", "wm", "wp", "xm", "xoi", "xom",
+    "xp", "xw",
 ];
 const STATIC: &[&str] = &["level", "is", "js", "jsw", "n", "eg", "xti", "tref", "tnom"];
 
@@ -40,7 +41,8 @@ impl Diode {
         temp_k: f64,
         notes: &mut Vec<Note>,
     ) -> Result<Self, ReadError> {
-        let (mut is, mut js, mut jsw, mut n, mut eg, mut xti, mut tref) = (None, None, 0.0, 1.0, 1.11, 3.0, 27.0);
+        let (mut is, mut js, mut jsw, mut n, mut eg, mut xti, mut tref) =
+            (None, None, 0.0, 1.0, 1.11, 3.0, 27.0);
         for (name, def) in &model.values {
             let v = deck.eval(def, scope);
             match &**name {
@@ -75,7 +77,10 @@ impl Diode {
         }
         let note = Note::new(
             "diode-reverse-only",
-            format!("diode model `{}`: breakdown, series resistance and high injection are not computed", model.name),
+            format!(
+                "diode model `{}`: breakdown, series resistance and high injection are not computed",
+                model.name
+            ),
         );
         if !notes.contains(&note) {
             notes.push(note);

@@ -189,11 +189,16 @@ impl<R: Real> Branches<R> {
     pub fn terminals_of(self, m: Mechanism) -> [R; 4] {
         let z = Self::zero();
         let part = match m {
-            Mechanism::Channel => {
-                Self { channel_ds: self.channel_ds, impact_db: self.impact_db, impact_sb: self.impact_sb, ..z }
-            }
+            Mechanism::Channel => Self {
+                channel_ds: self.channel_ds,
+                impact_db: self.impact_db,
+                impact_sb: self.impact_sb,
+                ..z
+            },
             Mechanism::Gidl => Self { gidl_db: self.gidl_db, gidl_sb: self.gidl_sb, ..z },
-            Mechanism::Gate => Self { gate_gd: self.gate_gd, gate_gs: self.gate_gs, gate_gb: self.gate_gb, ..z },
+            Mechanism::Gate => {
+                Self { gate_gd: self.gate_gd, gate_gs: self.gate_gs, gate_gb: self.gate_gb, ..z }
+            }
             Mechanism::Junction => Self { junction_db: self.junction_db, junction_sb: self.junction_sb, ..z },
             Mechanism::Floor => z,
         };
@@ -282,11 +287,7 @@ impl Geometry<f64> {
             as_m2: f(self.as_m2),
             pd_m: f(self.pd_m),
             ps_m: f(self.ps_m),
-            well_proximity: (
-                f(self.well_proximity.0),
-                f(self.well_proximity.1),
-                f(self.well_proximity.2),
-            ),
+            well_proximity: (f(self.well_proximity.0), f(self.well_proximity.1), f(self.well_proximity.2)),
             delvto_v: f(self.delvto_v),
         }
     }

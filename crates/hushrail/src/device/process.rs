@@ -3,6 +3,7 @@
 use std::sync::Arc;
 
 use indexmap::IndexMap;
+use rustc_hash::FxHashMap;
 
 use super::bsim4::prepare::Prepared;
 use super::bsim4::table::{Id, ROWS};
@@ -12,6 +13,7 @@ use super::diode::Diode;
 use super::{Device, Geometry};
 use crate::physics::Kelvin;
 use crate::read::deck::{Deck, DeckScope, Element, ModelText, Note, Subckt};
+use crate::read::expression::Expr;
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
 
@@ -27,6 +29,46 @@ pub struct Process {
     pub deck: Deck,
     /// Names netlists use for a model, to the names of the deck; both in lower case.
     pub aliases: IndexMap<String, String>,
+    families: FxHashMap<(Option<Arc<str>>, String), Vec<Bin>>,
+}
+
+/// One `.model` of a family, and its limits where they are plain numbers: lmin, lmax, wmin, wmax.
+#[derive(Debug, Clone, Copy)]
+struct Bin {
+    model: usize,
+    limits: [Limit; 4],
+}
+
+#[derive(Debug, Clone, Copy)]
+enum Limit {
+    Absent,
+    Number(f64),
+    Expression,
+}
+
+const LIMITS: [&str; 4] = ["lmin", "lmax", "wmin", "wmax"];
+
+fn index_families(deck: &Deck) -> FxHashMap<(Option<Arc<str>>, String), Vec<Bin>> {
+    let mut out: FxHashMap<(Option<Arc<str>>, String), Vec<Bin>> = FxHashMap::default();
+    let mut add = |scope: Option<&Arc<str>>, models: &[ModelText]| {
+        for (model, m) in models.iter().enumerate() {
+            let limits = LIMITS.map(|n| match m.get(n).map(|d| &d.expr) {
+                None => Limit::Absent,
+                Some(Expr::Num(v)) => Limit::Number(*v),
+                Some(_) => Limit::Expression,
+            });
+            let bin = Bin { model, limits };
+            out.entry((scope.cloned(), m.family().to_owned())).or_default().push(bin);
+            if m.family() != &*m.name {
+                out.entry((scope.cloned(), m.name.to_string())).or_default().push(bin);
+            }
+        }
+    };
+    add(None, &deck.models);
+    for (key, sub) in &deck.subckts {
+        add(Some(key), &sub.models);
+    }
+    out
 }
 
 /// A request for one device, as a netlist states it: SI units, names in lower case.
@@ -56,8 +98,8 @@ fn length_power(name: &str) -> Option<i32> {
     Some(match name {
         "l" | "w" | "sa" | "sb" | "sd" | "pd" | "ps" | "pj" => 1,
         "ad" | "as" | "area" => 2,
-        "nf" | "m" | "mult" | "nrd" | "nrs" | "delvto" | "mulu0" | "sca" | "scb" | "scc" | "geo" | "geomod"
-        | "rgeomod" | "min" | "dtemp" => 0,
+        "nf" | "m" | "mult" | "nrd" | "nrs" | "delvto" | "mulu0" | "sca" | "scb" | "scc" | "geo"
+        | "geomod" | "rgeomod" | "min" | "dtemp" => 0,
         _ => return None,
     })
 }
@@ -65,7 +107,8 @@ fn length_power(name: &str) -> Option<i32> {
 struct Found<'a> {
     wrapper: Option<&'a Subckt>,
     element: Option<&'a Element>,
-    bins: Vec<&'a ModelText>,
+    models: &'a [ModelText],
+    bins: &'a [Bin],
 }
 
 impl Process {
@@ -75,7 +118,8 @@ impl Process {
     /// Whatever is wrong with the text; see [`ReadError`].
     pub fn read(name: &str, sources: &[Source], options: &DeckOptions) -> Result<Self, ReadError> {
         let deck = read_deck(sources, options)?;
-        Ok(Self { name: name.to_owned(), deck, aliases: IndexMap::new() })
+        let families = index_families(&deck);
+        Ok(Self { name: name.to_owned(), deck, aliases: IndexMap::new(), families })
     }
 
     /// Adds a name that netlists use for a model of the deck.
@@ -100,7 +144,7 @@ impl Process {
     /// Whether the deck (or an alias) defines this name.
     pub fn defines(&self, model: &str) -> bool {
         let name = self.resolve(model);
-        self.deck.subckts.contains_key(name.as_str()) || self.deck.models.iter().any(|m| m.family() == name || *m.name == *name)
+        self.deck.subckts.contains_key(name.as_str()) || self.families.contains_key(&(None, name))
     }
 
     fn resolve(&self, model: &str) -> String {
@@ -110,11 +154,9 @@ impl Process {
 
     fn find(&self, request: &Request) -> Result<Found<'_>, ReadError> {
         let name = self.resolve(&request.model);
-        let family = |models: &'_ [ModelText], base: &str| -> Vec<usize> {
-            (0..models.len()).filter(|&i| models[i].family() == base || *models[i].name == *base).collect()
-        };
         if let Some(sub) = self.deck.subckts.get(name.as_str()) {
-            let inner: Vec<&Element> = sub.elements.iter().filter(|e| matches!(e.kind, 'M' | 'D' | 'X')).collect();
+            let inner: Vec<&Element> =
+                sub.elements.iter().filter(|e| matches!(e.kind, 'M' | 'D' | 'X')).collect();
             let [element] = inner[..] else {
                 return Err(ReadError::Syntax {
                     at: sub.loc.place(&self.deck.files),
@@ -122,11 +164,13 @@ impl Process {
                     wanted: "a device wrapper must hold exactly one transistor or diode".into(),
                 });
             };
-            let local = family(&sub.models, &element.model);
-            let bins = if local.is_empty() {
-                family(&self.deck.models, &element.model).iter().map(|&i| &self.deck.models[i]).collect()
-            } else {
-                local.iter().map(|&i| &sub.models[i]).collect::<Vec<_>>()
+            let model = element.model.to_string();
+            let local = self.families.get(&(Some(Arc::from(name.as_str())), model.clone()));
+            let (models, bins) = match local {
+                Some(bins) => (&sub.models[..], &bins[..]),
+                None => {
+                    (&self.deck.models[..], self.families.get(&(None, model)).map_or(&[][..], Vec::as_slice))
+                }
             };
             if bins.is_empty() {
                 let names = sub.models.iter().chain(&self.deck.models).map(ModelText::family);
@@ -137,9 +181,9 @@ impl Process {
                     nearest: nearest(&element.model, names),
                 });
             }
-            return Ok(Found { wrapper: Some(sub), element: Some(element), bins });
+            return Ok(Found { wrapper: Some(sub), element: Some(element), models, bins });
         }
-        let bins: Vec<_> = family(&self.deck.models, &name).iter().map(|&i| &self.deck.models[i]).collect();
+        let bins = self.families.get(&(None, name)).map_or(&[][..], Vec::as_slice);
         if bins.is_empty() {
             let names = self.model_names();
             return Err(ReadError::Unknown {
@@ -149,7 +193,7 @@ impl Process {
                 nearest: nearest(&request.model, names.iter().map(String::as_str)),
             });
         }
-        Ok(Found { wrapper: None, element: None, bins })
+        Ok(Found { wrapper: None, element: None, models: &self.deck.models, bins })
     }
 
     /// The model text type of a name: `nmos`, `pmos`, `d`.
@@ -157,7 +201,8 @@ impl Process {
     /// # Errors
     /// No card defines the name.
     pub fn kind(&self, request: &Request) -> Result<String, ReadError> {
-        Ok(self.find(request)?.bins[0].kind.to_string())
+        let found = self.find(request)?;
+        Ok(found.models[found.bins[0].model].kind.to_string())
     }
 
     /// Values of the wrapper's parameters for this instance, in the deck's own units, and the SI parameters of the
@@ -179,7 +224,8 @@ impl Process {
                 let power = length_power(name).unwrap_or(0);
                 values.push((Arc::clone(name), v / scale.powi(power)));
             } else if &**name != "m" {
-                let text = format!("instance parameter `{name}` is unknown to `{}` and has no effect", sub.name);
+                let text =
+                    format!("instance parameter `{name}` is unknown to `{}` and has no effect", sub.name);
                 let note = Note::new("instance-parameter", text);
                 if !notes.contains(&note) {
                     notes.push(note);
@@ -265,18 +311,14 @@ impl Process {
             as_m2: get("as").unwrap_or(0.0),
             pd_m: get("pd").unwrap_or(0.0),
             ps_m: get("ps").unwrap_or(0.0),
-            well_proximity: (
-                get("sca").unwrap_or(0.0),
-                get("scb").unwrap_or(0.0),
-                get("scc").unwrap_or(0.0),
-            ),
+            well_proximity: (get("sca").unwrap_or(0.0), get("scb").unwrap_or(0.0), get("scc").unwrap_or(0.0)),
             delvto_v: get("delvto").unwrap_or(0.0),
         };
         let count = get("m").unwrap_or(1.0);
         check_size(&g, count, request)?;
         let scope = DeckScope::new(&self.deck, found.wrapper, &wrapper_values, temp_c);
         let (w, l) = (g.width_m / g.fingers, g.length_m);
-        let model = self.bin(&found.bins, w, l, &scope, request)?;
+        let model = self.bin(&found, w, l, &scope, request)?;
         let card = Card::evaluate(model, &self.deck, &scope, notes)?;
         Ok((card, g, count))
     }
@@ -284,27 +326,32 @@ impl Process {
     /// The one bin with `lmin ≤ L < lmax` and `wmin ≤ W < wmax`; never an interpolation between bins.
     fn bin<'a>(
         &self,
-        bins: &[&'a ModelText],
+        found: &Found<'a>,
         w: f64,
         l: f64,
         scope: &DeckScope<'_>,
         request: &Request,
     ) -> Result<&'a ModelText, ReadError> {
-        if let [one] = bins {
-            if !["lmin", "lmax", "wmin", "wmax"].iter().any(|n| one.get(n).is_some()) {
-                return Ok(one);
+        if let [one] = found.bins {
+            if one.limits.iter().all(|l| matches!(l, Limit::Absent)) {
+                return Ok(&found.models[one.model]);
             }
         }
-        let limit = |m: &ModelText, name: &str, otherwise: f64| match m.get(name) {
-            Some(d) => self.deck.eval(d, scope),
-            None => Ok(otherwise),
+        let limit = |bin: &Bin, which: usize, otherwise: f64| match bin.limits[which] {
+            Limit::Absent => Ok(otherwise),
+            Limit::Number(v) => Ok(v),
+            Limit::Expression => match found.models[bin.model].get(LIMITS[which]) {
+                Some(d) => self.deck.eval(d, scope),
+                None => Ok(otherwise),
+            },
         };
         let at_or_above = |x: f64, lo: f64| x >= lo * (1.0 - BIN_SLACK);
         let mut edge = None;
         let mut nearest_bin: Option<(f64, String)> = None;
-        for m in bins {
-            let (l0, l1) = (limit(m, "lmin", 0.0)?, limit(m, "lmax", 1.0)?);
-            let (w0, w1) = (limit(m, "wmin", 0.0)?, limit(m, "wmax", 1.0)?);
+        for bin in found.bins {
+            let m = &found.models[bin.model];
+            let (l0, l1) = (limit(bin, 0, 0.0)?, limit(bin, 1, 1.0)?);
+            let (w0, w1) = (limit(bin, 2, 0.0)?, limit(bin, 3, 1.0)?);
             let inside = |x: f64, lo: f64, hi: f64| at_or_above(x, lo) && !at_or_above(x, hi);
             if inside(l, l0, l1) && inside(w, w0, w1) {
                 return Ok(m);
@@ -312,7 +359,7 @@ impl Process {
             // the top edge of the whole range belongs to the last bin
             let touches = |x: f64, lo: f64, hi: f64| at_or_above(x, lo) && x <= hi * (1.0 + BIN_SLACK);
             if touches(l, l0, l1) && touches(w, w0, w1) {
-                edge = Some(*m);
+                edge = Some(m);
             }
             let off = |x: f64, lo: f64, hi: f64| ((lo - x) / lo.max(1e-9)).max((x - hi) / hi).max(0.0);
             let far = off(l, l0, l1) + off(w, w0, w1);
@@ -333,7 +380,10 @@ impl Process {
             at: request.at.clone(),
             name: format!("size of a `{}` transistor", request.model),
             value: format!("L = {:.4} µm, W = {:.4} µm per finger", l * 1e6, w * 1e6),
-            wanted: format!("no bin covers it; the nearest is {}", nearest_bin.map_or_else(String::new, |b| b.1)),
+            wanted: format!(
+                "no bin covers it; the nearest is {}",
+                nearest_bin.map_or_else(String::new, |b| b.1)
+            ),
         })
     }
 
@@ -352,7 +402,12 @@ impl Process {
     ///
     /// # Errors
     /// No model, or one that cannot be evaluated.
-    pub fn diode(&self, request: &Request, temp: Kelvin, notes: &mut Vec<Note>) -> Result<(Diode, f64), ReadError> {
+    pub fn diode(
+        &self,
+        request: &Request,
+        temp: Kelvin,
+        notes: &mut Vec<Note>,
+    ) -> Result<(Diode, f64), ReadError> {
         let found = self.find(request)?;
         let (wrapper_values, inner) = self.instance(&found, request, temp.celsius(), notes)?;
         let get = |name: &str| inner.iter().rev().find(|(n, _)| &**n == name).map(|(_, v)| *v);
@@ -366,9 +421,10 @@ impl Process {
             });
         }
         let scale = self.deck.scale();
-        let model = found.bins[0];
+        let model = &found.models[found.bins[0].model];
         let scope = DeckScope::new(&self.deck, found.wrapper, &wrapper_values, temp.celsius());
-        let d = Diode::evaluate(model, &self.deck, &scope, area / scale.powi(2), pj / scale, temp.get(), notes)?;
+        let d =
+            Diode::evaluate(model, &self.deck, &scope, area / scale.powi(2), pj / scale, temp.get(), notes)?;
         Ok((d, get("m").unwrap_or(1.0)))
     }
 }

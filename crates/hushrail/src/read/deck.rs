@@ -173,7 +173,8 @@ impl Deck {
                 at,
                 name: "expression".into(),
                 value: what,
-                wanted: "want a finite number; look for a division by zero or a root of a negative value".into(),
+                wanted: "want a finite number; look for a division by zero or a root of a negative value"
+                    .into(),
             },
         }
     }

@@ -503,7 +503,8 @@ mod tests {
 
     #[test]
     fn wrong_expressions_say_what_was_wanted() {
-        for (text, wanted) in [("1 +", "number"), ("{1", "}"), ("f(1", ")"), ("*", "number"), ("1 ? 2", ":")] {
+        for (text, wanted) in [("1 +", "number"), ("{1", "}"), ("f(1", ")"), ("*", "number"), ("1 ? 2", ":")]
+        {
             assert!(parse_prefix(text).expect_err(text).wanted.contains(wanted), "{text}");
         }
         let undefined = parse_prefix("q+1").expect("parses").0.eval(&Fixed);

@@ -156,7 +156,11 @@ impl Source {
         let name = path.display().to_string();
         let bytes = std::fs::read(path).map_err(|e| ReadError::Io {
             path: name.clone(),
-            reason: if e.kind() == std::io::ErrorKind::NotFound { "no such file".into() } else { e.to_string() },
+            reason: if e.kind() == std::io::ErrorKind::NotFound {
+                "no such file".into()
+            } else {
+                e.to_string()
+            },
             missing: e.kind() == std::io::ErrorKind::NotFound,
         })?;
         let bytes = if bytes.starts_with(&[0x1f, 0x8b]) {

@@ -51,12 +51,44 @@ impl DeckOptions {
 const MAX_INCLUDE_DEPTH: usize = 32;
 /// Directives of simulation decks that say nothing about devices or cells.
 const RUN_ONLY: [&str; 22] = [
-    ".ac", ".backanno", ".connect", ".dc", ".end", ".four", ".global", ".ic", ".meas", ".measure", ".nodeset", ".noise",
-    ".op", ".plot", ".print", ".probe", ".save", ".temp", ".title", ".tran", ".width", ".protect",
+    ".ac",
+    ".backanno",
+    ".connect",
+    ".dc",
+    ".end",
+    ".four",
+    ".global",
+    ".ic",
+    ".meas",
+    ".measure",
+    ".nodeset",
+    ".noise",
+    ".op",
+    ".plot",
+    ".print",
+    ".probe",
+    ".save",
+    ".temp",
+    ".title",
+    ".tran",
+    ".width",
+    ".protect",
 ];
 const DIRECTIVES: [&str; 14] = [
-    ".model", ".param", ".parameters", ".func", ".include", ".inc", ".lib", ".endl", ".subckt", ".macro", ".ends",
-    ".eom", ".option", ".options",
+    ".model",
+    ".param",
+    ".parameters",
+    ".func",
+    ".include",
+    ".inc",
+    ".lib",
+    ".endl",
+    ".subckt",
+    ".macro",
+    ".ends",
+    ".eom",
+    ".option",
+    ".options",
 ];
 
 /// Reads SPICE text from several sources, in order, into one deck.
@@ -64,7 +96,8 @@ const DIRECTIVES: [&str; 14] = [
 /// # Errors
 /// The first thing wrong, with file, line and column: see [`ReadError`].
 pub fn read_deck(sources: &[Source], options: &DeckOptions) -> Result<Deck, ReadError> {
-    let mut r = Reader { options, deck: Deck::default(), names: FxHashSet::default(), open: Vec::new(), depth: 0 };
+    let mut r =
+        Reader { options, deck: Deck::default(), names: FxHashSet::default(), open: Vec::new(), depth: 0 };
     for s in sources {
         r.file(s, options.section.as_deref())?;
         if let Some(sub) = r.open.last() {
@@ -205,13 +238,22 @@ impl Reader<'_> {
             }
         }
         if let Some((name, loc)) = inside {
-            return Err(self.wrong(loc, format!("section `{name}` has no `.endl`"), "the file may be cut off"));
+            return Err(self.wrong(
+                loc,
+                format!("section `{name}` has no `.endl`"),
+                "the file may be cut off",
+            ));
         }
         match section {
             Some(s) if !taken && !sections.is_empty() => {
                 let at = Loc { file, line: 1, column: 1 }.place(&self.deck.files);
                 let near = nearest(s, sections.iter().map(String::as_str));
-                Err(ReadError::Unknown { at, kind: "section", name: s.to_owned(), nearest: near.or(sections.pop()) })
+                Err(ReadError::Unknown {
+                    at,
+                    kind: "section",
+                    name: s.to_owned(),
+                    nearest: near.or(sections.pop()),
+                })
             }
             None if !sections.is_empty() => Err(ReadError::Syntax {
                 at: Loc { file, line: 1, column: 1 }.place(&self.deck.files),
@@ -272,9 +314,10 @@ impl Reader<'_> {
             _ if RUN_ONLY.contains(&lower) => {
                 let place = loc.place(&self.deck.files);
                 if lower != ".end" {
-                    self.deck
-                        .notes
-                        .push(Note::new("directive-skipped", format!("{place}: `{word}` says nothing of devices; skipped")));
+                    self.deck.notes.push(Note::new(
+                        "directive-skipped",
+                        format!("{place}: `{word}` says nothing of devices; skipped"),
+                    ));
                 }
                 Ok(())
             }
@@ -309,7 +352,7 @@ impl Reader<'_> {
     }
 
     fn key(&mut self, c: &mut Cursor<'_>, what: &str) -> Result<(Arc<str>, Loc), ReadError> {
-        c.skip(&[','])  ;
+        c.skip(&[',']);
         let (word, loc) = c.word();
         if word.is_empty() || !c.takes('=') {
             let found = if word.is_empty() {
@@ -326,7 +369,11 @@ impl Reader<'_> {
         let (name, loc) = c.word();
         let (kind, kind_loc) = c.word();
         if name.is_empty() || kind.is_empty() {
-            return Err(self.wrong(kind_loc, "`.model` without a name and a type", "want `.model NAME nmos …`"));
+            return Err(self.wrong(
+                kind_loc,
+                "`.model` without a name and a type",
+                "want `.model NAME nmos …`",
+            ));
         }
         let mut values = Vec::with_capacity(300);
         let bracket = c.takes('(');
@@ -395,7 +442,11 @@ impl Reader<'_> {
     fn function(&mut self, c: &mut Cursor<'_>) -> Result<(), ReadError> {
         let (name, loc) = c.word();
         if name.is_empty() || !c.takes('(') {
-            return Err(self.wrong(loc, "a function without arguments", "want `.func name(x, y) {expression}`"));
+            return Err(self.wrong(
+                loc,
+                "a function without arguments",
+                "want `.func name(x, y) {expression}`",
+            ));
         }
         let mut args = Vec::new();
         loop {
@@ -405,7 +456,11 @@ impl Reader<'_> {
             }
             let (arg, l) = c.word();
             if arg.is_empty() {
-                return Err(self.wrong(l, "a broken argument list", "want names separated by commas and `)`"));
+                return Err(self.wrong(
+                    l,
+                    "a broken argument list",
+                    "want names separated by commas and `)`",
+                ));
             }
             args.push(self.lower(&arg));
         }
@@ -444,7 +499,11 @@ impl Reader<'_> {
             return Ok(());
         }
         if self.depth >= MAX_INCLUDE_DEPTH {
-            return Err(self.wrong(loc, "includes nested more than 32 deep", "look for a file that includes itself"));
+            return Err(self.wrong(
+                loc,
+                "includes nested more than 32 deep",
+                "look for a file that includes itself",
+            ));
         }
         let full: PathBuf = source.folder.join(&path);
         let inner = Source::open(&full).map_err(|e| match e {
@@ -548,7 +607,11 @@ impl Reader<'_> {
                 let scope = super::deck::DeckScope::new(&self.deck, None, &[], 25.0);
                 let v = self.deck.eval(&def, &scope)?;
                 if v <= 0.0 {
-                    return Err(self.wrong(loc, format!("scale = {v}"), "want metres per unit, such as 1e-6"));
+                    return Err(self.wrong(
+                        loc,
+                        format!("scale = {v}"),
+                        "want metres per unit, such as 1e-6",
+                    ));
                 }
                 self.deck.scale_m = Some(v);
             } else if key != "scalm" {
@@ -584,7 +647,11 @@ impl Reader<'_> {
             }
             let (word, l) = c.word();
             if word.is_empty() {
-                return Err(self.wrong(l, "a stray character", "want nodes, a model and `name = value` pairs"));
+                return Err(self.wrong(
+                    l,
+                    "a stray character",
+                    "want nodes, a model and `name = value` pairs",
+                ));
             }
             if c.takes('=') {
                 if word.starts_with('$') {
@@ -598,7 +665,11 @@ impl Reader<'_> {
                 params.push((key, def));
             } else if word == "/" || word.starts_with("$[") {
             } else if !params.is_empty() {
-                return Err(self.wrong(l, format!("found `{word}` behind the parameters"), "want `name = value`"));
+                return Err(self.wrong(
+                    l,
+                    format!("found `{word}` behind the parameters"),
+                    "want `name = value`",
+                ));
             } else {
                 words.push((word, l));
             }
@@ -609,7 +680,8 @@ impl Reader<'_> {
             _ => None,
         };
         let n_nodes = fixed.unwrap_or_else(|| words.len().saturating_sub(1));
-        let enough = if matches!(kind, 'R' | 'C') { words.len() >= 2 } else { words.len() > n_nodes && n_nodes > 0 };
+        let enough =
+            if matches!(kind, 'R' | 'C') { words.len() >= 2 } else { words.len() > n_nodes && n_nodes > 0 };
         if !enough {
             let what = match kind {
                 'M' => "want drain, gate, source, body and model",
@@ -623,7 +695,9 @@ impl Reader<'_> {
         let mut model: Arc<str> = "".into();
         if let Some((w, l)) = rest.next() {
             match super::number::whole_number(&w) {
-                Some(v) if matches!(kind, 'R' | 'C') => value = Some(Definition { expr: Expr::Num(v), loc: l }),
+                Some(v) if matches!(kind, 'R' | 'C') => {
+                    value = Some(Definition { expr: Expr::Num(v), loc: l })
+                }
                 _ => model = self.lower(&w),
             }
         }

@@ -34,7 +34,9 @@ pub enum RestError {
     #[error(transparent)]
     Block(#[from] BlockError),
     /// The balance did not close.
-    #[error("scheme `{scheme}`: the virtual rails do not settle: imbalance {residual:.2e} of the current at {at_v:.4} V")]
+    #[error(
+        "scheme `{scheme}`: the virtual rails do not settle: imbalance {residual:.2e} of the current at {at_v:.4} V"
+    )]
     NoRest {
         /// The scheme.
         scheme: String,
@@ -215,41 +217,102 @@ fn rest_voltages(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
     match (d.header.is_some(), d.footer.is_some()) {
         (false, false) => Ok((vdd, 0.0)),
         (true, false) => {
-            let v = increasing(1e-9, vdd, 1e-14, BALANCE, EVALUATIONS, |v| {
+            let v = one_rail(vdd, |v| {
                 let (_, i, _) = d.block(v, 0.0)?;
-                Ok::<f64, RestError>(log_ratio(i, d.header_gives(v)))
+                Ok(log_ratio(i, d.header_gives(v)))
             })?;
             Ok((v, 0.0))
         }
         (false, true) => {
-            let u = increasing(1e-9, vdd, 1e-14, BALANCE, EVALUATIONS, |u| {
+            let u = one_rail(vdd, |u| {
                 let (_, _, i) = d.block(vdd, vdd - u)?;
-                Ok::<f64, RestError>(log_ratio(i, d.footer_takes(vdd - u)))
+                Ok(log_ratio(i, d.footer_takes(vdd - u)))
             })?;
             Ok((vdd, vdd - u))
         }
-        (true, true) => both_rails(d),
+        (true, true) => match both_rails_newton(d)? {
+            Some(at) => Ok(at),
+            None => both_rails(d),
+        },
     }
 }
 
-/// Two virtual rails: the span between them is sought outside, their common position inside. For a given span the block
-/// hardly depends on the position, while header and footer pull it up and down: both balances are monotone.
+/// The span left to the block by one switch. The balance is steep near zero span, where the block's current is ohmic, so the
+/// bracket starts at a millivolt and goes lower only when it must.
+fn one_rail(vdd: f64, mut f: impl FnMut(f64) -> Result<f64, RestError>) -> Result<f64, RestError> {
+    let floor = 1e-3;
+    if f(floor)? > 0.0 {
+        return increasing(1e-9, floor, 1e-15, BALANCE, EVALUATIONS, f);
+    }
+    increasing(floor, vdd, 1e-14, BALANCE, EVALUATIONS, f)
+}
+
+/// Newton with secant updates (Broyden 1965) on the logarithms of both balances; `None` when it does not close.
+fn both_rails_newton(d: &mut Domain<'_>) -> Result<Option<(f64, f64)>, RestError> {
+    let vdd = d.vdd_v;
+    let balance = |d: &mut Domain<'_>, x: [f64; 2]| -> Result<[f64; 2], RestError> {
+        let (_, from, into) = d.block(x[0], x[1])?;
+        // both grow with the span between the rails
+        Ok([log_ratio(from, d.header_gives(x[0])), log_ratio(into, d.footer_takes(x[1]))])
+    };
+    let mut x = [0.65 * vdd, 0.35 * vdd];
+    let mut f = balance(d, x)?;
+    let h = 0.01 * vdd;
+    let fa = balance(d, [x[0] + h, x[1]])?;
+    let fb = balance(d, [x[0], x[1] - h])?;
+    // columns: supply up, ground down
+    let mut j = [[(fa[0] - f[0]) / h, (fb[0] - f[0]) / -h], [(fa[1] - f[1]) / h, (fb[1] - f[1]) / -h]];
+    for _ in 0..40 {
+        if f[0].abs() <= BALANCE && f[1].abs() <= BALANCE {
+            return Ok(Some((x[0], x[1])));
+        }
+        let det = j[0][0] * j[1][1] - j[0][1] * j[1][0];
+        if !(det.abs() > 1e-12) {
+            return Ok(None);
+        }
+        let step = [(-f[0] * j[1][1] + f[1] * j[0][1]) / det, (-f[1] * j[0][0] + f[0] * j[1][0]) / det];
+        let far = step[0].abs().max(step[1].abs());
+        let mut scale = if far > 0.15 * vdd { 0.15 * vdd / far } else { 1.0 };
+        // stay between the real rails and keep the order of the virtual ones
+        let inside = |k: f64| {
+            let y = [x[0] + k * step[0], x[1] + k * step[1]];
+            y[0] < vdd && y[1] > 0.0 && y[0] - y[1] > 0.2 * (x[0] - x[1])
+        };
+        while !inside(scale) {
+            scale *= 0.5;
+            if scale < 1e-9 {
+                return Ok(None);
+            }
+        }
+        let s = [scale * step[0], scale * step[1]];
+        let y = [x[0] + s[0], x[1] + s[1]];
+        let g = balance(d, y)?;
+        let norm = s[0] * s[0] + s[1] * s[1];
+        for r in 0..2 {
+            let miss = g[r] - f[r] - j[r][0] * s[0] - j[r][1] * s[1];
+            for c in 0..2 {
+                j[r][c] += miss * s[c] / norm;
+            }
+        }
+        (x, f) = (y, g);
+    }
+    Ok(None)
+}
+
+/// Two virtual rails without derivatives: the span between them is sought outside, their common position inside. For a given
+/// span the block hardly depends on the position, while header and footer pull it up and down: both balances are monotone.
 fn both_rails(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
     let vdd = d.vdd_v;
     let mut at = (0.5 * vdd, 0.5 * vdd);
-    // span: the current of the block against that of the header
-    let span = increasing(1e-9, vdd, 1e-13, BALANCE, 60, |span| {
-        // position of the ground rail: what the footer takes against what the block returns
+    let span = one_rail(vdd, |span| {
         let ground = increasing(0.0, vdd - span, 1e-14, BALANCE, 60, |g| {
             let (_, from, into) = d.block(g + span, g)?;
-            let gives = d.header_gives(g + span);
-            let takes = d.footer_takes(g);
             // charge balance of the pair: higher position, less from the header and more into the footer
-            Ok::<f64, RestError>(log_ratio(takes + (from - into), gives))
+            Ok::<f64, RestError>(log_ratio(d.footer_takes(g) + (from - into), d.header_gives(g + span)))
         })?;
         at = (ground + span, ground);
         let (_, from, _) = d.block(at.0, at.1)?;
-        Ok::<f64, RestError>(log_ratio(from, d.header_gives(at.0)))
+        Ok(log_ratio(from, d.header_gives(at.0)))
     })?;
     at.0 = at.1 + span;
     Ok(at)
@@ -264,7 +327,9 @@ fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual:
             x.current_a += i;
             x.power_w += i * v;
         }
-        None => supplies.push(SupplyCurrent { supply: name.into(), voltage_v: v, current_a: i, power_w: i * v }),
+        None => {
+            supplies.push(SupplyCurrent { supply: name.into(), voltage_v: v, current_a: i, power_w: i * v })
+        }
     };
     let mut paths: Vec<PathShare> = Vec::new();
     let mut mechanisms = [0.0; 5];
@@ -282,10 +347,8 @@ fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual:
 
     book("vdd", vdd, s.overhead_a);
     book("ground", 0.0, 0.0);
-    for (sw, rail, name, v) in [
-        (&d.header, "vdd", "header", supply),
-        (&d.footer, "ground", "footer", ground),
-    ] {
+    for (sw, rail, name, v) in [(&d.header, "vdd", "header", supply), (&d.footer, "ground", "footer", ground)]
+    {
         let Some(sw) = sw else { continue };
         let b = sw.branches(v);
         let t = b.terminals();
@@ -293,9 +356,11 @@ fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual:
         let spec = if name == "header" { s.header.as_ref() } else { s.footer.as_ref() };
         let (over, bias) = spec.map_or((0.0, 0.0), |x| (x.overdrive_v, x.well_bias_v));
         let on_vdd = sw.gate_v > 0.5 * vdd;
-        let gate_supply = if over != 0.0 { format!("{name}_gate") } else { if on_vdd { "vdd" } else { "ground" }.into() };
+        let gate_supply =
+            if over != 0.0 { format!("{name}_gate") } else { if on_vdd { "vdd" } else { "ground" }.into() };
         book(&gate_supply, sw.gate_v, t[Terminal::Gate as usize]);
-        let body_supply = if bias != 0.0 { format!("{name}_well") } else { if on_vdd { "vdd" } else { "ground" }.into() };
+        let body_supply =
+            if bias != 0.0 { format!("{name}_well") } else { if on_vdd { "vdd" } else { "ground" }.into() };
         book(&body_supply, sw.body_v, t[Terminal::Body as usize]);
         let sign = if name == "header" { -1.0 } else { 1.0 };
         for m in Mechanism::ALL {
@@ -365,7 +430,10 @@ fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual:
     if c.unstable > 0 {
         notes.push(Note::new(
             "state-lost",
-            format!("{} states of cells are not stable at the rest point: what they stored may be lost", c.unstable),
+            format!(
+                "{} states of cells are not stable at the rest point: what they stored may be lost",
+                c.unstable
+            ),
         ));
     }
     Asleep {

@@ -1,58 +1,59 @@
 //! Roots of monotone balances: bracketed in one variable, secant updates in two.
 
 /// A root of an increasing function in `[lo, hi]`, to `tol` in the variable or `f_tol` in the value; at most `limit`
-/// evaluations. The ends need not be evaluated beforehand.
+/// evaluations. When the function has one sign over the whole range, the nearer end is returned.
 ///
-/// Method: Illinois variant of false position with bisection when it stalls.
+/// Method: Chandrupatla, *Adv. Eng. Software* 28 (1997) 145: inverse quadratic interpolation where it is safe,
+/// bisection elsewhere.
 ///
 /// # Errors
 /// Whatever `f` returns.
 pub fn increasing<E>(
-    mut lo: f64,
-    mut hi: f64,
+    lo: f64,
+    hi: f64,
     tol: f64,
     f_tol: f64,
     limit: usize,
     mut f: impl FnMut(f64) -> Result<f64, E>,
 ) -> Result<f64, E> {
-    let mut f_lo = f(lo)?;
-    if f_lo >= 0.0 {
-        return Ok(lo);
-    }
-    let mut f_hi = f(hi)?;
-    if f_hi <= 0.0 {
+    let (mut a, mut fa) = (hi, f(hi)?);
+    if fa <= 0.0 {
         return Ok(hi);
     }
-    let mut last = 0i8;
-    let mut width = hi - lo;
-    for k in 0..limit {
-        let mut x = hi - f_hi * (hi - lo) / (f_hi - f_lo);
-        let inside = x > lo && x < hi;
-        if !inside || (k % 3 == 2 && hi - lo > 0.5 * width) {
-            x = 0.5 * (lo + hi);
-        }
-        if k % 3 == 2 {
-            width = hi - lo;
-        }
-        let y = f(x)?;
-        if y.abs() <= f_tol || hi - lo <= tol {
-            return Ok(x);
-        }
-        if y > 0.0 {
-            (hi, f_hi) = (x, y);
-            if last == 1 {
-                f_lo *= 0.5;
-            }
-            last = 1;
-        } else {
-            (lo, f_lo) = (x, y);
-            if last == -1 {
-                f_hi *= 0.5;
-            }
-            last = -1;
-        }
+    let (mut b, mut fb) = (lo, f(lo)?);
+    if fb >= 0.0 {
+        return Ok(lo);
     }
-    Ok(if f_hi.abs() < f_lo.abs() { hi } else { lo })
+    let (mut c, mut fc) = (a, fa);
+    // the secant first: balances are nearly straight
+    let mut t = (fa / (fa - fb)).clamp(0.02, 0.98);
+    for _ in 0..limit {
+        let x = a + t * (b - a);
+        let y = f(x)?;
+        if (y > 0.0) == (fa > 0.0) {
+            (c, fc) = (a, fa);
+        } else {
+            (c, fc) = (b, fb);
+            (b, fb) = (a, fa);
+        }
+        (a, fa) = (x, y);
+        let (best, f_best) = if fa.abs() < fb.abs() { (a, fa) } else { (b, fb) };
+        let width = (b - a).abs();
+        if f_best.abs() <= f_tol || width <= 2.0 * tol {
+            return Ok(best);
+        }
+        let (xi, phi) = ((a - b) / (c - b), (fa - fb) / (fc - fb));
+        let smooth = phi * phi < xi && (1.0 - phi) * (1.0 - phi) < 1.0 - xi;
+        t = if smooth {
+            fa / (fb - fa) * fc / (fb - fc) + (c - a) / (b - a) * fa / (fc - fa) * fb / (fc - fb)
+        } else {
+            0.5
+        };
+        let edge = (tol / width).min(0.5);
+        t = t.clamp(edge, 1.0 - edge);
+    }
+    let _ = (c, fc);
+    Ok(if fa.abs() < fb.abs() { a } else { b })
 }
 
 #[cfg(test)]

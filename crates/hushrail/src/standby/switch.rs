@@ -56,12 +56,16 @@ impl Switch {
         if let Some(d) = spec.diffusion_m {
             // every diffusion is shared by two fingers; perimeters include the gate edges
             let (area, perimeter) = (finger * d / 2.0, d + finger);
-            params.extend([("ad", area), ("as", area), ("pd", perimeter), ("ps", perimeter)].map(|(n, v)| (n.into(), v)));
+            params.extend(
+                [("ad", area), ("as", area), ("pd", perimeter), ("ps", perimeter)]
+                    .map(|(n, v)| (n.into(), v)),
+            );
         }
         if let Some(e) = spec.edge_m {
             params.extend([("sa", e), ("sb", e)].map(|(n, v)| (n.into(), v)));
         }
-        let request = Request { model: spec.model.to_lowercase().into(), params, at: Place::new(origin, 1, 1) };
+        let request =
+            Request { model: spec.model.to_lowercase().into(), params, at: Place::new(origin, 1, 1) };
         let t = shelf.transistor(process, &request, temp)?;
         let p_channel = t.device.polarity() == Polarity::P;
         let gate_v = if p_channel { vdd_v + spec.overdrive_v } else { -spec.overdrive_v };

@@ -119,21 +119,15 @@ impl<R: Real> Channel<R> {
         let diff = vds * beyond / sum;
 
         let field = (vgsteff + p.vtfbphi2) / (R::lift(p.toxp) * 2e8);
-        let centroid = if field.val() > 0.0 {
-            ((field.ln() * 0.7).exp() + 1.0).recip() * 1.9e-9
-        } else {
-            R::of(1.9e-9)
-        };
+        let centroid =
+            if field.val() > 0.0 { ((field.ln() * 0.7).exp() + 1.0).recip() * 1.9e-9 } else { R::of(1.9e-9) };
         let coxeff = R::lift(p.coxp) * EPS_SI / (centroid * p.coxp + EPS_SI);
         let beta = ueff * coxeff * weff / p.leff;
         let gche = beta * vgsteff * (one - vdseff * abulk * 0.5 / v2t) / (vdseff / esat_l + 1.0);
         let idl = gche / (gche * rds + 1.0);
 
-        let fp = if p.fprout.val() <= 0.0 {
-            one
-        } else {
-            (R::lift(p.leff).sqrt() * p.fprout / v2t + 1.0).recip()
-        };
+        let fp =
+            if p.fprout.val() <= 0.0 { one } else { (R::lift(p.leff).sqrt() * p.fprout / v2t + 1.0).recip() };
         let pvag = if p.pvag.val() == 0.0 {
             one
         } else {

@@ -69,8 +69,7 @@ impl<R: Real> GateCurrents<R> {
         if t.igc != 0 {
             let onset = if t.igc == 1 { vge - p.vth0 } else { vge - th.vth };
             let aux = (onset / t.vt_nigc).softplus() * t.vt_nigc;
-            let igc =
-                vge * aux * t.a_channel * attenuation(t.b_channel, [t.aigc, t.bigc, t.cigc], vox_inv);
+            let igc = vge * aux * t.a_channel * attenuation(t.b_channel, [t.aigc, t.bigc, t.cigc], vox_inv);
             let share = match t.pigcd {
                 Some(v) => R::lift(v),
                 None => {

@@ -211,10 +211,17 @@ impl<P: Real> Prepared<P> {
 
         // body-effect coefficients: given, or from the doping
         let (mut k1, mut k2) = (v[Id::K1], v[Id::K2]);
-        if !card.has(Id::K1) && !card.has(Id::K2) && (card.has(Id::Gamma1) || card.has(Id::Gamma2) || card.has(Id::Nsub)) {
+        if !card.has(Id::K1)
+            && !card.has(Id::K2)
+            && (card.has(Id::Gamma1) || card.has(Id::Gamma2) || card.has(Id::Nsub))
+        {
             let gamma = |id: Id, n: P| if card.has(id) { v[id] } else { n.sqrt() * 5.753e-12 / coxe };
             let (g1, g2) = (gamma(Id::Gamma1, ndep), gamma(Id::Gamma2, v[Id::Nsub]));
-            let vbx = if card.has(Id::Vbx) { -v[Id::Vbx].abs() } else { -(phi - ndep * 7.7348e-4 * v[Id::Xt].sq()).abs() };
+            let vbx = if card.has(Id::Vbx) {
+                -v[Id::Vbx].abs()
+            } else {
+                -(phi - ndep * 7.7348e-4 * v[Id::Xt].sq()).abs()
+            };
             let vbm = -v[Id::Vbm].abs();
             let t2 = (phi * (phi - vbm)).sqrt() - phi;
             k2 = (g1 - g2) * ((phi - vbx).sqrt() - sqrt_phi) / (t2 + vbm);
@@ -231,7 +238,8 @@ impl<P: Real> Prepared<P> {
 
         let stress = Stress::of(card, v, g, tr);
         let (sca, scb, scc) = g.well_proximity;
-        let wpe = if card.flag(Id::Wpemod) == 1 { sca + v[Id::Web] * scb + v[Id::Wec] * scc } else { P::of(0.0) };
+        let wpe =
+            if card.flag(Id::Wpemod) == 1 { sca + v[Id::Web] * scb + v[Id::Wec] * scc } else { P::of(0.0) };
         let vth0 = vth0_plain + (stress.dvth0 + v[Id::Kvth0we] * wpe + g.delvto_v) * sign;
         let k2 = k2 + stress.dk2 + v[Id::K2we] * wpe;
         let eta0 = v[Id::Eta0] + stress.deta0;
@@ -265,16 +273,19 @@ impl<P: Real> Prepared<P> {
         let dvt1wl = v[Id::Dvt1w] * weff * leff;
         // flat-band voltage at zero bias, for the oxide voltage
         let v0 = vbi - phi;
-        let narrow_short0 = if v[Id::Dvt0w].val() == 0.0 { P::of(0.0) } else { v[Id::Dvt0w] * theta(dvt1wl / lt0) * v0 };
+        let narrow_short0 =
+            if v[Id::Dvt0w].val() == 0.0 { P::of(0.0) } else { v[Id::Dvt0w] * theta(dvt1wl / lt0) * v0 };
         let short0 = v[Id::Dvt0] * theta(dvt1l / lt0) * v0;
         let vfbzb = vth0 - narrow_short0 - short0 + v[Id::K3] * narrow + t1_const - phi - k1 * sqrt_phi;
 
         let over_t = card.flag(Id::Tempmod) != 0;
         let linear = |p: Id, p1: Id| if over_t { v[p] * (v[p1] * del_t + 1.0) } else { v[p] + v[p1] * tr };
         let u0 = v[Id::U0] * ratio.pow(v[Id::Ute]) * (v[Id::Ku0we] * wpe + 1.0) * stress.mobility;
-        let vsat = if over_t { v[Id::Vsat] * (-(v[Id::At] * del_t) + 1.0) } else { v[Id::Vsat] - v[Id::At] * tr };
+        let vsat =
+            if over_t { v[Id::Vsat] * (-(v[Id::At] * del_t) + 1.0) } else { v[Id::Vsat] - v[Id::At] * tr };
         let per_width = (size.weffcj * 1e6).pow(v[Id::Wr]);
-        let rdsw = if over_t { v[Id::Rdsw] * (v[Id::Prt] * del_t + 1.0) } else { v[Id::Rdsw] + v[Id::Prt] * tr };
+        let rdsw =
+            if over_t { v[Id::Rdsw] * (v[Id::Prt] * del_t + 1.0) } else { v[Id::Rdsw] + v[Id::Prt] * tr };
         let rdswmin = if over_t { v[Id::Rdswmin] * (v[Id::Prt] * del_t + 1.0) } else { v[Id::Rdswmin] };
         let floor0 = |x: P| if x.val() < 0.0 { P::of(0.0) } else { x };
 
@@ -289,10 +300,8 @@ impl<P: Real> Prepared<P> {
             let on = a.val() > 0.0 && b.val() > 0.0 && (c.val() > 0.0 || card.flag(Id::Gidlmod) == 1);
             on.then_some(Gidl { a, b, c, e, r, k, f })
         };
-        let gidl =
-            gidl_of([Id::Agidl, Id::Bgidl, Id::Cgidl, Id::Egidl, Id::Rgidl, Id::Kgidl, Id::Fgidl]);
-        let gisl =
-            gidl_of([Id::Agisl, Id::Bgisl, Id::Cgisl, Id::Egisl, Id::Rgisl, Id::Kgisl, Id::Fgisl]);
+        let gidl = gidl_of([Id::Agidl, Id::Bgidl, Id::Cgidl, Id::Egidl, Id::Rgidl, Id::Kgidl, Id::Fgidl]);
+        let gisl = gidl_of([Id::Agisl, Id::Bgisl, Id::Cgisl, Id::Egisl, Id::Rgisl, Id::Kgisl, Id::Fgisl]);
 
         let igc = card.flag(Id::Igcmod);
         let igb = card.flag(Id::Igbmod) == 1;

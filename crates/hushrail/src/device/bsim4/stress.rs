@@ -32,7 +32,11 @@ impl<P: Real> Stress<P> {
     pub fn of(card: &Card, v: &Values<P>, g: &Geometry<P>, tr: P) -> Self {
         let zero = P::of(0.0);
         let none = Self { mobility: P::of(1.0), velocity: P::of(1.0), dvth0: zero, dk2: zero, deta0: zero };
-        #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "finger counts are small")]
+        #[expect(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "finger counts are small"
+        )]
         let fingers = g.fingers.val().round().max(1.0) as usize;
         if !(g.sa_m.val() > 0.0 && g.sb_m.val() > 0.0 && (fingers == 1 || g.sd_m.val() > 0.0)) {
             return none;
@@ -54,7 +58,8 @@ impl<P: Real> Stress<P> {
         };
         let kvth = law(Id::Lkvth0, Id::Wkvth0, Id::Pkvth0, Id::Llodvth, Id::Wlodvth);
         let kvth = (kvth.sq() + 1e-9).sqrt();
-        let ku = law(Id::Lku0, Id::Wku0, Id::Pku0, Id::Llodku0, Id::Wlodku0) * (v[Id::Tku0] * tr + 1.0) + 1e-9;
+        let ku =
+            law(Id::Lku0, Id::Wku0, Id::Pku0, Id::Llodku0, Id::Wlodku0) * (v[Id::Tku0] * tr + 1.0) + 1e-9;
         let (rho, rho_ref) = (v[Id::Ku0] / ku * od, v[Id::Ku0] / ku * od_ref);
         let offset = od - od_ref;
         let _ = card;

@@ -357,26 +357,152 @@ pub const COUNT: usize = ROWS.len();
 
 /// Parameters of the manual that bear on charge, noise, radio-frequency networks or checking only.
 pub const NO_STATIC_EFFECT: &[&str] = &[
-    "acde", "acnqsmod", "af", "bvsd", "capmod", "cf", "cgbo", "cgdl", "cgdo", "cgsl", "cgso", "cigbcv", "cjd", "cjs", "cjswd",
-    "cjswgd", "cjswgs", "cjsws", "ckappad", "ckappas", "clc", "cle", "cvchargemod", "dlc", "ef", "em", "fnoimod", "gbmin",
-    "kf", "lintnoi", "llc", "lwc", "lwlc", "minvcv", "mjd", "mjs", "mjswd", "mjswgd", "mjswgs", "mjsws", "moin", "ngcon",
-    "noff", "noia", "noib", "noic", "ntnoi", "paramchk", "pbd", "pbs", "pbswd", "pbswgd", "pbswgs", "pbsws", "rbdb",
-    "rbdbx0", "rbdby0", "rbpb", "rbpbx0", "rbpbxl", "rbpbxnf", "rbpbxw", "rbpby0", "rbpbyl", "rbpbynf", "rbpbyw", "rbpd",
-    "rbpd0", "rbpdl", "rbpdnf", "rbpdw", "rbps", "rbps0", "rbpsl", "rbpsnf", "rbpsw", "rbsb", "rbsbx0", "rbsby0",
-    "rbsdbxl", "rbsdbxnf", "rbsdbxw", "rbsdbyl", "rbsdbynf", "rbsdbyw", "rgatemod", "rnoia", "rnoib", "rnoic", "rshg", "tcj",
-    "tcjsw", "tcjswg", "tnoia", "tnoib", "tnoic", "tnoimod", "tpb", "tpbsw", "tpbswg", "trnqsmod", "tvoffcv", "vfbcv",
-    "voffcv", "voffcvl", "vgs_max", "vgd_max", "vgb_max", "vds_max", "vbs_max", "vbd_max", "vgsr_max", "vgdr_max",
-    "vgbr_max", "vbsr_max", "vbdr_max", "xgl", "xgw", "xpart", "xrcrg1", "xrcrg2",
+    "acde",
+    "acnqsmod",
+    "af",
+    "bvsd",
+    "capmod",
+    "cf",
+    "cgbo",
+    "cgdl",
+    "cgdo",
+    "cgsl",
+    "cgso",
+    "cigbcv",
+    "cjd",
+    "cjs",
+    "cjswd",
+    "cjswgd",
+    "cjswgs",
+    "cjsws",
+    "ckappad",
+    "ckappas",
+    "clc",
+    "cle",
+    "cvchargemod",
+    "dlc",
+    "ef",
+    "em",
+    "fnoimod",
+    "gbmin",
+    "kf",
+    "lintnoi",
+    "llc",
+    "lwc",
+    "lwlc",
+    "minvcv",
+    "mjd",
+    "mjs",
+    "mjswd",
+    "mjswgd",
+    "mjswgs",
+    "mjsws",
+    "moin",
+    "ngcon",
+    "noff",
+    "noia",
+    "noib",
+    "noic",
+    "ntnoi",
+    "paramchk",
+    "pbd",
+    "pbs",
+    "pbswd",
+    "pbswgd",
+    "pbswgs",
+    "pbsws",
+    "rbdb",
+    "rbdbx0",
+    "rbdby0",
+    "rbpb",
+    "rbpbx0",
+    "rbpbxl",
+    "rbpbxnf",
+    "rbpbxw",
+    "rbpby0",
+    "rbpbyl",
+    "rbpbynf",
+    "rbpbyw",
+    "rbpd",
+    "rbpd0",
+    "rbpdl",
+    "rbpdnf",
+    "rbpdw",
+    "rbps",
+    "rbps0",
+    "rbpsl",
+    "rbpsnf",
+    "rbpsw",
+    "rbsb",
+    "rbsbx0",
+    "rbsby0",
+    "rbsdbxl",
+    "rbsdbxnf",
+    "rbsdbxw",
+    "rbsdbyl",
+    "rbsdbynf",
+    "rbsdbyw",
+    "rgatemod",
+    "rnoia",
+    "rnoib",
+    "rnoic",
+    "rshg",
+    "tcj",
+    "tcjsw",
+    "tcjswg",
+    "tnoia",
+    "tnoib",
+    "tnoic",
+    "tnoimod",
+    "tpb",
+    "tpbsw",
+    "tpbswg",
+    "trnqsmod",
+    "tvoffcv",
+    "vfbcv",
+    "voffcv",
+    "voffcvl",
+    "vgs_max",
+    "vgd_max",
+    "vgb_max",
+    "vds_max",
+    "vbs_max",
+    "vbd_max",
+    "vgsr_max",
+    "vgdr_max",
+    "vgbr_max",
+    "vbsr_max",
+    "vbdr_max",
+    "xgl",
+    "xgw",
+    "xpart",
+    "xrcrg1",
+    "xrcrg2",
 ];
 /// Members of [`NO_STATIC_EFFECT`] that take length, width and product terms.
 pub const NO_STATIC_EFFECT_BINNED: &[&str] = &[
-    "acde", "cf", "cgdl", "cgsl", "ckappad", "ckappas", "clc", "cle", "minvcv", "moin", "noff", "vfbcv", "voffcv",
-    "xrcrg1", "xrcrg2",
+    "acde", "cf", "cgdl", "cgsl", "ckappad", "ckappas", "clc", "cle", "minvcv", "moin", "noff", "vfbcv",
+    "voffcv", "xrcrg1", "xrcrg2",
 ];
 /// Parameters of the manual that would change static currents and are not computed yet; refused, not ignored.
 pub const NOT_COMPUTED: &[&str] = &[
-    "eot", "vddeot", "leffeot", "weffeot", "tempeot", "ados", "bdos", "phig", "epsrgate", "easub", "epsrsub", "ni0sub",
-    "bg0sub", "tbgasub", "tbgbsub", "mtrlcompatmod", "nfactor0",
+    "eot",
+    "vddeot",
+    "leffeot",
+    "weffeot",
+    "tempeot",
+    "ados",
+    "bdos",
+    "phig",
+    "epsrgate",
+    "easub",
+    "epsrsub",
+    "ni0sub",
+    "bg0sub",
+    "tbgasub",
+    "tbgbsub",
+    "mtrlcompatmod",
+    "nfactor0",
 ];
 
 /// Which part of a parameter a name of the card gives.
@@ -405,37 +531,43 @@ pub enum Meaning {
 
 /// Looks a name of a card up.
 pub fn meaning(name: &str) -> Option<Meaning> {
-    static INDEX: std::sync::LazyLock<rustc_hash::FxHashMap<String, Meaning>> = std::sync::LazyLock::new(|| {
-        let mut map = rustc_hash::FxHashMap::default();
-        let parts = [("l", Part::Length), ("w", Part::Width), ("p", Part::Product)];
-        for (row, id) in ROWS.iter().zip(IDS) {
-            if row.kind == Kind::Binned {
-                for (letter, part) in parts {
-                    map.insert(format!("{letter}{}", row.name), Meaning::Static(*id, part));
+    static INDEX: std::sync::LazyLock<rustc_hash::FxHashMap<String, Meaning>> =
+        std::sync::LazyLock::new(|| {
+            let mut map = rustc_hash::FxHashMap::default();
+            let parts = [("l", Part::Length), ("w", Part::Width), ("p", Part::Product)];
+            for (row, id) in ROWS.iter().zip(IDS) {
+                if row.kind == Kind::Binned {
+                    for (letter, part) in parts {
+                        map.insert(format!("{letter}{}", row.name), Meaning::Static(*id, part));
+                    }
                 }
             }
-        }
-        for name in NO_STATIC_EFFECT_BINNED {
-            for (letter, _) in parts {
-                map.insert(format!("{letter}{name}"), Meaning::NoEffect);
+            for name in NO_STATIC_EFFECT_BINNED {
+                for (letter, _) in parts {
+                    map.insert(format!("{letter}{name}"), Meaning::NoEffect);
+                }
             }
-        }
-        // names of their own win over a letter in front of another name
-        for name in NO_STATIC_EFFECT {
-            map.insert((*name).to_owned(), Meaning::NoEffect);
-        }
-        for name in NOT_COMPUTED {
-            map.insert((*name).to_owned(), Meaning::NotComputed);
-        }
-        for (row, id) in ROWS.iter().zip(IDS) {
-            map.insert(row.name.to_owned(), Meaning::Static(*id, Part::Base));
-        }
-        // other spellings in use for the same parameters
-        for (alias, id) in [("pdibl1", Id::Pdiblc1), ("pdibl2", Id::Pdiblc2), ("pdiblb", Id::Pdiblcb), ("vtho", Id::Vth0)] {
-            map.insert(alias.to_owned(), Meaning::Static(id, Part::Base));
-        }
-        map
-    });
+            // names of their own win over a letter in front of another name
+            for name in NO_STATIC_EFFECT {
+                map.insert((*name).to_owned(), Meaning::NoEffect);
+            }
+            for name in NOT_COMPUTED {
+                map.insert((*name).to_owned(), Meaning::NotComputed);
+            }
+            for (row, id) in ROWS.iter().zip(IDS) {
+                map.insert(row.name.to_owned(), Meaning::Static(*id, Part::Base));
+            }
+            // other spellings in use for the same parameters
+            for (alias, id) in [
+                ("pdibl1", Id::Pdiblc1),
+                ("pdibl2", Id::Pdiblc2),
+                ("pdiblb", Id::Pdiblcb),
+                ("vtho", Id::Vth0),
+            ] {
+                map.insert(alias.to_owned(), Meaning::Static(id, Part::Base));
+            }
+            map
+        });
     INDEX.get(name).copied()
 }
 

@@ -25,11 +25,8 @@ pub(super) fn folded<R: Real>(x: R, limit: f64, top: (f64, f64), bottom: (f64, f
 fn effective_body<P: Real, R: Over<P>>(p: &Prepared<P>, vbs: R) -> R {
     let t0 = vbs - p.vbsc - 0.001;
     let t1 = (t0.sq() - R::lift(p.vbsc) * 0.004).sqrt();
-    let low = if t0.val() >= 0.0 {
-        (t0 + t1) * 0.5 + p.vbsc
-    } else {
-        (R::of(-0.002) / (t1 - t0) + 1.0) * p.vbsc
-    };
+    let low =
+        if t0.val() >= 0.0 { (t0 + t1) * 0.5 + p.vbsc } else { (R::of(-0.002) / (t1 - t0) + 1.0) * p.vbsc };
     let t9 = R::lift(p.phi) * 0.95;
     let t0 = t9 - low - 0.001;
     t9 - (t0 + (t0.sq() + t9 * 0.004).sqrt()) * 0.5

@@ -76,9 +76,10 @@ impl Card {
                     return Err(ReadError::Syntax {
                         at: def.loc.place(&deck.files),
                         found: format!("parameter `{name}` of model `{}`", model.name),
-                        wanted: "it would change static currents and is not computed yet; remove it only if the \
+                        wanted:
+                            "it would change static currents and is not computed yet; remove it only if the \
                                  foundry says that it has no effect"
-                            .into(),
+                                .into(),
                     });
                 }
                 None => {
@@ -91,15 +92,14 @@ impl Card {
                 }
             }
         }
-        if no_effect > 0 {
+        let known =
+            |n: &Note| n.code == "no-static-effect" && n.text.contains(&format!("`{}`", model.family()));
+        if no_effect > 0 && !notes.iter().any(known) {
             let text = format!(
                 "model family `{}`: parameters for charge, noise and radio frequency have no effect on static currents",
                 model.family()
             );
-            let note = Note::new("no-static-effect", text);
-            if !notes.contains(&note) {
-                notes.push(note);
-            }
+            notes.push(Note::new("no-static-effect", text));
         }
         let mut card = Self { polarity, base, given, terms };
         card.fill_defaults();
@@ -170,7 +170,12 @@ impl Card {
             let v = self.base(id);
             if !values.contains(&v) {
                 let name = ROWS[id as usize].name.to_owned();
-                return Err(ReadError::Range { at: place(id), name, value: v.to_string(), wanted: wanted.into() });
+                return Err(ReadError::Range {
+                    at: place(id),
+                    name,
+                    value: v.to_string(),
+                    wanted: wanted.into(),
+                });
             }
         }
         if !self.has(Id::Level) {
@@ -244,7 +249,11 @@ impl<P: Real> Values<P> {
     /// an effective size is not above 1 nm.
     ///
     /// Source: BSIM4.8.0 manual, sections 1.3 and 15.
-    pub fn at(card: &Card, g: &Geometry<P>, change: impl Fn(Id, f64) -> P) -> Result<Self, (&'static str, f64)> {
+    pub fn at(
+        card: &Card,
+        g: &Geometry<P>,
+        change: impl Fn(Id, f64) -> P,
+    ) -> Result<Self, (&'static str, f64)> {
         let base = |id: Id| change(id, card.base(id));
         let one = P::of(1.0);
         let lnew = g.length_m + base(Id::Xl);

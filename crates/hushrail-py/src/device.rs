@@ -1,0 +1,215 @@
+//! Processes and devices.
+
+use std::path::Path;
+use std::sync::Arc;
+
+use hushrail::batch::load::load_process;
+use hushrail::batch::study::ProcessSpec;
+use hushrail::device::process::Request;
+use hushrail::device::{Bias, Mechanism, Polarity};
+use hushrail::physics::Kelvin;
+use hushrail::read::Place;
+use indexmap::IndexMap;
+use numpy::ndarray::{Array2, Array3};
+use numpy::{IntoPyArray, PyArray2, PyArray3, PyReadonlyArray1};
+use pyo3::prelude::*;
+
+use crate::error;
+
+/// Cards of one process corner.
+#[pyclass(module = "hushrail", frozen)]
+pub struct Process {
+    pub inner: Arc<hushrail::device::process::Process>,
+}
+
+fn request(model: &str, params: IndexMap<String, f64>) -> Request {
+    let at = Place::new(&Arc::from("request"), 1, 1);
+    let params = params.into_iter().map(|(n, v)| (Arc::from(n.to_lowercase()), v)).collect();
+    Request { model: model.to_lowercase().into(), params, at }
+}
+
+#[pymethods]
+impl Process {
+    /// Reads cards.
+    #[staticmethod]
+    #[pyo3(signature = (name, files, *, section=None, skip_includes=Vec::new(), scale_m=None, models=IndexMap::new()))]
+    fn read(
+        py: Python<'_>,
+        name: &str,
+        files: Vec<String>,
+        section: Option<String>,
+        skip_includes: Vec<String>,
+        scale_m: Option<f64>,
+        models: IndexMap<String, String>,
+    ) -> PyResult<Self> {
+        let spec = ProcessSpec { files, section, skip_includes, scale_m };
+        let p =
+            py.detach(|| load_process(name, &spec, &models, Path::new(""))).map_err(|e| error::read(&e))?;
+        Ok(Self { inner: Arc::new(p) })
+    }
+
+    /// Name of the process.
+    #[getter]
+    fn name(&self) -> &str {
+        &self.inner.name
+    }
+
+    /// Names of models and wrappers.
+    fn model_names(&self) -> Vec<String> {
+        self.inner.model_names()
+    }
+
+    /// Remarks of the reader as (code, text).
+    fn notes(&self) -> Vec<(String, String)> {
+        self.inner.deck.notes.iter().map(|n| (n.code.clone(), n.text.clone())).collect()
+    }
+
+    /// Parameters of a card at a geometry, bins added.
+    fn effective(&self, model: &str, params: IndexMap<String, f64>) -> PyResult<IndexMap<&'static str, f64>> {
+        self.inner.effective(&request(model, params)).map_err(|e| error::read(&e))
+    }
+
+    /// Makes a transistor at a temperature.
+    fn transistor(&self, model: &str, params: IndexMap<String, f64>, temp_c: f64) -> PyResult<Device> {
+        let temp = Kelvin::from_celsius(temp_c).map_err(|e| error::temperature(&e))?;
+        let mut notes = Vec::new();
+        let t =
+            self.inner.transistor(&request(model, params), temp, &mut notes).map_err(|e| error::read(&e))?;
+        let notes = notes.into_iter().map(|n| (n.code, n.text)).collect();
+        Ok(Device { inner: t.device, count: t.count, temp_c, model: model.to_owned(), notes })
+    }
+
+    fn __repr__(&self) -> String {
+        format!("Process({:?}, {} models)", self.inner.name, self.inner.model_names().len())
+    }
+}
+
+/// A transistor at one temperature.
+#[pyclass(module = "hushrail", frozen)]
+pub struct Device {
+    inner: Arc<dyn hushrail::device::Device>,
+    count: f64,
+    temp_c: f64,
+    model: String,
+    notes: Vec<(String, String)>,
+}
+
+#[pymethods]
+impl Device {
+    /// "n" or "p".
+    #[getter]
+    fn polarity(&self) -> &'static str {
+        if self.inner.polarity() == Polarity::N { "n" } else { "p" }
+    }
+    /// Electrical oxide thickness, m.
+    #[getter]
+    fn oxide_m(&self) -> f64 {
+        self.inner.oxide_m()
+    }
+    /// Temperature, degrees Celsius.
+    #[getter]
+    fn temp_c(&self) -> f64 {
+        self.temp_c
+    }
+    /// Whether GIDL is in the card.
+    #[getter]
+    fn has_gidl(&self) -> bool {
+        self.inner.has_gidl()
+    }
+    /// Remarks as (code, text).
+    #[getter]
+    fn notes(&self) -> Vec<(String, String)> {
+        self.notes.clone()
+    }
+
+    /// Currents into drain, gate, source, body at N biases: shape (N, 4), A.
+    fn currents<'py>(
+        &self,
+        py: Python<'py>,
+        vd: PyReadonlyArray1<'py, f64>,
+        vg: PyReadonlyArray1<'py, f64>,
+        vs: PyReadonlyArray1<'py, f64>,
+        vb: PyReadonlyArray1<'py, f64>,
+    ) -> PyResult<Bound<'py, PyArray2<f64>>> {
+        let (vd, vg, vs, vb) = (vd.as_array(), vg.as_array(), vs.as_array(), vb.as_array());
+        let n = same_length(&[vd.len(), vg.len(), vs.len(), vb.len()])?;
+        let out = py.detach(|| {
+            let mut out = Array2::zeros((n, 4));
+            for i in 0..n {
+                let t = self.inner.branches(Bias::from_terminals(vd[i], vg[i], vs[i], vb[i])).terminals();
+                for k in 0..4 {
+                    out[[i, k]] = t[k] * self.count;
+                }
+            }
+            out
+        });
+        Ok(out.into_pyarray(py))
+    }
+
+    /// The same by mechanism: shape (N, 5, 4).
+    fn by_mechanism<'py>(
+        &self,
+        py: Python<'py>,
+        vd: PyReadonlyArray1<'py, f64>,
+        vg: PyReadonlyArray1<'py, f64>,
+        vs: PyReadonlyArray1<'py, f64>,
+        vb: PyReadonlyArray1<'py, f64>,
+    ) -> PyResult<Bound<'py, PyArray3<f64>>> {
+        let (vd, vg, vs, vb) = (vd.as_array(), vg.as_array(), vs.as_array(), vb.as_array());
+        let n = same_length(&[vd.len(), vg.len(), vs.len(), vb.len()])?;
+        let out = py.detach(|| {
+            let mut out = Array3::zeros((n, 5, 4));
+            for i in 0..n {
+                let b = self.inner.branches(Bias::from_terminals(vd[i], vg[i], vs[i], vb[i]));
+                for (m, mechanism) in Mechanism::ALL.into_iter().enumerate() {
+                    for (k, x) in b.terminals_of(mechanism).into_iter().enumerate() {
+                        out[[i, m, k]] = x * self.count;
+                    }
+                }
+            }
+            out
+        });
+        Ok(out.into_pyarray(py))
+    }
+
+    /// Slopes of the terminal currents to (vd, vg, vs, vb): shape (N, 4, 4), S.
+    fn conductances<'py>(
+        &self,
+        py: Python<'py>,
+        vd: PyReadonlyArray1<'py, f64>,
+        vg: PyReadonlyArray1<'py, f64>,
+        vs: PyReadonlyArray1<'py, f64>,
+        vb: PyReadonlyArray1<'py, f64>,
+    ) -> PyResult<Bound<'py, PyArray3<f64>>> {
+        let (vd, vg, vs, vb) = (vd.as_array(), vg.as_array(), vs.as_array(), vb.as_array());
+        let n = same_length(&[vd.len(), vg.len(), vs.len(), vb.len()])?;
+        let out = py.detach(|| {
+            let mut out = Array3::zeros((n, 4, 4));
+            for i in 0..n {
+                let bias = Bias::from_terminals(vd[i], vg[i], vs[i], vb[i]);
+                let t = self.inner.branches_dual(bias.dual()).terminals();
+                for (k, x) in t.iter().enumerate() {
+                    let d = x.d;
+                    for (u, g) in [d[1], d[0], -(d[0] + d[1] + d[2]), d[2]].into_iter().enumerate() {
+                        out[[i, k, u]] = g * self.count;
+                    }
+                }
+            }
+            out
+        });
+        Ok(out.into_pyarray(py))
+    }
+
+    fn __repr__(&self) -> String {
+        format!("Device({:?}, {}-channel, {} °C)", self.model, self.polarity(), self.temp_c)
+    }
+}
+
+fn same_length(lengths: &[usize]) -> PyResult<usize> {
+    let n = lengths[0];
+    if lengths.iter().all(|l| *l == n) {
+        Ok(n)
+    } else {
+        Err(error::range(format!("bias arrays have lengths {lengths:?}; want one length")))
+    }
+}

@@ -1,0 +1,89 @@
+//! Studies: everything crosses the border as JSON text in the core's own form.
+
+use std::path::Path;
+
+use hushrail::batch::characterise::{TableRequest, table_of_study};
+use hushrail::batch::compare::{CompareRequest, compare_study};
+use hushrail::batch::study::read_study;
+use hushrail::batch::{estimate as core_estimate, load_study};
+use hushrail::circuit::newton::SolveOptions;
+use hushrail::read::verilog::read_verilog;
+use hushrail::read::{ReadError, Source};
+use pyo3::prelude::*;
+
+use crate::error;
+use crate::run::run;
+
+fn text<T: serde::Serialize>(value: &T) -> PyResult<String> {
+    serde_json::to_string(value).map_err(|e| error::range(format!("result cannot be written as JSON: {e}")))
+}
+
+/// Runs a study; JSON of the estimate.
+#[pyfunction]
+#[pyo3(signature = (path, *, progress=None))]
+pub fn estimate(py: Python<'_>, path: &str, progress: Option<Py<PyAny>>) -> PyResult<String> {
+    let loaded = py
+        .detach(|| {
+            let source = Source::open(Path::new(path))?;
+            let study = read_study(&source)?;
+            load_study(&study, &source.path, &source.folder)
+        })
+        .map_err(|e: ReadError| error::read(&e))?;
+    let result = run(py, progress.as_ref(), |p| core_estimate(&loaded, &SolveOptions::default(), p))?;
+    text(&result)
+}
+
+/// Leakage table of the cells of a study; JSON.
+#[pyfunction]
+#[pyo3(signature = (path, *, cells=Vec::new(), floor_s=0.0, progress=None))]
+pub fn cell_table(
+    py: Python<'_>,
+    path: &str,
+    cells: Vec<String>,
+    floor_s: f64,
+    progress: Option<Py<PyAny>>,
+) -> PyResult<String> {
+    let request = TableRequest { study: path.into(), cells, floor_s };
+    let result = run(py, progress.as_ref(), |p| table_of_study(&request, &SolveOptions::default(), p))?;
+    text(&result.map_err(|e| error::table(&e))?)
+}
+
+/// Predictions against a published table; JSON.
+#[pyfunction]
+#[pyo3(signature = (path, table, *, corners=None, prefix="", floor_s=0.0, progress=None))]
+pub fn compare(
+    py: Python<'_>,
+    path: &str,
+    table: &str,
+    corners: Option<String>,
+    prefix: &str,
+    floor_s: f64,
+    progress: Option<Py<PyAny>>,
+) -> PyResult<String> {
+    let request = CompareRequest {
+        study: path.into(),
+        table: table.into(),
+        corners: corners.map(Into::into),
+        prefix: prefix.to_owned(),
+        floor_s,
+    };
+    let result = run(py, progress.as_ref(), |p| compare_study(&request, &SolveOptions::default(), p))?;
+    text(&result.map_err(|e| error::read(&e))?)
+}
+
+/// Instance counts of structural Verilog: top module and (master, count) pairs in first-seen order.
+#[pyfunction]
+#[pyo3(signature = (files, *, top=None, path=""))]
+pub fn count(
+    py: Python<'_>,
+    files: Vec<String>,
+    top: Option<&str>,
+    path: &str,
+) -> PyResult<(String, Vec<(String, u64)>)> {
+    py.detach(|| {
+        let sources = files.iter().map(|f| Source::open(Path::new(f))).collect::<Result<Vec<_>, _>>()?;
+        let counts = read_verilog(&sources)?.counts_under(top, path)?;
+        Ok((counts.top, counts.counts.into_iter().collect()))
+    })
+    .map_err(|e: ReadError| error::read(&e))
+}
