@@ -71,7 +71,7 @@ impl Process {
 
     /// Makes a transistor at a temperature.
     fn transistor(&self, model: &str, params: IndexMap<String, f64>, temp_c: f64) -> PyResult<Device> {
-        let temp = Kelvin::from_celsius(temp_c).map_err(|e| error::temperature(&e))?;
+        let temp = Kelvin::from_celsius(temp_c).map_err(error::temperature)?;
         let mut notes = Vec::new();
         let t =
             self.inner.transistor(&request(model, params), temp, &mut notes).map_err(|e| error::read(&e))?;

@@ -38,7 +38,7 @@ pub fn range(text: String) -> PyErr {
 }
 
 /// A temperature out of range.
-pub fn temperature(e: &TemperatureOutOfRange) -> PyErr {
+pub fn temperature(e: TemperatureOutOfRange) -> PyErr {
     range(e.to_string())
 }
 

@@ -1,5 +1,7 @@
 //! The Python binding of hushrail: conversion, errors, the interpreter lock and interrupts, nothing else.
 
+#![expect(clippy::needless_pass_by_value, reason = "signatures that the border takes")]
+
 mod device;
 mod error;
 mod run;

@@ -1,5 +1,7 @@
 //! Real cards against outside numbers: the open SKY130 kit (Apache-2.0), kept beside the project when present.
 
+#![expect(clippy::print_stdout, reason = "skips and worst points are said aloud")]
+
 use std::path::PathBuf;
 use std::sync::Arc;
 

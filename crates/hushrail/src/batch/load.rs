@@ -179,19 +179,15 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
     let mut netlists: IndexMap<&[String], crate::read::verilog::Netlist> = IndexMap::new();
     let mut domains = Vec::new();
     for d in &study.domain {
-        let counts: InstanceCounts = match &d.counts {
-            Some(f) => read_counts_csv(&Source::open(&folder.join(f))?)?,
-            None => {
-                if !netlists.contains_key(d.verilog.as_slice()) {
-                    let sources = d
-                        .verilog
-                        .iter()
-                        .map(|f| Source::open(&folder.join(f)))
-                        .collect::<Result<Vec<_>, _>>()?;
-                    netlists.insert(&d.verilog, read_verilog(&sources)?);
-                }
-                netlists[d.verilog.as_slice()].counts_under(d.top.as_deref(), &d.path)?
+        let counts: InstanceCounts = if let Some(f) = &d.counts {
+            read_counts_csv(&Source::open(&folder.join(f))?)?
+        } else {
+            if !netlists.contains_key(d.verilog.as_slice()) {
+                let sources =
+                    d.verilog.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
+                netlists.insert(&d.verilog, read_verilog(&sources)?);
             }
+            netlists[d.verilog.as_slice()].counts_under(d.top.as_deref(), &d.path)?
         };
         let block = library
             .with_reader(|reader| build_block(&counts, reader, &d.policy, &d.weights(), &mut notes))?;

@@ -152,15 +152,15 @@ pub fn build_block(
             }
             (None, Some(Policy::Error)) => lost.push((master, count)),
             (None, Some(policy)) => {
-                if let Policy::CurrentA(a) = policy {
-                    if !(a >= 0.0 && a.is_finite()) {
-                        return Err(ReadError::Range {
-                            at: at(),
-                            name: format!("current of `{master}`"),
-                            value: format!("{a} A"),
-                            wanted: "want zero or more".into(),
-                        });
-                    }
+                if let Policy::CurrentA(a) = policy
+                    && !(a >= 0.0 && a.is_finite())
+                {
+                    return Err(ReadError::Range {
+                        at: at(),
+                        name: format!("current of `{master}`"),
+                        value: format!("{a} A"),
+                        wanted: "want zero or more".into(),
+                    });
                 }
                 block.uncovered.push(Uncovered { master: master.clone(), count, policy });
             }

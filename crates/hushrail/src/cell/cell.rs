@@ -246,19 +246,19 @@ impl CellReader<'_> {
         }
         let mut rail_at: IndexMap<Node, Role> = IndexMap::new();
         for (i, r) in roles.iter().enumerate() {
-            if matches!(r, Role::Supply | Role::Ground) {
-                if let Some(other) = rail_at.insert(port_nodes[i], *r).filter(|o| o != r) {
-                    return Err(ReadError::Syntax {
-                        at,
-                        found: format!(
-                            "in cell `{}` {} and {} are tied together",
-                            sub.name,
-                            other.name(),
-                            r.name()
-                        ),
-                        wanted: "remove the tie".into(),
-                    });
-                }
+            if matches!(r, Role::Supply | Role::Ground)
+                && let Some(other) = rail_at.insert(port_nodes[i], *r).filter(|o| o != r)
+            {
+                return Err(ReadError::Syntax {
+                    at,
+                    found: format!(
+                        "in cell `{}` {} and {} are tied together",
+                        sub.name,
+                        other.name(),
+                        r.name()
+                    ),
+                    wanted: "remove the tie".into(),
+                });
             }
         }
         let cell = Cell {
@@ -456,17 +456,17 @@ impl Cell {
             }
         }
         for p in &self.parts {
-            if let Part::Transistor(r, n) = p {
-                if !driven[n[1]] {
-                    return Err(ReadError::Syntax {
-                        at: r.at.clone(),
-                        found: format!(
-                            "the gate at node `{}` of cell `{}` is driven by nothing",
-                            self.nodes[n[1]], self.name
-                        ),
-                        wanted: "connect it to a port or to the drain of a transistor".into(),
-                    });
-                }
+            if let Part::Transistor(r, n) = p
+                && !driven[n[1]]
+            {
+                return Err(ReadError::Syntax {
+                    at: r.at.clone(),
+                    found: format!(
+                        "the gate at node `{}` of cell `{}` is driven by nothing",
+                        self.nodes[n[1]], self.name
+                    ),
+                    wanted: "connect it to a port or to the drain of a transistor".into(),
+                });
             }
         }
         Ok(())

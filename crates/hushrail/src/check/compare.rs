@@ -365,9 +365,10 @@ impl Comparison<'_> {
             let mut n = 0;
             let reason = match product_term(&r.when) {
                 None => format!("condition `{}` is not a product of pins", r.when),
-                Some(pins) => match pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
-                    Some(p) => format!("the cell has no pin `{p}`"),
-                    None => {
+                Some(pins) => {
+                    if let Some(p) = pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
+                        format!("the cell has no pin `{p}`")
+                    } else {
                         for (_, bits, power) in &solved {
                             let fits = pins.iter().all(|(p, want)| {
                                 cell.ports.iter().zip(bits).any(|(q, b)| **q == **p && b == want)
@@ -379,7 +380,7 @@ impl Comparison<'_> {
                         }
                         "no state of the netlist fits the condition".into()
                     }
-                },
+                }
             };
             if n > 0 {
                 good.push(ComparedRow {

@@ -120,13 +120,12 @@ impl<'a> Solver<'a> {
         for _ in 0..self.options.sweeps {
             let mut moved = false;
             for &c in group {
-                match self.component(&plan.components[c], v, w) {
-                    Ok(m) => moved |= m,
-                    Err(_) => {
-                        v.copy_from_slice(&start);
-                        self.joint(group, v, w)?;
-                        return Ok(true);
-                    }
+                if let Ok(m) = self.component(&plan.components[c], v, w) {
+                    moved |= m;
+                } else {
+                    v.copy_from_slice(&start);
+                    self.joint(group, v, w)?;
+                    return Ok(true);
                 }
             }
             ever |= moved;
@@ -278,10 +277,10 @@ impl<'a> Solver<'a> {
                 self.rereference(&mut v[node]);
             }
         }
-        Err(self.unbalanced(c, worst, self.options.newton_steps))
+        Err(Self::unbalanced(c, worst, self.options.newton_steps))
     }
 
-    fn unbalanced(&self, c: &Component, worst: (usize, f64, f64), steps: usize) -> Unbalanced {
+    fn unbalanced(c: &Component, worst: (usize, f64, f64), steps: usize) -> Unbalanced {
         Unbalanced { node: c.nodes[worst.0], residual_a: worst.1, allowed_a: worst.2, steps }
     }
 
@@ -321,7 +320,7 @@ impl<'a> Solver<'a> {
                 }
                 rate *= 3.0;
                 if !(rate < 1e60) {
-                    return Err(self.unbalanced(c, worst, self.options.transient_steps));
+                    return Err(Self::unbalanced(c, worst, self.options.transient_steps));
                 }
             }
             for (k, &node) in c.nodes.iter().enumerate() {
@@ -329,7 +328,7 @@ impl<'a> Solver<'a> {
                 self.rereference(&mut v[node]);
             }
         }
-        Err(self.unbalanced(c, worst, self.options.transient_steps))
+        Err(Self::unbalanced(c, worst, self.options.transient_steps))
     }
 
     /// The step in volts from the Newton step, taken in the variable in which channels are linear.

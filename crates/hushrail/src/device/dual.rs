@@ -213,6 +213,7 @@ impl<const N: usize> Sub for Dual<N> {
 impl<const N: usize> Mul for Dual<N> {
     type Output = Self;
     #[inline]
+    #[expect(clippy::suspicious_arithmetic_impl, reason = "the product rule adds")]
     fn mul(self, o: Self) -> Self {
         self.map2(o, self.v * o.v, |a, b| a * o.v + b * self.v)
     }

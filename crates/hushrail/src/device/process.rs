@@ -243,10 +243,10 @@ impl Process {
             })?;
             inner.push((Arc::clone(name), self.deck.eval(def, &scope)? * scale.powi(power)));
         }
-        if let Some((name, v)) = request.params.iter().find(|(n, _)| &**n == "m") {
-            if !sub.params.contains_key(name) {
-                inner.push((Arc::clone(name), *v));
-            }
+        if let Some((name, v)) = request.params.iter().find(|(n, _)| &**n == "m")
+            && !sub.params.contains_key(name)
+        {
+            inner.push((Arc::clone(name), *v));
         }
         Ok((values, inner))
     }
@@ -262,7 +262,7 @@ impl Process {
         notes: &mut Vec<Note>,
     ) -> Result<Transistor, ReadError> {
         let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
-        let values = self.values(&card, &geometry, request)?;
+        let values = Self::values(&card, &geometry, request)?;
         let prepared = Prepared::new(&card, &values, &geometry, temp.get());
         if !(prepared.phi > 0.0 && prepared.vsat > 0.0 && prepared.u0 > 0.0 && prepared.vth0.is_finite()) {
             return Err(ReadError::Range {
@@ -278,7 +278,7 @@ impl Process {
         Ok(Transistor { device: Arc::new(Bsim4 { prepared }), count, geometry })
     }
 
-    fn values(&self, card: &Card, g: &Geometry, request: &Request) -> Result<Values<f64>, ReadError> {
+    fn values(card: &Card, g: &Geometry, request: &Request) -> Result<Values<f64>, ReadError> {
         Values::at(card, g, |_, v| v).map_err(|(what, size)| ReadError::Range {
             at: request.at.clone(),
             name: format!("{what} of model `{}`", request.model),
@@ -332,10 +332,10 @@ impl Process {
         scope: &DeckScope<'_>,
         request: &Request,
     ) -> Result<&'a ModelText, ReadError> {
-        if let [one] = found.bins {
-            if one.limits.iter().all(|l| matches!(l, Limit::Absent)) {
-                return Ok(&found.models[one.model]);
-            }
+        if let [one] = found.bins
+            && one.limits.iter().all(|l| matches!(l, Limit::Absent))
+        {
+            return Ok(&found.models[one.model]);
         }
         let limit = |bin: &Bin, which: usize, otherwise: f64| match bin.limits[which] {
             Limit::Absent => Ok(otherwise),
@@ -394,7 +394,7 @@ impl Process {
     pub fn effective(&self, request: &Request) -> Result<IndexMap<&'static str, f64>, ReadError> {
         let mut notes = Vec::new();
         let (card, g, _) = self.card(request, 25.0, &mut notes)?;
-        let values = self.values(&card, &g, request)?;
+        let values = Self::values(&card, &g, request)?;
         Ok(table::IDS.iter().map(|&id: &Id| (ROWS[id as usize].name, values[id])).collect())
     }
 

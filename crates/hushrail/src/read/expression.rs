@@ -21,7 +21,7 @@ pub enum Expr {
     Call(Arc<str>, Vec<Expr>),
 }
 
-/// Operators, loosest binding first in [`Op::level`].
+/// Operators, loosest binding first.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 #[expect(missing_docs, reason = "the names are the operators")]
 pub enum Op {

@@ -26,7 +26,7 @@ impl Place {
     /// The place of a byte offset in `text`.
     pub fn of_offset(path: &Arc<str>, text: &str, offset: usize) -> Self {
         let before = &text.as_bytes()[..offset.min(text.len())];
-        let line = before.iter().filter(|&&b| b == b'\n').count() + 1;
+        let line = before.split(|&b| b == b'\n').count();
         let start = before.iter().rposition(|&b| b == b'\n').map_or(0, |i| i + 1);
         let column = String::from_utf8_lossy(&before[start..]).chars().count() + 1;
         Self::new(path, line, column)

@@ -112,10 +112,12 @@ pub fn read_deck(sources: &[Source], options: &DeckOptions) -> Result<Deck, Read
     if r.deck.scale_m.is_none() {
         r.deck.scale_m = options.scale_m;
     }
-    if r.deck.models.is_empty() && r.deck.subckts.is_empty() && r.deck.params.is_empty() {
-        if let Some(s) = sources.first() {
-            return Err(s.nothing("SPICE model, parameter or subcircuit"));
-        }
+    if r.deck.models.is_empty()
+        && r.deck.subckts.is_empty()
+        && r.deck.params.is_empty()
+        && let Some(s) = sources.first()
+    {
+        return Err(s.nothing("SPICE model, parameter or subcircuit"));
     }
     Ok(r.deck)
 }
@@ -399,7 +401,7 @@ impl Reader<'_> {
                 c.skip(&[]);
                 let l = c.loc();
                 let (text, _) = c.word();
-                if let Some((expr, _)) = version_number(&text).map(|v| (Expr::Num(v), ())) {
+                if let Some((expr, ())) = version_number(&text).map(|v| (Expr::Num(v), ())) {
                     values.push((key, Definition { expr, loc: l }));
                     continue;
                 }
@@ -696,7 +698,7 @@ impl Reader<'_> {
         if let Some((w, l)) = rest.next() {
             match super::number::whole_number(&w) {
                 Some(v) if matches!(kind, 'R' | 'C') => {
-                    value = Some(Definition { expr: Expr::Num(v), loc: l })
+                    value = Some(Definition { expr: Expr::Num(v), loc: l });
                 }
                 _ => model = self.lower(&w),
             }

@@ -328,7 +328,7 @@ fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual:
             x.power_w += i * v;
         }
         None => {
-            supplies.push(SupplyCurrent { supply: name.into(), voltage_v: v, current_a: i, power_w: i * v })
+            supplies.push(SupplyCurrent { supply: name.into(), voltage_v: v, current_a: i, power_w: i * v });
         }
     };
     let mut paths: Vec<PathShare> = Vec::new();
@@ -357,10 +357,10 @@ fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual:
         let (over, bias) = spec.map_or((0.0, 0.0), |x| (x.overdrive_v, x.well_bias_v));
         let on_vdd = sw.gate_v > 0.5 * vdd;
         let gate_supply =
-            if over != 0.0 { format!("{name}_gate") } else { if on_vdd { "vdd" } else { "ground" }.into() };
+            if over == 0.0 { if on_vdd { "vdd" } else { "ground" }.into() } else { format!("{name}_gate") };
         book(&gate_supply, sw.gate_v, t[Terminal::Gate as usize]);
         let body_supply =
-            if bias != 0.0 { format!("{name}_well") } else { if on_vdd { "vdd" } else { "ground" }.into() };
+            if bias == 0.0 { if on_vdd { "vdd" } else { "ground" }.into() } else { format!("{name}_well") };
         book(&body_supply, sw.body_v, t[Terminal::Body as usize]);
         let sign = if name == "header" { -1.0 } else { 1.0 };
         for m in Mechanism::ALL {

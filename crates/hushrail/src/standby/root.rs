@@ -24,7 +24,7 @@ pub fn increasing<E>(
     if fb >= 0.0 {
         return Ok(lo);
     }
-    let (mut c, mut fc) = (a, fa);
+    let (mut c, mut fc);
     // the secant first: balances are nearly straight
     let mut t = (fa / (fa - fb)).clamp(0.02, 0.98);
     for _ in 0..limit {
@@ -52,7 +52,6 @@ pub fn increasing<E>(
         let edge = (tol / width).min(0.5);
         t = t.clamp(edge, 1.0 - edge);
     }
-    let _ = (c, fc);
     Ok(if fa.abs() < fb.abs() { a } else { b })
 }
 

@@ -109,17 +109,17 @@ impl Scheme {
                     return wrong(&format!("{what} {name}"), format!("{v} m"), "want a size above zero");
                 }
             }
-            if let Some(f) = s.finger_width_m {
-                if !(f > 0.0 && f <= s.width_m) {
-                    return wrong(
-                        &format!("{what} finger width"),
-                        format!("{f} m"),
-                        &format!("want a width above zero and not above the whole width ({} m)", s.width_m),
-                    );
-                }
+            if let Some(f) = s.finger_width_m
+                && !(f > 0.0 && f <= s.width_m)
+            {
+                return wrong(
+                    &format!("{what} finger width"),
+                    format!("{f} m"),
+                    &format!("want a width above zero and not above the whole width ({} m)", s.width_m),
+                );
             }
             for (name, v) in [("overdrive", s.overdrive_v), ("well bias", s.well_bias_v)] {
-                if !(v >= -1.0 && v <= 5.0) {
+                if !(-1.0..=5.0).contains(&v) {
                     return wrong(&format!("{what} {name}"), format!("{v} V"), "want -1 V to 5 V");
                 }
             }
@@ -130,7 +130,7 @@ impl Scheme {
             }
         }
         for (name, v) in [("n-well bias", self.nwell_bias_v), ("p-well bias", self.pwell_bias_v)] {
-            if !(v >= -1.0 && v <= 5.0) {
+            if !(-1.0..=5.0).contains(&v) {
                 return wrong(name, format!("{v} V"), "want -1 V to 5 V");
             }
         }

@@ -48,8 +48,7 @@ pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches
     }
     if let Some(t) = &p.tunnel {
         let g = if exchanged {
-            let swapped = Tunnel2::swap(t);
-            GateCurrents::at(p, &swapped, &th, &ch, vgs_f, vds_f)
+            GateCurrents::at(p, &t.exchanged(), &th, &ch, vgs_f, vds_f)
         } else {
             GateCurrents::at(p, t, &th, &ch, vgs_f, vds_f)
         };
@@ -63,17 +62,6 @@ pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches
     b.junction_sb = -p.source.current(vbs);
     b.junction_db = -p.drain.current(vbs - vds);
     if p.polarity == Polarity::P { b.map(|x| -x) } else { b }
-}
-
-/// Gate constants with the edges exchanged.
-struct Tunnel2;
-impl Tunnel2 {
-    fn swap<P: Real>(t: &prepare::Tunnel<P>) -> prepare::Tunnel<P> {
-        let mut s = t.clone();
-        std::mem::swap(&mut s.edge_s, &mut s.edge_d);
-        std::mem::swap(&mut s.a_edge_s, &mut s.a_edge_d);
-        s
-    }
 }
 
 impl Device for Bsim4 {

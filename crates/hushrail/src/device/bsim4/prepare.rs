@@ -2,9 +2,10 @@
 
 use super::junction::{JunctionSide, Junctions};
 use super::stress::Stress;
+use super::threshold::effective_gate;
 use super::table::Id;
 use super::values::{Card, Values};
-use crate::device::dual::Real;
+use crate::device::dual::{Over, Real};
 use crate::device::{Geometry, Polarity};
 
 /// k/q as the published model carries it, V/K. Kept so that cards mean what their foundry extracted.
@@ -16,7 +17,7 @@ pub const MODEL_EPS0: f64 = 8.85418e-12;
 /// Permittivity of silicon as the published model carries it, F/m.
 pub const EPS_SI: f64 = 1.03594e-10;
 
-/// Band gap of silicon as the model has it: `1.16 − 7.02e−4·T²/(T + 1108)` eV (manual, section 13.?, tempMod all).
+/// Band gap of silicon as the model has it: `1.16 − 7.02e−4·T²/(T + 1108)` eV (BSIM4.8.0 manual, section 13).
 pub fn band_gap<P: Real>(t: P) -> P {
     t.sq() * -7.02e-4 / (t + 1108.0) + 1.16
 }
@@ -64,6 +65,18 @@ pub struct Tunnel<P> {
     /// PIGCD when the card gives it.
     pub pigcd: Option<P>,
     pub toxe: P,
+    /// What the effective gate voltage lacks to zero at zero bias, V.
+    pub rest_v: P,
+}
+
+impl<P: Clone> Tunnel<P> {
+    /// With the two edges exchanged, for a channel that runs the other way.
+    pub fn exchanged(&self) -> Self {
+        let mut s = self.clone();
+        std::mem::swap(&mut s.edge_s, &mut s.edge_d);
+        std::mem::swap(&mut s.a_edge_s, &mut s.a_edge_d);
+        s
+    }
 }
 
 /// GIDL (or GISL) constants of one device.
@@ -179,7 +192,7 @@ pub struct Prepared<P> {
     pub drain: JunctionSide<P>,
 }
 
-impl<P: Real> Prepared<P> {
+impl<P: Over<P>> Prepared<P> {
     /// Works everything out for `card` at geometry `g` and temperature `temp_k`.
     ///
     /// Source: BSIM4.8.0 manual, sections 2, 3, 5, 13 (temperature), 14 (stress), 15.
@@ -236,7 +249,7 @@ impl<P: Real> Prepared<P> {
             (P::of(-1.0) + phi + k1 * sqrt_phi, P::of(-1.0))
         };
 
-        let stress = Stress::of(card, v, g, tr);
+        let stress = Stress::of(v, g, tr);
         let (sca, scb, scc) = g.well_proximity;
         let wpe =
             if card.flag(Id::Wpemod) == 1 { sca + v[Id::Web] * scb + v[Id::Wec] * scc } else { P::of(0.0) };
@@ -340,6 +353,7 @@ impl<P: Real> Prepared<P> {
                 eigbinv: v[Id::Eigbinv],
                 pigcd: card.has(Id::Pigcd).then_some(v[Id::Pigcd]),
                 toxe,
+                rest_v: -effective_gate::<P, P>(poly, P::of(0.0)),
             }
         });
 

@@ -1,7 +1,7 @@
 //! Mechanical stress from the ends of the diffusion (sa, sb, sd, fingers).
 
 use super::table::Id;
-use super::values::{Card, Values};
+use super::values::Values;
 use crate::device::Geometry;
 use crate::device::dual::Real;
 
@@ -29,7 +29,7 @@ impl<P: Real> Stress<P> {
     /// ```
     ///
     /// Source: BSIM4.8.0 manual, section 14.
-    pub fn of(card: &Card, v: &Values<P>, g: &Geometry<P>, tr: P) -> Self {
+    pub fn of(v: &Values<P>, g: &Geometry<P>, tr: P) -> Self {
         let zero = P::of(0.0);
         let none = Self { mobility: P::of(1.0), velocity: P::of(1.0), dvth0: zero, dk2: zero, deta0: zero };
         #[expect(
@@ -62,7 +62,6 @@ impl<P: Real> Stress<P> {
             law(Id::Lku0, Id::Wku0, Id::Pku0, Id::Llodku0, Id::Wlodku0) * (v[Id::Tku0] * tr + 1.0) + 1e-9;
         let (rho, rho_ref) = (v[Id::Ku0] / ku * od, v[Id::Ku0] / ku * od_ref);
         let offset = od - od_ref;
-        let _ = card;
         Self {
             mobility: (rho + 1.0) / (rho_ref + 1.0),
             velocity: (v[Id::Kvsat] * rho + 1.0) / (v[Id::Kvsat] * rho_ref + 1.0),

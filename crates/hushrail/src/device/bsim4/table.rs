@@ -51,7 +51,6 @@ macro_rules! parameters {
         /// The rows, in the order of [`Id`].
         pub const ROWS: &[Row] = {
             use Fallback::{ByType, Derived, Same, Value};
-            #[expect(unused_imports, reason = "not every macro use needs all")]
             use Kind::{Binned, Flag, Plain};
             &[$(Row { name: $name, kind: $kind, default: $default, unit: $unit },)*]
         };

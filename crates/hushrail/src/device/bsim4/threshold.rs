@@ -22,19 +22,20 @@ pub(super) fn folded<R: Real>(x: R, limit: f64, top: (f64, f64), bottom: (f64, f
 }
 
 /// Body bias held between a floor far in reverse and 0.95·φs in forward (manual, section 2.1).
+///
+/// Both limits are hyperbolas; they are written as the quotient of their quadratics, so that zero stays exactly zero.
 fn effective_body<P: Real, R: Over<P>>(p: &Prepared<P>, vbs: R) -> R {
-    let t0 = vbs - p.vbsc - 0.001;
-    let t1 = (t0.sq() - R::lift(p.vbsc) * 0.004).sqrt();
-    let low =
-        if t0.val() >= 0.0 { (t0 + t1) * 0.5 + p.vbsc } else { (R::of(-0.002) / (t1 - t0) + 1.0) * p.vbsc };
-    let t9 = R::lift(p.phi) * 0.95;
-    let t0 = t9 - low - 0.001;
-    t9 - (t0 + (t0.sq() + t9 * 0.004).sqrt()) * 0.5
+    let floor = -R::lift(p.vbsc);
+    let t1 = ((vbs + floor - 0.001).sq() + floor * 0.004).sqrt();
+    let low = floor * vbs * 2.0 / (floor - vbs + 0.001 + t1);
+    let top = R::lift(p.phi) * 0.95;
+    let t1 = ((top - low - 0.001).sq() + top * 0.004).sqrt();
+    top * low * 2.0 / (top + low + 0.001 + t1)
 }
 
 /// Gate voltage behind the depletion of a polysilicon gate (manual, section 1.2).
-fn effective_gate<P: Real, R: Over<P>>(p: &Prepared<P>, vgs: R) -> R {
-    let Some((onset, scale)) = p.poly else { return vgs };
+pub(super) fn effective_gate<P: Real, R: Over<P>>(poly: Option<(P, P)>, vgs: R) -> R {
+    let Some((onset, scale)) = poly else { return vgs };
     if vgs.val() <= onset.val() {
         return vgs;
     }
@@ -102,7 +103,7 @@ impl<R: Real> Threshold<R> {
             vth = vth - (vds * p.dvtp4).tanh() * p.dvtp2;
         }
 
-        let vgs_eff = effective_gate(p, vgs);
+        let vgs_eff = effective_gate(p.poly, vgs);
         let vgst = vgs_eff - vth;
         let nvt = n * p.vt;
         let up = vgst * p.mstar / nvt;

@@ -138,10 +138,10 @@ impl Card {
         // terms of a parameter whose twin is not given follow the twin too
         let own: Vec<_> = self.terms.clone();
         for (i, row) in ROWS.iter().enumerate() {
-            if let (Kind::Binned, Fallback::Same(id), false) = (row.kind, row.default, self.given[i]) {
-                if own.iter().all(|t| t.0 != IDS[i]) {
-                    self.terms.extend(own.iter().filter(|t| t.0 == id).map(|t| (IDS[i], t.1, t.2)));
-                }
+            if let (Kind::Binned, Fallback::Same(id), false) = (row.kind, row.default, self.given[i])
+                && own.iter().all(|t| t.0 != IDS[i])
+            {
+                self.terms.extend(own.iter().filter(|t| t.0 == id).map(|t| (IDS[i], t.1, t.2)));
             }
         }
     }
