@@ -4,7 +4,7 @@ mod common;
 
 use std::sync::Arc;
 
-use common::{Symmetric, uniform};
+use common::{AllRegion, uniform};
 use hushrail::circuit::network::{Element, Network, Placed, Volt};
 use hushrail::circuit::newton::{SolveOptions, Solver, Workspace};
 use hushrail::circuit::plan::Plan;
@@ -40,9 +40,11 @@ fn network(seed: u64, vdd: f64) -> (Network, Vec<bool>, Vec<Volt>) {
         for _ in 0..1 + pick(2) {
             let other = any(&mut pick);
             let polarity = if pick(2) == 0 { Polarity::N } else { Polarity::P };
-            let i0_a = 10f64.powi(-8 - i32::try_from(pick(8)).expect("small"));
+            let is_a = 10f64.powi(-6 - i32::try_from(pick(2)).expect("small"));
             let leak_s = 10f64.powi(-15 - i32::try_from(pick(8)).expect("small"));
-            let device: Arc<dyn Device> = Arc::new(Symmetric { i0_a, n: 1.3, vt_v: VT, polarity, leak_s });
+            let vt0_v = 0.2 + 0.1 * pick(4) as f64;
+            let device: Arc<dyn Device> =
+                Arc::new(AllRegion { is_a, n: 1.3, vt0_v, vt_v: VT, polarity, leak_s });
             let body = usize::from(polarity == Polarity::P);
             let nodes = [node, 2 + pick(4), other, body];
             net.elements.push(Element::Transistor(Placed { device, count: 1.0 + pick(3) as f64, nodes }));
@@ -63,7 +65,9 @@ fn solve(seed: u64, vdd: f64) -> (Network, Vec<bool>, Vec<Volt>) {
 
 #[test]
 fn currents_balance_at_every_node() {
-    for seed in 0..4000 {
+    // more on request: HUSHRAIL_NETWORKS=1000000 cargo test --release --test networks
+    let count = std::env::var("HUSHRAIL_NETWORKS").ok().and_then(|n| n.parse().ok()).unwrap_or(4000);
+    for seed in 0..count {
         let (net, held, v) = solve(seed, 0.3 + uniform(seed, 999));
         let (mut sum, mut top, mut noise) = (vec![0.0; v.len()], vec![0.0f64; v.len()], vec![0.0; v.len()]);
         for e in &net.elements {

@@ -10,8 +10,10 @@ use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, AtomicUsize};
 use std::time::Instant;
 
-use hushrail::cell::{CellReader, RailNames};
-use hushrail::check::compare::{Comparison, read_published, read_published_corners};
+use hushrail::cell::{Cell, CellReader, RailNames};
+use hushrail::check::compare::{
+    Compared, ComparedRow, Comparison, PublishedCorner, PublishedRow, read_published, read_published_corners,
+};
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::device::process::Process;
 use hushrail::read::{DeckOptions, ReadError, Source, read_deck};
@@ -26,6 +28,12 @@ struct Setup {
     diodes: Files,
     alias: IndexMap<String, String>,
     cells: Cells,
+    fallback: Fallback,
+}
+#[derive(Deserialize)]
+#[serde(deny_unknown_fields)]
+struct Fallback {
+    floor_s: f64,
 }
 #[derive(Deserialize)]
 #[serde(deny_unknown_fields)]
@@ -37,6 +45,7 @@ struct Files {
 struct Cells {
     netlist: String,
     prefix: String,
+    extra: String,
 }
 
 fn main() -> ExitCode {
@@ -75,6 +84,8 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     let rows = read_published(&open("leakage_by_state.csv")?)?;
     let corners = read_published_corners(&open("corners.csv")?)?;
     let deck = read_deck(&[open(&setup.cells.netlist)?], &DeckOptions::default())?;
+    let extra =
+        read_deck(&[Source::from_text("comparison.toml", &setup.cells.extra)], &DeckOptions::default())?;
     let rails = RailNames::default();
     let mut notes = Vec::new();
     let mut cells = IndexMap::new();
@@ -84,8 +95,10 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
             continue;
         }
         let first = processes.values().next().ok_or("no cards")?;
-        let reader = CellReader { deck: &deck, rails: &rails, is_device: &|n| first.defines(n) };
-        match reader.cell(&format!("{}{}", setup.cells.prefix, r.cell), &mut notes) {
+        let name = format!("{}{}", setup.cells.prefix, r.cell);
+        let source = if extra.subckts.contains_key(name.as_str()) { &extra } else { &deck };
+        let reader = CellReader { deck: source, rails: &rails, is_device: &|n| first.defines(n) };
+        match reader.cell(&name, &mut notes) {
             Ok(c) => {
                 cells.insert(r.cell.clone(), Arc::new(c));
             }
@@ -103,6 +116,7 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     };
     let result = comparison.run(&rows, &corners, &AtomicUsize::new(0), &AtomicBool::new(false))?;
     let solve_s = solving.elapsed().as_secs_f64();
+    let reasons = reasons(&result, &rows, &corners, &cells, &processes, setup.fallback.floor_s, dir)?;
 
     println!("{} cells, {} rows, {} predicted", cells.len(), rows.len(), result.rows.len());
     println!(
@@ -127,15 +141,26 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     }
     println!("\nfurthest off:");
     for r in result.worst(10) {
+        let why = reasons.get(&(r.cell.clone(), r.corner.clone(), r.when.clone()));
         println!(
-            "  {:<14} {:<24} {:<28} published {:.6e} nW, predicted {:.6e} nW, ratio {:.4}",
+            "  {:<14} {:<22} {:<28} published {:.4e} nW, predicted {:.4e} nW, ratio {:.4}: {}",
             r.cell,
             r.corner,
             r.when,
             r.published_nw,
             r.predicted_nw,
-            r.ratio()
+            r.ratio(),
+            why.map_or("", |w| w.as_str())
         );
+    }
+    println!("\nrows more than 2 % off, by reason:");
+    let mut tally: IndexMap<&str, usize> = IndexMap::new();
+    for why in reasons.values() {
+        *tally.entry(why).or_insert(0) += 1;
+    }
+    tally.sort_by(|_, a, _, b| b.cmp(a));
+    for (why, n) in &tally {
+        println!("  {n:>6}  {why}");
     }
     for e in &missing {
         println!("not predicted: {e}");
@@ -150,8 +175,69 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     println!("\nread {read_s:.2} s, solved {solve_s:.2} s, {} threads", rayon::current_num_threads());
     if let Some(path) = json {
         let text = serde_json::json!({ "statistics": statistics, "worst": result.worst(10), "unmatched": result.unmatched,
-            "rows": result.rows, "read_s": read_s, "solve_s": solve_s });
+            "rows": result.rows, "reasons": reasons.iter().map(|((cell, corner, when), why)| serde_json::json!({ "cell": cell, "corner": corner, "when": when, "reason": why })).collect::<Vec<_>>(), "read_s": read_s, "solve_s": solve_s });
         std::fs::write(path, serde_json::to_string_pretty(&text)?)?;
     }
     Ok(())
+}
+
+type RowKey = (String, String, String);
+
+/// Why each row that is more than 2 % off is off, as far as it can be told.
+fn reasons(
+    result: &Compared,
+    rows: &[PublishedRow],
+    corners: &[PublishedCorner],
+    cells: &IndexMap<String, Arc<Cell>>,
+    processes: &IndexMap<String, Process>,
+    fallback_s: f64,
+    dir: &Path,
+) -> Result<IndexMap<RowKey, String>, Box<dyn std::error::Error>> {
+    let off: Vec<&ComparedRow> = result.rows.iter().filter(|r| (r.ratio() - 1.0).abs() > 0.02).collect();
+    let key = |r: &ComparedRow| (r.cell.clone(), r.corner.clone(), r.when.clone());
+    let wanted: std::collections::HashSet<RowKey> = off.iter().map(|r| key(r)).collect();
+    let again: Vec<PublishedRow> = rows
+        .iter()
+        .filter(|r| wanted.contains(&(r.cell.clone(), r.corner.clone(), r.when.clone())))
+        .cloned()
+        .collect();
+    let c = Comparison { cells, processes, floor_s: fallback_s, options: SolveOptions::default() };
+    let with_fallback = c.run(&again, corners, &AtomicUsize::new(0), &AtomicBool::new(false))?;
+    let refit: IndexMap<RowKey, f64> = with_fallback.rows.iter().map(|r| (key(r), r.ratio())).collect();
+    let mut equal: IndexMap<(&str, &str), bool> = IndexMap::new();
+    let mut first: IndexMap<(&str, &str), f64> = IndexMap::new();
+    for r in rows {
+        let k = (r.cell.as_str(), r.corner.as_str());
+        let v = *first.entry(k).or_insert(r.power_w);
+        let same = equal.entry(k).or_insert(true);
+        *same &= (v / r.power_w - 1.0).abs() < 1e-6;
+    }
+    let suspects = std::fs::read_to_string(dir.join("leakage_suspects.csv")).unwrap_or_default();
+    let suspect: std::collections::HashSet<RowKey> = suspects
+        .lines()
+        .skip(1)
+        .filter_map(|l| {
+            let f: Vec<&str> = l.splitn(4, ',').collect();
+            (f.len() == 4).then(|| (f[0].to_owned(), f[1].to_owned(), f[2].to_owned()))
+        })
+        .collect();
+    Ok(off
+        .into_iter()
+        .map(|r| {
+            let k = key(r);
+            let fits = refit.get(&k).is_some_and(|x| (x - 1.0).abs() < 0.02);
+            let why = if equal.get(&(r.cell.as_str(), r.corner.as_str())) == Some(&true) {
+                "the table gives one value for all states of the cell"
+            } else if fits {
+                "the published value is what 1e-12 S across every junction gives (within 2 %)"
+            } else if suspect.contains(&k) {
+                "listed as contradicting other rows of the table"
+            } else if r.predicted_nw < r.published_nw {
+                "predicted below the table; neither conductance explains it"
+            } else {
+                "predicted above the table; neither conductance explains it"
+            };
+            (k, why.to_owned())
+        })
+        .collect())
 }

@@ -160,6 +160,64 @@ pub fn chain(devices: Vec<Arc<dyn Device>>, gates: &[Gate], vdd: f64, vt: f64) -
     (v[1..n].iter().map(|x| x.get()).collect(), i)
 }
 
+/// All-region interpolation after Enz, Krummenacher and Vittoz (AICSP 8 (1995) 83): bulk-referred and symmetric.
+/// `I = Is·(F((Vp − Vs)/vT) − F((Vp − Vd)/vT))`, `F(v) = ln²(1 + exp(v/2))`, `Vp = (Vg − Vt0)/n`.
+#[derive(Debug, Clone)]
+pub struct AllRegion {
+    pub is_a: f64,
+    pub n: f64,
+    pub vt0_v: f64,
+    pub vt_v: f64,
+    pub polarity: Polarity,
+    /// Conductance from drain and source to body, S.
+    pub leak_s: f64,
+}
+
+impl AllRegion {
+    fn law<R: Real>(&self, b: Bias<R>) -> Branches<R> {
+        let s = self.polarity.sign();
+        let (vgb, vsb, vds) = ((b.vgs - b.vbs) * s, -(b.vbs * s), b.vds * s);
+        let vp = (vgb - self.vt0_v) / self.n;
+        let (x, y) = ((vp - vsb) / (2.0 * self.vt_v), (vp - vsb - vds) / (2.0 * self.vt_v));
+        // softplus(x) − softplus(y) without cancellation, larger argument first
+        let d = if vds.val() >= 0.0 {
+            (x.exp() * -(-(vds / (2.0 * self.vt_v))).exp_m1() / (y.exp() + 1.0)).ln_1p()
+        } else {
+            -(y.exp() * -(vds / (2.0 * self.vt_v)).exp_m1() / (x.exp() + 1.0)).ln_1p()
+        };
+        Branches {
+            channel_ds: d * (x.softplus() + y.softplus()) * self.is_a * s,
+            junction_db: (b.vds - b.vbs) * self.leak_s,
+            junction_sb: -b.vbs * self.leak_s,
+            ..Branches::zero()
+        }
+    }
+}
+
+impl Device for AllRegion {
+    fn polarity(&self) -> Polarity {
+        self.polarity
+    }
+    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
+        self.law(b)
+    }
+    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
+        self.law(b)
+    }
+    fn has_gate_current(&self) -> bool {
+        false
+    }
+    fn has_gidl(&self) -> bool {
+        false
+    }
+    fn oxide_m(&self) -> f64 {
+        2e-9
+    }
+    fn thermal_voltage(&self) -> f64 {
+        self.vt_v
+    }
+}
+
 /// Where a gate of [`chain`] is.
 #[derive(Debug, Clone, Copy)]
 pub enum Gate {

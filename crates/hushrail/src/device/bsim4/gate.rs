@@ -80,10 +80,10 @@ impl<R: Real> GateCurrents<R> {
                 R::lift(v)
             } else {
                 let over = th.vgsteff + 1e-20;
-                    let r = ch.vdseff * 0.5 / over;
-                    let r = if r.val() <= 0.75 { r } else { (-((r - 0.75) / 0.2)).exp() * -0.2 + 0.95 };
-                    -(over.recip().sq() * t.b_channel) * (-r + 1.0)
-                };
+                let r = ch.vdseff * 0.5 / over;
+                let r = if r.val() <= 0.75 { r } else { (-((r - 0.75) / 0.2)).exp() * -0.2 + 0.95 };
+                -(over.recip().sq() * t.b_channel) * (-r + 1.0)
+            };
             let x = share * ch.vdseff;
             let e = (-x).exp();
             let below = x.sq() + 2e-4;

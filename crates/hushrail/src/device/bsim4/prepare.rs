@@ -2,8 +2,8 @@
 
 use super::junction::{JunctionSide, Junctions};
 use super::stress::Stress;
-use super::threshold::effective_gate;
 use super::table::Id;
+use super::threshold::effective_gate;
 use super::values::{Card, Values};
 use crate::device::dual::{Over, Real};
 use crate::device::{Geometry, Polarity};
