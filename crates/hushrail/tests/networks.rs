@@ -76,7 +76,7 @@ fn currents_balance_at_every_node() {
                 sum[s.nodes[t]] += s.current[t];
                 top[s.nodes[t]] = top[s.nodes[t]].max(s.gross[t]);
                 // one unit in the last place of a node voltage moves this much current
-                noise[s.nodes[t]] += s.slope[t][t].abs() * 1.5 * 4.0 * f64::EPSILON;
+                noise[s.nodes[t]] += s.slope[t][t].abs() * 3.0 * 4.0 * f64::EPSILON;
             }
         }
         for i in 0..v.len() {

@@ -165,11 +165,11 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     for e in &missing {
         println!("not predicted: {e}");
     }
-    let mut reasons: IndexMap<String, usize> = IndexMap::new();
+    let mut lost: IndexMap<String, usize> = IndexMap::new();
     for u in &result.unmatched {
-        *reasons.entry(format!("{}: {}", u.cell, u.reason)).or_insert(0) += 1;
+        *lost.entry(format!("{}: {}", u.cell, u.reason)).or_insert(0) += 1;
     }
-    for (why, n) in &reasons {
+    for (why, n) in &lost {
         println!("not predicted: {why} ({n} rows)");
     }
     println!("\nread {read_s:.2} s, solved {solve_s:.2} s, {} threads", rayon::current_num_threads());

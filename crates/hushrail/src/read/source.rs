@@ -127,7 +127,7 @@ pub fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Opti
         .into_iter()
         .map(|k| (strsim::damerau_levenshtein(&lower, &k.to_lowercase()), k))
         .filter(|&(d, k)| d <= 1 + k.len().max(name.len()) / 4)
-        .min_by_key(|&(d, _)| d)
+        .min_by_key(|&(d, k)| (d, k.len().abs_diff(name.len())))
         .map(|(_, k)| k.to_owned())
 }
 
