@@ -32,10 +32,10 @@ fn no_room_reaches_to_its_right() {
             }
             for piece in line.split("crate::").skip(1) {
                 let room: String = piece.chars().take_while(|c| c.is_alphanumeric() || *c == '_').collect();
-                if let Some(to) = ROOMS.iter().position(|r| *r == room) {
-                    if to > own {
-                        wrong.push(format!("{}:{}: `{first}` uses `{room}`", rel.display(), n + 1));
-                    }
+                if let Some(to) = ROOMS.iter().position(|r| *r == room)
+                    && to > own
+                {
+                    wrong.push(format!("{}:{}: `{first}` uses `{room}`", rel.display(), n + 1));
                 }
             }
         }

@@ -37,7 +37,7 @@ fn network(seed: u64, vdd: f64) -> (Network, Vec<bool>, Vec<Volt>) {
     };
     // every inner node is reached by at least one device
     for node in 6..n {
-        for _ in 0..1 + pick(2) {
+        for _ in 0..=pick(2) {
             let other = any(&mut pick);
             let polarity = if pick(2) == 0 { Polarity::N } else { Polarity::P };
             let is_a = 10f64.powi(-6 - i32::try_from(pick(2)).expect("small"));

@@ -90,8 +90,13 @@ pub struct Estimate {
 ///
 /// Failures of points are listed in the result, never dropped; a stop keeps what was finished.
 pub fn estimate(loaded: &Loaded, options: &SolveOptions, progress: &mut Progress<'_>) -> Estimate {
-    let total = loaded.domains.len() * loaded.schemes.len() * loaded.corners.len();
-    let parts = watched(total, progress, |watch| {
+    let slots = loaded.domains.len() * loaded.schemes.len() * loaded.corners.len();
+    let applicable = loaded
+        .domains
+        .iter()
+        .map(|d| loaded.schemes.iter().filter(|s| s.applies_to(&d.name)).count())
+        .sum::<usize>();
+    let parts = watched(applicable * loaded.corners.len(), progress, |watch| {
         let pairs: Vec<(&LoadedDomain, &Corner)> =
             loaded.domains.iter().flat_map(|d| loaded.corners.iter().map(move |c| (d, c))).collect();
         pairs.par_iter().map(|(d, c)| pair(loaded, d, c, options, watch)).collect::<Vec<_>>()
@@ -100,7 +105,7 @@ pub fn estimate(loaded: &Loaded, options: &SolveOptions, progress: &mut Progress
     let mut points: Vec<Option<PointResult>> = Vec::new();
     let mut failures = Vec::new();
     let mut stopped = false;
-    points.resize_with(total, || None);
+    points.resize_with(slots, || None);
     let (ns, nc) = (loaded.schemes.len(), loaded.corners.len());
     for (k, part) in parts.into_iter().enumerate() {
         let (d, c) = (k / nc.max(1), k % nc.max(1));
@@ -176,6 +181,10 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
     };
     let reference = one(&Scheme::ungated("ungated"));
     for scheme in &loaded.schemes {
+        if !scheme.applies_to(&d.name) {
+            part.points.push(None);
+            continue;
+        }
         let asleep =
             if scheme.is_ungated() && scheme.overhead_a == 0.0 { reference.clone() } else { one(scheme) };
         match (&reference, asleep) {

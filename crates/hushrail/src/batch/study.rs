@@ -32,7 +32,7 @@ pub struct Study {
     /// Domains.
     #[serde(default)]
     pub domain: Vec<DomainSpec>,
-    /// Schemes; every one is tried on every domain.
+    /// Schemes; every one is tried on every domain, or on those it names.
     #[serde(default)]
     pub scheme: Vec<Scheme>,
     /// Limits.
@@ -185,6 +185,16 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
             value: e.value,
             wanted: e.wanted,
         })?;
+    }
+    for s in &study.scheme {
+        if let Some(name) = s.domains.iter().find(|n| !study.domain.iter().any(|d| d.name == **n)) {
+            return Err(ReadError::Unknown {
+                at: at(),
+                kind: "domain",
+                name: name.clone(),
+                nearest: nearest(name, study.domain.iter().map(|d| d.name.as_str())),
+            });
+        }
     }
     for d in &study.domain {
         if d.verilog.is_empty() == d.counts.is_none() {

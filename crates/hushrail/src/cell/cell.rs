@@ -54,6 +54,10 @@ pub struct RailNames {
     pub nwell: Vec<String>,
     /// p-wells or substrate.
     pub pwell: Vec<String>,
+    /// Inputs that the netlist does not declare and that drive a pass transistor; otherwise a port on a drain is an output.
+    pub input: Vec<String>,
+    /// Outputs that the netlist does not declare and that touch no drain.
+    pub output: Vec<String>,
 }
 
 impl Default for RailNames {
@@ -64,6 +68,8 @@ impl Default for RailNames {
             ground: list(&["VGND", "VSS", "GND"]),
             nwell: list(&["VPB", "VNW", "VBP"]),
             pwell: list(&["VNB", "VPW", "VBN"]),
+            input: Vec::new(),
+            output: Vec::new(),
         }
     }
 }
@@ -76,6 +82,8 @@ impl RailNames {
             (&self.ground, Role::Ground),
             (&self.nwell, Role::Nwell),
             (&self.pwell, Role::Pwell),
+            (&self.input, Role::Input),
+            (&self.output, Role::Output),
         ]
         .into_iter()
         .find(|(names, _)| is(names))

@@ -46,6 +46,9 @@ pub struct SwitchSpec {
 pub struct Scheme {
     /// Name in reports.
     pub name: String,
+    /// Domains it is tried on; all when empty.
+    #[serde(default)]
+    pub domains: Vec<String>,
     /// Switch between the supply and the virtual supply.
     #[serde(default)]
     pub header: Option<SwitchSpec>,
@@ -87,6 +90,11 @@ impl Scheme {
     /// A scheme that leaves the domain powered.
     pub fn ungated(name: &str) -> Self {
         Self { name: name.to_owned(), ..Self::default() }
+    }
+
+    /// Whether the scheme is meant for a domain.
+    pub fn applies_to(&self, domain: &str) -> bool {
+        self.domains.is_empty() || self.domains.iter().any(|d| d == domain)
     }
 
     /// Whether nothing is switched or biased.

@@ -272,6 +272,7 @@ m3 Y A VDD VNW px w=0.6u l=60n ad=0.09p as=0.09p pd=1.3u ps=1.3u
 m4 Y B VDD VNW px w=0.6u l=60n ad=0.09p as=0.09p pd=1.3u ps=1.3u
 .ends
 .subckt latch D G Q VDD VSS VNW VPW
+*.PININFO D:I G:I Q:O
 xg G gn VDD VSS VNW VPW inv
 mt1 D G s VPW nx w=0.4u l=60n
 mt2 D gn s VNW px w=0.6u l=60n
