@@ -26,7 +26,7 @@
 //! use hushrail::read::{DeckOptions, Place, Source};
 //!
 //! // an invented card; a foundry's file is read the same way with Source::open
-//! let card = ".model nch nmos level=54 version=4.5 toxe=2n vth0=0.35 voff=-0.1 agidl=1e-5 bgidl=2e9 cgidl=1e-3";
+//! let card = ".model nch nmos level=54 version=4.5 toxe=2n vth0=0.35 voff=-0.1 agidl=1e-7 bgidl=2.2e9 cgidl=1e-3";
 //! let process = Process::read("tt", &[Source::from_text("card.lib", card)], &DeckOptions::default())?;
 //! let request = Request {
 //!     model: "nch".into(),
@@ -35,7 +35,7 @@
 //! };
 //! let device = process.transistor(&request, Kelvin::from_celsius(25.0)?, &mut Vec::new())?.device;
 //! let off = |overdrive: f64| device.branches(Bias { vgs: -overdrive, vds: 1.1, vbs: 0.0 }).terminals()[0];
-//! assert!(off(0.2) < off(0.0) / 50.0); // super cut-off …
+//! assert!(off(0.2) < off(0.0) / 10.0); // super cut-off …
 //! assert!(off(1.0) > off(0.2)); // … until GIDL takes over
 //! # Ok::<(), Box<dyn std::error::Error>>(())
 //! ```
