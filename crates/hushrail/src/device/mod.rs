@@ -253,6 +253,8 @@ pub struct Geometry<P = f64> {
     pub well_proximity: (P, P, P),
     /// Threshold shift of this instance, V.
     pub delvto_v: P,
+    /// Factor on the mobility of this instance.
+    pub mobility_factor: P,
 }
 
 impl Geometry<f64> {
@@ -271,6 +273,7 @@ impl Geometry<f64> {
             ps_m: 0.0,
             well_proximity: (0.0, 0.0, 0.0),
             delvto_v: 0.0,
+            mobility_factor: 1.0,
         }
     }
     /// The same numbers as constants of another kind.
@@ -289,10 +292,11 @@ impl Geometry<f64> {
             ps_m: f(self.ps_m),
             well_proximity: (f(self.well_proximity.0), f(self.well_proximity.1), f(self.well_proximity.2)),
             delvto_v: f(self.delvto_v),
+            mobility_factor: f(self.mobility_factor),
         }
     }
     /// All numbers as bits, for use as a key.
-    pub fn key(&self) -> [u64; 14] {
+    pub fn key(&self) -> [u64; 15] {
         let w = self.well_proximity;
         [
             self.width_m,
@@ -309,6 +313,7 @@ impl Geometry<f64> {
             w.1,
             w.2,
             self.delvto_v,
+            self.mobility_factor,
         ]
         .map(f64::to_bits)
     }

@@ -262,6 +262,14 @@ impl Process {
         notes: &mut Vec<Note>,
     ) -> Result<Transistor, ReadError> {
         let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
+        if let Some((_, d)) = request.params.iter().find(|(n, d)| &**n == "dtemp" && *d != 0.0) {
+            return Err(ReadError::Range {
+                at: request.at.clone(),
+                name: "dtemp".into(),
+                value: format!("{d} K"),
+                wanted: "a device warmer than its corner is not computed; want 0".into(),
+            });
+        }
         let values = Self::values(&card, &geometry, request)?;
         let prepared = Prepared::new(&card, &values, &geometry, temp.get());
         if !(prepared.phi > 0.0 && prepared.vsat > 0.0 && prepared.u0 > 0.0 && prepared.vth0.is_finite()) {
@@ -313,6 +321,7 @@ impl Process {
             ps_m: get("ps").unwrap_or(0.0),
             well_proximity: (get("sca").unwrap_or(0.0), get("scb").unwrap_or(0.0), get("scc").unwrap_or(0.0)),
             delvto_v: get("delvto").unwrap_or(0.0),
+            mobility_factor: get("mulu0").unwrap_or(1.0),
         };
         let count = get("m").unwrap_or(1.0);
         check_size(&g, count, request)?;
@@ -450,6 +459,9 @@ fn check_size(g: &Geometry, count: f64, request: &Request) -> Result<(), ReadErr
     }
     if !(count > 0.0) {
         return wrong("m", count.to_string(), "want a number of devices above zero");
+    }
+    if !(g.mobility_factor > 0.0) {
+        return wrong("mulu0", g.mobility_factor.to_string(), "want a factor above zero");
     }
     for (name, v) in [
         ("sa", g.sa_m),

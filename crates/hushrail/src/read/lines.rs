@@ -83,7 +83,7 @@ impl<'a> Lines<'a> {
             if body.is_empty() {
                 self.lines.next();
             } else if let Some(comment) = body.strip_prefix('*') {
-                if comment.starts_with('.') {
+                if is_declaration(comment) {
                     if !out.text.is_empty() {
                         return Some(Step::Statement);
                     }
@@ -109,6 +109,12 @@ impl<'a> Lines<'a> {
         }
         if out.text.is_empty() { None } else { Some(Step::Statement) }
     }
+}
+
+/// Whether a comment carries a declaration of the CDL dialect; any other comment that starts `*.` is a comment.
+fn is_declaration(comment: &str) -> bool {
+    let word = comment.split_whitespace().next().unwrap_or("");
+    word.eq_ignore_ascii_case(".pininfo") || word.eq_ignore_ascii_case(".scale")
 }
 
 /// Cuts an end-of-line comment: `;` anywhere, `$` at the start or after a space unless it opens `$name=` or `$[`.
@@ -140,13 +146,13 @@ mod tests {
 
     #[test]
     fn continuations_join_across_comments_and_keep_their_places() {
-        let text = "* head\n.param a = 1 $ first\n* between\n\n  + b = '2 $ 3' ; tail\nM1 d g s b n\n";
+        let text = "* head\n.param a = 1 $ first\n* between\n*.param off = 1\n  + b = '2 $ 3' ; tail\nM1 d g s b n\n";
         let mut lines = Lines::new(text, 0);
         let mut l = Logical::default();
         assert!(matches!(lines.next_into(&mut l), Some(Step::Statement)));
         assert_eq!(l.text, ".param a = 1 b = '2 $ 3'");
         let b = l.text.find("b =").expect("there");
-        assert_eq!((l.loc(b).line, l.loc(b).column), (5, 5));
+        assert_eq!((l.loc(b).line, l.loc(b).column), (6, 5));
         assert_eq!((l.loc(0).line, l.loc(0).column), (2, 1));
         assert!(lines.next_into(&mut l).is_some());
         assert_eq!(l.text, "M1 d g s b n");

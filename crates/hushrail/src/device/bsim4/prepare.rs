@@ -293,7 +293,11 @@ impl<P: Over<P>> Prepared<P> {
 
         let over_t = card.flag(Id::Tempmod) != 0;
         let linear = |p: Id, p1: Id| if over_t { v[p] * (v[p1] * del_t + 1.0) } else { v[p] + v[p1] * tr };
-        let u0 = v[Id::U0] * ratio.pow(v[Id::Ute]) * (v[Id::Ku0we] * wpe + 1.0) * stress.mobility;
+        let u0 = v[Id::U0]
+            * ratio.pow(v[Id::Ute])
+            * (v[Id::Ku0we] * wpe + 1.0)
+            * stress.mobility
+            * g.mobility_factor;
         let vsat =
             if over_t { v[Id::Vsat] * (-(v[Id::At] * del_t) + 1.0) } else { v[Id::Vsat] - v[Id::At] * tr };
         let per_width = (size.weffcj * 1e6).pow(v[Id::Wr]);
