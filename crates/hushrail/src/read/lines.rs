@@ -146,7 +146,7 @@ mod tests {
 
     #[test]
     fn continuations_join_across_comments_and_keep_their_places() {
-        let text = "* head\n.param a = 1 $ first\n* between\n*.param off = 1\n  + b = '2 $ 3' ; tail\nM1 d g s b n\n";
+        let text = "* head\n.param a = 1 $ first\n* between\n*.param off = 1\n\n  + b = '2 $ 3' ; tail\nM1 d g s b n\n";
         let mut lines = Lines::new(text, 0);
         let mut l = Logical::default();
         assert!(matches!(lines.next_into(&mut l), Some(Step::Statement)));
