@@ -1,5 +1,6 @@
 //! Standby: what is done to a domain asleep, where its rails come to rest, what it still draws.
 
+mod account;
 pub mod rest;
 pub mod root;
 pub mod scheme;

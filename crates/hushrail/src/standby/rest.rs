@@ -9,10 +9,11 @@ use std::sync::atomic::AtomicBool;
 
 use serde::{Deserialize, Serialize};
 
+use super::account::account;
 use super::root::increasing;
 use super::scheme::{Scheme, SchemeError, WellTie};
 use super::switch::{Side, Switch};
-use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, gidl_note, total};
+use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, total};
 use crate::cell::{DeviceShelf, Levels};
 use crate::device::process::Process;
 use crate::device::{Mechanism, Terminal};
@@ -118,18 +119,19 @@ const BALANCE: f64 = 1e-9;
 /// Evaluations of the block before giving up.
 const EVALUATIONS: usize = 120;
 
-struct Domain<'a> {
-    scheme: &'a Scheme,
-    block: &'a BoundBlock,
-    vdd_v: f64,
-    header: Option<Switch>,
-    footer: Option<Switch>,
-    stop: &'a AtomicBool,
-    evaluations: usize,
+/// A domain about to be put to rest.
+pub(super) struct Domain<'a> {
+    pub(super) scheme: &'a Scheme,
+    pub(super) block: &'a BoundBlock,
+    pub(super) vdd_v: f64,
+    pub(super) header: Option<Switch>,
+    pub(super) footer: Option<Switch>,
+    pub(super) stop: &'a AtomicBool,
+    pub(super) evaluations: usize,
 }
 
 impl Domain<'_> {
-    fn levels(&self, supply: f64, ground: f64) -> Levels {
+    pub(super) fn levels(&self, supply: f64, ground: f64) -> Levels {
         let s = self.scheme;
         let nwell = if s.nwell == WellTie::Virtual { supply } else { self.vdd_v };
         let pwell = if s.pwell == WellTie::Virtual { ground } else { 0.0 };
@@ -347,144 +349,4 @@ fn both_rails(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
     })?;
     at.0 = at.1 + span;
     Ok(at)
-}
-
-/// Books every current to its supply, mechanism and path.
-fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64, residual: f64) -> Asleep {
-    let s = d.scheme;
-    let mut supplies: Vec<SupplyCurrent> = Vec::new();
-    let mut book = |name: &str, v: f64, i: f64| match supplies.iter_mut().find(|x| x.supply == name) {
-        Some(x) => {
-            x.current_a += i;
-            x.power_w += i * v;
-        }
-        None => {
-            supplies.push(SupplyCurrent { supply: name.into(), voltage_v: v, current_a: i, power_w: i * v });
-        }
-    };
-    let mut paths: Vec<PathShare> = Vec::new();
-    let mut mechanisms = [0.0; 5];
-    let mut way = |path: &str, m: Mechanism, i: f64, counts: bool| {
-        if i != 0.0 {
-            paths.push(PathShare { path: path.into(), mechanism: m, current_a: i });
-            if counts {
-                mechanisms[m as usize] += i;
-            }
-        }
-    };
-    let vdd = d.vdd_v;
-    let mut oxide = (0.0f64, 0.0f64);
-    let mut switch_mechanisms = [0.0; 5];
-    let mut notes = Vec::new();
-
-    book("vdd", vdd, s.overhead_a);
-    book("ground", 0.0, 0.0);
-    for (sw, rail, name, v) in [(&d.header, "vdd", "header", supply), (&d.footer, "ground", "footer", ground)]
-    {
-        let Some(sw) = sw else { continue };
-        let b = sw.branches(v);
-        let t = b.terminals();
-        book(rail, sw.rail_v, t[Terminal::Source as usize]);
-        let spec = if name == "header" { s.header.as_ref() } else { s.footer.as_ref() };
-        let (over, bias) = spec.map_or((0.0, 0.0), |x| (x.overdrive_v, x.well_bias_v));
-        let on_vdd = sw.gate_v > 0.5 * vdd;
-        let gate_supply =
-            if over == 0.0 { if on_vdd { "vdd" } else { "ground" }.into() } else { format!("{name}_gate") };
-        book(&gate_supply, sw.gate_v, t[Terminal::Gate as usize]);
-        let body_supply =
-            if bias == 0.0 { if on_vdd { "vdd" } else { "ground" }.into() } else { format!("{name}_well") };
-        book(&body_supply, sw.body_v, t[Terminal::Body as usize]);
-        let sign = if name == "header" { -1.0 } else { 1.0 };
-        for m in Mechanism::ALL {
-            let of = b.terminals_of(m);
-            if name == "header" || d.header.is_none() {
-                switch_mechanisms[m as usize] = sign * of[Terminal::Drain as usize];
-            }
-            let from_real = of[Terminal::Source as usize] * if name == "header" { 1.0 } else { -1.0 };
-            let counts = name == "header";
-            match m {
-                Mechanism::Channel => way(&format!("{name} channel"), m, from_real, counts),
-                Mechanism::Gate => {
-                    way(&format!("{name} gate"), m, sign * of[Terminal::Drain as usize], counts);
-                }
-                _ => way(&format!("{name} body"), m, sign * of[Terminal::Drain as usize], counts),
-            }
-        }
-        let ox = sw.oxide_v(v);
-        if ox > oxide.0 {
-            oxide = (ox, ox / sw.device.oxide_m());
-        }
-        if over > 0.0 && !sw.device.has_gidl() {
-            notes.push(gidl_note(&format!("the {name} switch")));
-        }
-        if spec.is_some_and(|x| x.diffusion_m.is_none()) {
-            notes.push(Note::new(
-                "switch-without-junctions",
-                format!("the {name} has no `diffusion_m`: its drain and source junctions are not counted"),
-            ));
-        }
-        if over > 0.0 {
-            notes.push(Note::new(
-                "oxide-caution",
-                "a gate driven past its rail stresses its oxide; the limit is the foundry's reliability rule, and only a \
-                 qualified sign-off can say that it is kept",
-            ));
-        }
-    }
-    // the block's rails: real ones are booked, virtual ones are inside
-    if d.header.is_none() {
-        book("vdd", vdd, total(&c.supply));
-        for (m, i) in Mechanism::ALL.iter().zip(c.supply) {
-            way("block", *m, i, true);
-        }
-    }
-    if d.footer.is_none() {
-        book("ground", 0.0, total(&c.ground));
-    }
-    let levels = d.levels(supply, ground);
-    for (well, tie, bias, switched, currents, rail, counts) in [
-        ("nwell", s.nwell, s.nwell_bias_v, d.header.is_some(), &c.nwell, "vdd", true),
-        ("pwell", s.pwell, s.pwell_bias_v, d.footer.is_some(), &c.pwell, "ground", false),
-    ] {
-        let inside = tie == WellTie::Virtual && switched && bias == 0.0;
-        if inside {
-            continue;
-        }
-        let v = if well == "nwell" { levels.nwell_v } else { levels.pwell_v };
-        let name = if bias == 0.0 { rail } else { well };
-        book(name, v, total(currents));
-        for (m, i) in Mechanism::ALL.iter().zip(currents) {
-            way("block wells", *m, *i, counts);
-        }
-    }
-    if s.overhead_a > 0.0 {
-        way("overhead", Mechanism::Channel, s.overhead_a, true);
-    }
-    let current_a = supplies.iter().filter(|x| x.voltage_v > 0.0).map(|x| x.current_a).sum();
-    let power_w = supplies.iter().map(|x| x.power_w).sum();
-    if c.unstable > 0 {
-        notes.push(Note::new(
-            "state-lost",
-            format!(
-                "{} states of cells are not stable at the rest point: what they stored may be lost",
-                c.unstable
-            ),
-        ));
-    }
-    Asleep {
-        virtual_supply_v: supply,
-        virtual_ground_v: ground,
-        supplies,
-        current_a,
-        power_w,
-        mechanisms,
-        switch_mechanisms,
-        paths,
-        oxide_v: oxide.0,
-        oxide_field_v_m: oxide.1,
-        block: c,
-        evaluations: d.evaluations,
-        residual,
-        notes,
-    }
 }

@@ -1,6 +1,7 @@
 //! Channel current from deep subthreshold to saturation, with output resistance and impact ionisation.
 
-use super::prepare::{EPS_SI, Prepared};
+use super::prepare::Prepared;
+use super::silicon::EPS_SI;
 use super::threshold::Threshold;
 use crate::device::dual::{Over, Real};
 

@@ -1,6 +1,6 @@
 //! Drain and source junctions: diffusion current, breakdown, and trap-assisted tunnelling in reverse.
 
-use super::prepare::{MODEL_KB_OVER_Q, band_gap};
+use super::silicon::{MODEL_KB_OVER_Q, band_gap};
 use super::table::Id;
 use super::values::{Card, Values};
 use crate::device::Geometry;

@@ -1,6 +1,8 @@
 //! Body voltage limits, threshold, slope factor and effective overdrive.
 
-use super::prepare::{Prepared, theta};
+use super::poly::effective_gate;
+use super::prepare::Prepared;
+use super::silicon::theta;
 use crate::device::dual::{Over, Real};
 
 /// What later equations need of the threshold.
@@ -31,21 +33,6 @@ fn effective_body<P: Real, R: Over<P>>(p: &Prepared<P>, vbs: R) -> R {
     let top = R::lift(p.phi) * 0.95;
     let t1 = ((top - low - 0.001).sq() + top * 0.004).sqrt();
     top * low * 2.0 / (top + low + 0.001 + t1)
-}
-
-/// Gate voltage behind the depletion of a polysilicon gate (manual, section 1.2).
-pub(super) fn effective_gate<P: Real, R: Over<P>>(poly: Option<(P, P)>, vgs: R) -> R {
-    let Some((onset, scale)) = poly else { return vgs };
-    if vgs.val() <= onset.val() {
-        return vgs;
-    }
-    let over = vgs - onset;
-    let root = (over * 2.0 / scale + 1.0).sqrt();
-    let t2 = over * 2.0 / (root + 1.0);
-    let t3 = t2.sq() * 0.5 / scale;
-    let t7 = -t3 + 1.07;
-    let t6 = (t7.sq() + 0.224).sqrt();
-    vgs - (-(t7 + t6) * 0.5 + 1.12)
 }
 
 impl<R: Real> Threshold<R> {

@@ -4,16 +4,20 @@
 //! a later definition of a parameter replaces an earlier one; values of an instance win over `.param` lines inside
 //! its subcircuit. Directives that only steer a simulation are noted and skipped; anything else unknown is an error.
 
+mod cells;
+mod cursor;
+mod models;
+
 use std::path::PathBuf;
 use std::sync::Arc;
 
-use indexmap::IndexMap;
 use rustc_hash::FxHashSet;
 
-use super::deck::{Deck, Definition, Element, ModelText, Note, PinDirection, Subckt};
-use super::expression::{Expr, UserFunction, parse_prefix};
-use super::lines::{Lines, Loc, Logical, Step};
-use super::source::{ReadError, Source, nearest};
+use crate::read::deck::{Deck, Definition, Note, PinDirection, Subckt};
+use crate::read::expression::parse_prefix;
+use crate::read::lines::{Lines, Loc, Logical, Step};
+use crate::read::source::{ReadError, Source, nearest};
+use cursor::Cursor;
 
 /// How to read a deck.
 #[derive(Debug, Clone, Default)]
@@ -128,46 +132,6 @@ struct Reader<'a> {
     names: FxHashSet<Arc<str>>,
     open: Vec<Subckt>,
     depth: usize,
-}
-
-/// A position in one logical line.
-struct Cursor<'a> {
-    line: &'a Logical,
-    at: usize,
-}
-
-impl Cursor<'_> {
-    fn rest(&self) -> &str {
-        &self.line.text[self.at..]
-    }
-    fn loc(&self) -> Loc {
-        self.line.loc(self.at)
-    }
-    fn skip(&mut self, also: &[char]) {
-        let r = self.rest();
-        self.at += r.len() - r.trim_start_matches(|c: char| c.is_whitespace() || also.contains(&c)).len();
-    }
-    /// The next word: up to white space or one of `= ( ) , { ' "`.
-    fn word(&mut self) -> (String, Loc) {
-        self.skip(&[]);
-        let loc = self.loc();
-        let end = self.rest().find(|c: char| c.is_whitespace() || "=(),{}'\"".contains(c));
-        let word = self.rest()[..end.unwrap_or(self.rest().len())].to_owned();
-        self.at += word.len();
-        (word, loc)
-    }
-    fn takes(&mut self, c: char) -> bool {
-        self.skip(&[]);
-        let yes = self.rest().starts_with(c);
-        if yes {
-            self.at += c.len_utf8();
-        }
-        yes
-    }
-    fn is_end(&mut self) -> bool {
-        self.skip(&[]);
-        self.rest().is_empty()
-    }
 }
 
 impl Reader<'_> {
@@ -336,7 +300,6 @@ impl Reader<'_> {
         }
     }
 
-    /// `name = expression`, the cursor behind the name.
     fn value(&mut self, c: &mut Cursor<'_>) -> Result<Definition, ReadError> {
         c.skip(&[]);
         let loc = c.loc();
@@ -365,112 +328,6 @@ impl Reader<'_> {
             return Err(self.wrong(loc, found, format!("want `name = value` in this {what}")));
         }
         Ok((self.lower(&word), loc))
-    }
-
-    fn model(&mut self, c: &mut Cursor<'_>) -> Result<(), ReadError> {
-        let (name, loc) = c.word();
-        let (kind, kind_loc) = c.word();
-        if name.is_empty() || kind.is_empty() {
-            return Err(self.wrong(
-                kind_loc,
-                "`.model` without a name and a type",
-                "want `.model NAME nmos …`",
-            ));
-        }
-        let mut values = Vec::with_capacity(300);
-        let bracket = c.takes('(');
-        loop {
-            c.skip(&[',']);
-            if bracket && c.takes(')') {
-                if !c.is_end() {
-                    let l = c.loc();
-                    return Err(self.wrong(l, "text behind the closing `)`", "want the end of the model"));
-                }
-                break;
-            }
-            if c.is_end() {
-                if bracket {
-                    let l = c.loc();
-                    return Err(self.wrong(l, "the model ends", "want the closing `)`"));
-                }
-                break;
-            }
-            let (key, key_loc) = self.key(c, "model")?;
-            if &*key == "version" {
-                // versions may have three parts: 4.8.2 reads as 4.82
-                c.skip(&[]);
-                let l = c.loc();
-                let (text, _) = c.word();
-                if let Some((expr, ())) = version_number(&text).map(|v| (Expr::Num(v), ())) {
-                    values.push((key, Definition { expr, loc: l }));
-                    continue;
-                }
-                c.at -= text.len();
-            }
-            let mut def = self.value(c)?;
-            def.loc = key_loc;
-            values.push((key, def));
-        }
-        let model = ModelText { name: self.lower(&name), kind: self.lower(&kind), values, loc };
-        match self.open.last_mut() {
-            Some(sub) => sub.models.push(model),
-            None => self.deck.models.push(model),
-        }
-        Ok(())
-    }
-
-    fn params(&mut self, c: &mut Cursor<'_>) -> Result<(), ReadError> {
-        while !c.is_end() {
-            c.skip(&[',']);
-            let before = c.at;
-            let (word, _) = c.word();
-            if c.rest().starts_with('(') && !word.is_empty() {
-                c.at = before;
-                self.function(c)?;
-                return Ok(());
-            }
-            c.at = before;
-            let (key, key_loc) = self.key(c, "parameter list")?;
-            let mut def = self.value(c)?;
-            def.loc = key_loc;
-            match self.open.last_mut() {
-                Some(sub) => sub.params.insert(key, def),
-                None => self.deck.params.insert(key, def),
-            };
-        }
-        Ok(())
-    }
-
-    fn function(&mut self, c: &mut Cursor<'_>) -> Result<(), ReadError> {
-        let (name, loc) = c.word();
-        if name.is_empty() || !c.takes('(') {
-            return Err(self.wrong(
-                loc,
-                "a function without arguments",
-                "want `.func name(x, y) {expression}`",
-            ));
-        }
-        let mut args = Vec::new();
-        loop {
-            c.skip(&[',']);
-            if c.takes(')') {
-                break;
-            }
-            let (arg, l) = c.word();
-            if arg.is_empty() {
-                return Err(self.wrong(
-                    l,
-                    "a broken argument list",
-                    "want names separated by commas and `)`",
-                ));
-            }
-            args.push(self.lower(&arg));
-        }
-        c.takes('=');
-        let body = self.value(c)?.expr;
-        let key = self.lower(&name);
-        self.deck.functions.insert(key, Arc::new(UserFunction { args, body }));
-        Ok(())
     }
 
     fn include(&mut self, c: &mut Cursor<'_>, lib: Option<()>, source: &Source) -> Result<(), ReadError> {
@@ -522,77 +379,6 @@ impl Reader<'_> {
         done
     }
 
-    fn subckt(&mut self, c: &mut Cursor<'_>) -> Result<(), ReadError> {
-        let (name, loc) = c.word();
-        if name.is_empty() {
-            return Err(self.wrong(loc, "`.subckt` without a name", "want `.subckt NAME port port …`"));
-        }
-        if let Some(outer) = self.open.last() {
-            let outer = outer.name.clone();
-            return Err(self.wrong(
-                loc,
-                format!("subcircuit `{name}` starts inside `{outer}`"),
-                "want `.ends` first: nested definitions are not supported",
-            ));
-        }
-        let mut sub = Subckt {
-            name: name.as_str().into(),
-            ports: Vec::new(),
-            params: IndexMap::new(),
-            models: Vec::new(),
-            elements: Vec::new(),
-            directions: IndexMap::new(),
-            loc,
-        };
-        while !c.is_end() {
-            c.skip(&['(', ')', ',']);
-            let before = c.at;
-            let (word, l) = c.word();
-            if word.is_empty() {
-                if c.is_end() {
-                    break;
-                }
-                return Err(self.wrong(l, "a broken port list", "want port names, then `name = value`"));
-            }
-            if c.takes('=') {
-                c.at = before;
-                let (key, key_loc) = self.key(c, "subcircuit line")?;
-                let mut def = self.value(c)?;
-                def.loc = key_loc;
-                sub.params.insert(key, def);
-            } else if word.eq_ignore_ascii_case("params:") || word == "/" {
-            } else if sub.ports.iter().any(|p| **p == *word) {
-                return Err(self.wrong(l, format!("port `{word}` stands twice"), "want each port once"));
-            } else {
-                sub.ports.push(word.into());
-            }
-        }
-        self.open.push(sub);
-        Ok(())
-    }
-
-    fn ends(&mut self, c: &mut Cursor<'_>, loc: Loc) -> Result<(), ReadError> {
-        let (name, _) = c.word();
-        let Some(sub) = self.open.pop() else {
-            return Err(self.wrong(loc, "`.ends` without `.subckt`", "remove it"));
-        };
-        if !name.is_empty() && !name.eq_ignore_ascii_case(&sub.name) {
-            let want = format!("want `.ends {}`", sub.name);
-            return Err(self.wrong(loc, format!("`.ends {name}` closes nothing"), want));
-        }
-        let key = self.lower(&sub.name);
-        if let Some(first) = self.deck.subckts.get(&key) {
-            let at = first.loc.place(&self.deck.files);
-            return Err(self.wrong(
-                sub.loc,
-                format!("subcircuit `{}` is defined a second time", sub.name),
-                format!("the first definition is at {at}; keep one"),
-            ));
-        }
-        self.deck.subckts.insert(key, sub);
-        Ok(())
-    }
-
     fn option(&mut self, c: &mut Cursor<'_>) -> Result<(), ReadError> {
         while !c.is_end() {
             c.skip(&[',']);
@@ -606,7 +392,7 @@ impl Reader<'_> {
             }
             let def = self.value(c)?;
             if key == "scale" {
-                let scope = super::deck::DeckScope::new(&self.deck, None, &[], 25.0);
+                let scope = crate::read::deck::DeckScope::new(&self.deck, None, &[], 25.0);
                 let v = self.deck.eval(&def, &scope)?;
                 if v <= 0.0 {
                     return Err(self.wrong(
@@ -624,103 +410,6 @@ impl Reader<'_> {
         }
         Ok(())
     }
-
-    fn element(&mut self, name: &str, loc: Loc, c: &mut Cursor<'_>) -> Result<(), ReadError> {
-        let kind = name.chars().next().unwrap_or(' ').to_ascii_uppercase();
-        if !"MXDRC".contains(kind) {
-            return Err(self.wrong(
-                loc,
-                format!("found `{name}`"),
-                "want an element (M, X, D, R, C) or a directive that starts with a dot",
-            ));
-        }
-        let mut words: Vec<(String, Loc)> = Vec::new();
-        let mut value = None;
-        let mut params = Vec::new();
-        while !c.is_end() {
-            c.skip(&['(', ')', ',']);
-            if c.is_end() {
-                break;
-            }
-            let before = c.at;
-            if c.rest().starts_with(['{', '\'']) {
-                value = Some(self.value(c)?);
-                continue;
-            }
-            let (word, l) = c.word();
-            if word.is_empty() {
-                return Err(self.wrong(
-                    l,
-                    "a stray character",
-                    "want nodes, a model and `name = value` pairs",
-                ));
-            }
-            if c.takes('=') {
-                if word.starts_with('$') {
-                    c.word(); // layout remark of a CDL netlist
-                    continue;
-                }
-                c.at = before;
-                let (key, key_loc) = self.key(c, "element")?;
-                let mut def = self.value(c)?;
-                def.loc = key_loc;
-                params.push((key, def));
-            } else if word == "/" || word.starts_with("$[") {
-            } else if !params.is_empty() {
-                return Err(self.wrong(
-                    l,
-                    format!("found `{word}` behind the parameters"),
-                    "want `name = value`",
-                ));
-            } else {
-                words.push((word, l));
-            }
-        }
-        let fixed = match kind {
-            'M' => Some(4),
-            'D' | 'R' | 'C' => Some(2),
-            _ => None,
-        };
-        let n_nodes = fixed.unwrap_or_else(|| words.len().saturating_sub(1));
-        let enough =
-            if matches!(kind, 'R' | 'C') { words.len() >= 2 } else { words.len() > n_nodes && n_nodes > 0 };
-        if !enough {
-            let what = match kind {
-                'M' => "want drain, gate, source, body and model",
-                'D' => "want anode, cathode and model",
-                'X' => "want nodes and the name of a subcircuit",
-                _ => "want two nodes and a value",
-            };
-            return Err(self.wrong(loc, format!("`{name}` has {} words", words.len()), what));
-        }
-        let mut rest = words.split_off(n_nodes).into_iter();
-        let mut model: Arc<str> = "".into();
-        if let Some((w, l)) = rest.next() {
-            match super::number::whole_number(&w) {
-                Some(v) if matches!(kind, 'R' | 'C') => {
-                    value = Some(Definition { expr: Expr::Num(v), loc: l });
-                }
-                _ => model = self.lower(&w),
-            }
-        }
-        if let Some((w, l)) = rest.next() {
-            match super::number::whole_number(&w) {
-                Some(v) if value.is_none() => value = Some(Definition { expr: Expr::Num(v), loc: l }),
-                _ => return Err(self.wrong(l, format!("found `{w}`"), "want `name = value`")),
-            }
-        }
-        let nodes = words.into_iter().map(|(w, _)| self.name(&w)).collect();
-        let element = Element { name: name.into(), kind, nodes, model, value, params, loc };
-        let Some(sub) = self.open.last_mut() else {
-            return Err(self.wrong(
-                loc,
-                format!("element `{name}` stands outside a subcircuit"),
-                "want cells as `.subckt … .ends`",
-            ));
-        };
-        sub.elements.push(element);
-        Ok(())
-    }
 }
 
 /// Whether `.lib` is followed by a file and a section, and so calls a section instead of opening one.
@@ -731,15 +420,4 @@ fn has_two_words(c: &Cursor<'_>) -> bool {
         _ => rest.find(char::is_whitespace),
     };
     first_end.is_some_and(|i| !rest[i..].trim().is_empty())
-}
-
-/// `4.5` as it is, `4.8.2` as 4.82.
-fn version_number(text: &str) -> Option<f64> {
-    let mut parts = text.splitn(2, '.');
-    let major = parts.next()?;
-    let minor: String = parts.next().unwrap_or("0").chars().filter(|c| *c != '.').collect();
-    if major.is_empty() || !major.bytes().chain(minor.bytes()).all(|b| b.is_ascii_digit()) {
-        return None;
-    }
-    format!("{major}.{minor}").parse().ok()
 }
