@@ -305,6 +305,18 @@ impl BoundCell {
         options: &SolveOptions,
         w: &mut Workspace,
     ) -> Result<StateCurrents, CellError> {
+        let (v, effort, stable) = self.operating_point(state, levels, options, w)?;
+        Ok(self.currents_at(&v, levels, effort, stable))
+    }
+
+    /// Node voltages of one state, the work they took, and whether the cell stays there.
+    pub(crate) fn operating_point(
+        &self,
+        state: &State,
+        levels: &Levels,
+        options: &SolveOptions,
+        w: &mut Workspace,
+    ) -> Result<(Vec<Volt>, Effort, bool), CellError> {
         let cell = &self.cell;
         let mut v = vec![Volt::default(); cell.nodes.len()];
         let mut rails = Vec::with_capacity(cell.ports.len());
@@ -352,9 +364,15 @@ impl BoundCell {
             steps: e.steps,
         })?;
         let stable = solver.is_stable(&v, w);
+        Ok((v, solver.effort, stable))
+    }
+
+    fn currents_at(&self, v: &[Volt], levels: &Levels, effort: Effort, stable: bool) -> StateCurrents {
+        let cell = &self.cell;
+        let (lo, hi) = (levels.ground_v, levels.supply_v);
         let mut at_node = vec![[0.0; 5]; v.len()];
         for e in &self.net.elements {
-            let split = self.net.by_mechanism(e, &v);
+            let split = self.net.by_mechanism(e, v);
             for (m, row) in split.iter().enumerate() {
                 for (t, &n) in e.nodes().iter().enumerate() {
                     at_node[n][m] += row[t];
@@ -377,13 +395,13 @@ impl BoundCell {
             })
             .collect();
         let middle = 0.5 * (lo + hi);
-        Ok(StateCurrents {
+        StateCurrents {
             ports,
             port_bits: cell.port_nodes.iter().map(|&n| v[n].get() > middle).collect(),
             node_v: v.iter().map(|x| x.get()).collect(),
-            effort: solver.effort,
+            effort,
             stable,
-        })
+        }
     }
 }
 

@@ -12,6 +12,8 @@ pub struct Diode {
     pub isat_a: f64,
     /// n·kT/q, V.
     pub nvt_v: f64,
+    /// d ln Is / dT, 1/K.
+    pub d_ln_isat_k: f64,
 }
 
 /// Parameters of a diode model that do not bear on its reverse and small forward current.
@@ -93,7 +95,13 @@ impl Diode {
             (None, Some(is)) => is * if area > 0.0 { area } else { 1.0 },
             (None, None) => 1e-14 * if area > 0.0 { area } else { 1.0 },
         };
-        Ok(Self { isat_a: isat * grow, nvt_v: n * v })
+        Ok(Self { isat_a: isat * grow, nvt_v: n * v, d_ln_isat_k: (eg / (v * t) + xti / t) / n })
+    }
+
+    /// Derivative of the current to temperature at a voltage, A/K.
+    pub fn temperature_slope(&self, v: f64, temp_k: f64) -> f64 {
+        let x = v / self.nvt_v;
+        self.current(v) * self.d_ln_isat_k - self.isat_a * Real::exp(x) * x / temp_k
     }
 
     /// Current from anode to cathode, A.

@@ -4,6 +4,7 @@ pub mod bsim4;
 pub mod diode;
 pub mod dual;
 pub mod process;
+pub mod sensitivity;
 
 use serde::{Deserialize, Serialize};
 

@@ -114,7 +114,7 @@ impl<P: Real> Junctions<P> {
                 if limited { nvt.val() * (ijth / isat.val()).ln_1p() } else { f64::INFINITY };
             let breakdown = (dio != 1).then(|| (v[ids.xjbv] * isat, v[ids.bv]));
             let jtw = v[Id::Jtweff];
-            let edge_growth = (jtw / v.size.weffcj).sqrt() + 1.0;
+            let edge_growth = if jtw.val() > 0.0 { (jtw / v.size.weffcj).sqrt() + 1.0 } else { P::of(1.0) };
             let sizes = [area, outer, gate_edge * edge_growth];
             let traps = std::array::from_fn(|i| {
                 let j = v[ids.jts[i]];

@@ -6,7 +6,7 @@ use super::silicon::{EPS_SI, MODEL_EPS0, MODEL_KB_OVER_Q, MODEL_Q, intrinsic_den
 use super::stress::Stress;
 use super::table::Id;
 use super::values::{Card, Values};
-use crate::device::dual::{Over, Real};
+use crate::device::dual::Over;
 use crate::device::{Geometry, Polarity};
 
 /// The gate-tunnelling constants of one device.
@@ -223,6 +223,8 @@ impl<P: Over<P>> Prepared<P> {
             (P::of(-1.0) + phi + k1 * sqrt_phi, P::of(-1.0))
         };
 
+        // a threshold shift of the instance moves the flat band with it
+        let vfb = vfb + g.delvto_v * sign;
         let stress = Stress::of(v, g, tr);
         let (sca, scb, scc) = g.well_proximity;
         let wpe =

@@ -1,0 +1,108 @@
+//! How the currents of a device answer to its own making: exact derivatives to threshold, length, width, temperature and
+//! oxide thickness, from the same equations with dual numbers in the parameters.
+
+use serde::{Deserialize, Serialize};
+
+use super::bsim4::branches;
+use super::bsim4::prepare::Prepared;
+use super::bsim4::table::Id;
+use super::bsim4::values::Values;
+use super::dual::{Dual, Real};
+use super::process::{Process, Request};
+use super::{Bias, Geometry};
+use crate::physics::Kelvin;
+use crate::read::deck::Note;
+use crate::read::source::ReadError;
+
+/// What is varied.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Knob {
+    /// Magnitude of the threshold, V.
+    Threshold,
+    /// Drawn length, m.
+    Length,
+    /// Drawn width, m.
+    Width,
+    /// Temperature, K.
+    Temperature,
+    /// Electrical and physical oxide thickness together, m.
+    Oxide,
+}
+
+impl Knob {
+    /// All, in the order of every array of derivatives.
+    pub const ALL: [Self; KNOBS] =
+        [Self::Threshold, Self::Length, Self::Width, Self::Temperature, Self::Oxide];
+    /// Lower-case name with its unit.
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Threshold => "threshold_v",
+            Self::Length => "length_m",
+            Self::Width => "width_m",
+            Self::Temperature => "temperature_k",
+            Self::Oxide => "oxide_m",
+        }
+    }
+}
+
+/// Number of knobs.
+pub const KNOBS: usize = 5;
+
+/// A device whose parameters carry derivatives to the knobs.
+#[derive(Debug, Clone)]
+pub struct Varied {
+    prepared: Prepared<Dual<KNOBS>>,
+    /// Devices in parallel.
+    pub count: f64,
+}
+
+impl Process {
+    /// Makes a transistor whose currents know their derivatives to the [`Knob`]s.
+    ///
+    /// # Errors
+    /// As for [`Process::transistor`].
+    pub fn varied(
+        &self,
+        request: &Request,
+        temp: Kelvin,
+        notes: &mut Vec<Note>,
+    ) -> Result<Varied, ReadError> {
+        let (card, g, count) = self.card(request, temp.celsius(), notes)?;
+        let knob = |k: Knob, v: f64| Dual::<KNOBS>::variable(v, k as usize);
+        let mut dual: Geometry<Dual<KNOBS>> = g.lift();
+        dual.length_m = knob(Knob::Length, g.length_m);
+        dual.width_m = knob(Knob::Width, g.width_m);
+        let mut shift = knob(Knob::Threshold, 0.0);
+        if card.polarity.sign() < 0.0 {
+            shift = -shift;
+        }
+        dual.delvto_v = shift + g.delvto_v;
+        let values = Values::at(&card, &dual, |id, v| {
+            if matches!(id, Id::Toxe | Id::Toxp) { knob(Knob::Oxide, v) } else { Dual::of(v) }
+        })
+        .map_err(|(what, size)| ReadError::Range {
+            at: request.at.clone(),
+            name: format!("{what} of model `{}`", request.model),
+            value: format!("{size:.3e} m"),
+            wanted: "want a drawn size well above the offsets of the card".into(),
+        })?;
+        let prepared = Prepared::new(&card, &values, &dual, knob(Knob::Temperature, temp.get()));
+        Ok(Varied { prepared, count })
+    }
+}
+
+impl Varied {
+    /// Currents into drain, gate, source and body with derivatives to the knobs, A and A per unit; the bias is kept.
+    pub fn terminals(&self, bias: Bias<f64>) -> [Dual<KNOBS>; 4] {
+        let lift = |x: f64| Dual::<KNOBS>::of(x);
+        let b = Bias { vgs: lift(bias.vgs), vds: lift(bias.vds), vbs: lift(bias.vbs) };
+        branches(&self.prepared, b).terminals().map(|t| t * self.count)
+    }
+
+    /// d ln|Id| / d knob at a bias; `None` where no current flows.
+    pub fn log_slopes(&self, bias: Bias<f64>) -> Option<[f64; KNOBS]> {
+        let id = self.terminals(bias)[0];
+        (id.v != 0.0).then(|| id.d.map(|d| d / id.v))
+    }
+}
