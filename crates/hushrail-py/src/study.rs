@@ -6,6 +6,7 @@ use hushrail::batch::characterise::{TableRequest, table_of_study};
 use hushrail::batch::compare::{CompareRequest, compare_study};
 use hushrail::batch::study::read_study;
 use hushrail::batch::{estimate as core_estimate, load_study};
+use hushrail::check::suspects::SuspectRules;
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::read::verilog::read_verilog;
 use hushrail::read::{ReadError, Source};
@@ -50,7 +51,7 @@ pub fn cell_table(
 
 /// Predictions against a published table; JSON.
 #[pyfunction]
-#[pyo3(signature = (path, table, *, corners=None, prefix="", floor_s=0.0, progress=None))]
+#[pyo3(signature = (path, table, *, corners=None, prefix="", floor_s=0.0, same_cards=Vec::new(), progress=None))]
 pub fn compare(
     py: Python<'_>,
     path: &str,
@@ -58,6 +59,7 @@ pub fn compare(
     corners: Option<String>,
     prefix: &str,
     floor_s: f64,
+    same_cards: Vec<Vec<String>>,
     progress: Option<Py<PyAny>>,
 ) -> PyResult<String> {
     let request = CompareRequest {
@@ -66,6 +68,7 @@ pub fn compare(
         corners: corners.map(Into::into),
         prefix: prefix.to_owned(),
         floor_s,
+        rules: SuspectRules { same_cards, ..SuspectRules::default() },
     };
     let result = run(py, progress.as_ref(), |p| compare_study(&request, &SolveOptions::default(), p))?;
     text(&result.map_err(|e| error::read(&e))?)

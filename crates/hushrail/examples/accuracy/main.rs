@@ -14,6 +14,7 @@ use hushrail::cell::{Cell, CellReader, RailNames};
 use hushrail::check::compare::{
     Compared, ComparedRow, Comparison, PublishedCorner, PublishedRow, read_published, read_published_corners,
 };
+use hushrail::check::suspects::{SuspectRules, find_suspects};
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::device::process::Process;
 use hushrail::read::{DeckOptions, ReadError, Source, read_deck};
@@ -29,6 +30,12 @@ struct Setup {
     alias: IndexMap<String, String>,
     cells: Cells,
     fallback: Fallback,
+    suspects: Shared,
+}
+#[derive(Deserialize)]
+#[serde(deny_unknown_fields)]
+struct Shared {
+    same_cards: Vec<Vec<String>>,
 }
 #[derive(Deserialize)]
 #[serde(deny_unknown_fields)]
@@ -162,6 +169,21 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     for (why, n) in &tally {
         println!("  {n:>6}  {why}");
     }
+    let rules = SuspectRules { same_cards: setup.suspects.same_cards.clone(), ..SuspectRules::default() };
+    let found = find_suspects(&rows, &corners, Some(&result), &rules);
+    let own = found.iter().filter(|s| s.contradicts_table).count();
+    println!(
+        "\nrows that contradict others of the table: {own}; that only the prediction contradicts: {}",
+        found.len() - own
+    );
+    let listed = listed_suspects(dir);
+    if !listed.is_empty() {
+        let hit = found
+            .iter()
+            .filter(|s| listed.contains(&(s.cell.clone(), s.corner.clone(), s.when.clone())))
+            .count();
+        println!("of the {} rows listed in leakage_suspects.csv {hit} are found", listed.len());
+    }
     for e in &missing {
         println!("not predicted: {e}");
     }
@@ -210,17 +232,9 @@ fn reasons(
         let k = (r.cell.as_str(), r.corner.as_str());
         let v = *first.entry(k).or_insert(r.power_w);
         let same = equal.entry(k).or_insert(true);
-        *same &= (v / r.power_w - 1.0).abs() < 1e-6;
+        *same &= (v / r.power_w - 1.0).abs() < 1e-4;
     }
-    let suspects = std::fs::read_to_string(dir.join("leakage_suspects.csv")).unwrap_or_default();
-    let suspect: std::collections::HashSet<RowKey> = suspects
-        .lines()
-        .skip(1)
-        .filter_map(|l| {
-            let f: Vec<&str> = l.splitn(4, ',').collect();
-            (f.len() == 4).then(|| (f[0].to_owned(), f[1].to_owned(), f[2].to_owned()))
-        })
-        .collect();
+    let suspect = listed_suspects(dir);
     Ok(off
         .into_iter()
         .map(|r| {
@@ -240,4 +254,16 @@ fn reasons(
             (k, why.to_owned())
         })
         .collect())
+}
+
+/// Rows that the data set lists as contradicting others; empty when it lists none.
+fn listed_suspects(dir: &Path) -> std::collections::HashSet<RowKey> {
+    let text = std::fs::read_to_string(dir.join("leakage_suspects.csv")).unwrap_or_default();
+    text.lines()
+        .skip(1)
+        .filter_map(|l| {
+            let f: Vec<&str> = l.splitn(4, ',').collect();
+            (f.len() == 4).then(|| (f[0].to_owned(), f[1].to_owned(), f[2].to_owned()))
+        })
+        .collect()
 }

@@ -12,6 +12,7 @@ use super::watch::{Progress, watched};
 use crate::check::compare::{
     Compared, Comparison, CornerStatistics, PublishedCorner, read_published, read_published_corners,
 };
+use crate::check::suspects::{Suspect, SuspectRules, find_suspects};
 use crate::circuit::newton::SolveOptions;
 use crate::read::source::{ReadError, Source};
 
@@ -28,6 +29,8 @@ pub struct CompareRequest {
     pub prefix: String,
     /// Conductance the table's circuit program put across junctions, S.
     pub floor_s: f64,
+    /// When a row is suspect.
+    pub rules: SuspectRules,
 }
 
 /// A comparison with its statistics.
@@ -37,6 +40,8 @@ pub struct ComparisonReport {
     pub statistics: Vec<CornerStatistics>,
     /// Rows and what could not be matched.
     pub compared: Compared,
+    /// Rows under suspicion, worst first.
+    pub suspects: Vec<Suspect>,
     /// Cells of the table that could not be read, and why.
     pub cells_lost: IndexMap<String, String>,
 }
@@ -93,5 +98,6 @@ pub fn compare_study(
         options: options.clone(),
     };
     let compared = watched(rows.len(), progress, |w| comparison.run(&rows, &corners, &w.done, &w.stop))?;
-    Ok(ComparisonReport { statistics: compared.statistics(), compared, cells_lost })
+    let suspects = find_suspects(&rows, &corners, Some(&compared), &request.rules);
+    Ok(ComparisonReport { statistics: compared.statistics(), compared, suspects, cells_lost })
 }

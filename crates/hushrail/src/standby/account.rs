@@ -82,6 +82,13 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
         }
         if over > 0.0 {
             notes.push(Note::new(
+                "past-the-rail",
+                format!(
+                    "the {name}'s gate is driven past its rail: cards are usually extracted between the rails, so currents \
+                     there, GIDL above all, extrapolate the card's equations; ask the foundry before relying on an optimum"
+                ),
+            ));
+            notes.push(Note::new(
                 "oxide-caution",
                 "a gate driven past its rail stresses its oxide; the limit is the foundry's reliability rule, and only a \
                  qualified sign-off can say that it is kept",
