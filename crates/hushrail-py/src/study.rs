@@ -52,6 +52,7 @@ pub fn cell_table(
 /// Predictions against a published table; JSON.
 #[pyfunction]
 #[pyo3(signature = (path, table, *, corners=None, prefix="", floor_s=0.0, same_cards=Vec::new(), progress=None))]
+#[expect(clippy::too_many_arguments, reason = "keywords of a Python function")]
 pub fn compare(
     py: Python<'_>,
     path: &str,

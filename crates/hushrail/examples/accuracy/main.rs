@@ -244,6 +244,8 @@ fn reasons(
                 "the table gives one value for all states of the cell"
             } else if fits {
                 "the published value is what 1e-12 S across every junction gives (within 2 %)"
+            } else if refit.get(&k).is_some_and(|x| (x - 1.0) * (r.ratio() - 1.0) < 0.0) {
+                "between what 1e-15 S and 1e-12 S across every junction give: a conductance in between was left"
             } else if suspect.contains(&k) {
                 "listed as contradicting other rows of the table"
             } else if r.predicted_nw < r.published_nw {

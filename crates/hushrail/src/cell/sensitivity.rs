@@ -24,6 +24,9 @@ pub struct StateSensitivity {
     pub d_ln_supply: f64,
 }
 
+/// The knobs and the supply.
+const COLUMNS: usize = KNOBS + 1;
+
 /// Why a sensitivity has no value.
 #[derive(Debug, Clone, PartialEq, thiserror::Error)]
 #[non_exhaustive]
@@ -79,7 +82,6 @@ impl BoundCell {
             let high = *role == Role::Input && bits.next().copied().unwrap_or(false);
             counts[node] |= high || matches!(role, Role::Supply | Role::Nwell);
         }
-        const COLUMNS: usize = KNOBS + 1;
         let mut jacobian = vec![0.0; n * n];
         let mut push = vec![[0.0; COLUMNS]; n];
         let mut own = [0.0; COLUMNS];

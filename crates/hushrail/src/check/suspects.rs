@@ -167,12 +167,13 @@ pub fn find_suspects(
             .collect();
         for c in &compared.rows {
             let x = c.ratio();
-            if (x > 1.0 + rules.prediction || x < 1.0 / (1.0 + rules.prediction)) && x > 0.0 {
-                if let Some(&i) = index.get(&(c.cell.as_str(), c.corner.as_str(), c.when.as_str())) {
-                    let side = if x > 1.0 { "above" } else { "below" };
-                    let factor = if x > 1.0 { x } else { 1.0 / x };
-                    suspect(i, x, format!("the prediction is {factor:.3} times {side} the table"), false);
-                }
+            if (x > 1.0 + rules.prediction || x < 1.0 / (1.0 + rules.prediction))
+                && x > 0.0
+                && let Some(&i) = index.get(&(c.cell.as_str(), c.corner.as_str(), c.when.as_str()))
+            {
+                let side = if x > 1.0 { "above" } else { "below" };
+                let factor = if x > 1.0 { x } else { 1.0 / x };
+                suspect(i, x, format!("the prediction is {factor:.3} times {side} the table"), false);
             }
         }
     }
