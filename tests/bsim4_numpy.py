@@ -1,7 +1,8 @@
 """A second, simple evaluation of the published BSIM4 static equations, one function an equation.
 
-Written for the tests from the BSIM4.8.0 manual (UC Berkeley, 2013), sections 2 to 6 and 10 to 13, in the plain forms of the
-manual (no conjugate forms, no dual numbers). n-channel, ``vds >= 0``, one finger, no stress, no polysilicon depletion.
+Written for the tests from the BSIM4.8.0 manual (UC Berkeley, 2013), sections 2 to 6 and 10 to 13, in the
+plain forms of the manual (no conjugate forms, no dual numbers). n-channel, ``vds >= 0``, one finger, no
+stress, no polysilicon depletion.
 Parameters come as a mapping of effective values (bins added), arrays broadcast.
 """
 
@@ -55,14 +56,14 @@ class Sizes:
     litl: float
 
 
-def sizes(p: Mapping[str, float], w: float, l: float, temp_k: float) -> Sizes:
+def sizes(p: Mapping[str, float], w: float, length: float, temp_k: float) -> Sizes:
     """Effective sizes and temperature terms (sections 1.3, 2.1, 13)."""
     tnom = p["tnom"] + 273.15
     vt0 = K_OVER_Q * tnom
     ni = intrinsic_density(tnom)
     phi = 0.4 + vt0 * np.log(p["ndep"] / ni) + p["phin"]
     return Sizes(
-        leff=l + p["xl"] - 2 * p["lint"],
+        leff=length + p["xl"] - 2 * p["lint"],
         weff=w + p["xw"] - 2 * p["wint"],
         weffcj=w + p["xw"] - 2 * p["dwj"],
         temp=temp_k,
@@ -152,7 +153,9 @@ def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array
     weff = s.weff - 2 * (p["dwg"] * vg + p["dwb"] * (sq - sq0))
     per_width = (s.weffcj * 1e6) ** p["wr"]
     t2 = 1 / (1 + p["prwg"] * vg) + p["prwb"] * (sq - sq0)
-    rds = p["rdswmin"] / per_width + 0.5 * (p["rdsw"] + p["prt"] * tr) / per_width * (t2 + np.sqrt(t2 * t2 + 0.01))
+    rds = p["rdswmin"] / per_width + 0.5 * (p["rdsw"] + p["prt"] * tr) / per_width * (
+        t2 + np.sqrt(t2 * t2 + 0.01)
+    )
     scale = p["toxe"] / p["toxm"]
     t1 = 0.5 * p["k1"] * scale * np.sqrt(1 + p["lpeb"] / s.leff) / sq + p["k2"] * scale
     t1 = t1 - p["k3b"] * p["toxe"] * s.phi / (s.weff + p["w0"])
@@ -185,7 +188,9 @@ def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array
     lt0 = np.sqrt(EPS_SI / (p["epsrox"] * EPS0) * p["toxe"] * s.xdep0)
     rout = p["pdiblc1"] * charge_share(p["drout"] * s.leff / lt0) + p["pdiblc2"]
     va_dibl = (v2 - v2 * abulk * vdsat / (v2 + abulk * vdsat)) / rout / (1 + p["pdiblcb"] * vb)
-    va_sat = (esat_l + vdsat + 2 * wv * rds * vg * (1 - 0.5 * abulk * vdsat / v2)) / (2 / lam - 1 + wv * rds * abulk)
+    va_sat = (esat_l + vdsat + 2 * wv * rds * vg * (1 - 0.5 * abulk * vdsat / v2)) / (
+        2 / lam - 1 + wv * rds * abulk
+    )
     cclm = (1 + rds * idl) * (s.leff + vdsat * mu / (2 * vsat)) / (p["pclm"] * s.litl)
     i = idl * (1 + diff / va_dibl)
     if p["pdits"] > 0:
@@ -208,14 +213,22 @@ def gidl(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array) -
 
 
 def gate_edge(p: Mapping[str, float], s: Sizes, v: Array, side: str) -> Array:
-    """Tunnelling through one overlap, n-channel, A out of the gate; ``v`` is gate minus diffusion (section 4.2)."""
-    vfbsd = K_OVER_Q * s.tnom * np.log(p["ngate"] / p["nsd"]) + p["vfbsdoff"] if p["ngate"] > 0 else p["vfbsdoff"]
+    """Tunnelling through one overlap, A out of the gate; ``v`` is gate minus diffusion (section 4.2)."""
+    vfbsd = (
+        K_OVER_Q * s.tnom * np.log(p["ngate"] / p["nsd"]) + p["vfbsdoff"] if p["ngate"] > 0 else p["vfbsdoff"]
+    )
     away = np.sqrt((v - vfbsd) ** 2 + 1e-4)
     t = p["toxe"] * p["poxedge"]
     ratio = (p["toxref"] / t) ** p["ntox"] / t**2
     a, b, c = p["aig" + side], p["big" + side], p["cig" + side]
     return np.asarray(
-        4.97232e-7 * s.weff * p["dlcig"] * ratio * v * away * np.exp(-7.45669e11 * t * (a - b * away) * (1 + c * away))
+        4.97232e-7
+        * s.weff
+        * p["dlcig"]
+        * ratio
+        * v
+        * away
+        * np.exp(-7.45669e11 * t * (a - b * away) * (1 + c * away))
     )
 
 
@@ -223,5 +236,7 @@ def junction(p: Mapping[str, float], s: Sizes, area: float, perimeter: float, v:
     """Drain junction, body to diffusion, diffusion current only, A (sections 10.1, 11.1, 13)."""
     vt0 = K_OVER_Q * s.tnom
     x = band_gap(s.tnom) / vt0 - band_gap(s.temp) / s.vt + p["xtid"] * np.log(s.temp / s.tnom)
-    isat = (area * p["jsd"] + (perimeter - s.weffcj) * p["jswd"] + s.weffcj * p["jswgd"]) * np.exp(x / p["njd"])
+    isat = (area * p["jsd"] + (perimeter - s.weffcj) * p["jswd"] + s.weffcj * p["jswgd"]) * np.exp(
+        x / p["njd"]
+    )
     return np.asarray(isat * np.expm1(v / (p["njd"] * s.vt)))

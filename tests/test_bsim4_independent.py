@@ -12,7 +12,8 @@ import pytest
 from hushrail import _core
 
 _spec = importlib.util.spec_from_file_location("bsim4_numpy", Path(__file__).with_name("bsim4_numpy.py"))
-assert _spec is not None and _spec.loader is not None
+assert _spec is not None
+assert _spec.loader is not None
 b4 = importlib.util.module_from_spec(_spec)
 sys.modules["bsim4_numpy"] = b4
 _spec.loader.exec_module(b4)
@@ -20,15 +21,20 @@ _spec.loader.exec_module(b4)
 CARD = """
 * invented, for this test: every mechanism on that the second evaluation has
 .model nt nmos level=54 version=4.5 binunit=1
-+ toxe=2.1n toxm=2n toxp=1.9n xj=60n ndep=2e18 nsd=1e20 vth0=0.36 k1=0.45 k2=-0.02 k3=3 k3b=0.4 w0=1u lpe0=30n lpeb=-10n
-+ dvt0=1.5 dvt1=0.6 dvt2=-0.03 dvt0w=0.2 dvt1w=1.2e6 dvt2w=-0.03 dvtp0=2n dvtp1=0.3 voff=-0.11 voffl=-1e-9 minv=0.1
-+ nfactor=1.4 eta0=0.06 etab=-0.04 dsub=0.5 cit=1e-4 cdsc=2e-4 cdscb=1e-5 cdscd=3e-5 lint=3n wint=4n dwg=1n dwb=2n
++ toxe=2.1n toxm=2n toxp=1.9n xj=60n ndep=2e18 nsd=1e20 vth0=0.36
++ k1=0.45 k2=-0.02 k3=3 k3b=0.4 w0=1u lpe0=30n lpeb=-10n
++ dvt0=1.5 dvt1=0.6 dvt2=-0.03 dvt0w=0.2 dvt1w=1.2e6
++ dvt2w=-0.03 dvtp0=2n dvtp1=0.3 voff=-0.11 voffl=-1e-9 minv=0.1
++ nfactor=1.4 eta0=0.06 etab=-0.04 dsub=0.5 cit=1e-4 cdsc=2e-4
++ cdscb=1e-5 cdscd=3e-5 lint=3n wint=4n dwg=1n dwb=2n
 + u0=0.032 ua=1e-9 ub=1.5e-18 uc=-3e-11 vsat=9e4 a0=1.1 ags=0.3 b0=20n b1=10n keta=-0.03 a1=0 a2=0.9
 + rdsw=140 rdswmin=20 prwg=0.1 prwb=0.1 wr=1 pclm=0.8 pdiblc1=0.3 pdiblc2=0.004 pdiblcb=-0.05 drout=0.5
 + pscbe1=5e8 pscbe2=1e-7 pdits=0.05 pditsd=0.2 pditsl=1e5 delta=0.01
 + agidl=2e-5 bgidl=1.9e9 cgidl=1e-3 egidl=0.7
-+ igcmod=1 dlcig=9n aigc=0.5 aigsd=1.2e-2 bigsd=2e-3 cigsd=0.05 toxref=2n poxedge=1.1 ntox=1.2 vfbsdoff=0.02 pigcd=1
-+ jss=3e-5 jsws=2e-12 jswgs=4e-12 njs=1.1 xtis=2.5 ijthsfwd=10 kt1=-0.2 kt1l=1e-9 kt2=0.02 ute=-1.3 at=2e4 prt=10
++ igcmod=1 dlcig=9n aigc=0.5 aigsd=1.2e-2 bigsd=2e-3
++ cigsd=0.05 toxref=2n poxedge=1.1 ntox=1.2 vfbsdoff=0.02 pigcd=1
++ jss=3e-5 jsws=2e-12 jswgs=4e-12 njs=1.1 xtis=2.5 ijthsfwd=10
++ kt1=-0.2 kt1l=1e-9 kt2=0.02 ute=-1.3 at=2e4 prt=10
 + ua1=5e-10 ub1=-1e-18 uc1=2e-11 tvoff=1e-3
 """
 W, L, AREA, PERIMETER = 0.8e-6, 70e-9, 0.12e-12, 1.9e-6
@@ -42,7 +48,9 @@ def process(tmp_path_factory: pytest.TempPathFactory) -> _core.Process:
 
 
 def grid() -> tuple[np.ndarray, ...]:
-    vg, vd, vb = np.meshgrid(np.linspace(-1.0, 1.2, 23), np.linspace(0.02, 1.2, 11), np.linspace(-1.2, 0.2, 6))
+    vg, vd, vb = np.meshgrid(
+        np.linspace(-1.0, 1.2, 23), np.linspace(0.02, 1.2, 11), np.linspace(-1.2, 0.2, 6)
+    )
     return tuple(np.ascontiguousarray(x.ravel()) for x in (vg, vd, vb))
 
 
@@ -84,5 +92,7 @@ def test_core_is_faster_than_numpy_on_the_same_equations(process: _core.Process)
     start = time.perf_counter()
     device.currents(vd, vg, zero, vb)
     core_s = time.perf_counter() - start
-    print(f"NumPy {numpy_s / vg.size * 1e9:.0f} ns, core {core_s / vg.size * 1e9:.0f} ns a point: {numpy_s / core_s:.1f}x")
+    print(
+        f"NumPy {numpy_s / vg.size * 1e9:.0f} ns, core {core_s / vg.size * 1e9:.0f} ns a point: {numpy_s / core_s:.1f}x"
+    )
     assert core_s < numpy_s
