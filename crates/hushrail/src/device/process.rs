@@ -356,7 +356,7 @@ impl Process {
         };
         let at_or_above = |x: f64, lo: f64| x >= lo * (1.0 - BIN_SLACK);
         let mut edge = None;
-        let mut nearest_bin: Option<(f64, String)> = None;
+        let mut near: Option<(f64, [f64; 4], &ModelText)> = None;
         for bin in found.bins {
             let m = &found.models[bin.model];
             let (l0, l1) = (limit(bin, 0, 0.0)?, limit(bin, 1, 1.0)?);
@@ -372,27 +372,21 @@ impl Process {
             }
             let off = |x: f64, lo: f64, hi: f64| ((lo - x) / lo.max(1e-9)).max((x - hi) / hi).max(0.0);
             let far = off(l, l0, l1) + off(w, w0, w1);
-            if nearest_bin.as_ref().is_none_or(|(f, _)| far < *f) {
-                let um = |v: f64| v * 1e6;
-                let text = format!(
-                    "L {:.4} to {:.4} µm, W {:.4} to {:.4} µm (`{}`)",
-                    um(l0),
-                    um(l1),
-                    um(w0),
-                    um(w1),
-                    m.name
-                );
-                nearest_bin = Some((far, text));
+            if near.is_none_or(|(f, ..)| far < f) {
+                near = Some((far, [l0, l1, w0, w1], m));
             }
         }
-        edge.ok_or_else(|| ReadError::Range {
-            at: request.at.clone(),
-            name: format!("size of a `{}` transistor", request.model),
-            value: format!("L = {:.4} µm, W = {:.4} µm per finger", l * 1e6, w * 1e6),
-            wanted: format!(
-                "no bin covers it; the nearest is {}",
-                nearest_bin.map_or_else(String::new, |b| b.1)
-            ),
+        edge.ok_or_else(|| {
+            let nearest = near.map_or_else(String::new, |(_, limits, m)| {
+                let [l0, l1, w0, w1] = limits.map(|v| v * 1e6);
+                format!("; the nearest is L {l0:.4} to {l1:.4} µm, W {w0:.4} to {w1:.4} µm (`{}`)", m.name)
+            });
+            ReadError::Range {
+                at: request.at.clone(),
+                name: format!("size of a `{}` transistor", request.model),
+                value: format!("L = {:.4} µm, W = {:.4} µm per finger", l * 1e6, w * 1e6),
+                wanted: format!("no bin covers it{nearest}"),
+            }
         })
     }
 
