@@ -1,5 +1,80 @@
-"""Standby current of power-gated CMOS blocks."""
+"""Standby current of power-gated CMOS blocks, from foundry cards, cell netlists and sleep schemes.
+
+The main job is one call: :func:`estimate` runs a study, a TOML file that names cards, cell netlists, domains,
+sleep schemes and corners. :func:`cells` gives the leakage table behind it, :func:`compare` holds it against a
+published one, :func:`count` counts the instances of a netlist. :class:`Process` and :class:`Device` give the
+currents of single transistors as NumPy arrays. Plots are in ``hushrail.plot``, the demonstration in
+``hushrail.demo``.
+"""
 
 from hushrail._core import __version__
+from hushrail.device import TERMINALS, Device, Process
+from hushrail.errors import HushrailError, RangeError, ReadError, SolveError
+from hushrail.leakage import (
+    Compared,
+    ComparedRow,
+    Comparison,
+    CornerStatistics,
+    Counts,
+    LeakageRow,
+    LeakageTable,
+    Suspect,
+    Unmatched,
+)
+from hushrail.results import (
+    MECHANISMS,
+    Block,
+    ByMechanism,
+    CellShare,
+    Corner,
+    Domain,
+    Estimate,
+    Failure,
+    LimitCheck,
+    Note,
+    PathShare,
+    Point,
+    Rest,
+    Supply,
+    Uncovered,
+)
+from hushrail.study import cells, compare, count, estimate
 
-__all__ = ["__version__"]
+__all__ = [
+    "MECHANISMS",
+    "TERMINALS",
+    "Block",
+    "ByMechanism",
+    "CellShare",
+    "Compared",
+    "ComparedRow",
+    "Comparison",
+    "Corner",
+    "CornerStatistics",
+    "Counts",
+    "Device",
+    "Domain",
+    "Estimate",
+    "Failure",
+    "HushrailError",
+    "LeakageRow",
+    "LeakageTable",
+    "LimitCheck",
+    "Note",
+    "PathShare",
+    "Point",
+    "Process",
+    "RangeError",
+    "ReadError",
+    "Rest",
+    "SolveError",
+    "Supply",
+    "Suspect",
+    "Uncovered",
+    "Unmatched",
+    "__version__",
+    "cells",
+    "compare",
+    "count",
+    "estimate",
+]

@@ -1,0 +1,321 @@
+"""Pictures. Every function draws into the axes it is given, or into new ones, and returns them.
+
+Nothing is computed here but by the core; matplotlib is imported when the first picture is drawn.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from hushrail.device import Process
+from hushrail.errors import RangeError
+from hushrail.results import MECHANISMS, Corner, Estimate, Point
+from hushrail.units import engineering
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+__all__ = ["COLOURS", "overdrive_curve", "rest_points", "standby_power"]
+
+COLOURS = {
+    "channel": "#2a6fb0",
+    "gidl": "#d9762b",
+    "gate": "#3c9a6a",
+    "junction": "#8a5fb0",
+    "floor": "#8c8c8c",
+}
+"""One colour for each mechanism, the same in every picture."""
+
+_MARKERS = "os^Dv<>ph*"
+_COLD, _MILD, _HOT = (0.16, 0.44, 0.76), (0.55, 0.55, 0.55), (0.80, 0.22, 0.18)
+
+
+def standby_power(estimate: Estimate, domain: str | None = None, ax: Axes | None = None) -> Axes:
+    """Standby power of a domain by scheme, one mark for each corner, on a logarithmic axis.
+
+    Colour is temperature and shape is process; a ring marks the worst corner of a scheme, a cross a broken
+    limit.
+
+    Parameters
+    ----------
+    estimate : Estimate
+        What :func:`hushrail.estimate` found.
+    domain : str, optional
+        The domain; the first when left out.
+    ax : Axes, optional
+        Where to draw.
+    """
+    ax = _axes(ax)
+    name, points = _points(estimate, domain)
+    schemes = [scheme for scheme in estimate.schemes if any(p.scheme == scheme for p in points)]
+    corners = {c.name: c for c in estimate.corners}
+    style = _Style(estimate.corners)
+    for row, scheme in enumerate(schemes):
+        own = [p for p in points if p.scheme == scheme and p.power_w > 0.0]
+        if not own:
+            continue
+        powers = [p.power_w for p in own]
+        ax.plot(
+            [min(powers), max(powers)],
+            [row, row],
+            color="0.85",
+            linewidth=3,
+            zorder=1,
+            solid_capstyle="round",
+        )
+        for p in own:
+            style.mark(ax, p.power_w, row, corners[p.corner])
+            if not p.holds:
+                ax.plot(p.power_w, row, "x", color="black", markersize=6, markeredgewidth=1.2, zorder=4)
+        ax.plot(max(powers), row, "o", markersize=12, markerfacecolor="none", markeredgecolor="0.3", zorder=2)
+    ax.set_xscale("log")
+    _engineering_axis(ax, "W")
+    ax.set_xlabel("standby power")
+    ax.set_title(f"{name}: standby power, every corner")
+    _scheme_axis(ax, schemes)
+    handles = style.handles()
+    if any(not p.holds for p in points):
+        from matplotlib.lines import Line2D
+
+        handles.append(Line2D([], [], linestyle="", marker="x", color="black", label="limit broken"))
+    ax.legend(handles=handles, loc="best", fontsize="small", framealpha=0.9)
+    return ax
+
+
+def rest_points(estimate: Estimate, domain: str | None = None, ax: Axes | None = None) -> Axes:
+    """Where the virtual rails of a domain come to rest by scheme, one mark for each corner.
+
+    A bar spans what is left to the block. Virtual supplies stand at its upper edge, virtual grounds at its
+    lower; a rail that is not switched has no mark.
+
+    Parameters
+    ----------
+    estimate : Estimate
+        What :func:`hushrail.estimate` found.
+    domain : str, optional
+        The domain; the first when left out.
+    ax : Axes, optional
+        Where to draw.
+    """
+    ax = _axes(ax)
+    name, points = _points(estimate, domain)
+    schemes = [scheme for scheme in estimate.schemes if any(p.scheme == scheme for p in points)]
+    corners = {c.name: c for c in estimate.corners}
+    style = _Style(estimate.corners)
+    top = max((c.vdd_v for c in estimate.corners), default=1.0)
+    lift = 0.16
+    for row, scheme in enumerate(schemes):
+        own = [p for p in points if p.scheme == scheme]
+        for p in own:
+            at = p.asleep
+            corner = corners[p.corner]
+            ax.fill_betweenx(
+                [row - lift, row + lift],
+                at.virtual_ground_v,
+                at.virtual_supply_v,
+                color="#e8c96a",
+                alpha=0.18,
+                lw=0,
+            )
+            if at.virtual_supply_v != corner.vdd_v:
+                style.mark(ax, at.virtual_supply_v, row - lift, corner, size=6)
+            if at.virtual_ground_v != 0.0:
+                style.mark(ax, at.virtual_ground_v, row + lift, corner, size=6)
+    ax.set_xlim(-0.04 * top, 1.04 * top)
+    ax.set_xlabel("virtual rails (V); the bar is what is left to the block")
+    ax.set_title(f"{name}: where the rails come to rest")
+    _scheme_axis(ax, schemes)
+    return ax
+
+
+def overdrive_curve(
+    process: Process,
+    model: str,
+    *,
+    w: float,
+    l: float,  # noqa: E741
+    vdd_v: float,
+    temp_c: float = 25.0,
+    overdrive_v: ArrayLike | None = None,
+    m: float | None = None,
+    ad: float | None = None,
+    as_: float | None = None,
+    pd: float | None = None,
+    ps: float | None = None,
+    ax: Axes | None = None,
+) -> Axes:
+    """Off current of a switch against its overdrive, by mechanism, with the optimum marked.
+
+    The switch stands alone: source and body on its rail, drain at the far rail, where a fully collapsed
+    virtual rail would be.
+
+    Parameters
+    ----------
+    process : Process
+        The cards.
+    model : str
+        Transistor of the switch; p-channel is a header, n-channel a footer.
+    w, l : float
+        Drawn width and length, m.
+    vdd_v : float
+        Supply, V.
+    temp_c : float
+        Temperature, °C.
+    overdrive_v : array_like, optional
+        Overdrives to show, V; 0 to 0.6 V when left out.
+    m, ad, as_, pd, ps : float, optional
+        Devices in parallel, areas (m²) and perimeters (m) of drain and source.
+    ax : Axes, optional
+        Where to draw.
+    """
+    ax = _axes(ax)
+    over = np.linspace(0.0, 0.6, 121) if overdrive_v is None else np.asarray(overdrive_v, dtype=float)
+    over, total, shares = off_currents(
+        process, model, over, w=w, l=l, vdd_v=vdd_v, temp_c=temp_c, m=m, ad=ad, as_=as_, pd=pd, ps=ps
+    )
+    ax.plot(over, total, color="black", linewidth=2.2, label="all", zorder=3)
+    floor = float(total.min()) * 1e-3
+    for name, share in zip(MECHANISMS, shares.T, strict=True):
+        if share.max() > floor:
+            shown = np.where(share > 0.0, share, np.nan)
+            ax.plot(over, shown, color=COLOURS[name], linewidth=1.7, label=name)
+    best = int(total.argmin())
+    ax.axvline(over[best], color="0.75", linewidth=1, zorder=1)
+    ax.plot(over[best], total[best], "o", color="black", markersize=7, zorder=4)
+    left = over[best] < 0.5 * (over.min() + over.max())
+    # above its least value the curve leaves room
+    ax.annotate(
+        f"least {engineering(float(total[best]), 'A')} at {over[best]:.2f} V",
+        (over[best], 0.95),
+        xycoords=("data", "axes fraction"),
+        xytext=(6 if left else -6, 0),
+        textcoords="offset points",
+        fontsize="small",
+        ha="left" if left else "right",
+    )
+    ax.set_yscale("log")
+    ax.set_ylim(floor, 2.0 * float(total.max()))
+    _engineering_axis(ax, "A", vertical=True)
+    ax.set_xlim(over.min(), over.max())
+    ax.set_xlabel("overdrive (V)")
+    ax.set_title(f"{model} at {temp_c:g} °C")
+    ax.grid(True, which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+    ax.legend(fontsize="small", loc="best", framealpha=0.9)
+    return ax
+
+
+def off_currents(
+    process: Process,
+    model: str,
+    overdrive_v: ArrayLike,
+    *,
+    w: float,
+    l: float,  # noqa: E741
+    vdd_v: float,
+    temp_c: float = 25.0,
+    m: float | None = None,
+    ad: float | None = None,
+    as_: float | None = None,
+    pd: float | None = None,
+    ps: float | None = None,
+) -> tuple[Any, Any, Any]:
+    """Give what :func:`overdrive_curve` draws.
+
+    Returns
+    -------
+    overdrive_v : ndarray, shape (N,)
+        Overdrives, V.
+    total_a : ndarray, shape (N,)
+        Current between switch and collapsed rail, A.
+    by_mechanism_a : ndarray, shape (N, 5)
+        The same by mechanism, A.
+    """
+    over = np.asarray(overdrive_v, dtype=float).reshape(-1)
+    if over.size == 0:
+        raise RangeError("overdrive_v is empty; want at least one voltage")
+    device = process.transistor(model, w=w, l=l, temp_c=temp_c, m=m, ad=ad, as_=as_, pd=pd, ps=ps)
+    if device.polarity == "p":
+        parts = -device.by_mechanism(vd=0.0, vg=vdd_v + over, vs=vdd_v, vb=vdd_v)[..., 0]
+    else:
+        parts = device.by_mechanism(vd=vdd_v, vg=-over, vs=0.0, vb=0.0)[..., 0]
+    return over, parts.sum(axis=-1), parts
+
+
+class _Style:
+    """Colour for each temperature, shape for each process."""
+
+    def __init__(self, corners: Sequence[Corner]) -> None:
+        self.temps = sorted({c.temp_c for c in corners})
+        self.processes = list(dict.fromkeys(c.process for c in corners))
+        self.colours = {t: _blend(i, len(self.temps)) for i, t in enumerate(self.temps)}
+        self.shapes = {name: _MARKERS[i % len(_MARKERS)] for i, name in enumerate(self.processes)}
+
+    def mark(self, ax: Axes, x: float, y: float, corner: Corner, size: float = 7) -> None:
+        ax.plot(
+            x,
+            y,
+            linestyle="",
+            marker=self.shapes[corner.process],
+            color=self.colours[corner.temp_c],
+            markersize=size,
+            markeredgecolor="white",
+            markeredgewidth=0.6,
+            zorder=3,
+            clip_on=False,
+        )
+
+    def handles(self) -> list[Any]:
+        from matplotlib.lines import Line2D
+
+        temps = [
+            Line2D([], [], linestyle="", marker="o", color=self.colours[t], label=f"{t:g} °C")
+            for t in self.temps
+        ]
+        shapes = [
+            Line2D([], [], linestyle="", marker=self.shapes[p], color="0.5", label=p) for p in self.processes
+        ]
+        return temps + (shapes if len(shapes) > 1 else [])
+
+
+def _blend(i: int, n: int) -> tuple[float, float, float]:
+    at = 0.5 if n == 1 else i / (n - 1)
+    low, high, t = (_COLD, _MILD, 2 * at) if at <= 0.5 else (_MILD, _HOT, 2 * at - 1)
+    r, g, b = ((1 - t) * x + t * y for x, y in zip(low, high, strict=True))
+    return r, g, b
+
+
+def _axes(ax: Axes | None) -> Axes:
+    if ax is not None:
+        return ax
+    import matplotlib.pyplot as plt
+
+    return plt.subplots(layout="constrained")[1]
+
+
+def _points(estimate: Estimate, domain: str | None) -> tuple[str, list[Point]]:
+    names = [d.name for d in estimate.domains]
+    name = names[0] if domain is None else domain
+    if name not in names:
+        raise RangeError(f"domain `{name}` is not in the estimate; want one of `{'`, `'.join(names)}`")
+    return name, [p for p in estimate.points if p.domain == name]
+
+
+def _scheme_axis(ax: Axes, schemes: Sequence[str]) -> None:
+    ax.set_yticks(range(len(schemes)), list(schemes))
+    ax.set_ylim(len(schemes) - 0.5, -0.5)
+    ax.tick_params(axis="y", length=0)
+    ax.grid(True, axis="x", which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+
+
+def _engineering_axis(ax: Axes, unit: str, *, vertical: bool = False) -> None:
+    from matplotlib.ticker import FuncFormatter, NullFormatter
+
+    axis = ax.yaxis if vertical else ax.xaxis
+    axis.set_major_formatter(FuncFormatter(lambda value, _: engineering(value, unit, 1)))
+    axis.set_minor_formatter(NullFormatter())
