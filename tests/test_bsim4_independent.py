@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import importlib.util
 import sys
-import time
 from pathlib import Path
 
 import numpy as np
@@ -75,23 +74,3 @@ def test_currents_equal_the_second_evaluation(process: _core.Process, temp_c: fl
     np.testing.assert_allclose(got[:, 2, 0], -edge_d, rtol=1e-10, atol=1e-28)
     body_to_drain = b4.junction(p, s, AREA, PERIMETER, vb - vd)
     np.testing.assert_allclose(got[:, 3, 0], -body_to_drain, rtol=1e-11, atol=1e-33)
-
-
-def test_core_is_faster_than_numpy_on_the_same_equations(process: _core.Process) -> None:
-    """The ratio is printed; the bar is only that the core is not slower (a shared machine is noisy)."""
-    p = process.effective("nt", {"w": W, "l": L})
-    s = b4.sizes(p, W, L, 300.15)
-    device = process.transistor("nt", {"w": W, "l": L}, 27.0)
-    vg, vd, vb = (np.tile(x, 20) for x in grid())
-    zero = np.zeros_like(vg)
-    b4.channel(p, s, vg, vd, vb)
-    start = time.perf_counter()
-    b4.channel(p, s, vg, vd, vb)
-    b4.gidl(p, s, vg, vd, vb)
-    numpy_s = time.perf_counter() - start
-    start = time.perf_counter()
-    device.currents(vd, vg, zero, vb)
-    core_s = time.perf_counter() - start
-    each = 1e9 / vg.size
-    print(f"NumPy {numpy_s * each:.0f} ns, core {core_s * each:.0f} ns a point")
-    assert core_s < numpy_s
