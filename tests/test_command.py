@@ -177,6 +177,18 @@ def test_rows_that_cannot_be_compared_are_exit_status_2(run: Run, small: Path) -
     assert "cell `nor9` is not defined" in done.stderr
 
 
+def test_a_published_zero_is_shown_and_is_no_number_elsewhere(run: Run, small: Path) -> None:
+    corner = hushrail.cells(small, "inv").rows[0].corner
+    (small.parent / "t.csv").write_text(f"cell,corner,when,leakage_nw\ninv,{corner},A,0\n", encoding="utf-8")
+    done = run("compare", small, "--table", "t.csv", "--json", "out.json")
+    assert done.returncode == 0
+    assert "nan" not in done.stdout
+    text = (small.parent / "out.json").read_text(encoding="utf-8")
+    assert "NaN" not in text, "JSON has no such word"
+    assert "Infinity" not in text
+    assert hushrail.Comparison.from_json(text).worst(1)[0].ratio == float("inf")
+
+
 def test_count(run: Run, tmp_path: Path) -> None:
     (tmp_path / "n.v").write_text(NETLIST, encoding="utf-8")
     done = run("count", "n.v", "--csv", "counts.csv", "--json", "counts.json")

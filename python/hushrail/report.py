@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import statistics
 import textwrap
 from collections.abc import Iterable, Sequence
@@ -339,7 +340,11 @@ def of_comparison(result: Comparison, width: int = 100, *, worst: int = 10, fail
         titles += ["within 0.3 %", "within 1 %", "within 2 %", "within 5 %"]
         lines = []
         for s in result.statistics:
-            line = [s.corner, f"{s.states:,}", f"{s.median_ratio:.4f}"]
+            line = [
+                s.corner,
+                f"{s.states:,}",
+                NONE if math.isnan(s.median_ratio) else f"{s.median_ratio:.4f}",
+            ]
             line += [_times(s.p90_decades), _times(s.worst_decades)]
             shares = s.within_0p3_percent, s.within_1_percent, s.within_2_percent, s.within_5_percent
             lines.append([*line, *map(percent, shares)])
@@ -398,6 +403,8 @@ def _some(names: Sequence[str]) -> str:
 
 def _times(decades: float) -> str:
     """Write a distance in decades as percent while that reads well, as a factor beyond."""
+    if math.isnan(decades):
+        return NONE
     ratio = 10.0**decades if decades < 300.0 else float("inf")
     return f"{100.0 * (ratio - 1.0):.2g} %" if ratio < 2.0 else f"×{ratio:.3g}"
 

@@ -64,33 +64,41 @@ def render(columns: Sequence[Column], rows: Sequence[Sequence[str]], width: int,
     powered  9.71 µW
     header   1.29 nW
     """
-    widest = max(20, width // 3)
-    heads = [_title(column, [row[i] for row in rows]) for i, column in enumerate(columns)]
-    body = [[_lines(cell, widest if i < fixed else width) for i, cell in enumerate(row)] for row in rows]
-    sizes = []
-    for i, head in enumerate(heads):
-        texts = head + [line for row in body for line in row[i]]
-        sizes.append(max((width_of(line) for line in texts), default=0))
+    heads: list[list[str]] = []
+    body: list[list[list[str]]] = [[] for _ in rows]
+    sizes: list[int] = []
+    for i, column in enumerate(columns):
+        # leading columns get two fifths of the width among them, others what is left beside those
+        used = sum(sizes[:fixed]) + len(GAP) * fixed
+        room = max(8, 2 * width // (5 * fixed) if i < fixed else width - used)
+        cells = [_lines("".join(c if c.isprintable() else " " for c in row[i]), room) for row in rows]
+        head = _title(column, [line for cell in cells for line in cell], room)
+        for lines, cell in zip(body, cells, strict=True):
+            lines.append(cell)
+        heads.append(head)
+        sizes.append(max(map(width_of, [*head, *(line for cell in cells for line in cell)]), default=0))
     parts = []
     for chosen in _split(sizes, width, fixed):
-        lines = _row(columns, sizes, heads, chosen, from_below=True)
-        lines.append(GAP.join("-" * sizes[i] for i in chosen))
+        shown = _row(columns, sizes, heads, chosen, from_below=True)
+        shown.append(GAP.join("-" * sizes[i] for i in chosen))
         for row in body:
-            lines += _row(columns, sizes, row, chosen)
-        parts.append("\n".join(line.rstrip() for line in lines))
+            shown += _row(columns, sizes, row, chosen)
+        parts.append("\n".join(line.rstrip() for line in shown))
     return "\n\n".join(parts).replace(GLUE, " ")
 
 
-def _title(column: Column, cells: Sequence[str]) -> list[str]:
+def _title(column: Column, cells: Sequence[str], room: int) -> list[str]:
     """Break a title at spaces so that it is no wider than the cells below it need."""
     title = NUMBER_AND_UNIT.sub(GLUE, column.title)
-    room = max(map(width_of, [*cells, *title.split(" ")]))
-    return _lines(title, max(room, 1))
+    needed = max(map(width_of, [*cells, *title.split(" ")]))
+    return _lines(title, max(min(needed, room), 1))
 
 
 def _lines(text: str, room: int) -> list[str]:
     if width_of(text) <= room:
         return [text]
+    if width_of(text) > len(text):
+        room = max(1, room // 2)  # textwrap counts characters
     return textwrap.wrap(text, room, break_long_words=True, break_on_hyphens=False) or [""]
 
 

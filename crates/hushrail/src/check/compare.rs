@@ -287,8 +287,10 @@ impl Comparison<'_> {
         for r in rows {
             tasks.entry((&r.corner, &r.cell)).or_default().push(r);
         }
-        let at = Place::new(&Arc::from("comparison"), 1, 1);
+        let table: Arc<str> = Arc::from("published table");
         for r in rows {
+            #[expect(clippy::cast_possible_truncation, reason = "line numbers")]
+            let at = Place::new(&table, r.line as usize, 1);
             let Some(c) = corners.iter().find(|c| c.name == r.corner) else {
                 return Err(ReadError::Unknown {
                     at,
