@@ -180,6 +180,19 @@ fn cells_that_cannot_work_are_refused() {
 }
 
 #[test]
+fn a_well_without_a_port_is_global_and_said() {
+    let p = process();
+    let d = deck(&CELLS.replace(".subckt inv A Y VDD VSS VNW VPW", ".subckt inv A Y VDD VSS VNW"))
+        .expect("cells");
+    let rails = RailNames::default();
+    let reader = CellReader { deck: &d, rails: &rails, is_device: &|n| p.defines(n) };
+    let mut notes = Vec::new();
+    let cell = reader.cell("inv", &mut notes).expect("good");
+    assert_eq!(cell.ports.last().map(|p| &**p), Some("VPW"));
+    assert!(notes.iter().any(|n| n.code == "global-rail" && n.text.contains("`VPW`")));
+}
+
+#[test]
 fn masters_without_netlist_need_a_policy() {
     let p = process();
     let d = deck(CELLS).expect("cells");

@@ -52,6 +52,7 @@ struct Files {
 struct Cells {
     netlist: String,
     prefix: String,
+    rails: RailNames,
     extra: String,
 }
 
@@ -93,7 +94,7 @@ fn run(dir: &Path, json: Option<&Path>) -> Result<(), Box<dyn std::error::Error>
     let deck = read_deck(&[open(&setup.cells.netlist)?], &DeckOptions::default())?;
     let extra =
         read_deck(&[Source::from_text("comparison.toml", &setup.cells.extra)], &DeckOptions::default())?;
-    let rails = RailNames::default();
+    let rails = setup.cells.rails.clone();
     let mut notes = Vec::new();
     let mut cells = IndexMap::new();
     let mut missing: Vec<ReadError> = Vec::new();

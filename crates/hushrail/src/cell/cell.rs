@@ -211,13 +211,26 @@ impl CellReader<'_> {
             }
         }
         let at = sub.loc.place(&self.deck.files);
-        let port_nodes: Vec<Node> =
-            sub.ports.iter().map(|p| number[ports[&p.to_ascii_lowercase()]]).collect();
+        let mut names = sub.ports.clone();
+        let mut port_nodes: Vec<Node> =
+            names.iter().map(|p| number[ports[&p.to_ascii_lowercase()]]).collect();
+        // a rail or well that the cell uses without a port is global: it is held like one
+        for (n, name) in nodes.iter().enumerate() {
+            let global = self.rails.role(name).is_some_and(|r| !matches!(r, Role::Input | Role::Output));
+            if global && !port_nodes.contains(&n) {
+                let text = format!(
+                    "cell `{}` uses `{name}` without a port; held as the rail or well of that name",
+                    sub.name
+                );
+                notes.push(Note::new("global-rail", text));
+                names.push(Arc::clone(name));
+                port_nodes.push(n);
+            }
+        }
         let drains: Vec<bool> = (0..nodes.len())
             .map(|n| parts.iter().any(|p| matches!(p, Part::Transistor(_, t) if t[0] == n || t[2] == n)))
             .collect();
-        let roles: Vec<Role> = sub
-            .ports
+        let roles: Vec<Role> = names
             .iter()
             .zip(&port_nodes)
             .map(|(p, &n)| {
@@ -269,15 +282,7 @@ impl CellReader<'_> {
                 });
             }
         }
-        let cell = Cell {
-            name: Arc::clone(&sub.name),
-            ports: sub.ports.clone(),
-            roles,
-            port_nodes,
-            nodes,
-            parts,
-            at,
-        };
+        let cell = Cell { name: Arc::clone(&sub.name), ports: names, roles, port_nodes, nodes, parts, at };
         cell.check_gates()?;
         Ok(cell)
     }
