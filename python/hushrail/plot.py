@@ -82,7 +82,15 @@ def standby_power(estimate: Estimate, domain: str | None = None, ax: Axes | None
         from matplotlib.lines import Line2D
 
         handles.append(Line2D([], [], linestyle="", marker="x", color="black", label="limit broken"))
-    ax.legend(handles=handles, loc="best", fontsize="small", framealpha=0.9)
+    ax.legend(
+        handles=handles,
+        loc="upper center",
+        bbox_to_anchor=(0.5, -0.11),
+        ncols=len(handles),
+        fontsize="small",
+        handletextpad=0.2,
+        frameon=False,
+    )
     return ax
 
 
