@@ -104,12 +104,12 @@ def story(result: Estimate, process: Process) -> list[str]:
     )
     if kept:
         scheme, p = min(kept.items(), key=lambda each: each[1].power_w)
-        shares = p.asleep.mechanisms._asdict()
+        shares = p.asleep.shares
         left = max(shares, key=lambda name: shares[name])
         lines.append(
             f"Of the schemes that keep the limits, `{scheme}` is the best where it hurts most: "
             f"{engineering(p.power_w, 'W')}, {factor(p.power_w, p.ungated_power_w)} of the powered block; "
-            f"what is left is {100.0 * shares[left] / p.asleep.mechanisms.total:.0f} % {left}."
+            f"what is left is {100.0 * shares[left] / sum(shares.values()):.0f} % {left}."
         )
         median = {s: statistics.median(p.power_w for p in by[s]) for s in kept}
         typical = min(median, key=lambda s: median[s])

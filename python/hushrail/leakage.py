@@ -31,8 +31,8 @@ __all__ = [
 class LeakageRow:
     """One state of one cell at one corner.
 
-    ``power_w`` is drawn from supply, n-well and inputs at one, W; ``mechanisms`` is the current from the
-    same, A; ``ports`` holds the current into each port but outputs, A. ``stable`` says whether the cell stays
+    ``power_w`` is drawn from supply, n-well and inputs at one, W; ``mechanisms`` splits it, over the supply
+    voltage, A; ``ports`` holds the current into each port but outputs, A. ``stable`` says whether the cell stays
     in the state.
     """
 

@@ -134,10 +134,10 @@ def _has_footer(p: Point) -> bool:
 
 
 def _mostly(p: Point) -> str:
-    """Name the mechanism that gives most of the current, and its share."""
-    shares = p.asleep.mechanisms._asdict()
+    """Name what takes most of the power, and its share."""
+    shares = p.asleep.shares
     name = max(shares, key=lambda key: shares[key])
-    total = p.asleep.mechanisms.total
+    total = sum(shares.values())
     return f"{name} {100.0 * shares[name] / total:.0f} %" if total > 0.0 else NONE
 
 

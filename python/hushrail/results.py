@@ -153,8 +153,9 @@ class Block:
 class Rest:
     """A domain at rest: where the virtual rails settle, and what the real supplies deliver there.
 
-    ``mechanisms`` splits ``current_a``; ``switch_mechanisms`` splits the current of the switch at its virtual
-    rail (the header's where there are two), which holds the domain.
+    ``mechanisms`` is the power that each mechanism dissipates over the supply voltage, A: together with the
+    overhead it adds up to ``power_w`` over the supply. ``switch_mechanisms`` splits the current of the switch at
+    its virtual rail (the header's where there are two), which holds the domain.
     """
 
     virtual_supply_v: float
@@ -171,6 +172,13 @@ class Rest:
     evaluations: int
     residual: float
     notes: tuple[Note, ...]
+
+    @property
+    def shares(self) -> dict[str, float]:
+        """Mechanisms, and the overhead where a scheme has one, A over the supply."""
+        overhead = sum(path.current_a for path in self.paths if path.path == "overhead")
+        shares = dict(self.mechanisms._asdict())
+        return shares | {"overhead": overhead} if overhead else shares
 
 
 @dataclass(frozen=True)

@@ -116,6 +116,9 @@ fn cards_that_mean_nothing_are_refused() {
         ("lmin=50n", "lmin=500n", "no bin covers it"),
         (".model nx.0 nmos", ".model nx.0 njf", "nmos or pmos"),
         (".model nx.0 nmos", ".model ny.0 nmos", "did you mean"),
+        ("toxref=2n", "toxref=-1", "above zero"),
+        ("bigsd=2e-3", "bigsd=1e30", "not a finite number"),
+        (".model px pmos", ".model nx.0 pmos", "second time"),
     ] {
         assert!(CARDS.contains(from), "{from}");
         says(&card(&CARDS.replacen(from, to, 1)).expect_err(to), &[wanted]);

@@ -32,7 +32,7 @@ pub struct LeakageRow {
     pub power_w: f64,
     /// Current into each port, A.
     pub ports: IndexMap<String, f64>,
-    /// Current from supply, n-well and inputs at one by mechanism (channel, gidl, gate, junction, floor), A.
+    /// Power by mechanism (channel, gidl, gate, junction, floor) over the supply voltage, A; adds up to `power_w`.
     pub mechanisms: [f64; 5],
     /// Whether the point is one the cell stays in.
     pub stable: bool,
@@ -114,18 +114,11 @@ fn one(
     let mut rows = Vec::new();
     for s in bound.states().map_err(|e| e.to_string())? {
         let c = bound.solve(&s, &levels, options, w).map_err(|e| e.to_string())?;
-        let mut mechanisms = [0.0; 5];
+        let mechanisms = c.power_w.map(|p| p / corner.vdd_v);
         let mut ports = IndexMap::new();
-        let mut bits = s.inputs.iter();
         for (i, role) in cell.roles.iter().enumerate() {
-            let high = *role == Role::Input && bits.next().copied().unwrap_or(false);
             if *role != Role::Output {
                 ports.insert(cell.ports[i].to_string(), c.ports[i].iter().sum());
-            }
-            if high || matches!(role, Role::Supply | Role::Nwell) {
-                for (m, x) in mechanisms.iter_mut().zip(c.ports[i]) {
-                    *m += x;
-                }
             }
         }
         rows.push(LeakageRow {

@@ -112,7 +112,8 @@ pub fn build_block(
     notes: &mut Vec<Note>,
 ) -> Result<Block, ReadError> {
     let mut block = Block::default();
-    let at = || Place::new(&Arc::from(counts.top.as_str()), 1, 1);
+    let origin = if counts.top.is_empty() { "instance counts" } else { counts.top.as_str() };
+    let at = || Place::new(&Arc::from(origin), 1, 1);
     let has = |name: &str| reader.deck.subckts.contains_key(name.to_ascii_lowercase().as_str());
     let mut lost: Vec<(&String, u64)> = Vec::new();
     for (master, &count) in &counts.counts {

@@ -78,6 +78,8 @@ pub struct BlockCurrents {
     pub nwell: [f64; 5],
     /// Into the p-wells.
     pub pwell: [f64; 5],
+    /// Power that each mechanism dissipates inside, W, wherever its current flows.
+    pub power_w: [f64; 5],
     /// Part of `supply` given by value and not computed, A.
     pub given_a: f64,
     /// By cell, in the order of the netlist.
@@ -104,6 +106,7 @@ impl BlockCurrents {
             ground: [0.0; 5],
             nwell: [0.0; 5],
             pwell: [0.0; 5],
+            power_w: [0.0; 5],
             given_a: 0.0,
             cells: Vec::new(),
             states: 0,
@@ -172,6 +175,7 @@ impl BoundBlock {
                 (&mut sum.ground, &p.ground),
                 (&mut sum.nwell, &p.nwell),
                 (&mut sum.pwell, &p.pwell),
+                (&mut sum.power_w, &p.power_w),
             ] {
                 add(to, x, 1.0);
             }
@@ -185,6 +189,7 @@ impl BoundBlock {
             let i = self.given_a * (levels.supply_v - levels.ground_v) / self.vdd_v;
             sum.supply[0] += i;
             sum.ground[0] -= i;
+            sum.power_w[0] += i * (levels.supply_v - levels.ground_v);
             sum.given_a = i;
         }
         Ok(sum)
@@ -280,6 +285,7 @@ impl Member {
             for (i, &high) in cell.ports_of(Role::Input).zip(&state.inputs) {
                 add(if high { &mut sum.supply } else { &mut sum.ground }, &c.ports[i], x);
             }
+            add(&mut sum.power_w, &c.power_w, x);
             sum.states += 1;
             sum.unstable += usize::from(!c.stable);
             let Effort { steps, transient, bisection, joint } = c.effort;

@@ -101,13 +101,16 @@ pub struct State {
 pub struct StateCurrents {
     /// Current into the cell at each port by mechanism (order of [`crate::device::Mechanism::ALL`]), A; outputs carry none.
     pub ports: Vec<[f64; 5]>,
+    /// Power that each mechanism dissipates in the cell, W, wherever its current flows; adds up to what the ports bring in
+    /// (Tellegen's theorem).
+    pub power_w: [f64; 5],
     /// Node voltages, V.
     pub node_v: Vec<f64>,
     /// Value of every port by its voltage against the middle of the rails.
     pub port_bits: Vec<bool>,
     /// Work done.
     pub effort: Effort,
-    /// Whether the point is one the cell stays in.
+    /// Whether the point is one the cell stays in, with every gate at the value the state names.
     pub stable: bool,
 }
 
@@ -363,8 +366,23 @@ impl BoundCell {
             allowed_a: e.allowed_a,
             steps: e.steps,
         })?;
-        let stable = solver.is_stable(&v, w);
+        let stable = self.keeps(state, &v, levels) && solver.is_stable(&v, w);
         Ok((v, solver.effort, stable))
+    }
+
+    /// Whether every net that gates a transistor of a cell with loops still has the value of the state: where rails have
+    /// collapsed too far, the solver ends in what is left of the states.
+    fn keeps(&self, state: &State, v: &[Volt], levels: &Levels) -> bool {
+        let middle = 0.5 * (levels.supply_v + levels.ground_v);
+        let looped = self.plan.groups.iter().any(|g| g.len() > 1);
+        !looped
+            || self.net.elements.iter().all(|e| match e {
+                Element::Transistor(p) => {
+                    let gate = p.nodes[1];
+                    state.logic[gate].bit().is_none_or(|b| (v[gate].get() > middle) == b)
+                }
+                _ => true,
+            })
     }
 
     fn currents_at(&self, v: &[Volt], levels: &Levels, effort: Effort, stable: bool) -> StateCurrents {
@@ -377,6 +395,12 @@ impl BoundCell {
                 for (t, &n) in e.nodes().iter().enumerate() {
                     at_node[n][m] += row[t];
                 }
+            }
+        }
+        let mut power_w = [0.0; 5];
+        for (split, x) in at_node.iter().zip(v) {
+            for (p, i) in power_w.iter_mut().zip(split) {
+                *p += i * x.get();
             }
         }
         let mut counted = vec![false; v.len()];
@@ -397,6 +421,7 @@ impl BoundCell {
         let middle = 0.5 * (lo + hi);
         StateCurrents {
             ports,
+            power_w,
             port_bits: cell.port_nodes.iter().map(|&n| v[n].get() > middle).collect(),
             node_v: v.iter().map(|x| x.get()).collect(),
             effort,

@@ -301,6 +301,9 @@ impl<'a> Solver<'a> {
                 // the first explicit step would move the fastest node by 50 mV
                 rate = w.f[..n].iter().fold(0.0f64, |m, f| m.max(f.abs())) / 0.05;
             }
+            if !(rate > 0.0) || w.f[..n].iter().chain(&w.a[..n * n]).any(|x| !x.is_finite()) {
+                break;
+            }
             w.fill_diagonal(n);
             let (a, f) = (w.a[..n * n].to_vec(), w.f[..n].to_vec());
             loop {

@@ -10,7 +10,7 @@ use super::bsim4::table::{Id, ROWS};
 use super::bsim4::values::{Card, Values};
 use super::bsim4::{Bsim4, table};
 use super::diode::Diode;
-use super::{Device, Geometry};
+use super::{Bias, Device, Geometry};
 use crate::physics::Kelvin;
 use crate::read::deck::{Deck, DeckScope, Element, ModelText, Note, Subckt};
 use crate::read::expression::Expr;
@@ -215,6 +215,13 @@ impl Process {
         notes: &mut Vec<Note>,
     ) -> Result<(Vec<(Arc<str>, f64)>, Vec<(Arc<str>, f64)>), ReadError> {
         let (Some(sub), Some(element)) = (found.wrapper, found.element) else {
+            for (name, _) in request.params.iter().filter(|(n, _)| length_power(n).is_none()) {
+                let text = format!("instance parameter `{name}` is unknown to BSIM4 and has no effect");
+                let note = Note::new("instance-parameter", text);
+                if !notes.contains(&note) {
+                    notes.push(note);
+                }
+            }
             return Ok((request.params.clone(), request.params.clone()));
         };
         let scale = self.deck.scale();
@@ -283,7 +290,23 @@ impl Process {
                 wanted: "all must be above zero; the card does not hold at this temperature".into(),
             });
         }
-        Ok(Transistor { device: Arc::new(Bsim4 { prepared }), count, geometry })
+        let device = Bsim4 { prepared };
+        let sign = device.polarity().sign();
+        for (vgs, vds, vbs) in [(1.0, 1.0, 0.0), (-0.5, 1.0, -0.5), (0.0, 0.5, 0.2)] {
+            let bias = Bias { vgs: sign * vgs, vds: sign * vds, vbs: sign * vbs };
+            if device.branches(bias).terminals().iter().any(|i| !i.is_finite()) {
+                return Err(ReadError::Range {
+                    at: request.at.clone(),
+                    name: format!(
+                        "current of model `{}` at vgs {vgs} V, vds {vds} V, vbs {vbs} V",
+                        request.model
+                    ),
+                    value: "not a finite number".into(),
+                    wanted: "a parameter of the card is far outside what is physical".into(),
+                });
+            }
+        }
+        Ok(Transistor { device: Arc::new(device), count, geometry })
     }
 
     fn values(card: &Card, g: &Geometry, request: &Request) -> Result<Values<f64>, ReadError> {

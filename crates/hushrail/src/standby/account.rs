@@ -20,18 +20,15 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
         }
     };
     let mut paths: Vec<PathShare> = Vec::new();
-    let mut mechanisms = [0.0; 5];
-    let mut way = |path: &str, m: Mechanism, i: f64, counts: bool| {
+    let mut way = |path: &str, m: Mechanism, i: f64| {
         if i != 0.0 {
             paths.push(PathShare { path: path.into(), mechanism: m, current_a: i });
-            if counts {
-                mechanisms[m as usize] += i;
-            }
         }
     };
     let vdd = d.vdd_v;
     let mut oxide = (0.0f64, 0.0f64);
     let mut switch_mechanisms = [0.0; 5];
+    let mut power_by = c.power_w;
     let mut notes = Vec::new();
 
     book("vdd", vdd, s.overhead_a);
@@ -57,14 +54,15 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
             if name == "header" || d.header.is_none() {
                 switch_mechanisms[m as usize] = sign * of[Terminal::Drain as usize];
             }
+            let at = [v, sw.gate_v, sw.rail_v, sw.body_v];
+            power_by[m as usize] += of.iter().zip(at).map(|(i, x)| i * x).sum::<f64>();
             let from_real = of[Terminal::Source as usize] * if name == "header" { 1.0 } else { -1.0 };
-            let counts = name == "header";
             match m {
-                Mechanism::Channel => way(&format!("{name} channel"), m, from_real, counts),
+                Mechanism::Channel => way(&format!("{name} channel"), m, from_real),
                 Mechanism::Gate => {
-                    way(&format!("{name} gate"), m, sign * of[Terminal::Drain as usize], counts);
+                    way(&format!("{name} gate"), m, sign * of[Terminal::Drain as usize]);
                 }
-                _ => way(&format!("{name} body"), m, sign * of[Terminal::Drain as usize], counts),
+                _ => way(&format!("{name} body"), m, sign * of[Terminal::Drain as usize]),
             }
         }
         let ox = sw.oxide_v(v);
@@ -99,16 +97,16 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
     if d.header.is_none() {
         book("vdd", vdd, total(&c.supply));
         for (m, i) in Mechanism::ALL.iter().zip(c.supply) {
-            way("block", *m, i, true);
+            way("block", *m, i);
         }
     }
     if d.footer.is_none() {
         book("ground", 0.0, total(&c.ground));
     }
     let levels = d.levels(supply, ground);
-    for (well, tie, bias, switched, currents, rail, counts) in [
-        ("nwell", s.nwell, s.nwell_bias_v, d.header.is_some(), &c.nwell, "vdd", true),
-        ("pwell", s.pwell, s.pwell_bias_v, d.footer.is_some(), &c.pwell, "ground", false),
+    for (well, tie, bias, switched, currents, rail) in [
+        ("nwell", s.nwell, s.nwell_bias_v, d.header.is_some(), &c.nwell, "vdd"),
+        ("pwell", s.pwell, s.pwell_bias_v, d.footer.is_some(), &c.pwell, "ground"),
     ] {
         let inside = tie == WellTie::Virtual && switched && bias == 0.0;
         if inside {
@@ -118,11 +116,11 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
         let name = if bias == 0.0 { rail } else { well };
         book(name, v, total(currents));
         for (m, i) in Mechanism::ALL.iter().zip(currents) {
-            way("block wells", *m, *i, counts);
+            way("block wells", *m, *i);
         }
     }
     if s.overhead_a > 0.0 {
-        way("overhead", Mechanism::Channel, s.overhead_a, true);
+        way("overhead", Mechanism::Channel, s.overhead_a);
     }
     let current_a = supplies.iter().filter(|x| x.voltage_v > 0.0).map(|x| x.current_a).sum();
     let power_w = supplies.iter().map(|x| x.power_w).sum();
@@ -141,7 +139,7 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
         supplies,
         current_a,
         power_w,
-        mechanisms,
+        mechanisms: power_by.map(|p| p / vdd),
         switch_mechanisms,
         paths,
         oxide_v: oxide.0,

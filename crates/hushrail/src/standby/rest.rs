@@ -94,7 +94,9 @@ pub struct Asleep {
     pub current_a: f64,
     /// Power from all supplies, W.
     pub power_w: f64,
-    /// By mechanism, A, of the current that `current_a` counts.
+    /// Power that each mechanism dissipates in block and switches, over the supply voltage, A: it adds up to `power_w` without
+    /// the overhead, over the supply. A split at the supply terminal would book as channel whatever reaches it through an on
+    /// device.
     pub mechanisms: [f64; 5],
     /// Current of the switch at its virtual rail by mechanism, A (the header's where there are two): what holds the domain.
     pub switch_mechanisms: [f64; 5],

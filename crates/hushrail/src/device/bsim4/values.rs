@@ -195,6 +195,7 @@ impl Card {
             (Id::Toxe, "an oxide thickness above zero"),
             (Id::Toxp, "an oxide thickness above zero"),
             (Id::Toxm, "an oxide thickness above zero"),
+            (Id::Toxref, "an oxide thickness above zero"),
             (Id::Epsrox, "a permittivity above zero"),
         ] {
             if self.base(id) <= 0.0 {

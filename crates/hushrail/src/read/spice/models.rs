@@ -54,6 +54,12 @@ impl Reader<'_> {
             values.push((key, def));
         }
         let model = ModelText { name: self.lower(&name), kind: self.lower(&kind), values, loc };
+        let scope = self.open.last().map_or(&self.deck.models, |sub| &sub.models);
+        if let Some(first) = scope.iter().find(|m| m.name == model.name) {
+            let wanted =
+                format!("the first definition is at {}; keep one", first.loc.place(&self.deck.files));
+            return Err(self.wrong(model.loc, format!("model `{name}` is defined a second time"), wanted));
+        }
         match self.open.last_mut() {
             Some(sub) => sub.models.push(model),
             None => self.deck.models.push(model),
