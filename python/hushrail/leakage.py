@@ -32,8 +32,8 @@ class LeakageRow:
     """One state of one cell at one corner.
 
     ``power_w`` is drawn from supply, n-well and inputs at one, W; ``mechanisms`` splits it, over the supply
-    voltage, A; ``ports`` holds the current into each port but outputs, A. ``stable`` says whether the cell stays
-    in the state.
+    voltage, A; ``ports`` holds the current into each port but outputs, A. ``stable`` says whether the cell
+    stays in the state.
     """
 
     cell: str

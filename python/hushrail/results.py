@@ -135,12 +135,16 @@ class CellShare:
 
 @dataclass(frozen=True)
 class Block:
-    """Currents of the block at the rest point, A, by mechanism, positive into the block."""
+    """Currents of the block at the rest point, A, by mechanism, positive into the block.
+
+    ``power_w`` is what each mechanism dissipates inside, W.
+    """
 
     supply: ByMechanism
     ground: ByMechanism
     nwell: ByMechanism
     pwell: ByMechanism
+    power_w: ByMechanism
     given_a: float
     cells: tuple[CellShare, ...]
     states: int
@@ -154,8 +158,8 @@ class Rest:
     """A domain at rest: where the virtual rails settle, and what the real supplies deliver there.
 
     ``mechanisms`` is the power that each mechanism dissipates over the supply voltage, A: together with the
-    overhead it adds up to ``power_w`` over the supply. ``switch_mechanisms`` splits the current of the switch at
-    its virtual rail (the header's where there are two), which holds the domain.
+    overhead it adds up to ``power_w`` over the supply. ``switch_mechanisms`` splits the current of the switch
+    at its virtual rail (the header's where there are two), which holds the domain.
     """
 
     virtual_supply_v: float
