@@ -42,9 +42,10 @@ impl Process {
         scale_m: Option<f64>,
         models: IndexMap<String, String>,
     ) -> PyResult<Self> {
-        let spec = ProcessSpec { files, section, skip_includes, scale_m };
-        let p =
-            py.detach(|| load_process(name, &spec, &models, Path::new(""))).map_err(|e| error::read(&e))?;
+        let spec = ProcessSpec { files, section, skip_includes, scale_m, ..ProcessSpec::default() };
+        let p = py
+            .detach(|| load_process(name, &spec, &models, &IndexMap::new(), Path::new("")))
+            .map_err(|e| error::read(&e))?;
         Ok(Self { inner: Arc::new(p) })
     }
 

@@ -12,6 +12,7 @@ use crate::block::{Block, Uncovered, build_block};
 use crate::cell::{Cell, CellReader, RailNames};
 use crate::corner::Corner;
 use crate::device::process::Process;
+use crate::device::spec::DeviceSpec;
 use crate::read::counts::{InstanceCounts, read_counts_csv};
 use crate::read::deck::{Deck, Note};
 use crate::read::source::{Place, ReadError, Source, nearest};
@@ -72,13 +73,24 @@ pub fn load_process(
     name: &str,
     spec: &ProcessSpec,
     aliases: &IndexMap<String, String>,
+    devices: &IndexMap<String, DeviceSpec>,
     folder: &Path,
 ) -> Result<Process, ReadError> {
     let sources = spec.files.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
     let mut options = DeckOptions { scale_m: spec.scale_m, ..DeckOptions::default() };
     options.section.clone_from(&spec.section);
     options.skip_includes.clone_from(&spec.skip_includes);
-    let mut p = Process::read(name, &sources, &options)?;
+    let own: Vec<_> =
+        devices.iter().filter(|(n, _)| !spec.device.contains_key(*n)).chain(&spec.device).collect();
+    let mut p = if sources.is_empty() && !own.is_empty() {
+        Process::empty(name)
+    } else {
+        Process::read(name, &sources, &options)?
+    };
+    for (device, d) in own {
+        let at = Place::new(&Arc::from(format!("device `{device}` of process `{name}`")), 1, 1);
+        p = p.device(device, d.load(folder, &at)?);
+    }
     for (a, b) in aliases {
         p = p.alias(a, b);
     }
@@ -109,7 +121,7 @@ impl Library {
         let mut notes = Vec::new();
         let mut processes = IndexMap::new();
         for (name, spec) in &study.process {
-            let p = load_process(name, spec, &study.models, folder)?;
+            let p = load_process(name, spec, &study.models, &study.device, folder)?;
             notes.extend(p.deck.notes.iter().cloned());
             processes.insert(name.clone(), p);
         }

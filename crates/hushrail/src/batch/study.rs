@@ -6,6 +6,7 @@ use serde::{Deserialize, Serialize};
 use crate::block::{Policy, StateWeights};
 use crate::cell::RailNames;
 use crate::corner::Corner;
+use crate::device::spec::DeviceSpec;
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::standby::Scheme;
 
@@ -21,6 +22,9 @@ pub struct Study {
     /// Names netlists use for models → names in the cards.
     #[serde(default)]
     pub models: IndexMap<String, String>,
+    /// Compact, generic and tabulated devices of every process, by the name netlists use.
+    #[serde(default)]
+    pub device: IndexMap<String, DeviceSpec>,
     /// Transistor netlists of the cells.
     pub cells: CellsSpec,
     /// Corners one by one.
@@ -44,8 +48,12 @@ pub struct Study {
 #[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct ProcessSpec {
-    /// SPICE files, read in order.
+    /// SPICE files, read in order; may be left out where every model is a `device`.
+    #[serde(default)]
     pub files: Vec<String>,
+    /// Devices of this process; they come before those of the study.
+    #[serde(default)]
+    pub device: IndexMap<String, DeviceSpec>,
     /// `.lib` section to take.
     #[serde(default)]
     pub section: Option<String>,

@@ -1,10 +1,13 @@
 //! Devices: terminal currents by mechanism, with exact derivatives, behind one trait.
 
 pub mod bsim4;
+pub mod compact;
 pub mod diode;
 pub mod dual;
 pub mod process;
 pub mod sensitivity;
+pub mod spec;
+pub mod table;
 
 use serde::{Deserialize, Serialize};
 

@@ -10,6 +10,7 @@ use super::bsim4::table::{Id, ROWS};
 use super::bsim4::values::{Card, Values};
 use super::bsim4::{Bsim4, table};
 use super::diode::Diode;
+use super::spec::DeviceModel;
 use super::{Bias, Device, Geometry};
 use crate::physics::Kelvin;
 use crate::read::deck::{Deck, DeckScope, Element, ModelText, Note, Subckt};
@@ -29,6 +30,8 @@ pub struct Process {
     pub deck: Deck,
     /// Names netlists use for a model, to the names of the deck; both in lower case.
     pub aliases: IndexMap<String, String>,
+    /// Compact, generic and tabulated devices by lower-case name; they come before cards of the same name.
+    pub own: IndexMap<String, DeviceModel>,
     families: FxHashMap<(Option<Arc<str>>, String), Vec<Bin>>,
 }
 
@@ -119,7 +122,20 @@ impl Process {
     pub fn read(name: &str, sources: &[Source], options: &DeckOptions) -> Result<Self, ReadError> {
         let deck = read_deck(sources, options)?;
         let families = index_families(&deck);
-        Ok(Self { name: name.to_owned(), deck, aliases: IndexMap::new(), families })
+        Ok(Self { name: name.to_owned(), deck, aliases: IndexMap::new(), own: IndexMap::new(), families })
+    }
+
+    /// A process without cards, for compact, generic and tabulated devices.
+    pub fn empty(name: &str) -> Self {
+        let (aliases, own) = (IndexMap::new(), IndexMap::new());
+        Self { name: name.to_owned(), deck: Deck::default(), aliases, own, families: FxHashMap::default() }
+    }
+
+    /// Adds a compact, generic or tabulated device under the name netlists use.
+    #[must_use]
+    pub fn device(mut self, name: &str, model: DeviceModel) -> Self {
+        self.own.insert(name.to_lowercase(), model);
+        self
     }
 
     /// Adds a name that netlists use for a model of the deck.
@@ -137,6 +153,7 @@ impl Process {
                 names.push(m.family().to_owned());
             }
         }
+        names.extend(self.own.keys().cloned());
         names.extend(self.aliases.keys().cloned());
         names
     }
@@ -144,7 +161,9 @@ impl Process {
     /// Whether the deck (or an alias) defines this name.
     pub fn defines(&self, model: &str) -> bool {
         let name = self.resolve(model);
-        self.deck.subckts.contains_key(name.as_str()) || self.families.contains_key(&(None, name))
+        self.own.contains_key(&name)
+            || self.deck.subckts.contains_key(name.as_str())
+            || self.families.contains_key(&(None, name))
     }
 
     fn resolve(&self, model: &str) -> String {
@@ -152,8 +171,20 @@ impl Process {
         self.aliases.get(&lower).cloned().unwrap_or(lower)
     }
 
+    /// The compact, generic or tabulated device a request names.
+    pub(super) fn own_model(&self, request: &Request) -> Option<&DeviceModel> {
+        self.own.get(&self.resolve(&request.model))
+    }
+
     fn find(&self, request: &Request) -> Result<Found<'_>, ReadError> {
         let name = self.resolve(&request.model);
+        if self.own.contains_key(&name) {
+            return Err(ReadError::Syntax {
+                at: request.at.clone(),
+                found: format!("`{}` is a compact or tabulated transistor", request.model),
+                wanted: "want the name of a foundry card here".into(),
+            });
+        }
         if let Some(sub) = self.deck.subckts.get(name.as_str()) {
             let inner: Vec<&Element> =
                 sub.elements.iter().filter(|e| matches!(e.kind, 'M' | 'D' | 'X')).collect();
@@ -268,7 +299,6 @@ impl Process {
         temp: Kelvin,
         notes: &mut Vec<Note>,
     ) -> Result<Transistor, ReadError> {
-        let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
         if let Some((_, d)) = request.params.iter().find(|(n, d)| &**n == "dtemp" && *d != 0.0) {
             return Err(ReadError::Range {
                 at: request.at.clone(),
@@ -277,6 +307,12 @@ impl Process {
                 wanted: "a device warmer than its corner is not computed; want 0".into(),
             });
         }
+        if let Some(model) = self.own_model(request) {
+            let get = |name: &str| request.params.iter().rev().find(|(n, _)| &**n == name).map(|(_, v)| *v);
+            let (geometry, count) = drawn(get, request)?;
+            return Ok(Transistor { device: model.make(&geometry, temp, &request.at)?, count, geometry });
+        }
+        let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
         let values = Self::values(&card, &geometry, request)?;
         let prepared = Prepared::new(&card, &values, &geometry, temp.get());
         if !(prepared.phi > 0.0 && prepared.vsat > 0.0 && prepared.u0 > 0.0 && prepared.vth0.is_finite()) {
@@ -331,23 +367,7 @@ impl Process {
         let found = self.find(request)?;
         let (wrapper_values, inner) = self.instance(&found, request, temp_c, notes)?;
         let get = |name: &str| inner.iter().rev().find(|(n, _)| &**n == name).map(|(_, v)| *v);
-        let g = Geometry {
-            width_m: get("w").unwrap_or(5e-6),
-            length_m: get("l").unwrap_or(5e-6),
-            fingers: get("nf").unwrap_or(1.0),
-            sa_m: get("sa").unwrap_or(0.0),
-            sb_m: get("sb").unwrap_or(0.0),
-            sd_m: get("sd").unwrap_or(0.0),
-            ad_m2: get("ad").unwrap_or(0.0),
-            as_m2: get("as").unwrap_or(0.0),
-            pd_m: get("pd").unwrap_or(0.0),
-            ps_m: get("ps").unwrap_or(0.0),
-            well_proximity: (get("sca").unwrap_or(0.0), get("scb").unwrap_or(0.0), get("scc").unwrap_or(0.0)),
-            delvto_v: get("delvto").unwrap_or(0.0),
-            mobility_factor: get("mulu0").unwrap_or(1.0),
-        };
-        let count = get("m").unwrap_or(1.0);
-        check_size(&g, count, request)?;
+        let (g, count) = drawn(get, request)?;
         let scope = DeckScope::new(&self.deck, found.wrapper, &wrapper_values, temp_c);
         let (w, l) = (g.width_m / g.fingers, g.length_m);
         let model = self.bin(&found, w, l, &scope, request)?;
@@ -453,6 +473,28 @@ impl Process {
             Diode::evaluate(model, &self.deck, &scope, area / scale.powi(2), pj / scale, temp.get(), notes)?;
         Ok((d, get("m").unwrap_or(1.0)))
     }
+}
+
+/// Drawn geometry and number in parallel from instance parameters in SI units.
+fn drawn(get: impl Fn(&str) -> Option<f64>, request: &Request) -> Result<(Geometry, f64), ReadError> {
+    let g = Geometry {
+        width_m: get("w").unwrap_or(5e-6),
+        length_m: get("l").unwrap_or(5e-6),
+        fingers: get("nf").unwrap_or(1.0),
+        sa_m: get("sa").unwrap_or(0.0),
+        sb_m: get("sb").unwrap_or(0.0),
+        sd_m: get("sd").unwrap_or(0.0),
+        ad_m2: get("ad").unwrap_or(0.0),
+        as_m2: get("as").unwrap_or(0.0),
+        pd_m: get("pd").unwrap_or(0.0),
+        ps_m: get("ps").unwrap_or(0.0),
+        well_proximity: (get("sca").unwrap_or(0.0), get("scb").unwrap_or(0.0), get("scc").unwrap_or(0.0)),
+        delvto_v: get("delvto").unwrap_or(0.0),
+        mobility_factor: get("mulu0").unwrap_or(1.0),
+    };
+    let count = get("m").unwrap_or(1.0);
+    check_size(&g, count, request)?;
+    Ok((g, count))
 }
 
 fn check_size(g: &Geometry, count: f64, request: &Request) -> Result<(), ReadError> {

@@ -3,13 +3,12 @@
 
 use serde::{Deserialize, Serialize};
 
-use super::bsim4::branches;
-use super::bsim4::prepare::Prepared;
 use super::bsim4::table::Id;
 use super::bsim4::values::Values;
 use super::dual::{Dual, Real};
 use super::process::{Process, Request};
-use super::{Bias, Geometry};
+use super::spec::DeviceModel;
+use super::{Bias, Geometry, bsim4, compact};
 use crate::physics::Kelvin;
 use crate::read::deck::Note;
 use crate::read::source::ReadError;
@@ -49,10 +48,17 @@ impl Knob {
 /// Number of knobs.
 pub const KNOBS: usize = 5;
 
+/// The constants of either model.
+#[derive(Debug, Clone)]
+enum Prepared {
+    Bsim4(Box<bsim4::prepare::Prepared<Dual<KNOBS>>>),
+    Compact(Box<compact::prepare::Prepared<Dual<KNOBS>>>),
+}
+
 /// A device whose parameters carry derivatives to the knobs.
 #[derive(Debug, Clone)]
 pub struct Varied {
-    prepared: Prepared<Dual<KNOBS>>,
+    prepared: Prepared,
     /// Devices in parallel.
     pub count: f64,
 }
@@ -68,16 +74,31 @@ impl Process {
         temp: Kelvin,
         notes: &mut Vec<Note>,
     ) -> Result<Varied, ReadError> {
-        let (card, g, count) = self.card(request, temp.celsius(), notes)?;
         let knob = |k: Knob, v: f64| Dual::<KNOBS>::variable(v, k as usize);
-        let mut dual: Geometry<Dual<KNOBS>> = g.lift();
-        dual.length_m = knob(Knob::Length, g.length_m);
-        dual.width_m = knob(Knob::Width, g.width_m);
-        let mut shift = knob(Knob::Threshold, 0.0);
-        if card.polarity.sign() < 0.0 {
-            shift = -shift;
+        let varied = |g: &Geometry, sign: f64| {
+            let mut dual: Geometry<Dual<KNOBS>> = g.lift();
+            dual.length_m = knob(Knob::Length, g.length_m);
+            dual.width_m = knob(Knob::Width, g.width_m);
+            dual.delvto_v = knob(Knob::Threshold, 0.0) * sign + g.delvto_v;
+            dual
+        };
+        let temp_k = knob(Knob::Temperature, temp.get());
+        if let Some(model) = self.own_model(request) {
+            let made = self.transistor(request, temp, notes)?;
+            let DeviceModel::Compact(card) = model else {
+                return Err(ReadError::Syntax {
+                    at: request.at.clone(),
+                    found: format!("`{}` is a table of points", request.model),
+                    wanted: "want a card or a compact device: points do not know what made them".into(),
+                });
+            };
+            let g = varied(&made.geometry, card.polarity.sign());
+            let oxide = knob(Knob::Oxide, card.oxide_m);
+            let prepared = compact::prepare::Prepared::new(card, oxide, &g, temp_k);
+            return Ok(Varied { prepared: Prepared::Compact(Box::new(prepared)), count: made.count });
         }
-        dual.delvto_v = shift + g.delvto_v;
+        let (card, g, count) = self.card(request, temp.celsius(), notes)?;
+        let dual = varied(&g, card.polarity.sign());
         let values = Values::at(&card, &dual, |id, v| {
             if matches!(id, Id::Toxe | Id::Toxp) { knob(Knob::Oxide, v) } else { Dual::of(v) }
         })
@@ -87,8 +108,8 @@ impl Process {
             value: format!("{size:.3e} m"),
             wanted: "want a drawn size well above the offsets of the card".into(),
         })?;
-        let prepared = Prepared::new(&card, &values, &dual, knob(Knob::Temperature, temp.get()));
-        Ok(Varied { prepared, count })
+        let prepared = bsim4::prepare::Prepared::new(&card, &values, &dual, temp_k);
+        Ok(Varied { prepared: Prepared::Bsim4(Box::new(prepared)), count })
     }
 }
 
@@ -97,7 +118,11 @@ impl Varied {
     pub fn terminals(&self, bias: Bias<f64>) -> [Dual<KNOBS>; 4] {
         let lift = |x: f64| Dual::<KNOBS>::of(x);
         let b = Bias { vgs: lift(bias.vgs), vds: lift(bias.vds), vbs: lift(bias.vbs) };
-        branches(&self.prepared, b).terminals().map(|t| t * self.count)
+        let branches = match &self.prepared {
+            Prepared::Bsim4(p) => bsim4::branches(p, b),
+            Prepared::Compact(p) => compact::branches(p, b),
+        };
+        branches.terminals().map(|t| t * self.count)
     }
 
     /// d ln|Id| / d knob at a bias; `None` where no current flows.
