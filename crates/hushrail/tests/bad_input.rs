@@ -126,6 +126,28 @@ fn cards_that_mean_nothing_are_refused() {
 }
 
 #[test]
+fn what_is_not_computed_is_said() {
+    let p = Process::read(
+        "x",
+        &[Source::from_text("t.lib", &CARDS.replace("toxe=2n", "toxe=2n rsh=10"))],
+        &DeckOptions::default(),
+    )
+    .expect("cards");
+    let t = Kelvin::from_celsius(25.0).expect("fine");
+    let codes = |params: &[(&str, f64)]| {
+        let mut notes = Vec::new();
+        p.transistor(&request(params), t, &mut notes).expect("device");
+        notes.into_iter().map(|n| n.code).collect::<Vec<_>>()
+    };
+    let with = codes(&[("w", 1e-6), ("l", 60e-9), ("nrd", 1.0), ("colour", 3.0)]);
+    assert!(
+        with.contains(&"diffusion-resistance".into()) && with.contains(&"instance-parameter".into()),
+        "{with:?}"
+    );
+    assert!(codes(&[("w", 1e-6), ("l", 60e-9)]).is_empty());
+}
+
+#[test]
 fn impossible_devices_are_refused_with_the_netlist_line() {
     let p = process();
     let t = Kelvin::from_celsius(25.0).expect("fine");

@@ -372,6 +372,17 @@ impl Process {
         let (w, l) = (g.width_m / g.fingers, g.length_m);
         let model = self.bin(&found, w, l, &scope, request)?;
         let card = Card::evaluate(model, &self.deck, &scope, notes)?;
+        if card.base(Id::Rsh) > 0.0 && ["nrd", "nrs"].iter().any(|n| get(n).is_some_and(|x| x > 0.0)) {
+            let text = format!(
+                "model family `{}`: the resistance of the diffusions (rsh with nrd, nrs) is not computed; on-currents are a \
+                 little high, off-currents are not touched",
+                model.family()
+            );
+            let note = Note::new("diffusion-resistance", text);
+            if !notes.contains(&note) {
+                notes.push(note);
+            }
+        }
         Ok((card, g, count))
     }
 
