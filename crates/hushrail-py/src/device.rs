@@ -6,11 +6,11 @@ use std::sync::Arc;
 use hushrail::batch::load::load_process;
 use hushrail::batch::study::ProcessSpec;
 use hushrail::device::process::Request;
-use hushrail::device::{Bias, Mechanism, Polarity};
+use hushrail::device::{Bias, Mechanism, Polarity, per_terminal};
 use hushrail::physics::Kelvin;
 use hushrail::read::Place;
 use indexmap::IndexMap;
-use numpy::ndarray::{Array2, Array3};
+use numpy::ndarray::{Array2, Array3, ArrayView1};
 use numpy::{IntoPyArray, PyArray2, PyArray3, PyReadonlyArray1};
 use pyo3::prelude::*;
 
@@ -132,12 +132,12 @@ impl Device {
         vs: PyReadonlyArray1<'py, f64>,
         vb: PyReadonlyArray1<'py, f64>,
     ) -> PyResult<Bound<'py, PyArray2<f64>>> {
-        let (vd, vg, vs, vb) = (vd.as_array(), vg.as_array(), vs.as_array(), vb.as_array());
-        let n = same_length(&[vd.len(), vg.len(), vs.len(), vb.len()])?;
+        let at = Points::new([&vd, &vg, &vs, &vb])?;
+        let n = at.n;
         let out = py.detach(|| {
             let mut out = Array2::zeros((n, 4));
             for i in 0..n {
-                let t = self.inner.branches(Bias::from_terminals(vd[i], vg[i], vs[i], vb[i])).terminals();
+                let t = self.inner.branches(at.bias(i)).terminals();
                 for k in 0..4 {
                     out[[i, k]] = t[k] * self.count;
                 }
@@ -156,12 +156,12 @@ impl Device {
         vs: PyReadonlyArray1<'py, f64>,
         vb: PyReadonlyArray1<'py, f64>,
     ) -> PyResult<Bound<'py, PyArray3<f64>>> {
-        let (vd, vg, vs, vb) = (vd.as_array(), vg.as_array(), vs.as_array(), vb.as_array());
-        let n = same_length(&[vd.len(), vg.len(), vs.len(), vb.len()])?;
+        let at = Points::new([&vd, &vg, &vs, &vb])?;
+        let n = at.n;
         let out = py.detach(|| {
             let mut out = Array3::zeros((n, 5, 4));
             for i in 0..n {
-                let b = self.inner.branches(Bias::from_terminals(vd[i], vg[i], vs[i], vb[i]));
+                let b = self.inner.branches(at.bias(i));
                 for (m, mechanism) in Mechanism::ALL.into_iter().enumerate() {
                     for (k, x) in b.terminals_of(mechanism).into_iter().enumerate() {
                         out[[i, m, k]] = x * self.count;
@@ -182,16 +182,14 @@ impl Device {
         vs: PyReadonlyArray1<'py, f64>,
         vb: PyReadonlyArray1<'py, f64>,
     ) -> PyResult<Bound<'py, PyArray3<f64>>> {
-        let (vd, vg, vs, vb) = (vd.as_array(), vg.as_array(), vs.as_array(), vb.as_array());
-        let n = same_length(&[vd.len(), vg.len(), vs.len(), vb.len()])?;
+        let at = Points::new([&vd, &vg, &vs, &vb])?;
+        let n = at.n;
         let out = py.detach(|| {
             let mut out = Array3::zeros((n, 4, 4));
             for i in 0..n {
-                let bias = Bias::from_terminals(vd[i], vg[i], vs[i], vb[i]);
-                let t = self.inner.branches_dual(bias.dual()).terminals();
+                let t = self.inner.branches_dual(at.bias(i).dual()).terminals();
                 for (k, x) in t.iter().enumerate() {
-                    let d = x.d;
-                    for (u, g) in [d[1], d[0], -(d[0] + d[1] + d[2]), d[2]].into_iter().enumerate() {
+                    for (u, g) in per_terminal(x.d).into_iter().enumerate() {
                         out[[i, k, u]] = g * self.count;
                     }
                 }
@@ -206,11 +204,26 @@ impl Device {
     }
 }
 
-fn same_length(lengths: &[usize]) -> PyResult<usize> {
-    let n = lengths[0];
-    if lengths.iter().all(|l| *l == n) {
-        Ok(n)
-    } else {
-        Err(error::range(format!("bias arrays have lengths {lengths:?}; want one length")))
+/// Terminal voltages of N points, as views of the caller's arrays.
+struct Points<'a> {
+    n: usize,
+    terminals: [ArrayView1<'a, f64>; 4],
+}
+
+impl<'a> Points<'a> {
+    /// Drain, gate, source and body, all of one length.
+    fn new(arrays: [&'a PyReadonlyArray1<'_, f64>; 4]) -> PyResult<Self> {
+        let terminals = arrays.map(PyReadonlyArray1::as_array);
+        let lengths = [0, 1, 2, 3].map(|k: usize| terminals[k].len());
+        if lengths.iter().all(|l| *l == lengths[0]) {
+            Ok(Self { n: lengths[0], terminals })
+        } else {
+            Err(error::range(format!("bias arrays have lengths {lengths:?}; want one length")))
+        }
+    }
+
+    fn bias(&self, i: usize) -> Bias<f64> {
+        let [vd, vg, vs, vb] = &self.terminals;
+        Bias::from_terminals(vd[i], vg[i], vs[i], vb[i])
     }
 }

@@ -82,9 +82,7 @@ pub fn characterise(
             Some(Ok((rows, notes))) => {
                 table.rows.extend(rows);
                 for n in notes {
-                    if !table.notes.contains(&n) {
-                        table.notes.push(n);
-                    }
+                    n.add_once(&mut table.notes);
                 }
             }
             Some(Err(reason)) => table.failures.push(Failure {

@@ -213,9 +213,7 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
     }
     let mut distinct: Vec<Note> = Vec::new();
     for n in notes {
-        if !distinct.contains(&n) {
-            distinct.push(n);
-        }
+        n.add_once(&mut distinct);
     }
     Ok(Loaded {
         title: study.title.clone(),

@@ -112,17 +112,13 @@ pub fn estimate(loaded: &Loaded, options: &SolveOptions, progress: &mut Progress
         for (s, p) in part.points.into_iter().enumerate() {
             if let Some(p) = p {
                 for n in &p.asleep.notes {
-                    if !notes.contains(n) {
-                        notes.push(n.clone());
-                    }
+                    n.clone().add_once(&mut notes);
                 }
                 points[(d * ns + s) * nc + c] = Some(p);
             }
         }
         for n in part.notes {
-            if !notes.contains(&n) {
-                notes.push(n);
-            }
+            n.add_once(&mut notes);
         }
         failures.extend(part.failures);
         stopped |= part.stopped;

@@ -6,7 +6,7 @@ use indexmap::IndexMap;
 use rustc_hash::FxHashMap;
 
 use crate::circuit::network::Node;
-use crate::device::process::Request;
+use crate::device::process::{Request, length_power};
 use crate::read::deck::{Deck, DeckScope, Note, PinDirection, Subckt};
 use crate::read::source::{Place, ReadError, nearest};
 
@@ -321,11 +321,11 @@ impl CellReader<'_> {
                 let mut out = Vec::new();
                 for (name, def) in &e.params {
                     let power = match &**name {
-                        "l" | "w" | "sa" | "sb" | "sd" | "pd" | "ps" | "pj" | "perim" => 1,
-                        "ad" | "as" | "area" => 2,
+                        // spellings of netlists alone
+                        "perim" => 1,
                         "a" if e.kind == 'D' || e.kind == 'X' => 2,
                         "p" if e.kind == 'D' || e.kind == 'X' => 1,
-                        _ => 0,
+                        other => length_power(other).unwrap_or(0),
                     };
                     if let crate::read::expression::Expr::Name(word) = &def.expr {
                         let known = sub.params.contains_key(word) || self.deck.params.contains_key(word);
@@ -334,9 +334,7 @@ impl CellReader<'_> {
                                 "instance-parameter",
                                 format!("instance parameter `{name} = {word}` is a remark and has no effect"),
                             );
-                            if !notes.contains(&note) {
-                                notes.push(note);
-                            }
+                            note.add_once(notes);
                             continue;
                         }
                     }

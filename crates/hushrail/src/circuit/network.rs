@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use crate::device::diode::Diode;
 use crate::device::dual::Dual;
-use crate::device::{Bias, Branches, Device, Mechanism, Polarity, Terminal};
+use crate::device::{Bias, Branches, Device, Mechanism, Polarity, Terminal, per_terminal};
 
 /// Number of a node.
 pub type Node = usize;
@@ -113,11 +113,6 @@ fn gross(b: &Branches<f64>) -> [f64; 4] {
     ]
 }
 
-/// Spreads derivatives to (vgs, vds, vbs) over the four terminals.
-fn spread(d: [f64; 3]) -> [f64; 4] {
-    [d[1], d[0], -(d[0] + d[1] + d[2]), d[2]]
-}
-
 impl Network {
     /// Currents and slopes of one element.
     pub fn stamp(&self, e: &Element, v: &[Volt]) -> Stamp {
@@ -130,7 +125,7 @@ impl Network {
                 let mut s = Stamp { n: 4, nodes: p.nodes, current: [0.0; 4], gross, slope: [[0.0; 4]; 4] };
                 for (i, x) in t.iter().enumerate() {
                     s.current[i] = x.v * p.count;
-                    s.slope[i] = spread(x.d).map(|d| d * p.count);
+                    s.slope[i] = per_terminal(x.d).map(|d| d * p.count);
                 }
                 if self.floor_s > 0.0 {
                     let g = self.floor_s * p.count;

@@ -84,9 +84,7 @@ impl Diode {
                 model.name
             ),
         );
-        if !notes.contains(&note) {
-            notes.push(note);
-        }
+        note.add_once(notes);
         let (t0, t) = (tref + CELSIUS_ZERO_K, temp_k);
         let (v0, v) = (KB_OVER_Q * t0, KB_OVER_Q * t);
         let grow = ((eg / v0 - eg / v + xti * (t / t0).ln()) / n).exp();

@@ -87,6 +87,11 @@ impl Bias<f64> {
     }
 }
 
+/// Derivatives to (vgs, vds, vbs) as derivatives to the voltages of drain, gate, source and body.
+pub fn per_terminal(d: [f64; 3]) -> [f64; 4] {
+    [d[1], d[0], -(d[0] + d[1] + d[2]), d[2]]
+}
+
 /// Currents along the branches of a device, A.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Branches<R> {
@@ -298,27 +303,5 @@ impl Geometry<f64> {
             delvto_v: f(self.delvto_v),
             mobility_factor: f(self.mobility_factor),
         }
-    }
-    /// All numbers as bits, for use as a key.
-    pub fn key(&self) -> [u64; 15] {
-        let w = self.well_proximity;
-        [
-            self.width_m,
-            self.length_m,
-            self.fingers,
-            self.sa_m,
-            self.sb_m,
-            self.sd_m,
-            self.ad_m2,
-            self.as_m2,
-            self.pd_m,
-            self.ps_m,
-            w.0,
-            w.1,
-            w.2,
-            self.delvto_v,
-            self.mobility_factor,
-        ]
-        .map(f64::to_bits)
     }
 }

@@ -97,7 +97,7 @@ pub struct Transistor {
 }
 
 /// Power of the length unit in an instance parameter: 1 for lengths, 2 for areas, 0 for plain numbers.
-fn length_power(name: &str) -> Option<i32> {
+pub(crate) fn length_power(name: &str) -> Option<i32> {
     Some(match name {
         "l" | "w" | "sa" | "sb" | "sd" | "pd" | "ps" | "pj" => 1,
         "ad" | "as" | "area" => 2,
@@ -227,15 +227,6 @@ impl Process {
         Ok(Found { wrapper: None, element: None, models: &self.deck.models, bins })
     }
 
-    /// The model text type of a name: `nmos`, `pmos`, `d`.
-    ///
-    /// # Errors
-    /// No card defines the name.
-    pub fn kind(&self, request: &Request) -> Result<String, ReadError> {
-        let found = self.find(request)?;
-        Ok(found.models[found.bins[0].model].kind.to_string())
-    }
-
     /// Values of the wrapper's parameters for this instance, in the deck's own units, and the SI parameters of the
     /// transistor itself.
     fn instance(
@@ -249,9 +240,7 @@ impl Process {
             for (name, _) in request.params.iter().filter(|(n, _)| length_power(n).is_none()) {
                 let text = format!("instance parameter `{name}` is unknown to BSIM4 and has no effect");
                 let note = Note::new("instance-parameter", text);
-                if !notes.contains(&note) {
-                    notes.push(note);
-                }
+                note.add_once(notes);
             }
             return Ok((request.params.clone(), request.params.clone()));
         };
@@ -265,9 +254,7 @@ impl Process {
                 let text =
                     format!("instance parameter `{name}` is unknown to `{}` and has no effect", sub.name);
                 let note = Note::new("instance-parameter", text);
-                if !notes.contains(&note) {
-                    notes.push(note);
-                }
+                note.add_once(notes);
             }
         }
         let scope = DeckScope::new(&self.deck, Some(sub), &values, temp_c);
@@ -379,9 +366,7 @@ impl Process {
                 model.family()
             );
             let note = Note::new("diffusion-resistance", text);
-            if !notes.contains(&note) {
-                notes.push(note);
-            }
+            note.add_once(notes);
         }
         Ok((card, g, count))
     }

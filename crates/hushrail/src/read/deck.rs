@@ -24,6 +24,13 @@ impl Note {
     pub fn new(code: &str, text: impl Into<String>) -> Self {
         Self { code: code.to_owned(), text: text.into() }
     }
+
+    /// Adds the note to a list unless it stands there already.
+    pub fn add_once(self, notes: &mut Vec<Self>) {
+        if !notes.contains(&self) {
+            notes.push(self);
+        }
+    }
 }
 
 /// An expression and where it is written.

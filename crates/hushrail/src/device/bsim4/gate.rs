@@ -39,6 +39,7 @@ impl<R: Real> GateCurrents<R> {
     pub fn at<P: Real>(
         p: &Prepared<P>,
         t: &Tunnel<P>,
+        exchanged: bool,
         th: &Threshold<R>,
         ch: &Channel<R>,
         vgs: R,
@@ -48,6 +49,11 @@ impl<R: Real> GateCurrents<R> {
         R: Over<P>,
     {
         let zero = R::of(0.0);
+        // the physical drain keeps its own edge when the channel runs the other way
+        let mut ends = [(t.a_edge_s, t.edge_s), (t.a_edge_d, t.edge_d)];
+        if exchanged {
+            ends.swap(0, 1);
+        }
         let (vge, vbs) = (th.vgs_eff, th.vbseff);
 
         // oxide voltage in accumulation and in depletion/inversion
@@ -89,8 +95,8 @@ impl<R: Real> GateCurrents<R> {
             let below = x.sq() + 2e-4;
             gs = igc * (x + e - 1.0 + 1e-4) / below;
             gd = igc * (-((x + 1.0) * e) + 1.0 + 1e-4) / below;
-            gs = gs + edge(t, t.a_edge_s, t.edge_s, vgs);
-            gd = gd + edge(t, t.a_edge_d, t.edge_d, vgs - vds);
+            gs = gs + edge(t, ends[0].0, ends[0].1, vgs);
+            gd = gd + edge(t, ends[1].0, ends[1].1, vgs - vds);
         }
         if t.igb {
             let across = pre - vbs;

@@ -49,11 +49,7 @@ pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches
         b.gidl_sb = gidl::current(p, g, R::of(0.0), th.vgs_eff, -vbs_f);
     }
     if let Some(t) = &p.tunnel {
-        let g = if exchanged {
-            GateCurrents::at(p, &t.exchanged(), &th, &ch, vgs_f, vds_f)
-        } else {
-            GateCurrents::at(p, t, &th, &ch, vgs_f, vds_f)
-        };
+        let g = GateCurrents::at(p, t, exchanged, &th, &ch, vgs_f, vds_f);
         b.gate_gs = g.gs;
         b.gate_gd = g.gd;
         b.gate_gb = g.gb;

@@ -43,16 +43,6 @@ pub struct Tunnel<P> {
     pub rest_v: P,
 }
 
-impl<P: Clone> Tunnel<P> {
-    /// With the two edges exchanged, for a channel that runs the other way.
-    pub fn exchanged(&self) -> Self {
-        let mut s = self.clone();
-        std::mem::swap(&mut s.edge_s, &mut s.edge_d);
-        std::mem::swap(&mut s.a_edge_s, &mut s.a_edge_d);
-        s
-    }
-}
-
 /// GIDL (or GISL) constants of one device.
 #[derive(Debug, Clone)]
 #[expect(missing_docs, reason = "symbols of the manual, section 6.2")]
