@@ -9,6 +9,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 from hushrail import _core
+from scipy.optimize import brentq
 
 _spec = importlib.util.spec_from_file_location("bsim4_numpy", Path(__file__).with_name("bsim4_numpy.py"))
 assert _spec is not None
@@ -34,8 +35,9 @@ CARD = """
 + cigsd=0.05 toxref=2n poxedge=1.1 ntox=1.2 vfbsdoff=0.02 pigcd=1
 + jss=3e-5 jsws=2e-12 jswgs=4e-12 njs=1.1 xtis=2.5 ijthsfwd=10
 + kt1=-0.2 kt1l=1e-9 kt2=0.02 ute=-1.3 at=2e4 prt=10
-+ ua1=5e-10 ub1=-1e-18 uc1=2e-11 tvoff=1e-3
++ rsh=9 ua1=5e-10 ub1=-1e-18 uc1=2e-11 tvoff=1e-3
 """
+RSH = 9.0
 W, L, AREA, PERIMETER = 0.8e-6, 70e-9, 0.12e-12, 1.9e-6
 
 
@@ -51,6 +53,77 @@ def grid() -> tuple[np.ndarray, ...]:
         np.linspace(-1.0, 1.2, 23), np.linspace(0.02, 1.2, 11), np.linspace(-1.2, 0.2, 6)
     )
     return tuple(np.ascontiguousarray(x.ravel()) for x in (vg, vd, vb))
+
+
+MODES = [
+    "mobmod=1 uc=-0.03 uc1=0.01 ud=1e14 ud1=1e13",
+    "mobmod=2 eu=1.5 ua=1e-15 ua1=0 uc=1e-17 uc1=0 ud=1e14",
+    "mobmod=3 eu=1.4 ua=0.4 ua1=0.1 uc=0.02 uc1=0 ud=0.6 ud1=0.1 ucs=1.2 ucste=0.3",
+    "mobmod=4 ud=1e14 up=0.2 lp=50n",
+    "mobmod=5 uc=-0.03 uc1=0 ud=1e14",
+    "mobmod=6 eu=1.5 ua=1e-15 ua1=0 uc=1e-17 uc1=0 ud=1e14",
+    "tempmod=1 ua1=1e-3 ub1=2e-3 uc1=1e-3 at=1e-3 prt=1e-3",
+    "tempmod=2 ua1=1e-3 ub1=2e-3 uc1=1e-3 at=1e-3 prt=1e-3",
+    "tempmod=3 mobmod=3 eu=1.4 ua=0.4 uc=0.02 ud=0.6 ua1=0.3 uc1=0.5 ud1=-0.4 ucste=0.3 at=1e-3 prt=1e-3",
+]
+
+
+def with_mode(mode: str, path: Path) -> _core.Process:
+    """The card with some values replaced."""
+    names = {word.split("=")[0] for word in mode.split()}
+    kept = [w for w in CARD.split() if w.split("=")[0] not in names]
+    head = kept.index("level=54")
+    path.write_text(
+        "* invented\n"
+        + " ".join([*kept[kept.index(".model") : head], *kept[head:], mode]).replace(" + ", " ")
+    )
+    return _core.Process.read("tt", [str(path)])
+
+
+@pytest.mark.parametrize("mode", MODES)
+@pytest.mark.parametrize("temp_c", [-40.0, 125.0])
+def test_channel_modes_equal_the_second_evaluation(mode: str, temp_c: float, tmp_path: Path) -> None:
+    process = with_mode(mode, tmp_path / "mode.lib")
+    params = {"w": W, "l": L}
+    p = process.effective("nt", params)
+    s = b4.sizes(p, W, L, temp_c + 273.15)
+    vg, vd, vb = grid()
+    got = process.transistor("nt", params, temp_c).by_mechanism(vd, vg, np.zeros_like(vg), vb)
+    np.testing.assert_allclose(got[:, 0, 0], b4.channel(p, s, vg, vd, vb), rtol=4e-9, atol=1e-30)
+
+
+def test_series_resistance_equals_a_root_of_the_second_evaluation(tmp_path: Path) -> None:
+    """rdsMod 1 against SciPy's ``brentq`` on the channel current alone (no gate, junction or GIDL current)."""
+    mode = "rdsmod=1 rsw=70 rdw=110 rswmin=15 rdwmin=10 prwg=0.1 prwb=0.05 ngate=0 agidl=0 igcmod=0 jss=0 jsws=0 jswgs=0"
+    process = with_mode(mode, tmp_path / "mode.lib")
+    params = {"w": W, "l": L, "nrs": 0.7, "nrd": 0.4}
+    p = process.effective("nt", params)
+    s = b4.sizes(p, W, L, 273.15 + 60)
+    device = process.transistor("nt", params, 60.0)
+    one = np.ones(1)
+    for vg in (0.2, 0.5, 0.8, 1.2):
+        for vd in (0.01, 0.3, 1.2):
+            for vb in (-1.0, 0.0):
+
+                def inner(i: float, vg: float = vg, vd: float = vd, vb: float = vb) -> tuple[float, float]:
+                    lost_s, lost_d = 0.0, 0.0
+                    # the resistances depend on the inner voltages: a contraction, as R times the slope is below one
+                    for _ in range(200):
+                        gs, bs = (vg - lost_s) * one, (vb - lost_s) * one
+                        gd, bd = (vg - vd + lost_d) * one, (vb - vd + lost_d) * one
+                        lost_s = i * (float(b4.end_resistance(p, s, "s", gs, bs)[0]) + RSH * 0.7)
+                        lost_d = i * (float(b4.end_resistance(p, s, "d", gd, bd)[0]) + RSH * 0.4)
+                    return lost_s, lost_d
+
+                def lack(i: float, vg: float = vg, vd: float = vd, vb: float = vb) -> float:
+                    a, b = inner(i)
+                    return float(b4.channel(p, s, (vg - a) * one, (vd - a - b) * one, (vb - a) * one)[0]) - i
+
+                top = float(b4.channel(p, s, vg * one, vd * one, vb * one)[0])
+                want = brentq(lack, 0.3 * top, top, xtol=1e-24, rtol=1e-12)
+                got = device.by_mechanism(vd * one, vg * one, 0 * one, vb * one)[0, 0, 0]
+                assert got == pytest.approx(want, rel=2e-9), (vg, vd, vb)
+                assert top > got
 
 
 @pytest.mark.parametrize("temp_c", [-40.0, 27.0, 125.0])

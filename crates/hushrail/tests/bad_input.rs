@@ -110,13 +110,20 @@ fn cards_that_mean_nothing_are_refused() {
         ("{0.38+dv}", "{0.38/0}", "finite number"),
         ("{0.38+dv}", "{squirt(2)}", "function `squirt`"),
         (".param dv = 0.0", ".param dv = {dv}", "through itself"),
-        ("toxe=2n", "toxe=-2n", "above zero"),
+        ("toxe=2n", "toxe=-2n", "t.lib"),
+        ("toxe=2n", "toxe=-2n", "`toxe` is -0.000000002; want a value above 0"),
         ("igcmod=1", "igcmod=7", "want 0, 1 or 2"),
-        ("igcmod=1", "igcmod=1 mtrlmod=1", "mtrlmod"),
+        ("igcmod=1", "igcmod=1 mtrlmod=2", "want 0 (silicon and oxide) or 1 (described)"),
+        ("igcmod=1", "igcmod=1 mtrlmod=1 bg0sub=0.04", "band gap"),
+        ("igcmod=1", "igcmod=1 mtrlmod=1 eot=0", "`eot` is 0"),
+        ("igcmod=1", "igcmod=1 rdsmod=2", "want 0 (inside the channel equation) or 1 (in series)"),
+        ("igcmod=1", "igcmod=1 mobmod=7", "want 0 to 6"),
         ("lmin=50n", "lmin=500n", "no bin covers it"),
         (".model nx.0 nmos", ".model nx.0 njf", "nmos or pmos"),
         (".model nx.0 nmos", ".model ny.0 nmos", "did you mean"),
-        ("toxref=2n", "toxref=-1", "above zero"),
+        ("toxref=2n", "toxref=-1", "above 0"),
+        ("toxe=2n", "toxe=2n xj=1n lxj=-1", "`xj of model `nx` at this size`"),
+        ("toxe=2n", "toxe=2n geomod=11", "want 0 to 10"),
         ("bigsd=2e-3", "bigsd=1e30", "not a finite number"),
         (".model px pmos", ".model nx.0 pmos", "second time"),
     ] {
@@ -129,7 +136,7 @@ fn cards_that_mean_nothing_are_refused() {
 fn what_is_not_computed_is_said() {
     let p = Process::read(
         "x",
-        &[Source::from_text("t.lib", &CARDS.replace("toxe=2n", "toxe=2n rsh=10"))],
+        &[Source::from_text("t.lib", &CARDS.replace("toxe=2n", "toxe=2n rsh=10 rgeomod=1 rbodymod=1"))],
         &DeckOptions::default(),
     )
     .expect("cards");
@@ -139,12 +146,15 @@ fn what_is_not_computed_is_said() {
         p.transistor(&request(params), t, &mut notes).expect("device");
         notes.into_iter().map(|n| n.code).collect::<Vec<_>>()
     };
-    let with = codes(&[("w", 1e-6), ("l", 60e-9), ("nrd", 1.0), ("colour", 3.0)]);
+    let with = codes(&[("w", 1e-6), ("l", 60e-9), ("nrs", 1.0), ("colour", 3.0)]);
     assert!(
-        with.contains(&"diffusion-resistance".into()) && with.contains(&"instance-parameter".into()),
+        with.contains(&"diffusion-resistance".into())
+            && with.contains(&"body-resistance".into())
+            && with.contains(&"instance-parameter".into()),
         "{with:?}"
     );
-    assert!(codes(&[("w", 1e-6), ("l", 60e-9)]).is_empty());
+    let computed = [("w", 1e-6), ("l", 60e-9), ("nrd", 1.0), ("nrs", 1.0)];
+    assert_eq!(codes(&computed), ["body-resistance"]);
 }
 
 #[test]

@@ -165,6 +165,16 @@ impl<R: Real> Branches<R> {
         }
     }
 
+    /// Sum of the magnitudes of all branches, A: the yardstick of rounding.
+    pub fn gross(self) -> f64 {
+        let b = self.map(|i| i.val().abs());
+        b.channel_ds
+            + (b.impact_db + b.impact_sb)
+            + (b.gidl_db + b.gidl_sb)
+            + (b.junction_db + b.junction_sb)
+            + (b.gate_gd + b.gate_gs + b.gate_gb)
+    }
+
     /// Drain and source exchanged.
     #[must_use]
     pub fn exchanged(self) -> Self {
@@ -258,6 +268,10 @@ pub struct Geometry<P = f64> {
     pub pd_m: P,
     /// Perimeter of the source, m.
     pub ps_m: P,
+    /// Squares of diffusion in series with the drain.
+    pub drain_squares: P,
+    /// Squares of diffusion in series with the source.
+    pub source_squares: P,
     /// Well-proximity integrals SCA, SCB, SCC.
     pub well_proximity: (P, P, P),
     /// Threshold shift of this instance, V.
@@ -280,6 +294,8 @@ impl Geometry<f64> {
             as_m2: 0.0,
             pd_m: 0.0,
             ps_m: 0.0,
+            drain_squares: 0.0,
+            source_squares: 0.0,
             well_proximity: (0.0, 0.0, 0.0),
             delvto_v: 0.0,
             mobility_factor: 1.0,
@@ -299,6 +315,8 @@ impl Geometry<f64> {
             as_m2: f(self.as_m2),
             pd_m: f(self.pd_m),
             ps_m: f(self.ps_m),
+            drain_squares: f(self.drain_squares),
+            source_squares: f(self.source_squares),
             well_proximity: (f(self.well_proximity.0), f(self.well_proximity.1), f(self.well_proximity.2)),
             delvto_v: f(self.delvto_v),
             mobility_factor: f(self.mobility_factor),

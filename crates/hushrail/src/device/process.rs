@@ -5,6 +5,8 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 use rustc_hash::FxHashMap;
 
+use super::bsim4::layout::{self, Stated};
+use super::bsim4::material::Material;
 use super::bsim4::prepare::Prepared;
 use super::bsim4::table::{Id, ROWS};
 use super::bsim4::values::{Card, Values};
@@ -99,7 +101,7 @@ pub struct Transistor {
 /// Power of the length unit in an instance parameter: 1 for lengths, 2 for areas, 0 for plain numbers.
 pub(crate) fn length_power(name: &str) -> Option<i32> {
     Some(match name {
-        "l" | "w" | "sa" | "sb" | "sd" | "pd" | "ps" | "pj" => 1,
+        "l" | "w" | "sa" | "sb" | "sd" | "sc" | "pd" | "ps" | "pj" => 1,
         "ad" | "as" | "area" => 2,
         "nf" | "m" | "mult" | "nrd" | "nrs" | "delvto" | "mulu0" | "sca" | "scb" | "scc" | "geo"
         | "geomod" | "rgeomod" | "min" | "dtemp" => 0,
@@ -301,14 +303,27 @@ impl Process {
         }
         let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
         let values = Self::values(&card, &geometry, request)?;
+        let gap = Material::of(&card).gap(temp.get());
+        if !(gap > 0.0) {
+            return Err(ReadError::Range {
+                at: request.at.clone(),
+                name: format!("band gap of model `{}` at {:.1} °C", request.model, temp.celsius()),
+                value: format!("{gap:.3} eV"),
+                wanted: "want a gap above zero; the card does not hold at this temperature".into(),
+            });
+        }
         let prepared = Prepared::new(&card, &values, &geometry, temp.get());
-        if !(prepared.phi > 0.0 && prepared.vsat > 0.0 && prepared.u0 > 0.0 && prepared.vth0.is_finite()) {
+        if !(prepared.phi > 0.0
+            && prepared.vsat > 0.0
+            && prepared.mobility.u0 > 0.0
+            && prepared.vth0.is_finite())
+        {
             return Err(ReadError::Range {
                 at: request.at.clone(),
                 name: format!("model `{}` at {:.1} °C", request.model, temp.celsius()),
                 value: format!(
                     "surface potential {:.3} V, saturation velocity {:.3e} m/s, mobility {:.3e} m²/Vs",
-                    prepared.phi, prepared.vsat, prepared.u0
+                    prepared.phi, prepared.vsat, prepared.mobility.u0
                 ),
                 wanted: "all must be above zero; the card does not hold at this temperature".into(),
             });
@@ -333,12 +348,21 @@ impl Process {
     }
 
     fn values(card: &Card, g: &Geometry, request: &Request) -> Result<Values<f64>, ReadError> {
-        Values::at(card, g, |_, v| v).map_err(|(what, size)| ReadError::Range {
+        let values = Values::at(card, g, |_, v| v).map_err(|(what, size)| ReadError::Range {
             at: request.at.clone(),
             name: format!("{what} of model `{}`", request.model),
             value: format!("{size:.3e} m"),
             wanted: "want a drawn size well above the offsets of the card".into(),
-        })
+        })?;
+        match values.out_of_range() {
+            None => Ok(values),
+            Some((id, value, range)) => Err(ReadError::Range {
+                at: request.at.clone(),
+                name: format!("{} of model `{}` at this size", ROWS[id as usize].name, request.model),
+                value: value.to_string(),
+                wanted: format!("want {range}"),
+            }),
+        }
     }
 
     /// The card that covers a request, with the drawn geometry and the number in parallel.
@@ -359,14 +383,57 @@ impl Process {
         let (w, l) = (g.width_m / g.fingers, g.length_m);
         let model = self.bin(&found, w, l, &scope, request)?;
         let card = Card::evaluate(model, &self.deck, &scope, notes)?;
-        if card.base(Id::Rsh) > 0.0 && ["nrd", "nrs"].iter().any(|n| get(n).is_some_and(|x| x > 0.0)) {
+        let flag = |name: &str, id: Id| get(name).unwrap_or_else(|| card.base(id));
+        let without = ["nrd", "nrs"].iter().any(|n| get(n).is_none());
+        if card.base(Id::Rsh) > 0.0 && flag("rgeomod", Id::Rgeomod) != 0.0 && without {
             let text = format!(
-                "model family `{}`: the resistance of the diffusions (rsh with nrd, nrs) is not computed; on-currents are a \
-                 little high, off-currents are not touched",
+                "model family `{}`: the resistance of the diffusions is not worked out from the layout (rgeomod); give nrd and \
+                 nrs. On-currents are a little high, off-currents are not touched",
                 model.family()
             );
-            let note = Note::new("diffusion-resistance", text);
-            note.add_once(notes);
+            Note::new("diffusion-resistance", text).add_once(notes);
+        }
+        if flag("rbodymod", Id::Rbodymod) != 0.0 {
+            let text = format!(
+                "model family `{}`: the resistance of the body (rbodymod) is not computed; it matters only where the current of \
+                 the body lifts it by more than a millivolt, as in breakdown or with a junction driven forward",
+                model.family()
+            );
+            Note::new("body-resistance", text).add_once(notes);
+        }
+        if card.flag(Id::Mtrlmod) == 1
+            && [Id::Leffeot, Id::Weffeot, Id::Tempeot].iter().any(|&id| card.has(id))
+        {
+            let text = format!(
+                "model family `{}`: the physical oxide is worked out on each device's own size and temperature, not on leffeot, \
+                 weffeot and tempeot; on-currents may differ by a few percent, off-currents do not",
+                model.family()
+            );
+            Note::new("physical-oxide", text).add_once(notes);
+        }
+        let stated = Stated {
+            areas: ["ad", "as"].map(|n| get(n).is_some()),
+            perimeters: ["pd", "ps"].map(|n| get(n).is_some()),
+        };
+        let mut g = g;
+        if let Some(distance) = get("sc").filter(|d| *d > 0.0)
+            && ["sca", "scb", "scc"].iter().all(|n| get(n).is_none())
+        {
+            g.well_proximity = layout::well_proximity(distance, g.width_m, card.base(Id::Scref));
+        }
+        if stated.areas.contains(&false) || stated.perimeters.contains(&false) {
+            let width = Self::values(&card, &g, request)?.size.weffcj;
+            let geomod = get("geomod").or_else(|| get("geo")).unwrap_or_else(|| card.base(Id::Geomod));
+            if !(0.0..=10.0).contains(&geomod) || geomod.fract() != 0.0 {
+                return Err(ReadError::Range {
+                    at: request.at.clone(),
+                    name: "geomod".into(),
+                    value: geomod.to_string(),
+                    wanted: "want a whole number from 0 to 10".into(),
+                });
+            }
+            #[expect(clippy::cast_possible_truncation, reason = "a whole number from 0 to 10")]
+            layout::fill(&card, &mut g, width, geomod as i64, get("min") == Some(1.0), stated);
         }
         Ok((card, g, count))
     }
@@ -484,6 +551,8 @@ fn drawn(get: impl Fn(&str) -> Option<f64>, request: &Request) -> Result<(Geomet
         as_m2: get("as").unwrap_or(0.0),
         pd_m: get("pd").unwrap_or(0.0),
         ps_m: get("ps").unwrap_or(0.0),
+        drain_squares: get("nrd").unwrap_or(0.0),
+        source_squares: get("nrs").unwrap_or(0.0),
         well_proximity: (get("sca").unwrap_or(0.0), get("scb").unwrap_or(0.0), get("scc").unwrap_or(0.0)),
         delvto_v: get("delvto").unwrap_or(0.0),
         mobility_factor: get("mulu0").unwrap_or(1.0),
@@ -526,6 +595,8 @@ fn check_size(g: &Geometry, count: f64, request: &Request) -> Result<(), ReadErr
         ("as", g.as_m2),
         ("pd", g.pd_m),
         ("ps", g.ps_m),
+        ("nrd", g.drain_squares),
+        ("nrs", g.source_squares),
     ] {
         if !(v >= 0.0) {
             return wrong(name, format!("{v:.3e}"), "want zero or more");

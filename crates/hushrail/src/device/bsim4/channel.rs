@@ -1,7 +1,7 @@
 //! Channel current from deep subthreshold to saturation, with output resistance and impact ionisation.
 
+use super::mobility;
 use super::prepare::Prepared;
-use super::silicon::EPS_SI;
 use super::threshold::Threshold;
 use crate::device::dual::{Over, Real};
 
@@ -32,6 +32,9 @@ impl<R: Real> Channel<R> {
     /// `Vdseff` and `Vdsat` are written in their conjugate forms, so an on device that carries picoamperes keeps every
     /// digit of its tiny drain voltage.
     ///
+    /// Velocity overshoot (LAMBDA) raises the critical field beyond saturation; the ballistic limit at the source (VTL) holds
+    /// the current under `W·Coxeff·Vgsteff·v` with the manual's exponent 2·MM = 4.
+    ///
     /// Source: BSIM4.8.0 manual, sections 5.1 to 5.9 and 6.1.
     pub fn at<P: Real>(p: &Prepared<P>, th: &Threshold<R>, vds: R) -> Self
     where
@@ -39,7 +42,7 @@ impl<R: Real> Channel<R> {
     {
         let one = R::of(1.0);
         let zero = R::of(0.0);
-        let (vgsteff, vbseff, vth) = (th.vgsteff, th.vbseff, th.vth);
+        let (vgsteff, vbseff) = (th.vgsteff, th.vbseff);
         let dsqrt = th.sqrt_phis - p.sqrt_phi;
 
         let mut weff = -((vgsteff * p.dwg + dsqrt * p.dwb) * 2.0) + p.weff;
@@ -65,26 +68,7 @@ impl<R: Real> Channel<R> {
         let abulk = at_least_tenth(abulk0 + slope * vgsteff) * keta;
 
         let v2t = vgsteff + R::lift(p.vt) * 2.0;
-        let coulomb = if p.ud.val() == 0.0 {
-            zero
-        } else {
-            let t12 = (vth.sq() + 0.0001).sqrt();
-            let t10 = (vgsteff + t12 * 2.0).recip() * p.toxe;
-            t10.sq() * p.ud * vth.sq()
-        };
-        let t5 = if p.mobmod == 2 {
-            let field = ((vgsteff + p.vtfbphi1) / p.toxe).pow(R::lift(p.eu));
-            field * (vbseff * p.uc + p.ua) + coulomb
-        } else {
-            let field = (vgsteff + vth * 2.0) / p.toxe;
-            if p.mobmod == 1 {
-                field * (field * p.ub + p.ua) * (vbseff * p.uc + 1.0) + coulomb
-            } else {
-                field * (vbseff * p.uc + p.ua + field * p.ub) + coulomb
-            }
-        };
-        let denominator = if t5.val() >= -0.8 { t5 + 1.0 } else { (t5 + 0.6) / (t5 * 10.0 + 7.0) };
-        let ueff = R::lift(p.u0) / denominator;
+        let ueff = mobility::effective(p, th);
 
         let wv = weff * p.vsat * p.coxe;
         let wvr = wv * rds;
@@ -119,10 +103,18 @@ impl<R: Real> Channel<R> {
         let beyond = if t1.val() > 0.0 { vdsat * p.delta * 4.0 / (t2 + t1) } else { t2 - t1 };
         let diff = vds * beyond / sum;
 
+        // velocity overshoot acts beyond the saturation voltage
+        let mut esat_l = esat_l;
+        if p.lambda.val() > 0.0 {
+            let over = diff * p.leff / (esat_l * p.litl);
+            esat_l = esat_l * ((over * 0.5).tanh() * p.lambda / (ueff * p.leff) + 1.0);
+        }
+
         let field = (vgsteff + p.vtfbphi2) / (R::lift(p.toxp) * 2e8);
+        let deepest = R::lift(p.centroid);
         let centroid =
-            if field.val() > 0.0 { ((field.ln() * 0.7).exp() + 1.0).recip() * 1.9e-9 } else { R::of(1.9e-9) };
-        let coxeff = R::lift(p.coxp) * EPS_SI / (centroid * p.coxp + EPS_SI);
+            if field.val() > 0.0 { deepest / ((field.ln() * p.centroid_power).exp() + 1.0) } else { deepest };
+        let coxeff = R::lift(p.coxp) * p.eps_sub / (centroid * p.coxp + p.eps_sub);
         let beta = ueff * coxeff * weff / p.leff;
         let gche = beta * vgsteff * (one - vdseff * abulk * 0.5 / v2t) / (vdseff / esat_l + 1.0);
         let idl = gche / (gche * rds + 1.0);
@@ -165,6 +157,12 @@ impl<R: Real> Channel<R> {
             let inverse = (-(R::lift(p.pscbe1) * p.litl / diff)).exp() * p.pscbe2 / p.leff;
             ids = ids * (diff * inverse + 1.0);
         }
-        Self { ids: ids * vdseff * p.nf, impact, vdseff }
+        let mut ids = ids * vdseff;
+        if let Some(limit) = p.source_velocity {
+            // (1 + x⁴)^(−¼) with x the velocity at the source over its ballistic limit
+            let x = ids / (weff * coxeff * vgsteff * limit);
+            ids = ids / (x.sq().sq() + 1.0).sqrt().sqrt();
+        }
+        Self { ids: ids * p.nf, impact, vdseff }
     }
 }

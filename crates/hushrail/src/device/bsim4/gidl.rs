@@ -11,6 +11,8 @@ use crate::device::dual::{Over, Real};
 /// gidlMod 1:  I = A·W·x·exp(−B/x)·exp(K/(Vbd − F)),           x = (Vds − R·Vgs − E)/(3·toxe)
 /// ```
 ///
+/// Where the material is described (`mtrlmod = 1`), `3·toxe` is `EOT·EPSRSUB/3.9` and VFBSD is added to the voltage.
+///
 /// Zero for x ≤ 0 and for a forward-biased junction, with all derivatives continuous there in gidlMod 0.
 ///
 /// Source: BSIM4.8.0 manual, section 6.2.
@@ -19,7 +21,7 @@ pub fn current<P: Real, R: Over<P>>(p: &Prepared<P>, g: &Gidl<P>, vd: R, vg: R, 
     if vdb.val() <= 0.0 {
         return zero;
     }
-    let x = if p.gidlmod == 0 { vd - vg - g.e } else { vd - vg * g.r - g.e } / (R::lift(p.toxe) * 3.0);
+    let x = (if p.gidlmod == 0 { vd - vg } else { vd - vg * g.r } - g.e + p.gidl_vfbsd) / p.gidl_reach;
     if x.val() <= g.b.val() / 690.0 {
         return zero;
     }

@@ -1,6 +1,7 @@
 //! Drain and source junctions: diffusion current, breakdown, and trap-assisted tunnelling in reverse.
 
-use super::silicon::{MODEL_KB_OVER_Q, band_gap};
+use super::material::Material;
+use super::silicon::MODEL_KB_OVER_Q;
 use super::table::Id;
 use super::values::{Card, Values};
 use crate::device::Geometry;
@@ -23,8 +24,9 @@ pub struct JunctionSide<P> {
     nvt_v: P,
     /// Forward voltage above which the current goes on along its tangent, V; infinite when there is none.
     forward_limit_v: f64,
-    /// Prefactor and breakdown voltage, when breakdown is modelled.
-    breakdown: Option<(P, P)>,
+    /// Prefactor, breakdown voltage, and the reverse voltage beyond which it goes on along its tangent (diode model 2;
+    /// infinite in model 0).
+    breakdown: Option<(P, P, f64)>,
     traps: [Option<Trap<P>>; 3],
 }
 
@@ -41,6 +43,7 @@ struct SideIds {
     nj: Id,
     xti: Id,
     ijthfwd: Id,
+    ijthrev: Id,
     xjbv: Id,
     bv: Id,
     jts: [Id; 3],
@@ -55,6 +58,7 @@ const SOURCE: SideIds = SideIds {
     nj: Id::Njs,
     xti: Id::Xtis,
     ijthfwd: Id::Ijthsfwd,
+    ijthrev: Id::Ijthsrev,
     xjbv: Id::Xjbvs,
     bv: Id::Bvs,
     jts: [Id::Jtss, Id::Jtssws, Id::Jtsswgs],
@@ -68,6 +72,7 @@ const DRAIN: SideIds = SideIds {
     nj: Id::Njd,
     xti: Id::Xtid,
     ijthfwd: Id::Ijthdfwd,
+    ijthrev: Id::Ijthdrev,
     xjbv: Id::Xjbvd,
     bv: Id::Bvd,
     jts: [Id::Jtsd, Id::Jtsswd, Id::Jtsswgd],
@@ -85,14 +90,15 @@ impl<P: Real> Junctions<P> {
     /// Isat  = A·Js + (P − Weffcj·NF)·Jsw + Weffcj·NF·Jswg      (perMod 1: P includes the gate edge)
     /// ```
     ///
-    /// Where neither area nor perimeter is given there is no junction (only the gate-edge and trap terms of the width).
+    /// Where area and perimeter are both zero there is no junction (only the gate-edge and trap terms of the width).
     ///
     /// Source: BSIM4.8.0 manual, sections 10.1, 11.1 and 13.
     pub fn of(card: &Card, v: &Values<P>, g: &Geometry<P>, temp_k: P, tnom_k: f64) -> Self {
+        let material = Material::of(card);
         let side = |ids: &SideIds, area: P, perimeter: P| {
             let vt = temp_k * MODEL_KB_OVER_Q;
             let vt0 = MODEL_KB_OVER_Q * tnom_k;
-            let (eg0, eg) = (band_gap(tnom_k), band_gap(temp_k));
+            let (eg0, eg) = (material.gap(tnom_k), material.gap(temp_k));
             let ratio = temp_k / tnom_k;
             let nj = v[ids.nj];
             let grow = ((-(eg / vt) + eg0 / vt0 + v[ids.xti] * ratio.ln()) / nj).exp();
@@ -112,7 +118,17 @@ impl<P: Real> Junctions<P> {
             let limited = dio != 0 && isat.val() > 0.0 && ijth > 0.0;
             let forward_limit_v =
                 if limited { nvt.val() * (ijth / isat.val()).ln_1p() } else { f64::INFINITY };
-            let breakdown = (dio != 1).then(|| (v[ids.xjbv] * isat, v[ids.bv]));
+            let breakdown = (dio != 1 && isat.val() > 0.0).then(|| {
+                let (prefactor, bv) = (v[ids.xjbv] * isat, v[ids.bv]);
+                let reverse = card.base(ids.ijthrev);
+                let limited = dio == 2 && reverse > 0.0 && prefactor.val() > 0.0;
+                let beyond = if limited {
+                    nvt.val() * (reverse / prefactor.val()).ln().max(0.0)
+                } else {
+                    f64::INFINITY
+                };
+                (prefactor, bv, bv.val() + beyond)
+            });
             let jtw = v[Id::Jtweff];
             let edge_growth = if jtw.val() > 0.0 { (jtw / v.size.weffcj).sqrt() + 1.0 } else { P::of(1.0) };
             let sizes = [area, outer, gate_edge * edge_growth];
@@ -150,9 +166,13 @@ impl<P: Real> JunctionSide<P> {
                 let top = isat * edge.exp();
                 i = isat * edge.exp_m1() + top * ((v - self.forward_limit_v) / self.nvt_v);
             }
-            if let Some((prefactor, bv)) = self.breakdown {
+            if let Some((prefactor, bv, limit_v)) = self.breakdown {
                 // zero at zero bias: the share that breakdown has there is taken off
-                let at = |x: R| (-(x + bv) / self.nvt_v).exp() * prefactor;
+                let at = |x: R| {
+                    let held = if x.val() < -limit_v { R::of(-limit_v) } else { x };
+                    let e = (-(held + bv) / self.nvt_v).exp() * prefactor;
+                    if x.val() < -limit_v { e - (x + limit_v) / self.nvt_v * e } else { e }
+                };
                 i = i - (at(v) - at(R::of(0.0)));
             }
         }

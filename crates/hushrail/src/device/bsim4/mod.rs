@@ -1,4 +1,4 @@
-//! BSIM4 static currents from the published equations (versions 4.0 to 4.8, silicon gate stack).
+//! BSIM4 static currents from the published equations (versions 4.0 to 4.8).
 //!
 //! The order of the work: [`values`] turns the card into numbers for one geometry, [`prepare`] does what depends on
 //! temperature, and [`Bsim4`] evaluates the bias equations with plain or dual numbers from the same text.
@@ -7,8 +7,12 @@ pub mod channel;
 pub mod gate;
 pub mod gidl;
 pub mod junction;
+pub mod layout;
+pub mod material;
+pub mod mobility;
 pub mod poly;
 pub mod prepare;
+pub mod series;
 pub mod silicon;
 pub mod stress;
 pub mod table;
@@ -31,6 +35,14 @@ pub struct Bsim4 {
 
 /// Branch currents at a bias, whatever the kind of number.
 pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches<R> {
+    match &p.series {
+        None => inner_branches(p, bias),
+        Some(s) => series::through(p, s, bias, |b| inner_branches(p, b)),
+    }
+}
+
+/// Branch currents between the ends of the channel.
+fn inner_branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches<R> {
     let flip = |x: R| if p.polarity == Polarity::P { -x } else { x };
     let (vgs, vds, vbs) = (flip(bias.vgs), flip(bias.vds), flip(bias.vbs));
     let exchanged = vds.val() < 0.0;

@@ -1,10 +1,14 @@
 //! What depends on geometry and temperature only, computed once per device and corner.
 
 use super::junction::{JunctionSide, Junctions};
+use super::material::Material;
+use super::mobility::Mobility;
 use super::poly::effective_gate;
-use super::silicon::{EPS_SI, MODEL_EPS0, MODEL_KB_OVER_Q, MODEL_Q, intrinsic_density, theta};
+use super::series::{EndResistance, Series};
+use super::silicon::{EPS_SI, MODEL_EPS0, MODEL_KB_OVER_Q, MODEL_Q, theta};
 use super::stress::Stress;
 use super::table::Id;
+use super::threshold::Threshold;
 use super::values::{Card, Values};
 use crate::device::dual::Over;
 use crate::device::{Geometry, Polarity};
@@ -63,9 +67,10 @@ pub struct Prepared<P> {
     pub polarity: Polarity,
     pub nf: P,
     pub version: f64,
-    pub mobmod: i64,
     pub gidlmod: i64,
     pub vt: P,
+    /// Thermal voltage in the drain-induced threshold shift of long devices, V.
+    pub vt_dits: P,
     pub phi: P,
     pub sqrt_phi: P,
     pub v0: P,
@@ -127,14 +132,14 @@ pub struct Prepared<P> {
     pub a1: P,
     pub a2: P,
     pub xj: P,
-    pub u0: P,
-    pub ua: P,
-    pub ub: P,
-    pub uc: P,
-    pub ud: P,
-    pub eu: P,
-    pub vtfbphi1: P,
+    pub mobility: Mobility<P>,
     pub vtfbphi2: P,
+    pub centroid: P,
+    pub centroid_power: P,
+    pub eps_sub: f64,
+    pub lambda: P,
+    /// Ballistic velocity at the source, m/s, when the card limits it.
+    pub source_velocity: Option<P>,
     pub vsat: P,
     pub delta: P,
     pub fprout: P,
@@ -149,11 +154,17 @@ pub struct Prepared<P> {
     pub alpha: P,
     pub beta0: P,
     pub vfbzb: P,
+    /// `3·toxe`, or `EOT·EPSRSUB/3.9`, m.
+    pub gidl_reach: P,
+    /// VFBSD where the material is described, else 0, V.
+    pub gidl_vfbsd: P,
     pub gidl: Option<Gidl<P>>,
     pub gisl: Option<Gidl<P>>,
     pub tunnel: Option<Tunnel<P>>,
     pub source: JunctionSide<P>,
     pub drain: JunctionSide<P>,
+    /// Resistance outside the channel, when there is any.
+    pub series: Option<Series<P>>,
 }
 
 impl<P: Over<P>> Prepared<P> {
@@ -171,20 +182,24 @@ impl<P: Over<P>> Prepared<P> {
         let ratio = temp_k / tnom;
         let tr = ratio - 1.0;
         let del_t = temp_k - tnom;
-        let ni = P::of(intrinsic_density(tnom));
+        let material = Material::of(card);
+        let eps_sub = material.permittivity;
+        let described = card.flag(Id::Mtrlmod) == 1;
+        let ni = P::of(material.intrinsic(tnom));
 
         let (toxe, toxp) = (v[Id::Toxe], v[Id::Toxp]);
         let eps_ox = v[Id::Epsrox] * MODEL_EPS0;
         let (coxe, coxp) = (eps_ox / toxe, eps_ox / toxp);
-        let factor1 = (toxe * EPS_SI / eps_ox).sqrt();
+        let factor1 = (toxe * eps_sub / eps_ox).sqrt();
 
         let (ndep, nsd) = (v[Id::Ndep], v[Id::Nsd]);
         let phi = vtm0 * (ndep / ni).ln() + v[Id::Phin] + 0.4;
         let sqrt_phi = phi.sqrt();
-        let xdep0 = (P::of(2.0 * EPS_SI) / (ndep * (MODEL_Q * 1e6))).sqrt() * sqrt_phi;
-        let litl = (v[Id::Xj] * toxe * 3.0).sqrt();
+        let xdep0 = (P::of(2.0 * eps_sub) / (ndep * (MODEL_Q * 1e6))).sqrt() * sqrt_phi;
+        let over_oxide = if described { P::of(eps_sub) / eps_ox } else { P::of(3.0 * 3.9) / v[Id::Epsrox] };
+        let litl = (v[Id::Xj] * toxe * over_oxide).sqrt();
         let vbi = vtm0 * (nsd * ndep / ni.sq()).ln();
-        let cdep0 = (ndep * (MODEL_Q * EPS_SI * 1e6 / 2.0) / phi).sqrt();
+        let cdep0 = (ndep * (MODEL_Q * eps_sub * 1e6 / 2.0) / phi).sqrt();
 
         // body-effect coefficients: given, or from the doping
         let (mut k1, mut k2) = (v[Id::K1], v[Id::K2]);
@@ -192,12 +207,14 @@ impl<P: Over<P>> Prepared<P> {
             && !card.has(Id::K2)
             && (card.has(Id::Gamma1) || card.has(Id::Gamma2) || card.has(Id::Nsub))
         {
-            let gamma = |id: Id, n: P| if card.has(id) { v[id] } else { n.sqrt() * 5.753e-12 / coxe };
+            let gamma = |id: Id, n: P| {
+                if card.has(id) { v[id] } else { n.sqrt() * (5.753e-12 * (eps_sub / EPS_SI).sqrt()) / coxe }
+            };
             let (g1, g2) = (gamma(Id::Gamma1, ndep), gamma(Id::Gamma2, v[Id::Nsub]));
             let vbx = if card.has(Id::Vbx) {
                 -v[Id::Vbx].abs()
             } else {
-                -(phi - ndep * 7.7348e-4 * v[Id::Xt].sq()).abs()
+                -(phi - ndep * (7.7348e-4 * EPS_SI / eps_sub) * v[Id::Xt].sq()).abs()
             };
             let vbm = -v[Id::Vbm].abs();
             let t2 = (phi * (phi - vbm)).sqrt() - phi;
@@ -258,25 +275,32 @@ impl<P: Over<P>> Prepared<P> {
         let vfbzb = vth0 - narrow_short0 - short0 + v[Id::K3] * narrow + t1_const - phi - k1 * sqrt_phi;
 
         let over_t = card.flag(Id::Tempmod) != 0;
-        let linear = |p: Id, p1: Id| if over_t { v[p] * (v[p1] * del_t + 1.0) } else { v[p] + v[p1] * tr };
+        // models 1 and 2 scale with the distance from TNOM, model 3 with a power of the ratio, model 0 adds
+        let linear = |p: Id, p1: Id| match card.flag(Id::Tempmod) {
+            0 => v[p] + v[p1] * tr,
+            3 => v[p] * ratio.pow(v[p1]),
+            _ => v[p] * (v[p1] * del_t + 1.0),
+        };
+        let with_heat =
+            |p: Id| if over_t { v[p] * (v[Id::Prt] * del_t + 1.0) } else { v[p] + v[Id::Prt] * tr };
         let u0 = v[Id::U0]
             * ratio.pow(v[Id::Ute])
             * (v[Id::Ku0we] * wpe + 1.0)
             * stress.mobility
-            * g.mobility_factor;
+            * g.mobility_factor
+            * (-(v[Id::Up] * (-(leff / v[Id::Lp])).exp()) + 1.0);
         let vsat =
             if over_t { v[Id::Vsat] * (-(v[Id::At] * del_t) + 1.0) } else { v[Id::Vsat] - v[Id::At] * tr };
         let per_width = (size.weffcj * 1e6).pow(v[Id::Wr]);
-        let rdsw =
-            if over_t { v[Id::Rdsw] * (v[Id::Prt] * del_t + 1.0) } else { v[Id::Rdsw] + v[Id::Prt] * tr };
-        let rdswmin = if over_t { v[Id::Rdswmin] * (v[Id::Prt] * del_t + 1.0) } else { v[Id::Rdswmin] };
         let floor0 = |x: P| if x.val() < 0.0 { P::of(0.0) } else { x };
 
         let voff = v[Id::Voff] * (v[Id::Tvoff] * del_t + 1.0);
         let vtfb = vth0 - vfb - phi;
         let ngate = v[Id::Ngate];
-        let poly = (ngate.val() > 1e18 && ngate.val() < 1e25)
-            .then(|| (vfb + phi, ngate * (1e6 * MODEL_Q * EPS_SI) / coxe.sq()));
+        // a described gate without permittivity is metal
+        let eps_gate = if described { card.base(Id::Epsrgate) * MODEL_EPS0 } else { EPS_SI };
+        let poly = (eps_gate > 0.0 && ngate.val() > 1e18 && ngate.val() < 1e25)
+            .then(|| (vfb + phi, ngate * (1e6 * MODEL_Q * eps_gate) / coxe.sq()));
 
         let gidl_of = |ids: [Id; 7]| {
             let [a, b, c, e, r, k, f] = ids.map(|id| v[id]);
@@ -285,6 +309,19 @@ impl<P: Over<P>> Prepared<P> {
         };
         let gidl = gidl_of([Id::Agidl, Id::Bgidl, Id::Cgidl, Id::Egidl, Id::Rgidl, Id::Kgidl, Id::Fgidl]);
         let gisl = gidl_of([Id::Agisl, Id::Bgisl, Id::Cgisl, Id::Egisl, Id::Rgisl, Id::Kgisl, Id::Fgisl]);
+
+        let gap0 = material.gap(tnom);
+        let vfbsd = if described {
+            let band = vtm0 * (nsd / ni).ln();
+            let edge = if band.val() < 0.5 * gap0 { band } else { P::of(0.5 * gap0) };
+            (-(-(edge * sign) + (card.base(Id::Easub) + 0.5 * gap0)) + card.base(Id::Phig)) * sign
+        } else if ngate.val() > 0.0 {
+            vtm0 * (ngate / nsd).ln()
+        } else {
+            P::of(0.0)
+        };
+        let vfbsd_gidl = if described { vfbsd } else { P::of(0.0) };
+        let vfbsd = vfbsd + v[Id::Vfbsdoff] * (v[Id::Tvfbsdoff] * del_t + 1.0);
 
         let igc = card.flag(Id::Igcmod);
         let igb = card.flag(Id::Igbmod) == 1;
@@ -295,8 +332,6 @@ impl<P: Over<P>> Prepared<P> {
             let thick = |t: P| (v[Id::Toxref] / t).pow(ntox) / t.sq();
             let edge_t = toxe * v[Id::Poxedge];
             let (area, edge) = (weff * leff * thick(toxe), weff * thick(edge_t));
-            let vfbsd = if ngate.val() > 0.0 { vtm0 * (ngate / nsd).ln() } else { P::of(0.0) };
-            let vfbsdoff = v[Id::Vfbsdoff] * (v[Id::Tvfbsdoff] * del_t + 1.0);
             Tunnel {
                 igc,
                 igb,
@@ -309,7 +344,7 @@ impl<P: Over<P>> Prepared<P> {
                 b_bulk_acc: toxe * -7.45669e11,
                 a_bulk_inv: area * 3.75956e-7,
                 b_bulk_inv: toxe * -9.82222e11,
-                vfbsd: vfbsd + vfbsdoff,
+                vfbsd,
                 aigc: v[Id::Aigc],
                 bigc: v[Id::Bigc],
                 cigc: v[Id::Cigc],
@@ -329,13 +364,33 @@ impl<P: Over<P>> Prepared<P> {
 
         let junctions = Junctions::of(card, v, g, temp_k, tnom);
         let vtfbphi = |f: f64| floor0(vtfb * f);
-        Self {
+        let outside = card.flag(Id::Rdsmod) == 1;
+        let end = |overlap: Id, least: Id, squares: P| {
+            let part =
+                |id: Id| if outside { floor0(with_heat(id)) / per_width / g.fingers } else { P::of(0.0) };
+            EndResistance {
+                overlap_ohm: part(overlap),
+                least_ohm: part(least),
+                diffusion_ohm: squares * v[Id::Rsh],
+            }
+        };
+        let series = Series {
+            source: end(Id::Rsw, Id::Rswmin, g.source_squares),
+            drain: end(Id::Rdw, Id::Rdwmin, g.drain_squares),
+            prwg: v[Id::Prwg],
+            prwb: v[Id::Prwb],
+            vfbsd,
+        };
+        let resists = |e: &EndResistance<P>| (e.overlap_ohm + e.least_ohm + e.diffusion_ohm).val() > 0.0;
+        let series = (resists(&series.source) || resists(&series.drain)).then_some(series);
+
+        let mut made = Self {
             polarity: card.polarity,
             nf: g.fingers,
             version: card.base(Id::Version),
-            mobmod: card.flag(Id::Mobmod),
             gidlmod: card.flag(Id::Gidlmod),
             vt,
+            vt_dits: if card.flag(Id::Tempmod) >= 2 { vtm0 } else { vt },
             phi,
             sqrt_phi,
             v0,
@@ -370,7 +425,7 @@ impl<P: Over<P>> Prepared<P> {
             etab: v[Id::Etab],
             theta0vb0: theta(v[Id::Dsub] * leff / lt0),
             theta_rout: v[Id::Pdiblc1] * theta(v[Id::Drout] * leff / lt0) + v[Id::Pdiblc2],
-            nfactor_eps: nfactor * EPS_SI,
+            nfactor_eps: nfactor * eps_sub,
             cdsc: v[Id::Cdsc],
             cdscb: v[Id::Cdscb],
             cdscd: v[Id::Cdscd],
@@ -386,8 +441,8 @@ impl<P: Over<P>> Prepared<P> {
             poly,
             dwg: v[Id::Dwg],
             dwb: v[Id::Dwb],
-            rds0: floor0(rdsw) / per_width,
-            rdswmin: floor0(rdswmin) / per_width,
+            rds0: if outside { P::of(0.0) } else { floor0(with_heat(Id::Rdsw)) / per_width },
+            rdswmin: if outside { P::of(0.0) } else { floor0(with_heat(Id::Rdswmin)) / per_width },
             prwg: v[Id::Prwg],
             prwb: v[Id::Prwb],
             a0: v[Id::A0],
@@ -398,14 +453,33 @@ impl<P: Over<P>> Prepared<P> {
             a1: v[Id::A1],
             a2: v[Id::A2],
             xj: v[Id::Xj],
-            u0,
-            ua: linear(Id::Ua, Id::Ua1),
-            ub: linear(Id::Ub, Id::Ub1),
-            uc: linear(Id::Uc, Id::Uc1),
-            ud: linear(Id::Ud, Id::Ud1),
-            eu: v[Id::Eu],
-            vtfbphi1: vtfbphi(if card.polarity == Polarity::N { 2.0 } else { 2.5 }),
+            mobility: Mobility {
+                model: card.flag(Id::Mobmod),
+                u0,
+                ua: linear(Id::Ua, Id::Ua1),
+                ub: linear(Id::Ub, Id::Ub1),
+                uc: linear(Id::Uc, Id::Uc1),
+                ud: linear(Id::Ud, Id::Ud1),
+                eu: v[Id::Eu],
+                ucs: linear(Id::Ucs, Id::Ucste),
+                vtfbphi1: vtfbphi(if card.polarity == Polarity::N { 2.0 } else { 2.5 }),
+                gate_shift: if described {
+                    P::of(2.0 * sign * (card.base(Id::Phig) - card.base(Id::Easub) - 0.5 * gap0 + 0.45))
+                } else {
+                    P::of(0.0)
+                },
+                vgsteff_vth: P::of(1.0),
+            },
             vtfbphi2: vtfbphi(4.0),
+            centroid: v[Id::Ados] * 1.9e-9,
+            centroid_power: v[Id::Bdos] * 0.7,
+            eps_sub,
+            lambda: if card.has(Id::Lambda) { v[Id::Lambda] } else { P::of(0.0) },
+            source_velocity: (card.has(Id::Vtl) && v[Id::Vtl].val() > 0.0).then(|| {
+                // back-scattering r = L/(XN·L + LC); the limit is VTL·(1 − r)/(1 + r)
+                let r = leff / (v[Id::Xn] * leff + v[Id::Lc]);
+                v[Id::Vtl] * (-r + 1.0) / (r + 1.0)
+            }),
             vsat: vsat * stress.velocity,
             delta: v[Id::Delta],
             fprout: v[Id::Fprout],
@@ -420,11 +494,41 @@ impl<P: Over<P>> Prepared<P> {
             alpha: v[Id::Alpha0] + v[Id::Alpha1] * leff,
             beta0: v[Id::Beta0],
             vfbzb,
+            gidl_reach: if described { toxe * (card.base(Id::Epsrsub) / 3.9) } else { toxe * 3.0 },
+            gidl_vfbsd: vfbsd_gidl,
             gidl,
             gisl,
             tunnel,
             source: junctions.source,
             drain: junctions.drain,
+            series,
+        };
+        if made.mobility.model == 3 {
+            let th = Threshold::at(&made, P::of(0.0), P::of(0.0), P::of(0.0));
+            let nvt = th.n * vt;
+            let below = th.n * made.coxe_over_cdep0 * (made.voffcbn / nvt).exp();
+            made.mobility.vgsteff_vth = nvt * std::f64::consts::LN_2 / (below + made.mstar);
         }
+        if described && !card.has(Id::Toxp) {
+            made.set_physical_oxide(P::of(card.base(Id::Vddeot)) * sign, eps_ox, eps_sub);
+        }
+        made
+    }
+
+    /// Physical oxide under an equivalent one: `TOXP = EOT − (3.9/EPSRSUB)·Xdc` at the voltage where EOT was measured, by
+    /// fixed-point iteration, on the size and at the temperature of the device itself.
+    ///
+    /// Source: BSIM4.8.0 manual, section 1.2 (from memory of it).
+    fn set_physical_oxide(&mut self, at_v: P, eps_ox: P, eps_sub: f64) {
+        let zero = P::of(0.0);
+        let vgsteff = Threshold::at(self, at_v, zero, zero).vgsteff;
+        for _ in 0..50 {
+            let field = (vgsteff + self.vtfbphi2) / (self.toxp * 2e8);
+            let depth = self.centroid / ((field.ln() * self.centroid_power).exp() + 1.0);
+            let next = self.toxe - depth * (eps_ox / eps_sub);
+            let next = if next.val() > 0.1 * self.toxe.val() { next } else { self.toxe * 0.1 };
+            self.toxp = next;
+        }
+        self.coxp = eps_ox / self.toxp;
     }
 }

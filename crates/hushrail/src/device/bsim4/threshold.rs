@@ -84,7 +84,7 @@ impl<R: Real> Threshold<R> {
 
         if p.dvtp0.val() > 0.0 {
             let reach = ((-(vds * p.dvtp1)).exp() + 1.0) * p.dvtp0 + p.leff;
-            vth = vth - n * p.vt * (R::lift(p.leff) / reach).ln();
+            vth = vth - n * p.vt_dits * (R::lift(p.leff) / reach).ln();
         }
         if p.dvtp4.val() != 0.0 && p.dvtp2.val() != 0.0 {
             vth = vth - (vds * p.dvtp4).tanh() * p.dvtp2;

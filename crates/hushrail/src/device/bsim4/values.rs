@@ -2,7 +2,9 @@
 
 use std::ops::Index;
 
-use super::table::{COUNT, Fallback, IDS, Id, Kind, Meaning, Part, ROWS, known_names, meaning};
+use super::table::{
+    COUNT, Fallback, IDS, Id, Kind, Meaning, Part, RANGES, ROWS, Range, known_names, meaning,
+};
 use crate::device::dual::Real;
 use crate::device::{Geometry, Polarity};
 use crate::read::deck::{Deck, DeckScope, ModelText, Note};
@@ -124,6 +126,14 @@ impl Card {
                 }
             };
         }
+        if self.base[Id::Mtrlmod as usize] == 1.0 {
+            // the gate stack is stated by its equivalent oxide
+            self.base[Id::Toxe as usize] = self.base[Id::Eot as usize];
+            self.base[Id::Epsrox as usize] = 3.9;
+            if !self.given[Id::Toxm as usize] {
+                self.base[Id::Toxm as usize] = self.base[Id::Toxe as usize];
+            }
+        }
         let mob = self.base[Id::Mobmod as usize];
         let (toxe, dtox) = (self.base[Id::Toxe as usize], self.base[Id::Dtox as usize]);
         let mut derive = |id: Id, v: f64| {
@@ -151,18 +161,20 @@ impl Card {
             let name = ROWS[id as usize].name;
             model.get(name).map_or(model.loc, |d| d.loc).place(&deck.files)
         };
-        let allowed: [(Id, &[f64], &str); 13] = [
+        let allowed: [(Id, &[f64], &str); 15] = [
             (Id::Level, &[14.0, 54.0], "only BSIM4 (level 54 or 14) is supported"),
             (Id::Binunit, &[1.0, 2.0], "want 1 (micrometres) or 2 (metres)"),
-            (Id::Mobmod, &[0.0, 1.0, 2.0], "mobility models 0, 1 and 2 are computed"),
-            (Id::Rdsmod, &[0.0], "only the internal resistance, rdsmod = 0, is computed"),
+            (Id::Mobmod, &[0.0, 1.0, 2.0, 3.0, 4.0, 5.0, 6.0], "want 0 to 6"),
+            (Id::Rdsmod, &[0.0, 1.0], "want 0 (inside the channel equation) or 1 (in series)"),
             (Id::Igcmod, &[0.0, 1.0, 2.0], "want 0, 1 or 2"),
             (Id::Igbmod, &[0.0, 1.0], "want 0 or 1"),
             (Id::Diomod, &[0.0, 1.0, 2.0], "want 0, 1 or 2"),
             (Id::Permod, &[0.0, 1.0], "want 0 or 1"),
-            (Id::Tempmod, &[0.0, 1.0], "temperature models 0 and 1 are computed"),
+            (Id::Tempmod, &[0.0, 1.0, 2.0, 3.0], "want 0 to 3"),
             (Id::Gidlmod, &[0.0, 1.0], "want 0 or 1"),
-            (Id::Mtrlmod, &[0.0], "only the silicon/oxide model, mtrlmod = 0, is computed"),
+            (Id::Mtrlmod, &[0.0, 1.0], "want 0 (silicon and oxide) or 1 (described)"),
+            (Id::Mtrlcompatmod, &[0.0], "only 0 is computed"),
+            (Id::Geomod, &[0.0, 1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 9.0, 10.0], "want 0 to 10"),
             (Id::Wpemod, &[0.0, 1.0], "want 0 or 1"),
             (Id::Rgeomod, &[0.0, 1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0], "want 0 to 8"),
         ];
@@ -191,17 +203,12 @@ impl Card {
             let value = version.to_string();
             return Err(ReadError::Range { at: place(Id::Version), name: "version".into(), value, wanted });
         }
-        for (id, what) in [
-            (Id::Toxe, "an oxide thickness above zero"),
-            (Id::Toxp, "an oxide thickness above zero"),
-            (Id::Toxm, "an oxide thickness above zero"),
-            (Id::Toxref, "an oxide thickness above zero"),
-            (Id::Epsrox, "a permittivity above zero"),
-        ] {
-            if self.base(id) <= 0.0 {
-                let name = ROWS[id as usize].name.to_owned();
-                let value = self.base(id).to_string();
-                return Err(ReadError::Range { at: place(id), name, value, wanted: format!("want {what}") });
+        // a value without bins is refused where it stands; see `Values::out_of_range` for the others
+        for &(id, range, used_by) in RANGES {
+            let used = used_by.is_empty() || used_by.iter().any(|&flag| self.base(flag) != 0.0);
+            if used && !range.allows(self.base(id)) && self.terms.iter().all(|t| t.0 != id) {
+                let (name, value) = (ROWS[id as usize].name.to_owned(), self.base(id).to_string());
+                return Err(ReadError::Range { at: place(id), name, value, wanted: format!("want {range}") });
             }
         }
         Ok(())
@@ -296,6 +303,14 @@ impl<P: Real> Values<P> {
                 };
         }
         Ok(Self { v, size })
+    }
+
+    /// The first value outside its range, with the range.
+    pub fn out_of_range(&self) -> Option<(Id, f64, Range)> {
+        let holds =
+            |used_by: &[Id]| used_by.is_empty() || used_by.iter().any(|&flag| self[flag].val() != 0.0);
+        let mut all = RANGES.iter().filter(|(.., used_by)| holds(used_by));
+        all.find_map(|&(id, range, _)| (!range.allows(self[id].val())).then(|| (id, self[id].val(), range)))
     }
 
     /// Replaces one value.
