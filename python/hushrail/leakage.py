@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any, Literal
 
 from hushrail import records
 from hushrail.errors import RangeError, SolveError
-from hushrail.results import MECHANISMS, ByMechanism, Failure, Note
+from hushrail.results import MECHANISMS, ByMechanism, Failure, Note, remarks
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -90,7 +90,9 @@ class LeakageTable:
         """Make a data frame of :meth:`flat`, with its columns and units."""
         import pandas as pd
 
-        return pd.DataFrame(list(self.flat(of)))
+        frame = pd.DataFrame(list(self.flat(of)))
+        frame.attrs["remarks"] = remarks(self.notes)
+        return frame
 
     def to_xarray(self, *, fill: float | None = None) -> xr.Dataset:
         """Make a labelled array set over row (a state of a cell) and corner.
@@ -135,6 +137,7 @@ class LeakageTable:
                 "corner": list(corners),
                 "mechanism": list(MECHANISMS),
             },
+            attrs={"remarks": remarks(self.notes)},
         )
 
 
@@ -204,6 +207,7 @@ class Compared:
 
     rows: tuple[ComparedRow, ...]
     unmatched: tuple[Unmatched, ...]
+    notes: tuple[Note, ...]
 
 
 @dataclass(frozen=True)
@@ -254,7 +258,9 @@ class Comparison:
         """Make a data frame of :meth:`flat`."""
         import pandas as pd
 
-        return pd.DataFrame(list(self.flat()))
+        frame = pd.DataFrame(list(self.flat()))
+        frame.attrs["remarks"] = remarks(self.compared.notes)
+        return frame
 
 
 @dataclass(frozen=True)

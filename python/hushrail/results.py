@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Any, Literal, NamedTuple
@@ -58,6 +58,11 @@ class Note:
 
     code: str
     text: str
+
+
+def remarks(notes: Sequence[Note]) -> list[str]:
+    """Notes as ``code: text``, each once, for the attributes of a data frame or data set."""
+    return list(dict.fromkeys(f"{note.code}: {note.text}" for note in notes))
 
 
 @dataclass(frozen=True)
@@ -318,7 +323,8 @@ class Estimate:
         Yields
         ------
         dict
-            Column name to value: V, A, W, V/m, °C, as the name says.
+            Column name to value: V, A, W, V/m, °C, as the name says; ``remarks`` holds the codes of the notes
+            that bear on the point.
         """
         corners = {c.name: c for c in self.corners}
         for p in self.points:
@@ -343,6 +349,7 @@ class Estimate:
                     "unstable_states": r.block.unstable,
                     "limits_hold": p.holds,
                     "residual": r.residual,
+                    "remarks": " ".join(dict.fromkeys(n.code for n in r.notes)),
                 }
             elif of == "supplies":
                 for s in p.asleep.supplies:
@@ -361,7 +368,9 @@ class Estimate:
         """Make a data frame of :meth:`rows`, with their columns and units."""
         import pandas as pd
 
-        return pd.DataFrame(list(self.rows(of)))
+        frame = pd.DataFrame(list(self.rows(of)))
+        frame.attrs["remarks"] = remarks(self.notes)
+        return frame
 
     def to_xarray(self, *, fill: float | None = None) -> xr.Dataset:
         """Make a labelled array set over domain, scheme and corner.
@@ -430,5 +439,5 @@ class Estimate:
                 "vdd_v": ("corner", [c.vdd_v for c in self.corners]),
                 "temp_c": ("corner", [c.temp_c for c in self.corners]),
             },
-            attrs={"title": self.title},
+            attrs={"title": self.title, "remarks": remarks(self.notes)},
         )

@@ -111,7 +111,10 @@ fn one(
     let levels = Levels::powered(corner.vdd_v);
     let mut rows = Vec::new();
     for s in bound.states().map_err(|e| e.to_string())? {
-        let c = bound.solve(&s, &levels, options, w).map_err(|e| e.to_string())?;
+        let c = bound.answer(&s, &levels, options, w).map_err(|e| e.to_string())?;
+        if let Some(o) = &c.outside {
+            o.note().add_once(&mut shelf.notes);
+        }
         let mechanisms = c.power_w.map(|p| p / corner.vdd_v);
         let mut ports = IndexMap::new();
         for (i, role) in cell.roles.iter().enumerate() {

@@ -75,7 +75,7 @@ pub fn compare_study(
     };
     let mut cells = IndexMap::new();
     let mut cells_lost = IndexMap::new();
-    let mut notes = Vec::new();
+    let mut notes = library.notes.clone();
     library.with_reader(|reader| {
         for r in &rows {
             if cells.contains_key(&r.cell) || cells_lost.contains_key(&r.cell) {
@@ -97,7 +97,11 @@ pub fn compare_study(
         floor_s: request.floor_s,
         options: options.clone(),
     };
-    let compared = watched(rows.len(), progress, |w| comparison.run(&rows, &corners, &w.done, &w.stop))?;
+    let mut compared = watched(rows.len(), progress, |w| comparison.run(&rows, &corners, &w.done, &w.stop))?;
+    for n in std::mem::take(&mut compared.notes) {
+        n.add_once(&mut notes);
+    }
+    compared.notes = notes;
     let suspects = find_suspects(&rows, &corners, Some(&compared), &request.rules);
     Ok(ComparisonReport { statistics: compared.statistics(), compared, suspects, cells_lost })
 }

@@ -10,6 +10,7 @@ use crate::cell::when::product_term;
 use crate::cell::{BoundCell, CellError, DeviceShelf, Levels, Role, State};
 use crate::circuit::newton::{Effort, SolveOptions, Workspace};
 use crate::device::process::Process;
+use crate::device::range::Outside;
 use crate::physics::Kelvin;
 use crate::read::deck::Note;
 use crate::read::source::ReadError;
@@ -92,6 +93,8 @@ pub struct BlockCurrents {
     pub steps: usize,
     /// Times a fallback of the solver was needed.
     pub fallbacks: usize,
+    /// The transistor furthest outside what its model rests on.
+    pub outside: Option<Outside>,
 }
 
 /// Sum over mechanisms.
@@ -113,6 +116,7 @@ impl BlockCurrents {
             unstable: 0,
             steps: 0,
             fallbacks: 0,
+            outside: None,
         }
     }
 }
@@ -184,6 +188,7 @@ impl BoundBlock {
             sum.unstable += p.unstable;
             sum.steps += p.steps;
             sum.fallbacks += p.fallbacks;
+            sum.outside = Outside::worse(sum.outside.take(), p.outside);
         }
         if self.given_a != 0.0 {
             let i = self.given_a * (levels.supply_v - levels.ground_v) / self.vdd_v;
@@ -288,6 +293,7 @@ impl Member {
             add(&mut sum.power_w, &c.power_w, x);
             sum.states += 1;
             sum.unstable += usize::from(!c.stable);
+            sum.outside = Outside::worse(sum.outside.take(), c.outside);
             let Effort { steps, transient, bisection, joint } = c.effort;
             sum.steps += steps;
             sum.fallbacks += transient + bisection + joint;

@@ -7,11 +7,12 @@ use serde::{Deserialize, Serialize};
 
 use super::cell::{Cell, Part, Role};
 use super::logic::{Logic, Switches};
-use crate::circuit::network::{Element, Network, Placed, Volt};
+use crate::circuit::network::{Element, Network, Placed, Volt, bias_of};
 use crate::circuit::newton::{Effort, SolveOptions, Solver, Workspace};
 use crate::circuit::plan::Plan;
 use crate::device::diode::Diode;
 use crate::device::process::{Process, Request, Transistor};
+use crate::device::range::Outside;
 use crate::physics::Kelvin;
 use crate::read::deck::Note;
 use crate::read::source::ReadError;
@@ -58,6 +59,19 @@ pub enum CellError {
         count: usize,
         /// How many can be handled.
         limit: usize,
+    },
+    /// The answer would rest on numbers that the user has not asked for.
+    #[error(
+        "cell `{cell}` in state {state}: a transistor leaves the points of its table: {reason}; add points, or set `extrapolate = true` \
+         and read the result as a guess"
+    )]
+    Outside {
+        /// The cell.
+        cell: String,
+        /// Its state.
+        state: String,
+        /// Which voltage, and the range.
+        reason: String,
     },
 }
 
@@ -112,6 +126,8 @@ pub struct StateCurrents {
     pub effort: Effort,
     /// Whether the point is one the cell stays in, with every gate at the value the state names.
     pub stable: bool,
+    /// The transistor furthest outside what its model rests on.
+    pub outside: Option<Outside>,
 }
 
 /// A device made once for each model, geometry and temperature.
@@ -312,6 +328,29 @@ impl BoundCell {
         Ok(self.currents_at(&v, levels, effort, stable))
     }
 
+    /// Solves one state whose currents are an answer and not a step to one: numbers outside the points of a table are refused
+    /// unless its device says otherwise.
+    ///
+    /// # Errors
+    /// As for [`BoundCell::solve`], or [`CellError::Outside`].
+    pub fn answer(
+        &self,
+        state: &State,
+        levels: &Levels,
+        options: &SolveOptions,
+        w: &mut Workspace,
+    ) -> Result<StateCurrents, CellError> {
+        let c = self.solve(state, levels, options, w)?;
+        match &c.outside {
+            Some(o) if o.refused => Err(CellError::Outside {
+                cell: self.cell.name.to_string(),
+                state: state.label.clone(),
+                reason: o.to_string(),
+            }),
+            _ => Ok(c),
+        }
+    }
+
     /// Node voltages of one state, the work they took, and whether the cell stays there.
     pub(crate) fn operating_point(
         &self,
@@ -389,7 +428,11 @@ impl BoundCell {
         let cell = &self.cell;
         let (lo, hi) = (levels.ground_v, levels.supply_v);
         let mut at_node = vec![[0.0; 5]; v.len()];
+        let mut outside = None;
         for e in &self.net.elements {
+            if let Element::Transistor(p) = e {
+                outside = Outside::worse(outside, p.device.outside(bias_of(&p.nodes, v)));
+            }
             let split = self.net.by_mechanism(e, v);
             for (m, row) in split.iter().enumerate() {
                 for (t, &n) in e.nodes().iter().enumerate() {
@@ -425,6 +468,7 @@ impl BoundCell {
             port_bits: cell.port_nodes.iter().map(|&n| v[n].get() > middle).collect(),
             node_v: v.iter().map(|x| x.get()).collect(),
             effort,
+            outside,
             stable,
         }
     }

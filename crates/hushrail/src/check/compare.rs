@@ -12,6 +12,7 @@ use crate::cell::{BoundCell, Cell, CellError, DeviceShelf, Levels, State, supply
 use crate::circuit::newton::{SolveOptions, Workspace};
 use crate::device::process::Process;
 use crate::physics::Kelvin;
+use crate::read::deck::Note;
 use crate::read::source::{Place, ReadError, Source, nearest};
 
 /// One row of a published table.
@@ -191,6 +192,8 @@ pub struct Compared {
     pub rows: Vec<ComparedRow>,
     /// Rows without.
     pub unmatched: Vec<Unmatched>,
+    /// Remarks on the cards and on what the predictions rest on, each once.
+    pub notes: Vec<Note>,
 }
 
 /// Statistics of the rows of one corner.
@@ -270,6 +273,9 @@ impl Compared {
     }
 }
 
+/// Of one cell at one corner: rows, rows without prediction, remarks.
+type Part = (Vec<ComparedRow>, Vec<Unmatched>, Vec<Note>);
+
 impl Comparison<'_> {
     /// Predicts every row, cells and corners in parallel; the result does not depend on the number of threads. `done` counts
     /// rows, `stop` ends the work early.
@@ -309,7 +315,7 @@ impl Comparison<'_> {
             }
         }
         let list: Vec<_> = tasks.into_iter().collect();
-        let done: Vec<(Vec<ComparedRow>, Vec<Unmatched>)> = list
+        let done: Vec<Part> = list
             .par_iter()
             .map_init(Workspace::default, |w, ((corner, cell), rows)| {
                 if stop.load(Ordering::Relaxed) {
@@ -321,20 +327,17 @@ impl Comparison<'_> {
             })
             .collect();
         let mut out = Compared::default();
-        for (rows, bad) in done {
+        for (rows, bad, notes) in done {
             out.rows.extend(rows);
             out.unmatched.extend(bad);
+            for n in notes {
+                n.add_once(&mut out.notes);
+            }
         }
         Ok(out)
     }
 
-    fn cell(
-        &self,
-        name: &str,
-        corner: &PublishedCorner,
-        rows: &[&PublishedRow],
-        w: &mut Workspace,
-    ) -> (Vec<ComparedRow>, Vec<Unmatched>) {
+    fn cell(&self, name: &str, corner: &PublishedCorner, rows: &[&PublishedRow], w: &mut Workspace) -> Part {
         let fail = |reason: String| {
             let bad = rows.iter().map(|r| Unmatched {
                 cell: r.cell.clone(),
@@ -342,7 +345,7 @@ impl Comparison<'_> {
                 when: r.when.clone(),
                 reason: reason.clone(),
             });
-            (Vec::new(), bad.collect())
+            (Vec::new(), bad.collect(), Vec::new())
         };
         let Some(cell) = self.cells.get(name) else { return fail("no netlist for this cell".into()) };
         let Some(process) = self.processes.get(&corner.process) else { return fail("no cards".into()) };
@@ -356,7 +359,7 @@ impl Comparison<'_> {
             Err(e) => return fail(e.to_string()),
         };
         let levels = Levels::powered(corner.vdd_v);
-        let solved = match self.solve_all(&bound, &levels, w) {
+        let solved = match self.solve_all(&bound, &levels, w, &mut shelf.notes) {
             Ok(s) => s,
             Err(e) => return fail(e.to_string()),
         };
@@ -402,7 +405,7 @@ impl Comparison<'_> {
                 });
             }
         }
-        (good, bad)
+        (good, bad, shelf.notes)
     }
 
     fn solve_all(
@@ -410,10 +413,14 @@ impl Comparison<'_> {
         bound: &BoundCell,
         levels: &Levels,
         w: &mut Workspace,
+        notes: &mut Vec<Note>,
     ) -> Result<Vec<(State, Vec<bool>, f64)>, CellError> {
         let mut out: Vec<(State, Vec<bool>, f64)> = Vec::new();
         for s in bound.states()? {
-            let c = bound.solve(&s, levels, &self.options, w)?;
+            let c = bound.answer(&s, levels, &self.options, w)?;
+            if let Some(o) = &c.outside {
+                o.note().add_once(notes);
+            }
             if !c.stable {
                 continue;
             }

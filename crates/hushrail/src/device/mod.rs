@@ -5,6 +5,7 @@ pub mod compact;
 pub mod diode;
 pub mod dual;
 pub mod process;
+pub mod range;
 pub mod sensitivity;
 pub mod spec;
 pub mod table;
@@ -12,6 +13,7 @@ pub mod table;
 use serde::{Deserialize, Serialize};
 
 use dual::{Dual, Real};
+use range::Outside;
 
 /// Channel type.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, Serialize, Deserialize)]
@@ -243,6 +245,10 @@ pub trait Device: Send + Sync + std::fmt::Debug {
     fn oxide_m(&self) -> f64;
     /// Thermal voltage the device works at, V.
     fn thermal_voltage(&self) -> f64;
+    /// What a bias asks of the device beyond what its model rests on; `None` for a model without stated range.
+    fn outside(&self, _bias: Bias<f64>) -> Option<Outside> {
+        None
+    }
 }
 
 /// Drawn geometry of one transistor, SI units; `m` devices in parallel are counted outside.

@@ -6,6 +6,7 @@ use indexmap::IndexMap;
 use rustc_hash::FxHashMap;
 
 use super::bsim4::layout::{self, Stated};
+use super::bsim4::limits::Limits;
 use super::bsim4::material::Material;
 use super::bsim4::prepare::Prepared;
 use super::bsim4::table::{Id, ROWS};
@@ -328,7 +329,7 @@ impl Process {
                 wanted: "all must be above zero; the card does not hold at this temperature".into(),
             });
         }
-        let device = Bsim4 { prepared };
+        let device = Bsim4 { prepared, limits: Limits::of(&card) };
         let sign = device.polarity().sign();
         for (vgs, vds, vbs) in [(1.0, 1.0, 0.0), (-0.5, 1.0, -0.5), (0.0, 0.5, 0.2)] {
             let bias = Bias { vgs: sign * vgs, vds: sign * vds, vbs: sign * vbs };

@@ -16,6 +16,7 @@ use super::switch::{Side, Switch};
 use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, total};
 use crate::cell::{DeviceShelf, Levels};
 use crate::device::process::Process;
+use crate::device::range::Outside;
 use crate::device::{Mechanism, Terminal};
 use crate::physics::Kelvin;
 use crate::read::deck::Note;
@@ -34,6 +35,17 @@ pub enum RestError {
     /// The block.
     #[error(transparent)]
     Block(#[from] BlockError),
+    /// The answer would rest on numbers that the user has not asked for.
+    #[error(
+        "scheme `{scheme}`: a transistor leaves the points of its table: {reason}; add points, or set `extrapolate = true` and read the \
+         result as a guess"
+    )]
+    Outside {
+        /// The scheme.
+        scheme: String,
+        /// Which voltage, and the range.
+        reason: String,
+    },
     /// The balance did not close.
     #[error(
         "scheme `{scheme}`: the virtual rails do not settle: imbalance {residual:.2e} of the current at {at_v:.4} V"
@@ -213,6 +225,16 @@ pub fn settle(
         residual = residual.max((d.footer_takes(ground) - into_ground).abs() / into_ground.abs().max(1e-40));
     }
     let mut asleep = account(&d, currents, supply, ground, residual);
+    let mut outside = asleep.block.outside.clone();
+    for (switch, rail) in [(&d.header, supply), (&d.footer, ground)] {
+        outside = Outside::worse(outside, switch.as_ref().and_then(|s| s.outside(rail)));
+    }
+    if let Some(o) = outside {
+        if o.refused {
+            return Err(RestError::Outside { scheme: scheme.name.clone(), reason: o.to_string() });
+        }
+        asleep.notes.push(o.note());
+    }
     if residual > 1e-6 {
         if residual > 2.0 || !falls_in_a_jump(&mut d, supply, ground)? {
             return Err(RestError::NoRest { scheme: scheme.name.clone(), residual, at_v: supply - ground });

@@ -5,6 +5,7 @@ use std::sync::Arc;
 use super::scheme::SwitchSpec;
 use crate::cell::DeviceShelf;
 use crate::device::process::{Process, Request};
+use crate::device::range::Outside;
 use crate::device::{Bias, Branches, Device, Polarity};
 use crate::physics::Kelvin;
 use crate::read::source::{Place, ReadError};
@@ -76,8 +77,16 @@ impl Switch {
 
     /// Branch currents of the whole switch with its virtual rail at `v`; the source is on the real rail.
     pub fn branches(&self, v: f64) -> Branches<f64> {
-        let bias = Bias::from_terminals(v, self.gate_v, self.rail_v, self.body_v);
-        self.device.branches(bias).map(|i| i * self.fingers)
+        self.device.branches(self.bias(v)).map(|i| i * self.fingers)
+    }
+
+    fn bias(&self, v: f64) -> Bias<f64> {
+        Bias::from_terminals(v, self.gate_v, self.rail_v, self.body_v)
+    }
+
+    /// What its bias asks beyond what its model rests on, with the virtual rail at `v`.
+    pub fn outside(&self, v: f64) -> Option<Outside> {
+        self.device.outside(self.bias(v))
     }
 
     /// Largest gate-to-drain or gate-to-source voltage with the virtual rail at `v`, V.

@@ -8,6 +8,7 @@ pub mod gate;
 pub mod gidl;
 pub mod junction;
 pub mod layout;
+pub mod limits;
 pub mod material;
 pub mod mobility;
 pub mod poly;
@@ -20,9 +21,11 @@ pub mod threshold;
 pub mod values;
 
 use super::dual::{Dual, Over, Real};
+use super::range::Outside;
 use super::{Bias, Branches, Device, Polarity};
 use channel::Channel;
 use gate::GateCurrents;
+use limits::Limits;
 use prepare::Prepared;
 use threshold::Threshold;
 
@@ -31,6 +34,8 @@ use threshold::Threshold;
 pub struct Bsim4 {
     /// All constants of the instance.
     pub prepared: Prepared<f64>,
+    /// Largest voltages its card states.
+    pub limits: Limits,
 }
 
 /// Branch currents at a bias, whatever the kind of number.
@@ -95,5 +100,8 @@ impl Device for Bsim4 {
     }
     fn thermal_voltage(&self) -> f64 {
         self.prepared.vt
+    }
+    fn outside(&self, bias: Bias<f64>) -> Option<Outside> {
+        self.limits.outside(self.prepared.polarity, bias)
     }
 }

@@ -274,6 +274,19 @@ parameters! {
         Wmin "wmin" Plain Value(0.0), "m";
         Wmax "wmax" Plain Value(1.0), "m";
     }
+    "A.9, limits of use" {
+        VgsMax "vgs_max" Plain Value(0.0), "V";
+        VgsrMax "vgsr_max" Plain Same(Id::VgsMax), "V";
+        VgdMax "vgd_max" Plain Value(0.0), "V";
+        VgdrMax "vgdr_max" Plain Same(Id::VgdMax), "V";
+        VgbMax "vgb_max" Plain Value(0.0), "V";
+        VgbrMax "vgbr_max" Plain Same(Id::VgbMax), "V";
+        VdsMax "vds_max" Plain Value(0.0), "V";
+        VbsMax "vbs_max" Plain Value(0.0), "V";
+        VbsrMax "vbsr_max" Plain Same(Id::VbsMax), "V";
+        VbdMax "vbd_max" Plain Value(0.0), "V";
+        VbdrMax "vbdr_max" Plain Same(Id::VbdMax), "V";
+    }
     "A.9, layout" {
         Dmcg "dmcg" Plain Value(0.0), "m";
         Dmci "dmci" Plain Same(Id::Dmcg), "m";
@@ -562,17 +575,6 @@ pub const NO_STATIC_EFFECT: &[&str] = &[
     "vfbcv",
     "voffcv",
     "voffcvl",
-    "vgs_max",
-    "vgd_max",
-    "vgb_max",
-    "vds_max",
-    "vbs_max",
-    "vbd_max",
-    "vgsr_max",
-    "vgdr_max",
-    "vgbr_max",
-    "vbsr_max",
-    "vbdr_max",
     "xgl",
     "xgw",
     "xpart",

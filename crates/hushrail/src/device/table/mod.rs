@@ -41,6 +41,7 @@ use std::sync::atomic::{AtomicBool, Ordering};
 use std::sync::{Arc, Mutex, PoisonError};
 
 use super::dual::{Dual, Real};
+use super::range::{Basis as RangeBasis, Outside};
 use super::{Bias, Branches, Device, Geometry, Polarity};
 use crate::physics::{CELSIUS_ZERO_K, Kelvin};
 use crate::read::source::{Place, ReadError, Source};
@@ -232,6 +233,7 @@ impl TableModel {
             width_ratio: geometry.width_m / self.options.width_m,
             vt_v: temp.thermal_voltage(),
             oxide_m: self.options.oxide_m,
+            extrapolate: self.options.extrapolate,
             used_outside: AtomicBool::new(false),
         })
     }
@@ -288,6 +290,7 @@ pub struct TableDevice {
     width_ratio: f64,
     vt_v: f64,
     oxide_m: f64,
+    extrapolate: bool,
     used_outside: AtomicBool,
 }
 
@@ -421,5 +424,14 @@ impl Device for TableDevice {
     }
     fn thermal_voltage(&self) -> f64 {
         self.vt_v
+    }
+    fn outside(&self, bias: Bias<f64>) -> Option<Outside> {
+        let v = turned(bias, self.polarity).0;
+        let found =
+            ["vgs", "vds", "vbs"].iter().zip(&self.fields.axes).zip(v).filter_map(|((name, axis), x)| {
+                Outside::of(RangeBasis::Points, name, x, [axis[0], axis[axis.len() - 1]])
+            });
+        let worst = found.map(Some).fold(None, Outside::worse)?;
+        Some(Outside { refused: !self.extrapolate, ..worst })
     }
 }
