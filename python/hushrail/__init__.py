@@ -73,6 +73,7 @@ __all__ = [
     "SolveError",
     "Supply",
     "Suspect",
+    "TableModel",
     "Uncovered",
     "Unmatched",
     "__version__",

@@ -379,8 +379,8 @@ class Parameter:
     """What is known of one number of a compact model.
 
     ``low`` and ``high`` bound what can be. ``spread`` is how far two technologies typically lie apart (common
-    practice, no source), for numbers that span decades (``logarithmic``) in their natural logarithm. ``fitted``
-    says whether :func:`hushrail.fit.fit` may vary it.
+    practice, no source), for numbers that span decades (``logarithmic``) in their natural logarithm.
+    ``fitted`` says whether :func:`hushrail.fit.fit` may vary it.
     """
 
     name: str
@@ -438,7 +438,7 @@ class CompactModel:
 
     @classmethod
     def generic(cls, name: str) -> CompactModel:
-        """Starting values of a generic technology, from the literature and not those of any process.
+        """Take starting values of a generic technology, from the literature and not those of any process.
 
         Parameters
         ----------
@@ -454,7 +454,7 @@ class CompactModel:
 
     @staticmethod
     def parameter_table() -> tuple[Parameter, ...]:
-        """What is known of each number, in the order of a study."""
+        """Say what is known of each number, in the order of a study."""
         return tuple(Parameter(*row) for row in _core.CompactModel.parameter_table())
 
     @classmethod
@@ -551,9 +551,7 @@ class CompactModel:
         """Equal in every number."""
         if not isinstance(other, CompactModel):
             return NotImplemented
-        mine, its = (
-            (x.polarity, x.gidl_follows_gap, tuple(x.parameters.items())) for x in (self, other)
-        )
+        mine, its = ((x.polarity, x.gidl_follows_gap, tuple(x.parameters.items())) for x in (self, other))
         return mine == its
 
     def __hash__(self) -> int:

@@ -3,21 +3,21 @@
 :func:`fit` varies numbers of a :class:`hushrail.CompactModel` until its currents meet measured or simulated
 ones, in decades. It needs SciPy (``pip install hushrail[fit]``), imported when the first fit is made.
 
-**What is minimised.** The sum of ``(log10(model/measured)/σ)²``: leakage spans decades, and an error of a given
-ratio counts alike at the bottom and the top.
+**What is minimised.** The sum of ``(log10(model/measured)/σ)²``: leakage spans decades, and an error of a
+given ratio counts alike at the bottom and the top.
 
-**Slopes.** To I-V points they are exact, from the core's own equations with dual numbers in the parameters; to
-cells they are central differences through the whole cell solve.
+**Slopes.** To I-V points they are exact, from the core's own equations with dual numbers in the parameters;
+to cells they are central differences through the whole cell solve.
 
 **Standard errors** are those of the linearised problem: covariance ``s²·(JᵀJ)⁻¹`` at the minimum, with ``s²``
-the residual variance, or 1 when σ is stated (Seber and Wild, *Nonlinear Regression*, Wiley 1989, chapter 2, from
-memory). They hold for residuals that scatter independently. Where the model itself is off, residuals go in
-waves (look at :meth:`Fit.plot_residuals`), and the numbers are less certain than the errors say.
+the residual variance, or 1 when σ is stated (Seber and Wild, *Nonlinear Regression*, Wiley 1989, chapter 2,
+from memory). They hold for residuals that scatter independently. Where the model itself is off, residuals go
+in waves (look at :meth:`Fit.plot_residuals`), and the numbers are less certain than the errors say.
 
 **Data that do not determine a parameter.** The Jacobian is scaled so that one unit of each parameter is what
-technologies typically differ by (``spread`` of :class:`hushrail.Parameter`) and taken apart by singular values.
-A direction in which the linearised error exceeds one such unit, or along which nothing changes, is undetermined:
-the data say no more there than a guess.
+technologies typically differ by (``spread`` of :class:`hushrail.Parameter`) and taken apart by singular
+values. A direction in which the linearised error exceeds one such unit, or along which nothing changes, is
+undetermined: the data say no more there than a guess.
 """
 
 from __future__ import annotations
@@ -25,8 +25,9 @@ from __future__ import annotations
 import csv
 import math
 import os
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
+from pathlib import Path
 from typing import TYPE_CHECKING, Any, Protocol, TypeAlias
 
 import numpy as np
@@ -36,7 +37,6 @@ from hushrail import _core
 from hushrail.device import CompactModel, Parameter
 from hushrail.errors import RangeError, ReadError
 from hushrail.study import Progress, StrPath, _floor
-from hushrail.units import engineering
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -77,18 +77,16 @@ class IVPoints:
     sigma_decades: Array | None = None
 
     @classmethod
-    def read(
-        cls, source: StrPath | Mapping[str, ArrayLike] | pd.DataFrame, **constants: float
-    ) -> IVPoints:
+    def read(cls, source: StrPath | Mapping[str, ArrayLike] | pd.DataFrame, **constants: float) -> IVPoints:
         """Read points.
 
         Parameters
         ----------
         source : path, mapping of arrays, or data frame
-            Columns ``vd_v, vg_v, vs_v, vb_v`` (V), ``id_a, ig_a, ib_a`` (A), ``temp_c`` (°C), ``w_m, l_m`` (m)
-            or ``w_um, l_um`` (µm), ``m`` (devices in parallel), ``ad_m2, as_m2, pd_m, ps_m`` and
-            ``sigma_decades``. Source and body voltage, ``m``, junction sizes, gate and body current may be left
-            out; other columns are not looked at.
+            Columns ``vd_v, vg_v, vs_v, vb_v`` (V), ``id_a, ig_a, ib_a`` (A), ``temp_c`` (°C), ``w_m, l_m``
+            (m) or ``w_um, l_um`` (µm), ``m`` (devices in parallel), ``ad_m2, as_m2, pd_m, ps_m`` and
+            ``sigma_decades``. Source and body voltage, ``m``, junction sizes, gate and body current may be
+            left out; other columns are not looked at.
         **constants : float
             A column by name that is the same at every point, such as ``temp_c=25.0``.
 
@@ -108,6 +106,9 @@ class IVPoints:
         raw: dict[str, Array] = {}
         if isinstance(source, str | os.PathLike):
             raw = _csv(source, known)
+        elif not hasattr(source, "__getitem__") or not hasattr(source, "keys"):
+            kind = type(source).__name__
+            raise RangeError(f"points are a {kind}; want a path, a mapping of arrays or a data frame")
         else:
             for column in source:
                 if column in known:
@@ -142,7 +143,7 @@ class IVPoints:
         return cls({c: raw[c] for c in _NEEDED}, {c: raw[c] for c in CURRENTS if c in raw}, sigma)
 
     def __len__(self) -> int:
-        """Number of points."""
+        """Count the points."""
         return len(self.currents["id_a"])
 
 
@@ -150,9 +151,9 @@ class IVPoints:
 class CellPoints:
     """A published leakage table of cells; predictions go through the whole cell solve.
 
-    ``study`` names cell netlists and processes, ``table`` has the columns ``cell, corner, when, leakage_nw`` and
-    ``corners`` the columns ``corner, process, temp_c, vdd_v``; all as for :func:`hushrail.compare`, and so are
-    ``prefix`` and ``floor_s``. The models to fit stand for what the netlists mean by their names.
+    ``study`` names cell netlists and processes, ``table`` has the columns ``cell, corner, when, leakage_nw``
+    and ``corners`` the columns ``corner, process, temp_c, vdd_v``; all as for :func:`hushrail.compare`, and
+    so are ``prefix`` and ``floor_s``. The models to fit stand for what the netlists mean by their names.
     """
 
     study: StrPath
@@ -231,8 +232,8 @@ class Residuals:
 class Direction:
     """A combination of parameters that the data do not determine.
 
-    ``parts`` holds the share of each parameter, in units of its ``spread``, largest first; ``error`` how far the
-    combination may move in such units (infinite where nothing changes along it).
+    ``parts`` holds the share of each parameter, in units of its ``spread``, largest first; ``error`` how far
+    the combination may move in such units (infinite where nothing changes along it).
     """
 
     parts: Mapping[str, float]
@@ -375,7 +376,9 @@ class Fit:
 
     def flat(self) -> Iterator[dict[str, Any]]:
         """Give one flat row for each free parameter, SI."""
-        rows = zip(self.free, self.start, self.values, self.standard_errors, self.lower, self.upper, strict=True)
+        rows = zip(
+            self.free, self.start, self.values, self.standard_errors, self.lower, self.upper, strict=True
+        )
         for name, start, value, error, low, high in rows:
             yield {
                 "parameter": name,
@@ -434,13 +437,13 @@ def fit(
     free : sequence of str
         Parameters to vary; ``"NAME.parameter"`` where models have names.
     bounds : mapping, optional
-        Parameter to lowest and highest value, SI. What can be, by :meth:`CompactModel.parameter_table`, when left
-        out; where that is zero and the parameter spans decades, fifteen decades below the highest.
+        Parameter to lowest and highest value, SI. What can be, by :meth:`CompactModel.parameter_table`, when
+        left out; where that is zero and the parameter spans decades, fifteen decades below the highest.
     observed : sequence of str
-        Currents to meet: ``id_a``, ``ig_a``, ``ib_a``. Points where one was not recorded are dropped for it.
+        Currents to meet: ``id_a``, ``ig_a``, ``ib_a``. Where one was not recorded it is dropped and counted.
     floor : float, optional
-        What the instrument resolves, A (of the whole structure) or W. Points below it say only that the truth is
-        not far above; see ``below``. Set it several times the noise: points are chosen by measured value,
+        What the instrument resolves, A (of the whole structure) or W. Points below it say only that the truth
+        is not far above; see ``below``. Set it several times the noise: points are chosen by measured value,
         so those near the noise that happened to read high would be kept and those that read low would not.
     below : str
         ``"drop"``: points below the floor are left out and counted. ``"bound"``: they are upper bounds; a
@@ -463,7 +466,7 @@ def fit(
     Raises
     ------
     RangeError
-        Unknown or doubly named parameters, bounds that cannot be, points that are not finite, or too few points.
+        Unknown or doubly named parameters, bounds that cannot be, points that are not finite, or too few.
     ReadError, FileNotFoundError
         A file of points that cannot be read.
     ModuleNotFoundError
@@ -507,7 +510,7 @@ def fit(
     space = _Space(start, free, bounds or {})
     problem = _problem(points, start, tuple(observed), constants)
 
-    first = problem.predict(start)
+    first = problem.predict(space.models(space.start))
     status = _status(problem.measured, first, problem.reasons(), floor, below)
     used = np.array([s == USED for s in status])
     bound = np.array([s == BOUND for s in status])
@@ -516,7 +519,9 @@ def fit(
     _enough(status, int(used.sum()), k, stated)
     at = used | bound
     # a point that is an upper bound is compared with the floor
-    target = np.log10(np.where(bound, floor or 1.0, np.abs(problem.measured)), where=at, out=np.zeros(len(at)))[at]
+    target = np.log10(
+        np.where(bound, floor or 1.0, np.abs(problem.measured)), where=at, out=np.zeros(len(at))
+    )[at]
     one_sided = bound[at]
     sigma = np.full(len(target), 1.0 if sigma_decades is None else sigma_decades)
     if problem.sigma is not None:
@@ -534,10 +539,11 @@ def fit(
             # such a device cannot be: the search shortens its step
             return np.full(len(target), np.inf)
         r = (log - target) / sigma
-        return np.where(one_sided, np.maximum(r, 0.0), r)
+        out: Array = np.where(one_sided, np.maximum(r, 0.0), r)
+        return out
 
     def natural(x: Array) -> Array:
-        slopes = problem.slopes(space, x)[at] / sigma[:, None]
+        slopes: Array = problem.slopes(space, x)[at] / sigma[:, None]
         if one_sided.any():
             above = _log10(problem.predict(space.models(x))[at]) > target
             slopes[one_sided & ~above] = 0.0
@@ -606,8 +612,12 @@ def _enough(status: Sequence[str], used: int, k: int, stated: bool) -> None:
 
 
 def _warnings(
-    space: _Space, found: Any, analysis: _Analysis, freedom: int, remarks: Sequence[str]
-) -> Iterator[str]:  # noqa: ANN401
+    space: _Space,
+    found: Any,  # noqa: ANN401
+    analysis: _Analysis,
+    freedom: int,
+    remarks: Sequence[str],
+) -> Iterator[str]:
     if found.status <= 0:
         yield f"the search ended after {found.nfev} evaluations before it converged"
     for direction in analysis.directions:
@@ -617,8 +627,8 @@ def _warnings(
             else f"it may move by {direction.error:.2g} times what technologies differ by"
         )
         yield (
-            f"the data do not determine {direction} (in units of each parameter's spread): {size}; hold one of "
-            "these parameters or add points that tell them apart"
+            f"the data do not determine {direction} (in units of each parameter's spread): {size}; hold one "
+            "of these parameters or add points that tell them apart"
         )
     for name, x, low, high in zip(space.names, found.x, space.low, space.high, strict=True):
         if min(x - low, high - x) <= 1e-4:
@@ -639,7 +649,9 @@ class _Analysis:
         held = np.maximum(values, np.finfo(float).eps * top)
         self.covariance: Array = s * s * (v.T / held**2) @ v
         errors = np.sqrt(np.diag(self.covariance))
-        self.correlation: Array = self.covariance / np.outer(errors, errors) if s > 0.0 else np.eye(len(names))
+        self.correlation: Array = (
+            self.covariance / np.outer(errors, errors) if s > 0.0 else np.eye(len(names))
+        )
         self.errors: Array = np.sqrt(((s * v[~dead] / values[~dead, None]) ** 2).sum(axis=0))
         # what takes part in a direction without effect is not known at all
         self.errors[(np.abs(v[dead]) > 1e-6).any(axis=0)] = np.inf
@@ -731,10 +743,13 @@ class _Space:
                 raise RangeError(f"bounds of `{name}` are {given!r}; want two numbers") from None
             unit = f" {row.unit}" if row.unit else ""
             if not wish_low < wish_high:
-                raise RangeError(f"bounds of `{name}` are {wish_low} to {wish_high}{unit}; want the lower first")
+                raise RangeError(
+                    f"bounds of `{name}` are {wish_low} to {wish_high}{unit}; want the lower first"
+                )
             if not (wish_low >= min(low, row.low) and wish_high <= high):
                 raise RangeError(
-                    f"bounds of `{name}` are {wish_low} to {wish_high}{unit}; want them within {low} to {high}{unit}"
+                    f"bounds of `{name}` are {wish_low} to {wish_high}{unit}; "
+                    f"want them within {low} to {high}{unit}"
                 )
             low, high = max(wish_low, low), wish_high
         if row.logarithmic and value <= 0.0:
@@ -751,7 +766,7 @@ class _Space:
         self.start[i] = min(max(x, self.low[i] + inset), self.high[i] - inset)
 
     def models(self, x: Array) -> dict[str, CompactModel]:
-        """The models at a point of the space."""
+        """Make the models at a point of the space."""
         changes: dict[str, dict[str, float]] = {}
         for (owner, parameter), row, u in zip(self.where, self.rows, x * self._spreads(), strict=True):
             value = math.exp(u) if row.logarithmic else float(u)
@@ -781,7 +796,7 @@ class _Space:
         return np.array([models[owner].parameters[parameter] for owner, parameter in self.where])
 
     def step(self, models: Models) -> Array:
-        """What one unit of the space is, SI."""
+        """Give what one unit of the space is, SI."""
         logs = np.array([row.logarithmic for row in self.rows])
         return np.where(logs, self.values(models), 1.0) * self._spreads()
 
@@ -843,16 +858,18 @@ class _IV:
 
     def __init__(self, points: IVPoints, observed: tuple[str, ...]) -> None:
         if not observed or any(c not in CURRENTS for c in observed):
-            raise RangeError(f"observed is {', '.join(observed) or 'empty'}; want some of {', '.join(CURRENTS)}")
+            raise RangeError(
+                f"observed is {', '.join(observed) or 'empty'}; want some of {', '.join(CURRENTS)}"
+            )
         if absent := [c for c in observed if c not in points.currents]:
             raise RangeError(f"the points have no column `{absent[0]}`, which is to be observed")
         self._points, self._observed = points, observed
         n, columns = len(points), points.columns
         self.measured = np.concatenate([points.currents[c] for c in observed])
         self.sigma = None if points.sigma_decades is None else np.tile(points.sigma_decades, len(observed))
-        self.labels = {c: np.tile(columns[c], len(observed)) for c in _NEEDED if c not in _SIZES[2:]}
-        if len(observed) > 1:
-            self.labels["observed"] = np.repeat(np.array(observed), n)
+        self.labels: Mapping[str, NDArray[Any]] = {
+            c: np.tile(columns[c], len(observed)) for c in _NEEDED if c not in _SIZES[2:]
+        } | ({"observed": np.repeat(np.array(observed), n)} if len(observed) > 1 else {})
         keys = np.column_stack([columns[c] for c in ("temp_c", *_SIZES)])
         distinct, inverse = np.unique(keys, axis=0, return_inverse=True)
         self._groups = [(key, np.flatnonzero(inverse.reshape(-1) == i)) for i, key in enumerate(distinct)]
@@ -938,14 +955,15 @@ class _Cells:
                     shifted, moved = models, names[k]
                 sides.append((moved, _log10(self.predict(shifted))))
             (up, high), (down, low) = sides
-            out[:, k] = (high - low) / (up - down) * step[k]
+            if up > down:
+                out[:, k] = (high - low) / (up - down) * step[k]
         return np.where(np.isfinite(out), out, 0.0)
 
 
 def _status(
     measured: Array, predicted: Array, reasons: Sequence[str], floor: float | None, below: str
 ) -> tuple[str, ...]:
-    """What becomes of each point."""
+    """Say what becomes of each point."""
     out = []
     for y, p, why in zip(measured, predicted, reasons, strict=True):
         if why:
@@ -992,7 +1010,7 @@ def _numbers(name: str, column: str, values: ArrayLike) -> Array:
 
 def _csv(path: StrPath, known: set[str]) -> dict[str, Array]:
     name = os.fspath(path)
-    with open(path, encoding="utf-8", newline="") as file:  # noqa: PTH123
+    with Path(path).open(encoding="utf-8", newline="") as file:
         try:
             reader = csv.DictReader(file, strict=True)
             columns = [c for c in reader.fieldnames or () if c in known]
