@@ -12,7 +12,9 @@ to cells they are central differences through the whole cell solve.
 **Standard errors** are those of the linearised problem: covariance ``s²·(JᵀJ)⁻¹`` at the minimum, with ``s²``
 the residual variance, or 1 when σ is stated (Seber and Wild, *Nonlinear Regression*, Wiley 1989, chapter 2,
 from memory). They hold for residuals that scatter independently. Where the model itself is off, residuals go
-in waves (look at :meth:`Fit.plot_residuals`), and the numbers are less certain than the errors say.
+in waves (look at :meth:`Fit.plot_residuals`), and the numbers are less certain than the errors say. A warning
+says so when their signs, along the gate voltage of each sweep, change four standard deviations less often
+than by chance (Wald and Wolfowitz, *Ann. Math. Statist.* 11 (1940) 147-162, from memory).
 
 **Data that do not determine a parameter.** The Jacobian is scaled so that one unit of each parameter is what
 technologies typically differ by (``spread`` of :class:`hushrail.Parameter`) and taken apart by singular
@@ -573,6 +575,11 @@ def fit(
     analysis = _Analysis(jacobian, 1.0 if stated else s, problem.rank_tolerance, space.names)
     step = space.step(models)
     warnings = list(_warnings(space, found, analysis, freedom, problem.remarks))
+    if _goes_in_waves(residuals):
+        warnings.append(
+            f"residuals go in waves of {residuals.rms_decades:.2g} decades rms: the model is off by more than "
+            "the points scatter, and standard errors are too small"
+        )
     return Fit(
         models=models,
         free=space.names,
@@ -637,6 +644,25 @@ def _warnings(
     if freedom < 1:
         yield "as many parameters as points: the residuals say nothing of the model"
     yield from remarks
+
+
+def _goes_in_waves(residuals: Residuals) -> bool:
+    """Whether signs change less often than by chance; rounding is not judged."""
+    decades, used, labels = residuals.decades, residuals.used, residuals.labels
+    along = [
+        labels[c][used] for c in ("vg_v", "vd_v", "vb_v", "temp_c", "l_m", "w_m", "observed") if c in labels
+    ]
+    if along:
+        # the last of them is the slowest
+        decades = decades[np.lexsort(along)]
+    signs = decades[np.abs(decades) > 1e-9] > 0.0
+    n, up = len(signs), int(signs.sum())
+    if n < 10 or up in (0, n):
+        return False
+    runs = 1 + int((signs[1:] != signs[:-1]).sum())
+    wanted = 1.0 + 2.0 * up * (n - up) / n
+    variance = (wanted - 1.0) * (wanted - 2.0) / (n - 1)
+    return runs < wanted - 4.0 * math.sqrt(max(variance, 0.0))
 
 
 class _Analysis:
