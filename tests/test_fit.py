@@ -546,6 +546,7 @@ def spoil(column: str, i: int, value: float) -> Columns:
         ({"points": None}, "points are a NoneType"),
         ({"points": {"vg_v": ["high"], "vd_v": [1.0]}}, "`vg_v` does not hold numbers"),
         ({"points": {"vg_v": np.zeros((2, 2))}}, "`vg_v` has the shape (2, 2)"),
+        ({"points": IVPoints.read(compact_points(), **SIZE)}, "want `w_m` as a keyword of IVPoints.read"),
         ({"temp_c": 500.0}, "temperature 500 °C is out of range"),
         ({"model": {"a": START, "b": START}, "free": ["a.vt0_v"]}, "I-V points belong to one model"),
         ({"model": {}}, "no model was given"),

@@ -37,7 +37,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from hushrail import _core
 from hushrail.device import CompactModel, Parameter
-from hushrail.errors import RangeError, ReadError
+from hushrail.errors import RangeError, ReadError, SolveError
 from hushrail.study import Progress, StrPath, _floor
 
 if TYPE_CHECKING:
@@ -471,6 +471,8 @@ def fit(
         Unknown or doubly named parameters, bounds that cannot be, points that are not finite, or too few.
     ReadError, FileNotFoundError
         A file of points that cannot be read.
+    SolveError
+        A cell that can be solved at a step of the search, but not right beside it.
     ModuleNotFoundError
         SciPy is not installed.
 
@@ -546,6 +548,10 @@ def fit(
 
     def natural(x: Array) -> Array:
         slopes: Array = problem.slopes(space, x)[at] / sigma[:, None]
+        if not np.isfinite(slopes).all():
+            row = np.flatnonzero(at)[np.flatnonzero(~np.isfinite(slopes).all(axis=1))[0]]
+            point = ", ".join(f"{name} {column[row]}" for name, column in problem.labels.items())
+            raise SolveError(f"no prediction close to a step of the search, at {point}; want closer bounds")
         if one_sided.any():
             above = _log10(problem.predict(space.models(x))[at]) > target
             slopes[one_sided & ~above] = 0.0
@@ -577,8 +583,8 @@ def fit(
     warnings = list(_warnings(space, found, analysis, freedom, problem.remarks))
     if _goes_in_waves(residuals):
         warnings.append(
-            f"residuals go in waves of {residuals.rms_decades:.2g} decades rms: the model is off by more than "
-            "the points scatter, and standard errors are too small"
+            f"residuals go in waves of {residuals.rms_decades:.2g} decades rms: the model is off by more "
+            "than the points scatter, and standard errors are too small"
         )
     return Fit(
         models=models,
@@ -872,8 +878,12 @@ def _problem(
         return _Cells(points, models)
     if len(models) != 1:
         raise RangeError(f"I-V points belong to one model; {len(models)} were given")
-    read = points if isinstance(points, IVPoints) else IVPoints.read(points, **constants)
-    return _IV(read, observed)
+    if isinstance(points, IVPoints):
+        if constants:
+            name = next(iter(constants))
+            raise RangeError(f"the points were read already; want `{name}` as a keyword of IVPoints.read")
+        return _IV(points, observed)
+    return _IV(IVPoints.read(points, **constants), observed)
 
 
 class _IV:
@@ -983,7 +993,7 @@ class _Cells:
             (up, high), (down, low) = sides
             if up > down:
                 out[:, k] = (high - low) / (up - down) * step[k]
-        return np.where(np.isfinite(out), out, 0.0)
+        return out
 
 
 def _status(

@@ -776,7 +776,7 @@ fn slopes_to_the_numbers_of_a_card_equal_differences() {
     for name in ["generic 65 nm n", "generic 28 nm p"] {
         let card = CompactCard::generic(name).expect("known");
         let (g, temp) = (full(70e-9), at_c(85.0));
-        let biases: Vec<_> = biases(60, 1.1).into_iter().map(at).collect();
+        let biases: Vec<_> = biases(60, 1.1).map(at).collect();
         let got = card.slopes(&free, &g, temp, &biases).expect("slopes");
         let device = card.device(&g, temp).expect("device");
         for (b, i) in biases.iter().zip(&got.currents) {
