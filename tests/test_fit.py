@@ -353,9 +353,9 @@ def test_a_leakage_table_of_foundry_cards_and_a_cell_kept_out(small: Path) -> No
 def test_a_published_leakage_table_and_cells_kept_out(tmp_path: Path) -> None:
     """Four cells of the open kit's table at 100 °C are fitted, others predicted.
 
-    The compact devices stand for the kit's transistors; wells keep their cards. Measured: rms 0.095 decades on
-    18 rows; 0.140 on 32 rows of other gates, 0.128 on 16 rows of a multiplexer and a flip-flop. Layout stress,
-    which the data's README says is worth up to 15x per finger, is not in the compact model.
+    The compact devices stand for the kit's transistors; wells keep their cards. Measured: rms 0.095 decades
+    on 18 rows; 0.140 on 32 rows of other gates, 0.128 on 16 rows of a multiplexer and a flip-flop. Layout
+    stress, which the data's README says is worth up to 15x per finger, is not in the compact model.
     """
     data = DATA.parent
     cards = ", ".join(f'"{data.as_posix()}/{path}"' for path in CARDS)
@@ -567,6 +567,7 @@ def spoil(column: str, i: int, value: float) -> Columns:
         ({"points": spoil("id_a", 4, float("nan"))}, "`id_a` holds nan at point 5; want finite"),
         ({"points": spoil("vg_v", 0, float("inf"))}, "`vg_v` holds inf at point 1"),
         ({"floor": 1.0}, "no point is left of 168 (168 below the floor); want at least 8"),
+        ({"max_evaluations": 0}, "max_evaluations is 0; want at least 1"),
         ({"floor": -1.0}, "floor is -1.0; want a size above zero"),
         ({"free": ["vt0"]}, "`vt0` is no parameter; did you mean `vt0_v`"),
         ({"free": ["nominal_c"]}, "`nominal_c` cannot be free"),

@@ -506,6 +506,8 @@ def fit(
 
     if below not in ("drop", "bound"):
         raise RangeError(f"below is {below!r}; want 'drop' or 'bound'")
+    if max_evaluations < 1:
+        raise RangeError(f"max_evaluations is {max_evaluations}; want at least 1")
     if floor is not None and not (floor > 0.0 and math.isfinite(floor)):
         raise RangeError(f"floor is {floor}; want a size above zero")
     if sigma_decades is not None:
