@@ -3,12 +3,13 @@
 The main job is one call: :func:`estimate` runs a study, a TOML file that names cards, cell netlists, domains,
 sleep schemes and corners. :func:`cells` gives the leakage table behind it, :func:`compare` holds it against a
 published one, :func:`count` counts the instances of a netlist. :class:`Process` and :class:`Device` give the
-currents of single transistors as NumPy arrays. Plots are in ``hushrail.plot``, the demonstration in
+currents of single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without
+cards, and ``hushrail.fit`` calibrates the former. Plots are in ``hushrail.plot``, the demonstration in
 ``hushrail.demo``.
 """
 
 from hushrail._core import __version__
-from hushrail.device import TERMINALS, Device, Process
+from hushrail.device import TERMINALS, CompactModel, Device, Parameter, Process, TableModel
 from hushrail.errors import HushrailError, RangeError, ReadError, SolveError
 from hushrail.leakage import (
     Compared,
@@ -46,6 +47,7 @@ __all__ = [
     "Block",
     "ByMechanism",
     "CellShare",
+    "CompactModel",
     "Compared",
     "ComparedRow",
     "Comparison",
@@ -61,6 +63,7 @@ __all__ = [
     "LeakageTable",
     "LimitCheck",
     "Note",
+    "Parameter",
     "PathShare",
     "Point",
     "Process",
@@ -70,6 +73,7 @@ __all__ = [
     "SolveError",
     "Supply",
     "Suspect",
+    "TableModel",
     "Uncovered",
     "Unmatched",
     "__version__",

@@ -1,10 +1,21 @@
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from typing import Any, Final, final
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Device", "Process", "__version__", "cell_table", "compare", "count", "estimate"]
+__all__ = [
+    "CellTable",
+    "CompactModel",
+    "Device",
+    "Process",
+    "TableModel",
+    "__version__",
+    "cell_table",
+    "compare",
+    "count",
+    "estimate",
+]
 
 __version__: Final[str]
 
@@ -20,6 +31,9 @@ class Process:
         scale_m: float | None = None,
         models: dict[str, str] = ...,
     ) -> Process: ...
+    @staticmethod
+    def of_devices(name: str, devices: Mapping[str, CompactModel | TableModel]) -> Process: ...
+    def with_devices(self, devices: Mapping[str, CompactModel | TableModel]) -> Process: ...
     @property
     def name(self) -> str: ...
     def model_names(self) -> list[str]: ...
@@ -60,6 +74,81 @@ class Device:
         vs: NDArray[np.float64],
         vb: NDArray[np.float64],
     ) -> NDArray[np.float64]: ...
+
+@final
+class CompactModel:
+    def __new__(
+        cls, letter: str, numbers: Mapping[str, float], *, gidl_follows_gap: bool = True
+    ) -> CompactModel: ...
+    @staticmethod
+    def generic(name: str) -> CompactModel: ...
+    @staticmethod
+    def generic_names() -> list[str]: ...
+    @staticmethod
+    def parameter_table() -> list[tuple[str, str, str, float, float, float, bool, bool]]: ...
+    @staticmethod
+    def from_toml(text: str, name: str | None = None) -> CompactModel: ...
+    @property
+    def polarity(self) -> str: ...
+    @property
+    def gidl_follows_gap(self) -> bool: ...
+    @property
+    def numbers(self) -> dict[str, float]: ...
+    @property
+    def least_slope(self) -> tuple[float, float, float]: ...
+    def device(self, size: Mapping[str, float], temp_c: float, m: float) -> Device: ...
+    def slopes(
+        self,
+        free: Sequence[str],
+        size: Mapping[str, float],
+        temp_c: float,
+        vd: NDArray[np.float64],
+        vg: NDArray[np.float64],
+        vs: NDArray[np.float64],
+        vb: NDArray[np.float64],
+    ) -> tuple[NDArray[np.float64], NDArray[np.float64]]: ...
+
+@final
+class TableModel:
+    @staticmethod
+    def read(
+        path: str,
+        letter: str,
+        w_m: float,
+        oxide_m: float,
+        *,
+        l_m: float | None = None,
+        extrapolate: bool = False,
+    ) -> TableModel: ...
+    @property
+    def polarity(self) -> str: ...
+    @property
+    def w_m(self) -> float: ...
+    @property
+    def l_m(self) -> float | None: ...
+    @property
+    def range_v(self) -> list[tuple[float, float]]: ...
+    def device(self, size: Mapping[str, float], temp_c: float, m: float) -> Device: ...
+
+@final
+class CellTable:
+    def __new__(
+        cls,
+        study: str,
+        table: str,
+        devices: Mapping[str, CompactModel],
+        *,
+        corners: str | None = None,
+        prefix: str = "",
+        floor_s: float = 0.0,
+    ) -> CellTable: ...
+    def rows(self) -> list[tuple[str, str, str, float]]: ...
+    def predict(
+        self,
+        devices: Mapping[str, CompactModel],
+        *,
+        progress: Callable[[int, int], Any] | None = None,
+    ) -> list[tuple[float | None, str]]: ...
 
 def estimate(path: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...
 def cell_table(

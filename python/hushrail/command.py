@@ -153,7 +153,11 @@ def _estimate(args: argparse.Namespace) -> int:
     _check_outputs(args, [args.study])
     result = watched("points", lambda progress: study.estimate(args.study, progress), quiet=args.quiet)
     _deliver(
-        args, result.to_json, result.rows(), lambda width: report.of_estimate(result, width, failures=False)
+        args,
+        result.to_json,
+        result.rows(),
+        notes=result.notes,
+        to_text=lambda width: report.of_estimate(result, width, failures=False),
     )
     if result.failures:
         return _error("not every point could be computed", report.of_failures(result.failures))
@@ -172,7 +176,8 @@ def _cells(args: argparse.Namespace) -> int:
         args,
         result.to_json,
         result.flat(),
-        lambda width: report.of_table(result, width, states=states, failures=False),
+        notes=result.notes,
+        to_text=lambda width: report.of_table(result, width, states=states, failures=False),
     )
     if result.failures:
         return _error("not every cell could be computed", report.of_failures(result.failures))
@@ -201,7 +206,8 @@ def _compare(args: argparse.Namespace) -> int:
         args,
         result.to_json,
         result.flat(),
-        lambda width: report.of_comparison(result, width, worst=args.worst, failures=False),
+        notes=result.compared.notes,
+        to_text=lambda width: report.of_comparison(result, width, worst=args.worst, failures=False),
     )
     lost = len(result.compared.unmatched)
     if lost:
@@ -212,7 +218,7 @@ def _compare(args: argparse.Namespace) -> int:
 def _count(args: argparse.Namespace) -> int:
     _check_outputs(args, args.netlists)
     result = watched("", lambda _: study.count(args.netlists, top=args.top, path=args.path), quiet=args.quiet)
-    _deliver(args, result.to_json, result.flat(), lambda width: report.of_counts(result, width))
+    _deliver(args, result.to_json, result.flat(), to_text=lambda width: report.of_counts(result, width))
     return OK
 
 
@@ -243,7 +249,9 @@ def _deliver(
     args: argparse.Namespace,
     to_json: Callable[[int], str],
     rows: Iterable[dict[str, Any]],
+    *,
     to_text: Callable[[int], str],
+    notes: Sequence[Note] = (),
 ) -> None:
     if args.json is not None:
         _write(args.json, to_json(1) + "\n")
@@ -253,6 +261,9 @@ def _deliver(
         _write(args.csv, text.getvalue())
     if not _is_silent(args):
         print(to_text(terminal_width()))
+    elif args.csv is not None and notes:
+        # a table of numbers has no place for them
+        print(report.of_notes(notes, terminal_width()), file=sys.stderr)
 
 
 def terminal_width() -> int:

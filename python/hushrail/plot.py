@@ -19,7 +19,9 @@ from hushrail.units import engineering
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-__all__ = ["COLOURS", "overdrive_curve", "rest_points", "standby_power"]
+    from hushrail.fit import Residuals
+
+__all__ = ["COLOURS", "overdrive_curve", "residuals", "rest_points", "standby_power"]
 
 COLOURS = {
     "channel": "#2a6fb0",
@@ -252,6 +254,89 @@ def off_currents(
     else:
         parts = device.by_mechanism(vd=vdd_v, vg=-over, vs=0.0, vb=0.0)[..., 0]
     return over, parts.sum(axis=-1), parts
+
+
+_LABELS = {
+    "vg_v": ("gate", 1.0, "V"),
+    "vd_v": ("drain", 1.0, "V"),
+    "vs_v": ("source", 1.0, "V"),
+    "vb_v": ("body", 1.0, "V"),
+    "temp_c": ("", 1.0, "°C"),
+    "w_m": ("w", 1e6, "µm"),
+    "l_m": ("l", 1e6, "µm"),
+    "m": ("m", 1.0, ""),
+}
+
+
+def residuals(residuals: Residuals, ax: Axes | None = None, *, by: str | None = None) -> Axes:
+    """Draw how far a model lies from points, in decades, over the measured value.
+
+    Points above the line are predicted too high. The band is the root mean square; arrows along the lower
+    edge are upper bounds that count only where the model is above them.
+
+    Parameters
+    ----------
+    residuals : Residuals
+        Of a fit, or of a model held against other points.
+    ax : Axes, optional
+        Where to draw.
+    by : str, optional
+        Label that sets the colour, such as ``"vd_v"``; temperature, width, length, corner, or drain voltage,
+        whichever first differs among the points, when left out.
+    """
+    used = residuals.used
+    if not used.any():
+        raise RangeError("no point is used; there is nothing to draw")
+    ax = _axes(ax)
+    names = residuals.labels
+    if by is None:
+        order = [n for n in ("temp_c", "w_m", "l_m", "corner", "vd_v") if n in names]
+        by = next((n for n in order if len(set(names[n][used])) > 1), order[0])
+    if by not in names:
+        raise RangeError(f"points have no label `{by}`; want one of {', '.join(names)}")
+    size, decades = np.abs(residuals.measured[used]), residuals.decades
+    values = names[by][used]
+    distinct = sorted(set(values.tolist()))
+    style: dict[str, Any] = {"s": 16, "linewidth": 0.4, "edgecolor": "white", "zorder": 3}
+    rms = residuals.rms_decades
+    ax.axhspan(-rms, rms, color="#e8c96a", alpha=0.25, linewidth=0, zorder=0)
+    ax.axhline(0.0, color="0.4", linewidth=1, zorder=1)
+    if len(distinct) <= 10:
+        for i, value in enumerate(distinct):
+            at = values == value
+            colour, marker = _blend(i, len(distinct)), _MARKERS[i % len(_MARKERS)]
+            label = _label(by, value)
+            ax.scatter(size[at], decades[at], color=[colour], marker=marker, label=label, **style)
+        ax.legend(fontsize="small", loc="center left", bbox_to_anchor=(1.0, 0.5), frameon=False)
+    else:
+        what, factor, unit = _LABELS.get(by, (by, 1.0, ""))
+        codes = values * factor if by in _LABELS else [distinct.index(v) for v in values]
+        drawn = ax.scatter(size, decades, c=codes, cmap="viridis", **style)
+        ax.figure.colorbar(drawn, ax=ax, label=f"{what} ({unit})" if unit else what)
+    bounds = np.array([s == "upper bound" for s in residuals.status])
+    if bounds.any():
+        at = np.abs(residuals.measured[bounds])
+        at = at[at > 0.0]
+        ax.plot(
+            at, np.full(len(at), 0.02), "v", transform=ax.get_xaxis_transform(), color="0.6", markersize=4
+        )
+    ax.set_xscale("log")
+    _engineering_axis(ax, residuals.unit)
+    reach = 1.1 * float(np.abs(decades).max()) or 1.0
+    ax.set_ylim(-reach, reach)
+    ax.set_xlabel("measured")
+    ax.set_ylabel("model / measured (decades)")
+    ax.set_title(f"{int(used.sum())} points, rms {rms:.2g} decades")
+    ax.grid(True, which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+    return ax
+
+
+def _label(by: str, value: Any) -> str:  # noqa: ANN401
+    if by not in _LABELS:
+        return str(value)
+    what, factor, unit = _LABELS[by]
+    return f"{what} {value * factor:.4g} {unit}".strip()
 
 
 class _Style:

@@ -230,6 +230,11 @@ def of_failures(failures: Iterable[Failure]) -> list[str]:
     return [f"{reason} (at {_some(places)})" for reason, places in by.items()]
 
 
+def of_notes(notes: Sequence[Note], width: int = 100) -> str:
+    """Write remarks, each once; empty when there is none."""
+    return "\n\n".join(_notes(notes, width))
+
+
 def _notes(notes: Sequence[Note], width: int) -> list[str]:
     return _listed("Notes", [f"{note.text} [{note.code}]" for note in dict.fromkeys(notes)], width)
 
@@ -376,6 +381,7 @@ def of_comparison(result: Comparison, width: int = 100, *, worst: int = 10, fail
         parts += _listed("Rows of the table under suspicion", doubts, width)
     if failures:
         parts += _listed("Not compared", of_unmatched(result), width)
+    parts += _notes(result.compared.notes, width)
     return "\n\n".join(parts)
 
 

@@ -15,6 +15,7 @@ use numpy::{IntoPyArray, PyArray2, PyArray3, PyReadonlyArray1};
 use pyo3::prelude::*;
 
 use crate::error;
+use crate::own::OwnModel;
 
 /// Cards of one process corner.
 #[pyclass(module = "hushrail", frozen)]
@@ -47,6 +48,20 @@ impl Process {
             .detach(|| load_process(name, &spec, &models, &IndexMap::new(), Path::new("")))
             .map_err(|e| error::read(&e))?;
         Ok(Self { inner: Arc::new(p) })
+    }
+
+    /// A process of compact and tabulated devices.
+    #[staticmethod]
+    fn of_devices(name: &str, devices: IndexMap<String, OwnModel>) -> Self {
+        let empty = hushrail::device::process::Process::empty(name);
+        let p = devices.iter().fold(empty, |p, (n, m)| p.device(n, m.model()));
+        Self { inner: Arc::new(p) }
+    }
+
+    /// The same process with devices in the place of what it has under their names.
+    fn with_devices(&self, devices: IndexMap<String, OwnModel>) -> Self {
+        let p = devices.iter().fold((*self.inner).clone(), |p, (n, m)| p.replace(n, m.model()));
+        Self { inner: Arc::new(p) }
     }
 
     /// Name of the process.
@@ -88,11 +103,11 @@ impl Process {
 /// A transistor at one temperature.
 #[pyclass(module = "hushrail", frozen)]
 pub struct Device {
-    inner: Arc<dyn hushrail::device::Device>,
-    count: f64,
-    temp_c: f64,
-    model: String,
-    notes: Vec<(String, String)>,
+    pub inner: Arc<dyn hushrail::device::Device>,
+    pub count: f64,
+    pub temp_c: f64,
+    pub model: String,
+    pub notes: Vec<(String, String)>,
 }
 
 #[pymethods]
@@ -205,14 +220,14 @@ impl Device {
 }
 
 /// Terminal voltages of N points, as views of the caller's arrays.
-struct Points<'a> {
-    n: usize,
+pub struct Points<'a> {
+    pub n: usize,
     terminals: [ArrayView1<'a, f64>; 4],
 }
 
 impl<'a> Points<'a> {
     /// Drain, gate, source and body, all of one length.
-    fn new(arrays: [&'a PyReadonlyArray1<'_, f64>; 4]) -> PyResult<Self> {
+    pub fn new(arrays: [&'a PyReadonlyArray1<'_, f64>; 4]) -> PyResult<Self> {
         let terminals = arrays.map(PyReadonlyArray1::as_array);
         let lengths = [0, 1, 2, 3].map(|k: usize| terminals[k].len());
         if lengths.iter().all(|l| *l == lengths[0]) {
@@ -222,7 +237,8 @@ impl<'a> Points<'a> {
         }
     }
 
-    fn bias(&self, i: usize) -> Bias<f64> {
+    /// One of them.
+    pub fn bias(&self, i: usize) -> Bias<f64> {
         let [vd, vg, vs, vb] = &self.terminals;
         Bias::from_terminals(vd[i], vg[i], vs[i], vb[i])
     }

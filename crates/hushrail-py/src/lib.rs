@@ -4,6 +4,7 @@
 
 mod device;
 mod error;
+mod own;
 mod run;
 mod study;
 
@@ -16,6 +17,8 @@ mod _core {
 
     #[pymodule_export]
     use crate::device::{Device, Process};
+    #[pymodule_export]
+    use crate::own::{CellTable, CompactModel, TableModel};
     #[pymodule_export]
     use crate::study::{cell_table, compare, count, estimate};
 

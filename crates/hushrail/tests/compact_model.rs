@@ -9,6 +9,7 @@ use std::sync::Arc;
 
 use common::{Gate, Ideal, chain, r1, uniform};
 use hushrail::device::compact::channel::interpolation;
+use hushrail::device::compact::params::{COUNT, Param, Values};
 use hushrail::device::compact::prepare::Prepared;
 use hushrail::device::compact::{Compact, CompactCard, CompactError, GidlLaw, branches, generic};
 use hushrail::device::dual::{Dual, Real};
@@ -599,13 +600,18 @@ fn parameter_slopes_equal_differences() {
             ..card.clone()
         };
         let g = Geometry { delvto_v: x[0], length_m: x[1], width_m: x[2], ..full(65e-9) };
-        Prepared::new(&card, card.oxide_m, &g, x[3])
+        Prepared::new(&Values::new(&card, |_, v| v), &g, x[3])
     };
     let x0 = [0.01, 70e-9, 1e-6, 330.0, card.oxide_m];
     let of = |i: usize| Dual::<5>::variable(x0[i], i);
     let g: Geometry<Dual<5>> =
         Geometry { delvto_v: of(0), length_m: of(1), width_m: of(2), ..full(65e-9).lift() };
-    let dual = Prepared::new(&card, of(4), &g, of(3));
+    let values = Values::new(&card, |p, v| match p {
+        Param::Oxide => of(4),
+        Param::TunnelOxide => of(4) * (v / card.oxide_m),
+        _ => Dual::of(v),
+    });
+    let dual = Prepared::new(&values, &g, of(3));
     for v in biases(200, 1.1) {
         let b = at(v);
         let lift = |x: f64| Dual::<5>::of(x);
@@ -760,4 +766,68 @@ proptest! {
         let drive = dev.polarity().sign() * (d - s);
         prop_assert!(dual.channel_ds.d[0] * drive.signum() >= 0.0, "transconductance {:?}", dual.channel_ds);
     }
+}
+
+/// Slopes to every number a fit may set, against five-point differences of the device itself.
+#[test]
+fn slopes_to_the_numbers_of_a_card_equal_differences() {
+    let free: Vec<Param> = Param::ALL.iter().copied().filter(|p| p.row().fitted).collect();
+    assert_eq!(free.len(), COUNT - 2);
+    for name in ["generic 65 nm n", "generic 28 nm p"] {
+        let card = CompactCard::generic(name).expect("known");
+        let (g, temp) = (full(70e-9), at_c(85.0));
+        let biases: Vec<_> = biases(60, 1.1).map(at).collect();
+        let got = card.slopes(&free, &g, temp, &biases).expect("slopes");
+        let device = card.device(&g, temp).expect("device");
+        for (b, i) in biases.iter().zip(&got.currents) {
+            for (x, y) in device.branches(*b).terminals().iter().zip(i) {
+                assert!((x - y).abs() <= 1e-12 * x.abs().max(y.abs()), "{x} {y}");
+            }
+        }
+        for (k, p) in free.iter().enumerate() {
+            let v = card.get(*p).expect("generic cards give all");
+            let h = 1e-4 * v.abs();
+            let shifted = |h: f64| {
+                let mut c = card.clone();
+                c.set(*p, v + h);
+                c.slopes(&[], &g, temp, &biases).expect("currents").currents
+            };
+            let [p1, m1, p2, m2] = [h, -h, 2.0 * h, -2.0 * h].map(shifted);
+            for j in 0..biases.len() {
+                for t in 0..4 {
+                    let slope = (8.0 * (p1[j][t] - m1[j][t]) - (p2[j][t] - m2[j][t])) / (12.0 * h);
+                    let exact = got.slopes[j * free.len() + k][t];
+                    // a difference loses what the terminal's current has in rounding, 1e-16 over 1e-4 and some
+                    let scale = slope.abs().max(got.currents[j][t].abs() / v.abs());
+                    assert!(
+                        (exact - slope).abs() <= 2e-6 * scale + 1e-25,
+                        "{name} {p:?} {t}: {exact} {slope}"
+                    );
+                }
+            }
+        }
+    }
+}
+
+#[test]
+fn a_card_of_named_numbers_is_judged() {
+    let all = [
+        ("vt0_v", 0.4),
+        ("slope_n", 1.4),
+        ("dibl_v_v", 0.05),
+        ("body_sqrt_v", 0.4),
+        ("phi_v", 0.9),
+        ("mobility_m2_vs", 0.03),
+        ("oxide_m", 2e-9),
+    ];
+    let made = |numbers: &[(&str, f64)]| {
+        CompactCard::from_numbers(Polarity::N, numbers.iter().copied(), true).map_err(|e| e.to_string())
+    };
+    assert_eq!(made(&all).expect("whole").vt0_v, 0.4);
+    let bad = made(&all[1..]).expect_err("no threshold");
+    assert!(bad.contains("`vt0_v` is missing; want -2.0 to 3.0 V"), "{bad}");
+    let bad = made(&[&all[..], &[("vt_v", 0.4)]].concat()).expect_err("no such number");
+    assert!(bad.contains("has no `vt_v`; did you mean `vt0_v`"), "{bad}");
+    let bad = made(&[&all[..], &[("gidl_a_s", f64::NAN)]].concat()).expect_err("not a number");
+    assert!(bad.contains("`gidl_a_s` is NaN S; want 0.0 to 1.0 S"), "{bad}");
 }

@@ -141,6 +141,14 @@ impl Process {
         self
     }
 
+    /// Puts a device in the place of whatever netlists mean by the name, cards included.
+    #[must_use]
+    pub fn replace(mut self, name: &str, model: DeviceModel) -> Self {
+        let name = self.resolve(name);
+        self.own.insert(name, model);
+        self
+    }
+
     /// Adds a name that netlists use for a model of the deck.
     #[must_use]
     pub fn alias(mut self, netlist_name: &str, deck_name: &str) -> Self {

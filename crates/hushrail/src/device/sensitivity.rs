@@ -94,7 +94,13 @@ impl Process {
             };
             let g = varied(&made.geometry, card.polarity.sign());
             let oxide = knob(Knob::Oxide, card.oxide_m);
-            let prepared = compact::prepare::Prepared::new(card, oxide, &g, temp_k);
+            let values = compact::params::Values::new(card, |p, v| match p {
+                compact::Param::Oxide => oxide,
+                // thicker or thinner along with the electrical thickness
+                compact::Param::TunnelOxide => oxide * (v / card.oxide_m),
+                _ => Dual::of(v),
+            });
+            let prepared = compact::prepare::Prepared::new(&values, &g, temp_k);
             return Ok(Varied { prepared: Prepared::Compact(Box::new(prepared)), count: made.count });
         }
         let (card, g, count) = self.card(request, temp.celsius(), notes)?;

@@ -3,6 +3,7 @@
 use serde::{Deserialize, Serialize};
 
 use super::generic::{self, Generic};
+use super::params::{Param, Values};
 use super::prepare::Prepared;
 use super::{Compact, junction};
 use crate::device::{Geometry, Polarity};
@@ -180,6 +181,14 @@ pub enum CompactError {
         /// What would be right.
         wanted: String,
     },
+    /// A card has no such number.
+    #[error("a compact device has no `{name}`{}", hint(.nearest.as_ref()))]
+    Parameter {
+        /// The name.
+        name: String,
+        /// The nearest known one.
+        nearest: Option<String>,
+    },
     /// No generic technology has the name.
     #[error("generic device `{name}` is not defined{}; known: {}", hint(.nearest.as_ref()), generic::NAMES.join(", "))]
     Unknown {
@@ -196,6 +205,9 @@ impl CompactError {
         let at = at.clone();
         match self {
             Self::Range { name, value, wanted } => ReadError::Range { at, name, value, wanted },
+            Self::Parameter { name, nearest } => {
+                ReadError::Unknown { at, kind: "parameter of a compact device", name, nearest }
+            }
             Self::Unknown { name, nearest } => ReadError::Unknown {
                 at,
                 kind: "generic device",
@@ -206,7 +218,7 @@ impl CompactError {
     }
 }
 
-fn wrong(name: &str, value: String, wanted: impl Into<String>) -> CompactError {
+pub(super) fn wrong(name: &str, value: String, wanted: impl Into<String>) -> CompactError {
     CompactError::Range { name: name.into(), value, wanted: wanted.into() }
 }
 
@@ -222,56 +234,64 @@ impl CompactCard {
         })
     }
 
+    /// The numbers a study may leave out at what they then are; NaN where it must give one.
+    pub(super) fn bare(polarity: Polarity) -> Self {
+        let must = f64::NAN;
+        Self {
+            polarity,
+            vt0_v: must,
+            slope_n: must,
+            dibl_v_v: must,
+            body_sqrt_v: must,
+            phi_v: must,
+            mobility_m2_vs: must,
+            oxide_m: must,
+            nominal_c: nominal_c(),
+            length_m: None,
+            vt_temp_v_k: vt_temp_v_k(),
+            mobility_exponent: mobility_exponent(),
+            theta_1_v: 0.0,
+            saturation_m_s: None,
+            series_ohm_m: 0.0,
+            gidl_a_s: 0.0,
+            gidl_b_v_m: gidl_b_v_m(),
+            gidl_c_v3: gidl_c_v3(),
+            gidl_e_v: gidl_e_v(),
+            gidl_follows_gap: yes(),
+            generation_a_m2: 0.0,
+            generation_a_m: 0.0,
+            diffusion_a_m2: 0.0,
+            halo_m3: 0.0,
+            junction_depth_m: 0.0,
+            overlap_m: 0.0,
+            tunnel_barrier_v: None,
+            tunnel_mass: tunnel_mass(),
+            tunnel_oxide_m: None,
+        }
+    }
+
     /// Checks every value against what is physically possible.
     ///
     /// # Errors
     /// The first value out of range, with name, value and range.
     pub fn check(&self) -> Result<(), CompactError> {
-        // name, value, unit, lowest, highest: wide enough for any silicon, tight enough to catch a wrong unit
-        let rows = [
-            ("vt0_v", self.vt0_v, "V", -2.0, 3.0),
-            ("slope_n", self.slope_n, "", 1.0, 5.0),
-            ("dibl_v_v", self.dibl_v_v, "V/V", 0.0, 0.5),
-            ("body_sqrt_v", self.body_sqrt_v, "√V", 0.0, 2.0),
-            ("phi_v", self.phi_v, "V", 0.5, 1.1),
-            ("mobility_m2_vs", self.mobility_m2_vs, "m²/(V·s)", 1e-4, 0.2),
-            ("oxide_m", self.oxide_m, "m", 0.5e-9, 100e-9),
-            ("nominal_c", self.nominal_c, "°C", -60.0, 200.0),
-            ("length_m", self.length_m.unwrap_or(1e-6), "m", 5e-9, 1e-3),
-            ("vt_temp_v_k", self.vt_temp_v_k, "V/K", -5e-3, 2e-3),
-            ("mobility_exponent", self.mobility_exponent, "", -3.0, 1.0),
-            ("theta_1_v", self.theta_1_v, "1/V", 0.0, 10.0),
-            ("saturation_m_s", self.saturation_m_s.unwrap_or(1e5), "m/s", 1e4, 1e6),
-            ("series_ohm_m", self.series_ohm_m, "Ω·m", 0.0, 0.1),
-            ("gidl_a_s", self.gidl_a_s, "S", 0.0, 1.0),
-            ("gidl_b_v_m", self.gidl_b_v_m, "V/m", 1e8, 1e10),
-            ("gidl_c_v3", self.gidl_c_v3, "V³", 1e-9, 1e4),
-            ("gidl_e_v", self.gidl_e_v, "V", 0.0, 5.0),
-            ("generation_a_m2", self.generation_a_m2, "A/m²", 0.0, 1e3),
-            ("generation_a_m", self.generation_a_m, "A/m", 0.0, 1e-2),
-            ("diffusion_a_m2", self.diffusion_a_m2, "A/m²", 0.0, 1e3),
-            ("halo_m3", self.halo_m3, "1/m³", 0.0, 1e26),
-            ("junction_depth_m", self.junction_depth_m, "m", 0.0, 1e-6),
-            ("overlap_m", self.overlap_m, "m", 0.0, 1e-6),
-            ("tunnel_barrier_v", self.tunnel_barrier_v.unwrap_or(3.1), "V", 1.0, 6.0),
-            ("tunnel_mass", self.tunnel_mass, "", 0.05, 2.0),
-            ("tunnel_oxide_m", self.tunnel_oxide_m.unwrap_or(self.oxide_m), "m", 0.5e-9, 100e-9),
-        ];
-        for (name, v, unit, low, high) in rows {
-            if !(v >= low && v <= high) {
-                let unit = if unit.is_empty() { String::new() } else { format!(" {unit}") };
-                return Err(wrong(name, format!("{v:?}{unit}"), format!("want {low:?} to {high:?}{unit}")));
+        for &p in Param::ALL {
+            let row = p.row();
+            if let Some(v) = self.get(p)
+                && !(v >= row.low && v <= row.high)
+            {
+                let unit = if row.unit.is_empty() { String::new() } else { format!(" {}", row.unit) };
+                return Err(wrong(row.name, format!("{v:?}{unit}"), row.wanted()));
             }
         }
-        let depletion = self.body_sqrt_v / (2.0 * self.phi_v.sqrt());
-        if self.slope_n < 1.0 + depletion {
+        let (least, ..) = self.least_slope();
+        if self.slope_n < least {
             return Err(wrong(
                 "slope_n",
                 format!("{:?}", self.slope_n),
                 format!(
-                    "want at least 1 + body_sqrt_v/(2·√phi_v) = {:.3}: the depletion layer of `body_sqrt_v` alone \
-                     costs that much",
-                    1.0 + depletion
+                    "want at least 1 + body_sqrt_v/(2·√phi_v) = {least:.3}: the depletion layer of `body_sqrt_v` alone \
+                     costs that much"
                 ),
             ));
         }
@@ -319,7 +339,7 @@ impl CompactCard {
                 "want a factor above zero",
             ));
         }
-        let prepared = Prepared::new(self, self.oxide_m, geometry, temp.get());
+        let prepared = Prepared::new(&Values::new(self, |_, v| v), geometry, temp.get());
         let hot = |name: &str, value: String| {
             let nominal = self.nominal_c;
             Err(wrong(

@@ -54,13 +54,13 @@ pub fn band_to_band_field<P: Real>(gap_ev: P) -> P {
 
 impl<P: Real> BandToBand<P> {
     /// For an area (m²) against a doping (m⁻³), with band gap (eV) and built-in voltage (V).
-    pub fn new(area_m2: P, doping_m3: f64, gap_ev: P, built_in_v: P) -> Self {
+    pub fn new(area_m2: P, doping_m3: P, gap_ev: P, built_in_v: P) -> Self {
         let mass = TUNNEL_MASS * M0;
         let a = (2.0 * mass).sqrt() * Q.powi(3) / (4.0 * std::f64::consts::PI.powi(3) * HBAR * HBAR);
         Self {
             scale: area_m2 * a / (gap_ev * Q).sqrt(),
             b_v_m: band_to_band_field(gap_ev),
-            field_sq: P::of(2.0 * Q * doping_m3 / EPS_SI),
+            field_sq: doping_m3 * (2.0 * Q / EPS_SI),
             built_in_v,
         }
     }

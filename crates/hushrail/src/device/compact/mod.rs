@@ -23,13 +23,16 @@ pub mod gate;
 pub mod generic;
 pub mod gidl;
 pub mod junction;
+pub mod params;
 pub mod prepare;
+pub mod slopes;
 
 use super::dual::{Dual, Over, Real};
 use super::{Bias, Branches, Device, Polarity};
 pub use card::{CompactCard, CompactError};
 use channel::Channel;
 pub use gidl::GidlLaw;
+pub use params::Param;
 use prepare::Prepared;
 
 /// A compact transistor at one temperature.

@@ -1,9 +1,9 @@
 //! What depends on geometry and temperature only, computed once per device and corner.
 
-use super::card::CompactCard;
 use super::gate::{Tunnel, tunnel_a, tunnel_b};
 use super::gidl::GidlLaw;
 use super::junction::{BandToBand, Junction};
+use super::params::{Param, Values};
 use crate::device::bsim4::silicon::{EPS_SI, band_gap, intrinsic_density};
 use crate::device::dual::Real;
 use crate::device::{Geometry, Polarity};
@@ -64,8 +64,8 @@ pub struct Prepared<P> {
 /// The natural length `l = √(εsi·tox·Xdep/εox)`, with the depletion depth `Xdep = 2·εsi·√φ/(γ·Cox)` that belongs to γ and φ.
 ///
 /// Source: Liu et al., *IEEE Trans. Electron Devices* 40 (1993) 86–95.
-fn sharing<P: Real>(length_m: P, oxide_m: P, phi: f64, gamma: f64) -> P {
-    let natural = oxide_m * (EPS_SI / EPS_OX * (2.0 * phi.sqrt() / gamma).sqrt());
+fn sharing<P: Real>(length_m: P, oxide_m: P, phi: P, gamma: P) -> P {
+    let natural = oxide_m * ((phi.sqrt() * 2.0 / gamma).sqrt() * (EPS_SI / EPS_OX));
     let x = (-(length_m / natural) * 0.5).exp();
     x + x.sq() * 2.0
 }
@@ -86,72 +86,77 @@ impl<P: Real> Prepared<P> {
     /// # Source
     /// BSIM4.8.0 manual, section 13 (threshold, mobility, velocity, band gap; ni and ni² laws of a junction); Bucher et al.,
     /// EKV 2.6 manual (φ); Liu et al., *IEEE Trans. Electron Devices* 40 (1993) 86–95 (length).
-    pub fn new(card: &CompactCard, oxide_m: P, g: &Geometry<P>, temp_k: P) -> Self {
+    pub fn new(card: &Values<P>, g: &Geometry<P>, temp_k: P) -> Self {
         let of = P::of;
-        let nominal = card.nominal_k();
+        let get = |p: Param| card.get(p);
+        let nominal = card.nominal_k;
+        let oxide_m = get(Param::Oxide);
         let (gap0, vt_nominal) = (band_gap(nominal), KB_OVER_Q * nominal);
         let (gap, vt) = (band_gap(temp_k), temp_k * KB_OVER_Q);
         let (ratio, rise) = (temp_k / nominal, temp_k - nominal);
         let ln_ratio = ratio.ln();
 
-        let gamma = of(card.body_sqrt_v);
-        let linear = of(card.slope_n - card.body_sqrt_v / (2.0 * card.phi_v.sqrt()));
-        let phi = ratio * card.phi_v - vt * ln_ratio * 3.0 - ratio * gap0 + gap;
-        let mut dibl = of(card.dibl_v_v);
-        let mut vt0 = rise * card.vt_temp_v_k + card.vt0_v + g.delvto_v * card.polarity.sign();
-        if let Some(l0) = card.length_m {
-            let at = |l: P| sharing(l, oxide_m, card.phi_v, card.body_sqrt_v);
-            let here = dibl * at(g.length_m) / at(of(l0));
-            vt0 = vt0 + (dibl - here) * (gap0 - card.phi_v);
+        let (gamma, phi0) = (get(Param::Body), get(Param::Phi));
+        let linear = get(Param::SlopeN) - gamma / (phi0.sqrt() * 2.0);
+        let phi = ratio * phi0 - vt * ln_ratio * 3.0 - ratio * gap0 + gap;
+        let mut dibl = get(Param::Dibl);
+        let mut vt0 = rise * get(Param::VtTemp) + get(Param::Vt0) + g.delvto_v * card.polarity.sign();
+        if let Some(l0) = card.given(Param::Length) {
+            let at = |l: P| sharing(l, oxide_m, phi0, gamma);
+            let here = dibl * at(g.length_m) / at(l0);
+            vt0 = vt0 + (dibl - here) * (-phi0 + gap0);
             dibl = here;
         }
         // φ below zero is refused by the caller; the root must only not panic
         let root_phi = phi.sqrt();
         let slope = linear + gamma / (root_phi * 2.0);
         let cox = oxide_m.recip() * EPS_OX;
-        let mobility = (ln_ratio * card.mobility_exponent).exp() * card.mobility_m2_vs * g.mobility_factor;
+        let mobility =
+            (ln_ratio * get(Param::MobilityExponent)).exp() * get(Param::Mobility) * g.mobility_factor;
         let beta_per_w = mobility * cox / g.length_m;
         let charge_v = slope * vt * 2.0;
         let velocity = -(ratio - 1.0) * VELOCITY_LOSS + 1.0;
-        let most_a = card.saturation_m_s.map_or(of(0.0), |v| velocity * v * g.width_m * cox * charge_v);
+        let most_a =
+            card.given(Param::Saturation).map_or(of(0.0), |v| velocity * v * g.width_m * cox * charge_v);
 
-        let gidl = (card.gidl_a_s > 0.0).then(|| {
+        let gidl = (get(Param::GidlA).val() > 0.0).then(|| {
             let relative = gap / gap0;
             let follow = if card.gidl_follows_gap { relative * relative.sqrt() } else { of(1.0) };
             GidlLaw {
-                a_s: of(card.gidl_a_s),
-                b_v_m: follow * card.gidl_b_v_m,
-                c_v3: of(card.gidl_c_v3),
-                e_v: of(card.gidl_e_v),
+                a_s: get(Param::GidlA),
+                b_v_m: follow * get(Param::GidlB),
+                c_v3: get(Param::GidlC),
+                e_v: get(Param::GidlE),
                 oxide_m,
             }
         });
 
         let excess = -(gap / vt) + gap0 / vt_nominal;
-        let diffusion = (excess + ln_ratio * 3.0).exp() * card.diffusion_a_m2;
+        let diffusion = (excess + ln_ratio * 3.0).exp() * get(Param::Diffusion);
         let generation = (excess * 0.5 + ln_ratio * 1.5).exp();
-        let edge_area = g.width_m * card.junction_depth_m;
-        let tunnelling = (card.halo_m3 > 0.0).then(|| {
+        let edge_area = g.width_m * get(Param::JunctionDepth);
+        let halo = get(Param::Halo);
+        let tunnelling = (halo.val() > 0.0).then(|| {
             // the diffusion is degenerate: its Fermi level is at the band edge
-            let built_in = gap * 0.5 + vt * (intrinsic_density(temp_k).recip() * (card.halo_m3 * 1e-6)).ln();
-            BandToBand::new(edge_area, card.halo_m3, gap, built_in)
+            let built_in = gap * 0.5 + vt * (intrinsic_density(temp_k).recip() * (halo * 1e-6)).ln();
+            BandToBand::new(edge_area, halo, gap, built_in)
         });
         let junction = |area: P, perimeter: P| Junction {
             diffusion_a: diffusion * area,
-            generation_a: generation * (area * card.generation_a_m2 + perimeter * card.generation_a_m),
+            generation_a: generation
+                * (area * get(Param::GenerationArea) + perimeter * get(Param::GenerationEdge)),
             vt,
             built_in_v: (gap + phi) * 0.5,
             tunnelling,
         };
 
-        let tunnel = card.tunnel_barrier_v.map(|barrier_v| {
-            // thicker or thinner along with the electrical thickness
-            let thick = oxide_m * (card.tunnel_oxide_m.unwrap_or(card.oxide_m) / card.oxide_m);
+        let tunnel = card.given(Param::TunnelBarrier).map(|barrier_v| {
+            let thick = card.given(Param::TunnelOxide).unwrap_or(oxide_m);
             Tunnel {
                 a_t2: thick.sq().recip() * tunnel_a(barrier_v),
-                exponent: thick * (tunnel_b(barrier_v, card.tunnel_mass) / barrier_v),
+                exponent: thick * (tunnel_b(barrier_v, get(Param::TunnelMass)) / barrier_v),
                 barrier_v,
-                edge_m2: g.width_m * card.overlap_m,
+                edge_m2: g.width_m * get(Param::Overlap),
                 half_channel_m2: g.width_m * g.length_m * 0.5,
                 depletion_v: gamma * root_phi,
             }
@@ -169,7 +174,9 @@ impl<P: Real> Prepared<P> {
             half_rest: (linear - dibl * 2.0 - 1.0) * 0.5,
             flat_v: linear * phi + gamma * root_phi,
             specific_a: slope * 2.0 * beta_per_w * g.width_m * vt.sq(),
-            mobility_loss: (mobility * cox * card.series_ohm_m / g.length_m + card.theta_1_v) * slope * vt,
+            mobility_loss: (mobility * cox * get(Param::Series) / g.length_m + get(Param::Theta))
+                * slope
+                * vt,
             most_a,
             charge_v,
             oxide_m,
