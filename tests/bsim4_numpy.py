@@ -189,7 +189,7 @@ def end_resistance(p: Mapping[str, float], s: Sizes, end: str, vg: Array, vb: Ar
 
 
 def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array) -> Array:
-    """Channel current with the resistance inside (rdsMod 0) or without it (rdsMod 1), A (sections 5.1 to 5.9)."""
+    """Channel current, with the resistance inside it (rdsMod 0) or without (rdsMod 1), A (section 5)."""
     vb = body_voltage(p, s, vbs)
     vth = threshold(p, s, vds, vb)
     n = slope_factor(p, s, vds, vb)

@@ -18,6 +18,7 @@ from hushrail import __doc__ as hushrail_doc
 from hushrail import __version__, report, study
 from hushrail.errors import HushrailError
 from hushrail.leakage import Comparison
+from hushrail.results import Note
 from hushrail.study import Progress
 
 __all__ = ["interrupted", "main", "terminal_width", "watched"]

@@ -207,7 +207,7 @@ class Compared:
 
     rows: tuple[ComparedRow, ...]
     unmatched: tuple[Unmatched, ...]
-    notes: tuple[Note, ...]
+    notes: tuple[Note, ...] = ()
 
 
 @dataclass(frozen=True)

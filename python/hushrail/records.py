@@ -61,6 +61,13 @@ def _form(kind: type) -> dict[str, Any]:
     return {field.name: hints[field.name] for field in dataclasses.fields(kind)}
 
 
+@cache
+def _optional(kind: type) -> frozenset[str]:
+    """Fields that an older text may lack."""
+    fields = dataclasses.fields(kind)
+    return frozenset(field.name for field in fields if field.default is not dataclasses.MISSING)
+
+
 def _make(kind: Any, plain: Any, name: str, where: str) -> Any:  # noqa: ANN401
     def wrong(wanted: str) -> ReadError:
         text = f"{name}: `{where or 'the whole'}` is {_shown(plain)}; want {wanted}"
@@ -70,11 +77,13 @@ def _make(kind: Any, plain: Any, name: str, where: str) -> Any:  # noqa: ANN401
         if not isinstance(plain, dict):
             raise wrong("an object")
         form = _form(kind)
-        missing = [key for key in form if key not in plain]
+        missing = [key for key in form if key not in plain and key not in _optional(kind)]
         if missing:
             raise wrong(f"an object with the key `{missing[0]}`")
         parts = {
-            key: _make(each, plain[key], name, f"{where}.{key}".lstrip(".")) for key, each in form.items()
+            key: _make(each, plain[key], name, f"{where}.{key}".lstrip("."))
+            for key, each in form.items()
+            if key in plain
         }
         return kind(**parts)
     origin, args = typing.get_origin(kind), typing.get_args(kind)

@@ -61,7 +61,7 @@ class Note:
 
 
 def remarks(notes: Sequence[Note]) -> list[str]:
-    """Notes as ``code: text``, each once, for the attributes of a data frame or data set."""
+    """Give notes as ``code: text``, each once, for the attributes of a data frame or data set."""
     return list(dict.fromkeys(f"{note.code}: {note.text}" for note in notes))
 
 
@@ -139,6 +139,22 @@ class CellShare:
 
 
 @dataclass(frozen=True)
+class Outside:
+    """A bias that a model's card or table does not cover; voltages of an n-channel device, V.
+
+    ``basis`` is ``card`` (largest voltages the card states) or ``points`` (of a table). ``refused`` results
+    are errors; what stands in a result was asked for.
+    """
+
+    basis: str
+    quantity: str
+    value_v: float
+    low_v: float
+    high_v: float
+    refused: bool
+
+
+@dataclass(frozen=True)
 class Block:
     """Currents of the block at the rest point, A, by mechanism, positive into the block.
 
@@ -156,6 +172,7 @@ class Block:
     unstable: int
     steps: int
     fallbacks: int
+    outside: Outside | None = None
 
 
 @dataclass(frozen=True)
