@@ -33,20 +33,25 @@ from hushrail.results import (
     Failure,
     LimitCheck,
     Note,
+    Outside,
     PathShare,
     Point,
     Rest,
     Supply,
     Uncovered,
 )
-from hushrail.study import cells, compare, count, estimate
+from hushrail.sensitivity import KNOBS, BlockSlopes, CellSlopes, LogSlopes, SensitivityTable
+from hushrail.study import cells, compare, count, estimate, sensitivities
 
 __all__ = [
+    "KNOBS",
     "MECHANISMS",
     "TERMINALS",
     "Block",
+    "BlockSlopes",
     "ByMechanism",
     "CellShare",
+    "CellSlopes",
     "CompactModel",
     "Compared",
     "ComparedRow",
@@ -62,7 +67,9 @@ __all__ = [
     "LeakageRow",
     "LeakageTable",
     "LimitCheck",
+    "LogSlopes",
     "Note",
+    "Outside",
     "Parameter",
     "PathShare",
     "Point",
@@ -70,6 +77,7 @@ __all__ = [
     "RangeError",
     "ReadError",
     "Rest",
+    "SensitivityTable",
     "SolveError",
     "Supply",
     "Suspect",
@@ -81,4 +89,5 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "sensitivities",
 ]

@@ -74,6 +74,13 @@ class Device:
         vs: NDArray[np.float64],
         vb: NDArray[np.float64],
     ) -> NDArray[np.float64]: ...
+    def slopes(
+        self,
+        vd: NDArray[np.float64],
+        vg: NDArray[np.float64],
+        vs: NDArray[np.float64],
+        vb: NDArray[np.float64],
+    ) -> NDArray[np.float64]: ...
 
 @final
 class CompactModel:
@@ -156,6 +163,13 @@ def cell_table(
     *,
     cells: Sequence[str] = ...,
     floor_s: float = 0.0,
+    progress: Callable[[int, int], Any] | None = None,
+) -> str: ...
+def sensitivities(
+    path: str,
+    *,
+    cells: Sequence[str] = ...,
+    blocks: bool = True,
     progress: Callable[[int, int], Any] | None = None,
 ) -> str: ...
 def compare(

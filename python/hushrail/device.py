@@ -344,6 +344,31 @@ class Device:
         """
         return self._evaluate(self._core.conductances, (4, 4), vd, vg, vs, vb)
 
+    def slopes(
+        self, *, vd: ArrayLike, vg: ArrayLike, vs: ArrayLike = 0.0, vb: ArrayLike = 0.0
+    ) -> NDArray[np.float64]:
+        """Slopes of the terminal currents to what makes the device, exact and not from differences.
+
+        Divide by the current for d ln I. Slopes to voltages are :meth:`conductances`.
+
+        Parameters
+        ----------
+        vd, vg, vs, vb : array_like
+            Voltages of drain, gate, source and body, V.
+
+        Returns
+        -------
+        ndarray, shape (..., 4, 5)
+            Element ``[..., i, k]`` is the slope of the current into terminal i with knob k of
+            ``hushrail.KNOBS``: A/V, A/m, A/m, A/K, A/m. The threshold is varied in magnitude.
+
+        Raises
+        ------
+        RangeError
+            The device is a table of points, which do not know what made them.
+        """
+        return self._evaluate(self._core.slopes, (4, 5), vd, vg, vs, vb)
+
     @staticmethod
     def _evaluate(
         kernel: _Kernel, tail: tuple[int, ...], vd: ArrayLike, vg: ArrayLike, vs: ArrayLike, vb: ArrayLike

@@ -14,8 +14,9 @@ from hushrail import _core
 from hushrail.errors import RangeError
 from hushrail.leakage import Comparison, Counts, LeakageTable
 from hushrail.results import Estimate
+from hushrail.sensitivity import SensitivityTable
 
-__all__ = ["Progress", "StrPath", "cells", "compare", "count", "estimate"]
+__all__ = ["Progress", "StrPath", "cells", "compare", "count", "estimate", "sensitivities"]
 
 StrPath: TypeAlias = str | os.PathLike[str]
 """A path as text or as a path object."""
@@ -78,6 +79,39 @@ def cells(
     wanted = [patterns] if isinstance(patterns, str) else list(patterns)
     text = _core.cell_table(os.fspath(path), cells=wanted, floor_s=_floor(floor_s), progress=progress)
     return LeakageTable.from_json(text)
+
+
+def sensitivities(
+    path: StrPath,
+    patterns: Sequence[str] | str = (),
+    *,
+    blocks: bool = True,
+    progress: Progress | None = None,
+) -> SensitivityTable:
+    """Work out how the currents of a study's cells and blocks answer to threshold, size, heat and oxide.
+
+    Slopes are exact: the same equations with dual numbers in the parameters, and node voltages that follow
+    by the implicit function theorem. Rails are at full supply.
+
+    Parameters
+    ----------
+    path : path
+        The study.
+    patterns : str or sequence of str
+        Cell names, ``*`` for any run of characters; no cells when empty.
+    blocks : bool
+        The blocks of the study's domains too.
+    progress : callable, optional
+        Called with tasks done and tasks in all; a task is a cell or a domain at a corner.
+
+    Returns
+    -------
+    SensitivityTable
+        d ln I by knob; see :class:`LogSlopes` for the units.
+    """
+    wanted = [patterns] if isinstance(patterns, str) else list(patterns)
+    text = _core.sensitivities(os.fspath(path), cells=wanted, blocks=blocks, progress=progress)
+    return SensitivityTable.from_json(text)
 
 
 def compare(

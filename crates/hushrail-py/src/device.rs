@@ -6,6 +6,7 @@ use std::sync::Arc;
 use hushrail::batch::load::load_process;
 use hushrail::batch::study::ProcessSpec;
 use hushrail::device::process::Request;
+use hushrail::device::sensitivity::{KNOBS, Varied};
 use hushrail::device::{Bias, Mechanism, Polarity, per_terminal};
 use hushrail::physics::Kelvin;
 use hushrail::read::Place;
@@ -89,10 +90,12 @@ impl Process {
     fn transistor(&self, model: &str, params: IndexMap<String, f64>, temp_c: f64) -> PyResult<Device> {
         let temp = Kelvin::from_celsius(temp_c).map_err(error::temperature)?;
         let mut notes = Vec::new();
-        let t =
-            self.inner.transistor(&request(model, params), temp, &mut notes).map_err(|e| error::read(&e))?;
+        let request = request(model, params);
+        let t = self.inner.transistor(&request, temp, &mut notes).map_err(|e| error::read(&e))?;
+        // a table of points has none; whatever else is wrong was said above
+        let varied = self.inner.varied(&request, temp, &mut Vec::new()).ok();
         let notes = notes.into_iter().map(|n| (n.code, n.text)).collect();
-        Ok(Device { inner: t.device, count: t.count, temp_c, model: model.to_owned(), notes })
+        Ok(Device { inner: t.device, count: t.count, temp_c, model: model.to_owned(), notes, varied })
     }
 
     fn __repr__(&self) -> String {
@@ -108,6 +111,8 @@ pub struct Device {
     pub temp_c: f64,
     pub model: String,
     pub notes: Vec<(String, String)>,
+    /// The same device with derivatives to what makes it; none for a table of points.
+    pub varied: Option<Varied>,
 }
 
 #[pymethods]
@@ -206,6 +211,38 @@ impl Device {
                 for (k, x) in t.iter().enumerate() {
                     for (u, g) in per_terminal(x.d).into_iter().enumerate() {
                         out[[i, k, u]] = g * self.count;
+                    }
+                }
+            }
+            out
+        });
+        Ok(out.into_pyarray(py))
+    }
+
+    /// Derivatives of the terminal currents to threshold, length, width, temperature and oxide: shape (N, 4, 5).
+    fn slopes<'py>(
+        &self,
+        py: Python<'py>,
+        vd: PyReadonlyArray1<'py, f64>,
+        vg: PyReadonlyArray1<'py, f64>,
+        vs: PyReadonlyArray1<'py, f64>,
+        vb: PyReadonlyArray1<'py, f64>,
+    ) -> PyResult<Bound<'py, PyArray3<f64>>> {
+        let Some(varied) = &self.varied else {
+            let text = format!(
+                "`{}` is a table of points; want a card or a compact device: points do not know what made them",
+                self.model
+            );
+            return Err(error::range(text));
+        };
+        let at = Points::new([&vd, &vg, &vs, &vb])?;
+        let n = at.n;
+        let out = py.detach(|| {
+            let mut out = Array3::zeros((n, 4, KNOBS));
+            for i in 0..n {
+                for (k, t) in varied.terminals(at.bias(i)).into_iter().enumerate() {
+                    for (u, d) in t.d.into_iter().enumerate() {
+                        out[[i, k, u]] = d;
                     }
                 }
             }

@@ -7,6 +7,7 @@ use std::sync::Arc;
 use hushrail::batch::compare::{CompareRequest, LoadedTable};
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::device::compact::{CompactCard, CompactError, Param, generic, params};
+use hushrail::device::sensitivity::Varied;
 use hushrail::device::spec::{DeviceModel, DeviceSpec};
 use hushrail::device::table::{TableError, TableOptions};
 use hushrail::device::{Geometry, Polarity};
@@ -64,13 +65,18 @@ fn device(model: &DeviceModel, label: &str, size: &Size, temp_c: f64, m: f64) ->
         return Err(error::range(format!("m is {m}; want a number of devices above zero")));
     }
     let geometry = size.geometry();
-    let inner: Arc<dyn hushrail::device::Device> = match model {
-        DeviceModel::Compact(card) => Arc::new(card.device(&geometry, temp).map_err(compact)?),
+    let (inner, varied): (Arc<dyn hushrail::device::Device>, _) = match model {
+        DeviceModel::Compact(card) => {
+            let device = card.device(&geometry, temp).map_err(compact)?;
+            (Arc::new(device), Some(Varied::compact(card, &geometry, temp, m)))
+        }
         DeviceModel::Table(table) => {
-            Arc::new(table.device(&geometry, temp).map_err(|e: TableError| error::range(e.to_string()))?)
+            let device =
+                table.device(&geometry, temp).map_err(|e: TableError| error::range(e.to_string()))?;
+            (Arc::new(device), None)
         }
     };
-    Ok(Device { inner, count: m, temp_c, model: label.to_owned(), notes: Vec::new() })
+    Ok(Device { inner, count: m, temp_c, model: label.to_owned(), notes: Vec::new(), varied })
 }
 
 /// The `[device]` tables of a study.

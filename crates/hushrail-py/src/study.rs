@@ -4,6 +4,7 @@ use std::path::Path;
 
 use hushrail::batch::characterise::{TableRequest, table_of_study};
 use hushrail::batch::compare::{CompareRequest, compare_study};
+use hushrail::batch::sensitivity::{SensitivityRequest, sensitivities_of_study};
 use hushrail::batch::study::read_study;
 use hushrail::batch::{estimate as core_estimate, load_study};
 use hushrail::check::suspects::SuspectRules;
@@ -47,6 +48,22 @@ pub fn cell_table(
     let request = TableRequest { study: path.into(), cells, floor_s };
     let result = run(py, progress.as_ref(), |p| table_of_study(&request, &SolveOptions::default(), p))?;
     text(&result.map_err(|e| error::table(&e))?)
+}
+
+/// Sensitivities of cells and blocks of a study; JSON.
+#[pyfunction]
+#[pyo3(signature = (path, *, cells=Vec::new(), blocks=true, progress=None))]
+pub fn sensitivities(
+    py: Python<'_>,
+    path: &str,
+    cells: Vec<String>,
+    blocks: bool,
+    progress: Option<Py<PyAny>>,
+) -> PyResult<String> {
+    let request = SensitivityRequest { study: path.into(), cells, blocks };
+    let result =
+        run(py, progress.as_ref(), |p| sensitivities_of_study(&request, &SolveOptions::default(), p))?;
+    text(&result.map_err(|e| error::read(&e))?)
 }
 
 /// Predictions against a published table; JSON.

@@ -273,3 +273,37 @@ fn a_netlist_cut_at_every_byte_is_an_error_or_right() {
         }
     }
 }
+
+/// Bins must leave one card for every size: a gap and an overlap are both said, with the bins.
+#[test]
+fn bins_that_overlap_or_leave_a_gap_are_refused() {
+    let two = |l0: &str| {
+        let n = CARDS.find(".model px").expect("two cards");
+        let first = CARDS[..n].replace("lmax=10u", "lmax=60n");
+        let body = &CARDS[CARDS.find(".model nx.0").expect("bin")..n];
+        let second = body.replace(".model nx.0", ".model nx.1").replace("lmin=50n", l0);
+        format!("{first}{second}{}", &CARDS[n..])
+    };
+    for (l0, wanted) in [
+        ("lmin=60n", None),
+        ("lmin=55n", Some("bins `nx.0` and `nx.1` both cover it")),
+        ("lmin=70n", Some("no bin covers it; the nearest is")),
+    ] {
+        let text = two(l0);
+        let p =
+            Process::read("x", &[Source::from_text("t.lib", &text)], &DeckOptions::default()).expect("cards");
+        let at = |l: f64| {
+            let t = Kelvin::from_celsius(25.0).expect("fine");
+            p.transistor(&request(&[("w", 1e-6), ("l", l)]), t, &mut Vec::new())
+        };
+        assert!(at(52e-9).is_ok() && at(80e-9).is_ok(), "{l0}");
+        match (wanted, at(if l0 == "lmin=55n" { 57e-9 } else { 60e-9 })) {
+            (None, made) => assert!(made.is_ok()),
+            // the upper edge of the last bin below a gap still belongs to it
+            (Some(wanted), _) if l0 == "lmin=70n" => {
+                says(&at(65e-9).expect_err("gap"), &[wanted, "net.sp:7:3"])
+            }
+            (Some(wanted), made) => says(&made.expect_err("overlap"), &[wanted, "net.sp:7:3"]),
+        }
+    }
+}

@@ -4,6 +4,7 @@ pub mod characterise;
 pub mod compare;
 pub mod load;
 pub mod run;
+pub mod sensitivity;
 pub mod study;
 pub mod watch;
 

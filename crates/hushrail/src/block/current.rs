@@ -6,6 +6,7 @@ use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
 use super::build::{Block, Policy, StateWeights};
+use crate::cell::sensitivity::{COLUMNS, LogSlopes, SensitivityError};
 use crate::cell::when::product_term;
 use crate::cell::{BoundCell, CellError, DeviceShelf, Levels, Role, State};
 use crate::circuit::newton::{Effort, SolveOptions, Workspace};
@@ -198,6 +199,63 @@ impl BoundBlock {
             sum.given_a = i;
         }
         Ok(sum)
+    }
+}
+
+/// Current of a block and its logarithmic slopes, all devices varied together.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct BlockSensitivity {
+    /// Current from supply, n-well and inputs at one, A; what is given by value included, which answers to no knob.
+    pub current_a: f64,
+    /// d ln I / d knob.
+    pub slopes: LogSlopes,
+}
+
+impl BoundBlock {
+    /// How the current of the block answers to what makes its devices; `process` is the one it was bound to. A state in which no
+    /// current flows counts for nothing.
+    ///
+    /// # Errors
+    /// See [`SensitivityError`].
+    pub fn sensitivity(
+        &self,
+        process: &Process,
+        levels: &Levels,
+    ) -> Result<BlockSensitivity, SensitivityError> {
+        let parts: Vec<Result<(f64, [f64; COLUMNS]), SensitivityError>> = self
+            .members
+            .par_iter()
+            .map_init(Workspace::default, |w, m| {
+                let mut sum = (0.0, [0.0; COLUMNS]);
+                for (state, weight) in &m.states {
+                    let s = match m.bound.sensitivity(process, state, levels, &self.options, w) {
+                        Ok(s) => s,
+                        Err(SensitivityError::NoCurrent { .. }) => continue,
+                        Err(e) => return Err(e),
+                    };
+                    let i = s.current_a * weight * m.count as f64;
+                    sum.0 += i;
+                    for (to, d) in sum.1.iter_mut().zip(s.slopes().to_array()) {
+                        *to += i * d;
+                    }
+                }
+                Ok(sum)
+            })
+            .collect();
+        let mut current_a = self.given_a;
+        let mut slopes = [0.0; COLUMNS];
+        for p in parts {
+            let (i, d) = p?;
+            current_a += i;
+            for (to, d) in slopes.iter_mut().zip(d) {
+                *to += d;
+            }
+        }
+        if !(current_a.abs() > 0.0) {
+            let (cell, state) = ("the block".into(), "all".into());
+            return Err(SensitivityError::NoCurrent { cell, state });
+        }
+        Ok(BlockSensitivity { current_a, slopes: LogSlopes::from_array(slopes.map(|d| d / current_a)) })
     }
 }
 

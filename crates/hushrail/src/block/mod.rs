@@ -4,4 +4,4 @@ pub mod build;
 pub mod current;
 
 pub use build::{Block, BlockCell, Policy, StateWeights, Uncovered, build_block};
-pub use current::{BlockCurrents, BlockError, BoundBlock};
+pub use current::{BlockCurrents, BlockError, BlockSensitivity, BoundBlock};

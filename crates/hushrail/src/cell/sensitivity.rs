@@ -24,8 +24,45 @@ pub struct StateSensitivity {
     pub d_ln_supply: f64,
 }
 
+/// d ln I / d knob of a current.
+#[derive(Debug, Clone, Copy, Default, PartialEq, Serialize, Deserialize)]
+pub struct LogSlopes {
+    /// To the magnitude of all thresholds, 1/V.
+    pub threshold_v: f64,
+    /// To all drawn lengths, 1/m.
+    pub length_m: f64,
+    /// To all drawn widths, 1/m.
+    pub width_m: f64,
+    /// To the temperature, 1/K.
+    pub temperature_k: f64,
+    /// To all oxide thicknesses, 1/m.
+    pub oxide_m: f64,
+    /// To supply, n-well and inputs at one together, 1/V.
+    pub supply_v: f64,
+}
+
+impl LogSlopes {
+    /// The numbers, knobs in the order of [`Knob::ALL`], then the supply.
+    pub fn to_array(self) -> [f64; COLUMNS] {
+        [self.threshold_v, self.length_m, self.width_m, self.temperature_k, self.oxide_m, self.supply_v]
+    }
+    /// From the numbers in that order.
+    pub fn from_array(a: [f64; COLUMNS]) -> Self {
+        let [threshold_v, length_m, width_m, temperature_k, oxide_m, supply_v] = a;
+        Self { threshold_v, length_m, width_m, temperature_k, oxide_m, supply_v }
+    }
+}
+
+impl StateSensitivity {
+    /// The slopes by name.
+    pub fn slopes(&self) -> LogSlopes {
+        let [t, l, w, k, o] = self.d_ln;
+        LogSlopes::from_array([t, l, w, k, o, self.d_ln_supply])
+    }
+}
+
 /// The knobs and the supply.
-const COLUMNS: usize = KNOBS + 1;
+pub const COLUMNS: usize = KNOBS + 1;
 
 /// Why a sensitivity has no value.
 #[derive(Debug, Clone, PartialEq, thiserror::Error)]
@@ -37,15 +74,21 @@ pub enum SensitivityError {
     /// The state has no operating point.
     #[error(transparent)]
     Cell(#[from] CellError),
-    /// The conductance matrix is singular, or no current flows.
-    #[error("cell `{cell}` in state {state}: {reason}")]
-    Undefined {
+    /// The conductance matrix is singular.
+    #[error("cell `{cell}` in state {state}: the conductance matrix is singular")]
+    Singular {
         /// The cell.
         cell: String,
         /// Its state.
         state: String,
-        /// Why.
-        reason: &'static str,
+    },
+    /// No current flows, so that its logarithm has no slope.
+    #[error("cell `{cell}` in state {state}: no current flows")]
+    NoCurrent {
+        /// The cell.
+        cell: String,
+        /// Its state.
+        state: String,
     },
 }
 
@@ -63,11 +106,7 @@ impl BoundCell {
         w: &mut Workspace,
     ) -> Result<StateSensitivity, SensitivityError> {
         let v: Vec<Volt> = self.operating_point(state, levels, options, w)?.0;
-        let undefined = |reason| SensitivityError::Undefined {
-            cell: self.cell.name.to_string(),
-            state: state.label.clone(),
-            reason,
-        };
+        let named = || (self.cell.name.to_string(), state.label.clone());
         let held = self.cell.held();
         let unknown: Vec<usize> = (0..v.len()).filter(|&i| !held[i]).collect();
         let n = unknown.len();
@@ -135,12 +174,14 @@ impl BoundCell {
             }
         }
         if !(current.abs() > 0.0) {
-            return Err(undefined("no current flows"));
+            let (cell, state) = named();
+            return Err(SensitivityError::NoCurrent { cell, state });
         }
         for k in 0..COLUMNS {
             let mut rhs: Vec<f64> = push.iter().map(|p| -p[k]).collect();
             if n > 0 && solve_pivoting(n, &mut jacobian.clone(), &mut rhs) == 0.0 {
-                return Err(undefined("the conductance matrix is singular"));
+                let (cell, state) = named();
+                return Err(SensitivityError::Singular { cell, state });
             }
             own[k] += pull.iter().zip(&rhs).map(|(g, dv)| g * dv).sum::<f64>();
         }

@@ -5,7 +5,7 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 use rustc_hash::FxHashMap;
 
-use super::bsim4::layout::{self, Stated};
+use super::bsim4::layout::{self, Diffusions};
 use super::bsim4::limits::Limits;
 use super::bsim4::material::Material;
 use super::bsim4::prepare::Prepared;
@@ -97,6 +97,19 @@ pub struct Transistor {
     pub count: f64,
     /// Drawn geometry.
     pub geometry: Geometry,
+}
+
+/// The card that covers a request, and what the request says beside it.
+#[derive(Debug, Clone)]
+pub struct CardOf {
+    /// The card.
+    pub card: Card,
+    /// Drawn geometry, diffusions filled in.
+    pub geometry: Geometry,
+    /// Number in parallel.
+    pub count: f64,
+    /// How the diffusions were filled in.
+    pub diffusions: Diffusions,
 }
 
 /// Power of the length unit in an instance parameter: 1 for lengths, 2 for areas, 0 for plain numbers.
@@ -310,7 +323,7 @@ impl Process {
             let (geometry, count) = drawn(get, request)?;
             return Ok(Transistor { device: model.make(&geometry, temp, &request.at)?, count, geometry });
         }
-        let (card, geometry, count) = self.card(request, temp.celsius(), notes)?;
+        let CardOf { card, geometry, count, .. } = self.card(request, temp.celsius(), notes)?;
         let values = Self::values(&card, &geometry, request)?;
         let gap = Material::of(&card).gap(temp.get());
         if !(gap > 0.0) {
@@ -378,12 +391,7 @@ impl Process {
     ///
     /// # Errors
     /// As for [`Process::transistor`].
-    pub fn card(
-        &self,
-        request: &Request,
-        temp_c: f64,
-        notes: &mut Vec<Note>,
-    ) -> Result<(Card, Geometry, f64), ReadError> {
+    pub fn card(&self, request: &Request, temp_c: f64, notes: &mut Vec<Note>) -> Result<CardOf, ReadError> {
         let found = self.find(request)?;
         let (wrapper_values, inner) = self.instance(&found, request, temp_c, notes)?;
         let get = |name: &str| inner.iter().rev().find(|(n, _)| &**n == name).map(|(_, v)| *v);
@@ -420,31 +428,31 @@ impl Process {
             );
             Note::new("physical-oxide", text).add_once(notes);
         }
-        let stated = Stated {
-            areas: ["ad", "as"].map(|n| get(n).is_some()),
-            perimeters: ["pd", "ps"].map(|n| get(n).is_some()),
-        };
         let mut g = g;
         if let Some(distance) = get("sc").filter(|d| *d > 0.0)
             && ["sca", "scb", "scc"].iter().all(|n| get(n).is_none())
         {
             g.well_proximity = layout::well_proximity(distance, g.width_m, card.base(Id::Scref));
         }
-        if stated.areas.contains(&false) || stated.perimeters.contains(&false) {
-            let width = Self::values(&card, &g, request)?.size.weffcj;
-            let geomod = get("geomod").or_else(|| get("geo")).unwrap_or_else(|| card.base(Id::Geomod));
-            if !(0.0..=10.0).contains(&geomod) || geomod.fract() != 0.0 {
-                return Err(ReadError::Range {
-                    at: request.at.clone(),
-                    name: "geomod".into(),
-                    value: geomod.to_string(),
-                    wanted: "want a whole number from 0 to 10".into(),
-                });
-            }
-            #[expect(clippy::cast_possible_truncation, reason = "a whole number from 0 to 10")]
-            layout::fill(&card, &mut g, width, geomod as i64, get("min") == Some(1.0), stated);
+        let geomod = get("geomod").or_else(|| get("geo")).unwrap_or_else(|| card.base(Id::Geomod));
+        if !(0.0..=10.0).contains(&geomod) || geomod.fract() != 0.0 {
+            return Err(ReadError::Range {
+                at: request.at.clone(),
+                name: "geomod".into(),
+                value: geomod.to_string(),
+                wanted: "want a whole number from 0 to 10".into(),
+            });
         }
-        Ok((card, g, count))
+        #[expect(clippy::cast_possible_truncation, reason = "a whole number from 0 to 10")]
+        let diffusions = Diffusions {
+            geomod: geomod as i64,
+            fewest_sources: get("min") == Some(1.0),
+            areas: ["ad", "as"].map(|n| get(n).is_some()),
+            perimeters: ["pd", "ps"].map(|n| get(n).is_some()),
+        };
+        let width = Self::values(&card, &g, request)?.size.weffcj;
+        diffusions.fill(&card, &mut g, width);
+        Ok(CardOf { card, geometry: g, count, diffusions })
     }
 
     /// The one bin with `lmin ≤ L < lmax` and `wmin ≤ W < wmax`; never an interpolation between bins.
@@ -471,6 +479,7 @@ impl Process {
         };
         let at_or_above = |x: f64, lo: f64| x >= lo * (1.0 - BIN_SLACK);
         let mut edge = None;
+        let mut inside_of: Option<&ModelText> = None;
         let mut near: Option<(f64, [f64; 4], &ModelText)> = None;
         for bin in found.bins {
             let m = &found.models[bin.model];
@@ -478,7 +487,18 @@ impl Process {
             let (w0, w1) = (limit(bin, 2, 0.0)?, limit(bin, 3, 1.0)?);
             let inside = |x: f64, lo: f64, hi: f64| at_or_above(x, lo) && !at_or_above(x, hi);
             if inside(l, l0, l1) && inside(w, w0, w1) {
-                return Ok(m);
+                if let Some(first) = inside_of {
+                    return Err(ReadError::Range {
+                        at: request.at.clone(),
+                        name: format!("size of a `{}` transistor", request.model),
+                        value: format!("L = {:.4} µm, W = {:.4} µm per finger", l * 1e6, w * 1e6),
+                        wanted: format!(
+                            "bins `{}` and `{}` both cover it; the cards must leave one (lmin ≤ L < lmax, wmin ≤ W < wmax)",
+                            first.name, m.name
+                        ),
+                    });
+                }
+                inside_of = Some(m);
             }
             // the top edge of the whole range belongs to the last bin
             let touches = |x: f64, lo: f64, hi: f64| at_or_above(x, lo) && x <= hi * (1.0 + BIN_SLACK);
@@ -491,7 +511,7 @@ impl Process {
                 near = Some((far, [l0, l1, w0, w1], m));
             }
         }
-        edge.ok_or_else(|| {
+        inside_of.or(edge).ok_or_else(|| {
             let nearest = near.map_or_else(String::new, |(_, limits, m)| {
                 let [l0, l1, w0, w1] = limits.map(|v| v * 1e6);
                 format!("; the nearest is L {l0:.4} to {l1:.4} µm, W {w0:.4} to {w1:.4} µm (`{}`)", m.name)
@@ -511,7 +531,7 @@ impl Process {
     /// As for [`Process::transistor`].
     pub fn effective(&self, request: &Request) -> Result<IndexMap<&'static str, f64>, ReadError> {
         let mut notes = Vec::new();
-        let (card, g, _) = self.card(request, 25.0, &mut notes)?;
+        let CardOf { card, geometry: g, .. } = self.card(request, 25.0, &mut notes)?;
         let values = Self::values(&card, &g, request)?;
         Ok(table::IDS.iter().map(|&id: &Id| (ROWS[id as usize].name, values[id])).collect())
     }

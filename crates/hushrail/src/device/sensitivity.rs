@@ -6,7 +6,7 @@ use serde::{Deserialize, Serialize};
 use super::bsim4::table::Id;
 use super::bsim4::values::Values;
 use super::dual::{Dual, Real};
-use super::process::{Process, Request};
+use super::process::{CardOf, Process, Request};
 use super::spec::DeviceModel;
 use super::{Bias, Geometry, bsim4, compact};
 use crate::physics::Kelvin;
@@ -63,6 +63,18 @@ pub struct Varied {
     pub count: f64,
 }
 
+fn knob(k: Knob, v: f64) -> Dual<KNOBS> {
+    Dual::variable(v, k as usize)
+}
+
+fn varied_geometry(g: &Geometry, sign: f64) -> Geometry<Dual<KNOBS>> {
+    let mut dual: Geometry<Dual<KNOBS>> = g.lift();
+    dual.length_m = knob(Knob::Length, g.length_m);
+    dual.width_m = knob(Knob::Width, g.width_m);
+    dual.delvto_v = knob(Knob::Threshold, 0.0) * sign + g.delvto_v;
+    dual
+}
+
 impl Process {
     /// Makes a transistor whose currents know their derivatives to the [`Knob`]s.
     ///
@@ -74,15 +86,6 @@ impl Process {
         temp: Kelvin,
         notes: &mut Vec<Note>,
     ) -> Result<Varied, ReadError> {
-        let knob = |k: Knob, v: f64| Dual::<KNOBS>::variable(v, k as usize);
-        let varied = |g: &Geometry, sign: f64| {
-            let mut dual: Geometry<Dual<KNOBS>> = g.lift();
-            dual.length_m = knob(Knob::Length, g.length_m);
-            dual.width_m = knob(Knob::Width, g.width_m);
-            dual.delvto_v = knob(Knob::Threshold, 0.0) * sign + g.delvto_v;
-            dual
-        };
-        let temp_k = knob(Knob::Temperature, temp.get());
         if let Some(model) = self.own_model(request) {
             let made = self.transistor(request, temp, notes)?;
             let DeviceModel::Compact(card) = model else {
@@ -92,19 +95,10 @@ impl Process {
                     wanted: "want a card or a compact device: points do not know what made them".into(),
                 });
             };
-            let g = varied(&made.geometry, card.polarity.sign());
-            let oxide = knob(Knob::Oxide, card.oxide_m);
-            let values = compact::params::Values::new(card, |p, v| match p {
-                compact::Param::Oxide => oxide,
-                // thicker or thinner along with the electrical thickness
-                compact::Param::TunnelOxide => oxide * (v / card.oxide_m),
-                _ => Dual::of(v),
-            });
-            let prepared = compact::prepare::Prepared::new(&values, &g, temp_k);
-            return Ok(Varied { prepared: Prepared::Compact(Box::new(prepared)), count: made.count });
+            return Ok(Varied::compact(card, &made.geometry, temp, made.count));
         }
-        let (card, g, count) = self.card(request, temp.celsius(), notes)?;
-        let dual = varied(&g, card.polarity.sign());
+        let CardOf { card, geometry, count, diffusions } = self.card(request, temp.celsius(), notes)?;
+        let mut dual = varied_geometry(&geometry, card.polarity.sign());
         let values = Values::at(&card, &dual, |id, v| {
             if matches!(id, Id::Toxe | Id::Toxp) { knob(Knob::Oxide, v) } else { Dual::of(v) }
         })
@@ -114,12 +108,30 @@ impl Process {
             value: format!("{size:.3e} m"),
             wanted: "want a drawn size well above the offsets of the card".into(),
         })?;
-        let prepared = bsim4::prepare::Prepared::new(&card, &values, &dual, temp_k);
+        // diffusions that the card draws get wider with the device
+        diffusions.fill(&card, &mut dual, values.size.weffcj);
+        let prepared =
+            bsim4::prepare::Prepared::new(&card, &values, &dual, knob(Knob::Temperature, temp.get()));
         Ok(Varied { prepared: Prepared::Bsim4(Box::new(prepared)), count })
     }
 }
 
 impl Varied {
+    /// A compact transistor.
+    pub fn compact(card: &compact::CompactCard, g: &Geometry, temp: Kelvin, count: f64) -> Self {
+        let dual = varied_geometry(g, card.polarity.sign());
+        let oxide = knob(Knob::Oxide, card.oxide_m);
+        let values = compact::params::Values::new(card, |p, v| match p {
+            compact::Param::Oxide => oxide,
+            // thicker or thinner along with the electrical thickness
+            compact::Param::TunnelOxide => oxide * (v / card.oxide_m),
+            _ => Dual::of(v),
+        });
+        let temp_k = knob(Knob::Temperature, temp.get());
+        let prepared = compact::prepare::Prepared::new(&values, &dual, temp_k);
+        Self { prepared: Prepared::Compact(Box::new(prepared)), count }
+    }
+
     /// Currents into drain, gate, source and body with derivatives to the knobs, A and A per unit; the bias is kept.
     pub fn terminals(&self, bias: Bias<f64>) -> [Dual<KNOBS>; 4] {
         let lift = |x: f64| Dual::<KNOBS>::of(x);

@@ -3,6 +3,7 @@
 use super::table::Id;
 use super::values::Card;
 use crate::device::Geometry;
+use crate::device::dual::Real;
 
 /// How the diffusion at one end of a device is drawn.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -37,68 +38,62 @@ fn ends(geomod: i64) -> (End, End) {
     }
 }
 
-/// Which areas and perimeters the netlist states: of the drain, of the source.
+/// How the diffusions of one device are drawn, as its netlist and its card say.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub struct Stated {
-    /// Areas of drain and source.
+pub struct Diffusions {
+    /// Layout number, 0 to 10.
+    pub geomod: i64,
+    /// Whether an even number of fingers leaves its outer ends to the drain.
+    pub fewest_sources: bool,
+    /// Whether the netlist states the areas of drain and source.
     pub areas: [bool; 2],
-    /// Perimeters of drain and source.
+    /// Whether the netlist states the perimeters of drain and source.
     pub perimeters: [bool; 2],
 }
 
-/// Fills areas and perimeters that the netlist does not state.
-///
-/// With DMCG from contact to gate and DMCI from contact to isolation, an isolated end of a finger is DMCG + DMCI long,
-/// a shared one counts DMCG for each finger, a merged one DMDG. An even number of fingers leaves both outer ends to the
-/// source, or to the drain when `min` is 1. Perimeters hold the gate edge when the card's `permod` is 1.
-///
-/// Source: BSIM4.8.0 manual, sections 11.1 and 11.2.
-pub fn fill(
-    card: &Card,
-    g: &mut Geometry,
-    junction_width_m: f64,
-    geomod: i64,
-    fewest_sources: bool,
-    stated: Stated,
-) {
-    let w = junction_width_m;
-    let (dmcg, dmci, dmdg) = (
-        card.base(Id::Dmcg) - card.base(Id::Dmcgt),
-        card.base(Id::Dmci),
-        card.base(Id::Dmdg) - card.base(Id::Dmcgt),
-    );
-    let nf = g.fingers;
-    let odd = nf % 2.0 == 1.0;
-    // fingers that face an outer diffusion, for the end that has the outer ones and for the other
-    let (outer, inner) = if odd { (1.0, 1.0) } else { (2.0, 0.0) };
-    let (source_outer, drain_outer) = if fewest_sources { (inner, outer) } else { (outer, inner) };
-    let size = |end: End, at_end: f64| {
-        let between = nf - at_end;
-        let isolated = (2.0 * (dmcg + dmci) + w, (dmcg + dmci) * w);
-        let shared = (2.0 * dmcg, dmcg * w);
-        let merged = (2.0 * dmdg, dmdg * w);
-        let sum = |n: f64, (p, a): (f64, f64), m: f64, (q, b): (f64, f64)| (n * p + m * q, n * a + m * b);
-        match end {
-            End::Isolated => sum(at_end, isolated, between, shared),
-            End::Shared => sum(nf, shared, 0.0, shared),
-            End::Merged => sum(at_end, merged, between, shared),
-            End::OneIsolated => sum(1.0, isolated, nf - 1.0, shared),
-        }
-    };
-    let gate_edge = if card.flag(Id::Permod) == 1 { w * nf } else { 0.0 };
-    let (source, drain) = ends(geomod);
-    let ((ps, area_s), (pd, area_d)) = (size(source, source_outer), size(drain, drain_outer));
-    let [has_pd, has_ps] = stated.perimeters;
-    let [has_ad, has_as] = stated.areas;
-    let put = |given: bool, to: &mut f64, v: f64| {
-        if !given {
-            *to = v.max(0.0);
-        }
-    };
-    put(has_ps, &mut g.ps_m, ps + gate_edge);
-    put(has_pd, &mut g.pd_m, pd + gate_edge);
-    put(has_as, &mut g.as_m2, area_s);
-    put(has_ad, &mut g.ad_m2, area_d);
+impl Diffusions {
+    /// Fills areas and perimeters that the netlist does not state.
+    ///
+    /// With DMCG from contact to gate and DMCI from contact to isolation, an isolated end of a finger is DMCG + DMCI long,
+    /// a shared one counts DMCG for each finger, a merged one DMDG. An even number of fingers leaves both outer ends to the
+    /// source, or to the drain when `min` is 1. Perimeters hold the gate edge when the card's `permod` is 1.
+    ///
+    /// Source: BSIM4.8.0 manual, sections 11.1 and 11.2.
+    pub fn fill<P: Real>(self, card: &Card, g: &mut Geometry<P>, junction_width_m: P) {
+        let w = junction_width_m;
+        let back = card.base(Id::Dmcgt);
+        let (dmcg, dmci, dmdg) =
+            (card.base(Id::Dmcg) - back, card.base(Id::Dmci), card.base(Id::Dmdg) - back);
+        let nf = g.fingers.val();
+        let odd = nf % 2.0 == 1.0;
+        // fingers that face an outer diffusion, for the end that has the outer ones and for the other
+        let (outer, inner) = if odd { (1.0, 1.0) } else { (2.0, 0.0) };
+        let (source_outer, drain_outer) = if self.fewest_sources { (inner, outer) } else { (outer, inner) };
+        // perimeter and area of one finger's part: its length along the channel, and whether it ends across it
+        let part = |length: f64, ends: f64| (w * ends + 2.0 * length, w * length);
+        let size = |end: End, at_end: f64| {
+            let (isolated, shared, merged) = (part(dmcg + dmci, 1.0), part(dmcg, 0.0), part(dmdg, 0.0));
+            let sum = |n: f64, a: (P, P), b: (P, P)| (a.0 * n + b.0 * (nf - n), a.1 * n + b.1 * (nf - n));
+            match end {
+                End::Isolated => sum(at_end, isolated, shared),
+                End::Shared => sum(nf, shared, shared),
+                End::Merged => sum(at_end, merged, shared),
+                End::OneIsolated => sum(1.0, isolated, shared),
+            }
+        };
+        let gate_edge = if card.flag(Id::Permod) == 1 { w * nf } else { P::of(0.0) };
+        let (source, drain) = ends(self.geomod);
+        let ((ps, area_s), (pd, area_d)) = (size(source, source_outer), size(drain, drain_outer));
+        let put = |given: bool, to: &mut P, v: P| {
+            if !given {
+                *to = if v.val() > 0.0 { v } else { P::of(0.0) };
+            }
+        };
+        put(self.perimeters[1], &mut g.ps_m, ps + gate_edge);
+        put(self.perimeters[0], &mut g.pd_m, pd + gate_edge);
+        put(self.areas[1], &mut g.as_m2, area_s);
+        put(self.areas[0], &mut g.ad_m2, area_d);
+    }
 }
 
 /// SCA, SCB and SCC of a device at distance `sc` from the edge of its well, all in metres.
@@ -131,19 +126,20 @@ mod tests {
         assert_eq!(ROWS.len(), COUNT);
         Card { polarity: Polarity::N, base, given: Box::new([false; COUNT]), terms: Vec::new() }
     }
-    const NONE: Stated = Stated { areas: [false; 2], perimeters: [false; 2] };
+    const NONE: Diffusions =
+        Diffusions { geomod: 0, fewest_sources: false, areas: [false; 2], perimeters: [false; 2] };
 
     /// Drawn by hand: two fingers of 1 µm, contacts 0.2 µm from the gate, 0.1 µm from isolation (geometry, no source).
     #[test]
     fn two_fingers_leave_both_ends_to_the_source() {
         let c = card(&[(Id::Dmcg, 0.2e-6), (Id::Dmci, 0.1e-6)]);
         let mut g = Geometry { fingers: 2.0, ..Geometry::new(2e-6, 0.1e-6) };
-        fill(&c, &mut g, 1e-6, 0, false, NONE);
+        NONE.fill(&c, &mut g, 1e-6);
         // two source ends of 0.3 × 1 µm; the drain between the gates is 0.4 × 1 µm
         assert!((g.as_m2 - 0.6e-12).abs() < 1e-24 && (g.ad_m2 - 0.4e-12).abs() < 1e-24, "{g:?}");
         assert!((g.ps_m - 2.0 * 1.6e-6).abs() < 1e-18 && (g.pd_m - 0.8e-6).abs() < 1e-18, "{g:?}");
         let mut swapped = Geometry { fingers: 2.0, ..Geometry::new(2e-6, 0.1e-6) };
-        fill(&c, &mut swapped, 1e-6, 0, true, NONE);
+        Diffusions { fewest_sources: true, ..NONE }.fill(&c, &mut swapped, 1e-6);
         assert_eq!((swapped.ad_m2, swapped.pd_m), (g.as_m2, g.ps_m));
     }
 
@@ -152,7 +148,7 @@ mod tests {
     fn gate_edge_and_stated_values() {
         let c = card(&[(Id::Dmcg, 0.2e-6), (Id::Dmci, 0.1e-6), (Id::Permod, 1.0)]);
         let mut g = Geometry { ad_m2: 7e-13, ..Geometry::new(1e-6, 0.1e-6) };
-        fill(&c, &mut g, 1e-6, 8, false, Stated { areas: [true, false], perimeters: [false; 2] });
+        Diffusions { geomod: 8, areas: [true, false], ..NONE }.fill(&c, &mut g, 1e-6);
         assert!((g.ad_m2 - 7e-13).abs() < 1e-26 && g.as_m2.abs() < 1e-26);
         assert!((g.pd_m - 1e-6).abs() < 1e-18, "merged without length: the gate edge only");
     }
