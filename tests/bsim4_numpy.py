@@ -188,7 +188,36 @@ def end_resistance(p: Mapping[str, float], s: Sizes, end: str, vg: Array, vb: Ar
     return np.asarray(least + 0.5 * r0 * (t + np.sqrt(t * t + 0.01)))
 
 
-def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array) -> Array:
+def saturation_factor(p: Mapping[str, float], vg: Array) -> Array:
+    """Non-saturation factor between A2 and 1 (section 5.5)."""
+    if p["a1"] == 0:
+        return p["a2"] + np.zeros_like(vg)
+    if p["a1"] > 0:
+        rest = 1 - p["a2"]
+        t = rest - p["a1"] * vg - 1e-4
+        return np.asarray(p["a2"] + rest - 0.5 * (t + np.sqrt(t * t + 4e-4 * rest)))
+    t = p["a2"] + p["a1"] * vg - 1e-4
+    return np.asarray(0.5 * (t + np.sqrt(t * t + 4e-4 * p["a2"])))
+
+
+def gate_behind_depletion(p: Mapping[str, float], s: Sizes, vgs: Array, vfb: float | None) -> Array:
+    """Gate voltage behind the depletion of a polysilicon gate (section 1.2)."""
+    if not 1e18 < p["ngate"] < 1e25:
+        return vgs
+    if vfb is None:
+        vfb = p["vth0"] - s.phi - p["k1"] * np.sqrt(s.phi)
+    over = np.maximum(vgs - vfb - s.phi, 0.0)
+    scale = Q * EPS_SI * p["ngate"] * 1e6 / s.coxe**2
+    drop = scale * (np.sqrt(1 + 2 * over / scale) - 1)
+    lost = 0.5 * drop**2 / scale
+    # the loss is held below the band gap
+    held = 1.12 - 0.5 * (1.12 - lost - 0.05 + np.sqrt((1.12 - lost - 0.05) ** 2 + 0.224))
+    return np.asarray(np.where(over > 0, vgs - held, vgs))
+
+
+def channel(
+    p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array, vfb: float | None = None
+) -> Array:
     """Channel current, with the resistance inside it (rdsMod 0) or without (rdsMod 1), A (section 5)."""
     vb = body_voltage(p, s, vbs)
     vth = threshold(p, s, vds, vb)
@@ -218,7 +247,7 @@ def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array
     vsat = p["vsat"] - p["at"] * tr if p["tempmod"] == 0 else p["vsat"] * (1 - p["at"] * (s.temp - s.tnom))
     wv = weff * vsat * s.coxe
     esat_l = 2 * vsat / mu * s.leff
-    lam = p["a2"] + np.zeros_like(vg)
+    lam = saturation_factor(p, vg)
     a = 2 * abulk * (abulk * wv * rds - 1 + 1 / lam)
     b = v2 * (2 / lam - 1) + abulk * esat_l + 3 * v2 * abulk * wv * rds
     c = v2 * (esat_l + 2 * v2 * wv * rds)
@@ -228,7 +257,7 @@ def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array
     vdseff = vdsat - 0.5 * (t1 + np.sqrt(t1 * t1 + 4 * p["delta"] * vdsat))
     diff = vds - vdseff
     # flat band from the threshold, as the manual defines it where the card gives none
-    vtfb = p["k1"] * sq0
+    vtfb = p["k1"] * sq0 if vfb is None else max(p["vth0"] - vfb - s.phi, 0.0)
     centroid = 1.9e-9 / (1 + ((vg + 4 * vtfb) / (2e8 * p["toxp"])) ** 0.7)
     coxeff = s.coxp * EPS_SI / (EPS_SI + s.coxp * centroid)
     beta = mu * coxeff * weff / s.leff
@@ -240,7 +269,9 @@ def channel(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array
     va_sat = (esat_l + vdsat + 2 * wv * rds * vg * (1 - 0.5 * abulk * vdsat / v2)) / (
         2 / lam - 1 + wv * rds * abulk
     )
-    cclm = (1 + rds * idl) * (s.leff + vdsat * mu / (2 * vsat)) / (p["pclm"] * s.litl)
+    gate_help = p["pvag"] * vg / esat_l
+    va_dibl = va_dibl * (1 + gate_help)
+    cclm = (1 + gate_help) * (1 + rds * idl) * (s.leff + vdsat * mu / (2 * vsat)) / (p["pclm"] * s.litl)
     i = idl * (1 + diff / va_dibl)
     if p["pdits"] > 0:
         i = i * (1 + diff * p["pdits"] / (1 + (1 + p["pditsl"] * s.leff) * np.exp(p["pditsd"] * vds)))
@@ -261,7 +292,7 @@ def gidl(p: Mapping[str, float], s: Sizes, vgs: Array, vds: Array, vbs: Array) -
     return np.asarray(np.where((x > 0) & (vdb > 0), i, 0.0))
 
 
-def gate_edge(p: Mapping[str, float], s: Sizes, v: Array, side: str) -> Array:
+def gate_edge(p: Mapping[str, float], s: Sizes, v: Array, side: str, polarity: str = "n") -> Array:
     """Tunnelling through one overlap, A out of the gate; ``v`` is gate minus diffusion (section 4.2)."""
     vfbsd = (
         K_OVER_Q * s.tnom * np.log(p["ngate"] / p["nsd"]) + p["vfbsdoff"] if p["ngate"] > 0 else p["vfbsdoff"]
@@ -270,14 +301,15 @@ def gate_edge(p: Mapping[str, float], s: Sizes, v: Array, side: str) -> Array:
     t = p["toxe"] * p["poxedge"]
     ratio = (p["toxref"] / t) ** p["ntox"] / t**2
     a, b, c = p["aig" + side], p["big" + side], p["cig" + side]
+    prefactor, barrier = (4.97232e-7, 7.45669e11) if polarity == "n" else (3.42537e-7, 1.16645e12)
     return np.asarray(
-        4.97232e-7
+        prefactor
         * s.weff
-        * p["dlcig"]
+        * p["dlcig" if side == "s" else "dlcigd"]
         * ratio
         * v
         * away
-        * np.exp(-7.45669e11 * t * (a - b * away) * (1 + c * away))
+        * np.exp(-barrier * t * (a - b * away) * (1 + c * away))
     )
 
 
