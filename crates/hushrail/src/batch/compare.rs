@@ -147,8 +147,9 @@ impl LoadedTable {
         };
         let comparison =
             Comparison { cells: &self.cells, processes, floor_s: self.floor_s, options: options.clone() };
-        let mut found =
-            watched(self.rows.len(), progress, |w| comparison.run(&self.rows, &self.corners, &w.done, &w.stop))?;
+        let mut found = watched(self.rows.len(), progress, |w| {
+            comparison.run(&self.rows, &self.corners, &w.done, &w.stop)
+        })?;
         let mut notes = self.notes.clone();
         for n in std::mem::take(&mut found.notes) {
             n.add_once(&mut notes);
