@@ -312,7 +312,6 @@ operation!(Div, div, div_f64s);
 impl<S: Simd> Div<f64> for Lanes<S> {
     type Output = Self;
     #[inline(always)]
-    #[expect(clippy::suspicious_arithmetic_impl, reason = "a reciprocal is multiplied with")]
     fn div(self, o: f64) -> Self {
         self * (1.0 / o)
     }
