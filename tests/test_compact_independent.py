@@ -1,4 +1,4 @@
-"""The core's compact model against a second evaluation from the published equations (``baselines/compact_numpy.py``)."""
+"""The core's compact model against a second evaluation from the papers (``baselines/compact_numpy.py``)."""
 
 from __future__ import annotations
 
@@ -53,7 +53,8 @@ def test_currents_equal_the_second_evaluation(temp_c: float) -> None:
         )
     )
     d = cn.Device(CARD, W, L, AREA, PERIMETER, temp_c + 273.15)
-    ids, gidl_d, gidl_s, junction_d, junction_s, gate_d, gate_s = cn.mechanisms(d, cn.constants(d), vg, vd, vb)
+    k = cn.constants(d)
+    ids, gidl_d, gidl_s, junction_d, junction_s, gate_d, gate_s = cn.mechanisms(d, k, vg, vd, vb)
     got = device.by_mechanism(vd, vg, np.zeros_like(vg), vb)
     for what, value, want in [
         ("channel", got[:, 0, 0], ids),

@@ -1,6 +1,6 @@
 """Nanoseconds per device evaluation: NumPy, the core one point at a time, the core in lanes, in one run.
 
-``python tests/baselines/speed.py CARGO`` runs the core's example ``speed`` for the core's numbers. All on one core; the best of many runs.
+``python -m baselines.speed CARGO`` in the folder of the tests runs the core's example ``speed`` for the core's numbers. All on one core; the best of many runs.
 NumPy evaluates blocks that fit its caches best (the size is tried out). The equations of the BSIM4 row are those of
 ``bsim4_numpy.py``: channel, GIDL of both ends, both gate edges, both junctions; the core computes tunnelling to the
 channel besides.
@@ -16,15 +16,13 @@ import time
 from collections.abc import Callable
 from pathlib import Path
 
-import numpy as np
-
-sys.path.insert(0, str(Path(__file__).parents[1]))
-
 import bsim4_numpy as b4
+import numpy as np
 import test_bsim4_independent as bsim4_test
 import test_compact_independent as compact_test
-from baselines import compact_numpy as cn
 from hushrail import _core
+
+from baselines import compact_numpy as cn
 
 W, L, AREA, PERIMETER = 0.8e-6, 70e-9, 0.12e-12, 1.9e-6
 POINTS = 16384
@@ -73,10 +71,11 @@ def main(cargo: str) -> None:
         "BSIM4": best_ns(bsim4_numpy, points),
         "compact": best_ns(lambda vg, vd, vb: cn.mechanisms(d, k, vg, vd, vb), points),
     }
-    print(f"{'ns per evaluation':20}{'NumPy':>10}{'alone':>10}{'in lanes':>10}{'NumPy/alone':>14}{'NumPy/lanes':>14}")
+    heads = ("NumPy", "alone", "in lanes", "NumPy/alone", "NumPy/lanes")
+    print("ns per evaluation   " + "".join(f"{head:>13}" for head in heads))
     for name, ns in numpy_ns.items():
         alone, lanes = core[name]["alone"], core[name]["lanes"]
-        print(f"{name:20}{ns:10.1f}{alone:10.1f}{lanes:10.1f}{ns / alone:14.1f}{ns / lanes:14.1f}")
+        print(f"{name:20}" + "".join(f"{x:13.1f}" for x in (ns, alone, lanes, ns / alone, ns / lanes)))
 
 
 if __name__ == "__main__":

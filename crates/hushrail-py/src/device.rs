@@ -36,6 +36,7 @@ impl Process {
     #[staticmethod]
     #[pyo3(signature = (name, files, *, section=None, skip_includes=Vec::new(), scale_m=None, models=IndexMap::new(),
                         devices=None))]
+    #[expect(clippy::too_many_arguments, reason = "keywords in Python")]
     fn read(
         py: Python<'_>,
         name: &str,

@@ -80,8 +80,9 @@ fn bench(place: &Place, args: &[OsString]) -> Result<u8, Problem> {
     }
     let venv = setup::set_up(place)?;
     extension::build(place, &venv)?;
-    let script = place.root().join("tests").join("baselines").join("speed.py");
-    let mut python = venv.python();
-    python.arg(script).arg(env::var_os("CARGO").unwrap_or_else(|| "cargo".into())).current_dir(place.root());
+    let mut python = venv.module("baselines.speed");
+    python
+        .arg(env::var_os("CARGO").unwrap_or_else(|| "cargo".into()))
+        .current_dir(place.root().join("tests"));
     child::status_of(&mut python)
 }
