@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import json
-
 import numpy as np
 import pytest
 from baselines import compact_numpy as cn
@@ -42,9 +40,8 @@ W, L, AREA, PERIMETER = 0.8e-6, 60e-9, 0.12e-12, 1.9e-6
 
 @pytest.mark.parametrize("temp_c", [-40.0, 27.0, 125.0])
 def test_currents_equal_the_second_evaluation(temp_c: float) -> None:
-    devices = json.dumps({"nc": {"compact": {"polarity": "n"} | CARD}})
-    process = _core.Process.read("compact", [], devices=devices)
     geometry = {"w": W, "l": L, "ad": AREA, "as": AREA, "pd": PERIMETER, "ps": PERIMETER}
+    process = _core.Process.of_devices("compact", {"nc": _core.CompactModel("n", CARD)})
     device = process.transistor("nc", geometry, temp_c)
     vg, vd, vb = (
         np.ascontiguousarray(x.ravel())

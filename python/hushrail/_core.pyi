@@ -30,7 +30,6 @@ class Process:
         skip_includes: Sequence[str] = ...,
         scale_m: float | None = None,
         models: dict[str, str] = ...,
-        devices: str | None = None,
     ) -> Process: ...
     @staticmethod
     def of_devices(name: str, devices: Mapping[str, CompactModel | TableModel]) -> Process: ...

@@ -1,10 +1,12 @@
-"""The compact model's published equations as vectorised NumPy: a second evaluation and the yardstick of speed.
+"""The compact model's published equations as vectorised NumPy: a second evaluation and the yardstick
+of speed.
 
-Written from the sources that the model names, in plain forms (no dual numbers, no lanes): charge-based channel and
-pinch-off voltage (Enz, Krummenacher, Vittoz, Analog Integr. Circuits Signal Process. 8 (1995) 83-114; Bucher et al.,
-EKV 2.6 manual), barrier lowering and its length law (Liu et al., IEEE T-ED 40 (1993) 86-95), velocity saturation
-(Caughey and Thomas, Proc. IEEE 55 (1967) 2192), GIDL (BSIM4.8.0 manual, section 6.2), junctions (Sah, Noyce, Shockley,
-Proc. IRE 45 (1957) 1228; band-to-band tunnelling as in Roy et al., Proc. IEEE 91 (2003) 305), direct tunnelling
+Written from the sources that the model names, in plain forms (no dual numbers, no lanes): charge-
+based channel and pinch-off voltage (Enz, Krummenacher, Vittoz, Analog Integr. Circuits Signal
+Process. 8 (1995) 83-114; Bucher et al., EKV 2.6 manual), barrier lowering and its length law (Liu
+et al., IEEE T-ED 40 (1993) 86-95), velocity saturation (Caughey and Thomas, Proc. IEEE 55 (1967)
+2192), GIDL (BSIM4.8.0 manual, section 6.2), junctions (Sah, Noyce, Shockley, Proc. IRE 45 (1957)
+1228; band-to-band tunnelling as in Roy et al., Proc. IEEE 91 (2003) 305), direct tunnelling
 (Schuegraf and Hu, IEEE T-ED 41 (1994) 761). n-channel; voltages are arrays of one shape.
 """
 
@@ -127,10 +129,10 @@ def softplus(x: Array) -> Array:
 
 
 def channel(d: Device, k: Constants, vgs: Array, vds: Array, vbs: Array) -> tuple[Array, Array, Array]:
-    """Current from drain to source and the inversion charge in volts at source and drain, for ``vds >= 0``."""
+    """Current, and the inversion charge in volts at source and drain, for ``vds >= 0``."""
     gamma, v2 = d.card["body_sqrt_v"], 2 * k.vt
     vg, vs, vd = vgs - vbs, -vbs, vds - vbs
-    # the smaller of vd and vs, smooth: half of the sum less vds*tanh(vds/vt); away from vs it is a small share of vds
+    # the smaller of vd and vs, smooth: half of their sum less vds*tanh(vds/vt)
     e4 = np.exp(-2 * vds / k.vt)
     lower = vs + vds * e4 / (1 + e4)
     rest = k.linear - 1 - 2 * k.dibl
@@ -169,7 +171,7 @@ def junction(k: Constants, v: Array) -> Array:
 
 
 def gate(d: Device, k: Constants, v: Array, charge: Array) -> Array:
-    """Current from the gate into one diffusion and the end of the channel there; ``v`` is gate minus diffusion."""
+    """Current from the gate into one end; ``v`` is gate minus diffusion."""
     c = d.card
     barrier, thick = c["tunnel_barrier_v"], c["tunnel_oxide_m"]
     a = Q**2 / (16 * np.pi**2 * HBAR * barrier) / thick**2
@@ -191,7 +193,7 @@ def gate(d: Device, k: Constants, v: Array, charge: Array) -> Array:
 def mechanisms(
     d: Device, k: Constants, vgs: Array, vds: Array, vbs: Array
 ) -> tuple[Array, Array, Array, Array, Array, Array, Array]:
-    """Channel, GIDL of drain and source, junctions of drain and source, gate to drain and source, A; ``vds >= 0``."""
+    """Channel; then of drain and source: GIDL, junctions, gate; A, for ``vds >= 0``."""
     ids, source_v, drain_v = channel(d, k, vgs, vds, vbs)
     return (
         ids,

@@ -1,8 +1,10 @@
-"""Nanoseconds per device evaluation: NumPy, the core one point at a time, the core in lanes, in one run.
+"""Nanoseconds per device evaluation: NumPy, the core one point at a time, the core in lanes, in one
+run.
 
-``python -m baselines.speed CARGO`` in the folder of the tests runs the core's example ``speed`` for the core's numbers. All on one core; the best of many runs.
-NumPy evaluates blocks that fit its caches best (the size is tried out). The equations of the BSIM4 row are those of
-``bsim4_numpy.py``: channel, GIDL of both ends, both gate edges, both junctions; the core computes tunnelling to the
+``python -m baselines.speed CARGO`` in the folder of the tests runs the core's example ``speed`` for
+the core's numbers. All on one core; the best of many runs. NumPy evaluates blocks that fit its
+caches best (the size is tried out). The equations of the BSIM4 row are those of ``bsim4_numpy.py``:
+channel, GIDL of both ends, both gate edges, both junctions; the core computes tunnelling to the
 channel besides.
 """
 

@@ -6,7 +6,6 @@ use std::sync::Arc;
 use hushrail::batch::load::load_process;
 use hushrail::batch::study::ProcessSpec;
 use hushrail::device::process::Request;
-use hushrail::device::spec::DeviceSpec;
 use hushrail::device::{Bias, Branches, Mechanism, Polarity, per_terminal};
 use hushrail::physics::Kelvin;
 use hushrail::read::Place;
@@ -32,11 +31,9 @@ fn request(model: &str, params: IndexMap<String, f64>) -> Request {
 
 #[pymethods]
 impl Process {
-    /// Reads cards; `devices` are compact and table devices as JSON of the tables `[device.NAME]` of a study.
+    /// Reads cards.
     #[staticmethod]
-    #[pyo3(signature = (name, files, *, section=None, skip_includes=Vec::new(), scale_m=None, models=IndexMap::new(),
-                        devices=None))]
-    #[expect(clippy::too_many_arguments, reason = "keywords in Python")]
+    #[pyo3(signature = (name, files, *, section=None, skip_includes=Vec::new(), scale_m=None, models=IndexMap::new()))]
     fn read(
         py: Python<'_>,
         name: &str,
@@ -45,14 +42,10 @@ impl Process {
         skip_includes: Vec<String>,
         scale_m: Option<f64>,
         models: IndexMap<String, String>,
-        devices: Option<&str>,
     ) -> PyResult<Self> {
-        let devices: IndexMap<String, DeviceSpec> = devices
-            .map_or_else(|| Ok(IndexMap::new()), serde_json::from_str)
-            .map_err(|e| error::range(format!("devices: {e}")))?;
         let spec = ProcessSpec { files, section, skip_includes, scale_m, ..ProcessSpec::default() };
         let p = py
-            .detach(|| load_process(name, &spec, &models, &devices, Path::new("")))
+            .detach(|| load_process(name, &spec, &models, &IndexMap::new(), Path::new("")))
             .map_err(|e| error::read(&e))?;
         Ok(Self { inner: Arc::new(p) })
     }
