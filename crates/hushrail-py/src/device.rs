@@ -7,7 +7,7 @@ use hushrail::batch::load::load_process;
 use hushrail::batch::study::ProcessSpec;
 use hushrail::device::process::Request;
 use hushrail::device::sensitivity::{KNOBS, Varied};
-use hushrail::device::{Bias, Mechanism, Polarity, per_terminal};
+use hushrail::device::{Bias, Branches, Mechanism, Polarity, per_terminal};
 use hushrail::physics::Kelvin;
 use hushrail::read::Place;
 use indexmap::IndexMap;
@@ -156,12 +156,11 @@ impl Device {
         let n = at.n;
         let out = py.detach(|| {
             let mut out = Array2::zeros((n, 4));
-            for i in 0..n {
-                let t = self.inner.branches(at.bias(i)).terminals();
-                for k in 0..4 {
-                    out[[i, k]] = t[k] * self.count;
+            at.evaluate(&*self.inner, |i, b| {
+                for (k, x) in b.terminals().into_iter().enumerate() {
+                    out[[i, k]] = x * self.count;
                 }
-            }
+            });
             out
         });
         Ok(out.into_pyarray(py))
@@ -180,14 +179,13 @@ impl Device {
         let n = at.n;
         let out = py.detach(|| {
             let mut out = Array3::zeros((n, 5, 4));
-            for i in 0..n {
-                let b = self.inner.branches(at.bias(i));
+            at.evaluate(&*self.inner, |i, b| {
                 for (m, mechanism) in Mechanism::ALL.into_iter().enumerate() {
                     for (k, x) in b.terminals_of(mechanism).into_iter().enumerate() {
                         out[[i, m, k]] = x * self.count;
                     }
                 }
-            }
+            });
             out
         });
         Ok(out.into_pyarray(py))
@@ -271,6 +269,21 @@ impl<'a> Points<'a> {
             Ok(Self { n: lengths[0], terminals })
         } else {
             Err(error::range(format!("bias arrays have lengths {lengths:?}; want one length")))
+        }
+    }
+
+    /// Branch currents at every point, in blocks that stay in the cache.
+    fn evaluate(&self, device: &dyn hushrail::device::Device, mut take: impl FnMut(usize, Branches<f64>)) {
+        const BLOCK: usize = 256;
+        let (mut biases, mut out) = (Vec::with_capacity(BLOCK), vec![Branches::zero(); BLOCK]);
+        for start in (0..self.n).step_by(BLOCK) {
+            biases.clear();
+            biases.extend((start..self.n.min(start + BLOCK)).map(|i| self.bias(i)));
+            let out = &mut out[..biases.len()];
+            device.branches_many(&biases, out);
+            for (i, b) in out.iter().enumerate() {
+                take(start + i, *b);
+            }
         }
     }
 

@@ -6,25 +6,34 @@ mod common;
 use std::hint::black_box;
 use std::sync::Arc;
 
-use common::{CELLS, process};
-use criterion::{Criterion, criterion_group, criterion_main};
+use common::{CELLS, process, uniform};
+use criterion::{Criterion, Throughput, criterion_group, criterion_main};
 use hushrail::cell::{BoundCell, CellReader, DeviceShelf, Levels, RailNames};
 use hushrail::circuit::newton::{SolveOptions, Workspace};
-use hushrail::device::Bias;
+use hushrail::device::bulk::Width;
+use hushrail::device::compact::CompactCard;
 use hushrail::device::process::Request;
+use hushrail::device::{Bias, Branches, Device, Geometry};
 use hushrail::physics::Kelvin;
 use hushrail::read::{DeckOptions, Place, Source, read_deck};
 
-fn device(c: &mut Criterion) {
-    let p = process();
-    let temp = Kelvin::from_celsius(25.0).expect("in range");
-    let request = Request {
+/// Points of one array: within the first cache.
+const POINTS: u64 = 512;
+
+fn request() -> Request {
+    Request {
         model: "nx".into(),
         params: [("w", 1e-6), ("l", 60e-9), ("ad", 1e-13), ("as", 1e-13), ("pd", 1.2e-6), ("ps", 1.2e-6)]
             .map(|(n, v)| (Arc::from(n), v))
             .to_vec(),
         at: Place::new(&Arc::from("bench"), 1, 1),
-    };
+    }
+}
+
+fn device(c: &mut Criterion) {
+    let p = process();
+    let temp = Kelvin::from_celsius(25.0).expect("in range");
+    let request = request();
     c.bench_function("device from card", |b| {
         b.iter(|| p.transistor(black_box(&request), temp, &mut Vec::new()).expect("device"));
     });
@@ -32,6 +41,42 @@ fn device(c: &mut Criterion) {
     let off = Bias { vgs: -0.1, vds: 1.0, vbs: 0.0 };
     c.bench_function("BSIM4 currents", |b| b.iter(|| dev.branches(black_box(off))));
     c.bench_function("BSIM4 currents and slopes", |b| b.iter(|| dev.branches_dual(black_box(off).dual())));
+}
+
+/// Bias points all over the field of a device, one at a time and in lanes of each width.
+fn lanes(c: &mut Criterion) {
+    let temp = Kelvin::from_celsius(25.0).expect("in range");
+    let biases: Vec<Bias<f64>> = (0..POINTS)
+        .map(|k| {
+            let [g, d, b] = [0, 1, 2].map(|i| uniform(5, 3 * k + i));
+            Bias { vgs: 1.7 * g - 0.6, vds: 1.1 * d, vbs: 1.1 * b - 1.0 }
+        })
+        .collect();
+    let mut out = vec![Branches::zero(); biases.len()];
+    let g = Geometry { ad_m2: 1e-13, as_m2: 1e-13, pd_m: 1.2e-6, ps_m: 1.2e-6, ..Geometry::new(1e-6, 45e-9) };
+    let card = CompactCard::generic("generic 45 nm low power n").expect("known");
+    let compact = card.device(&g, temp).expect("device");
+    let bsim4 = process().transistor(&request(), temp, &mut Vec::new()).expect("device").device;
+    for (name, device) in [("compact", &compact as &dyn Device), ("BSIM4", &*bsim4)] {
+        let mut group = c.benchmark_group(format!("{name}, {POINTS} points"));
+        group.throughput(Throughput::Elements(POINTS));
+        group.bench_function("one at a time", |b| {
+            b.iter(|| {
+                for (b, o) in biases.iter().zip(&mut out) {
+                    *o = device.branches(*b);
+                }
+            });
+        });
+        group.bench_function("in lanes", |b| b.iter(|| device.branches_many(black_box(&biases), &mut out)));
+        group.finish();
+    }
+    let mut group = c.benchmark_group(format!("compact by width, {POINTS} points"));
+    group.throughput(Throughput::Elements(POINTS));
+    for width in [Width::Avx512, Width::Avx2, Width::Portable] {
+        group.bench_function(format!("{width:?}"), |b| {
+            b.iter(|| compact.branches_with(black_box(&biases), &mut out, width));
+        });
+    }
 }
 
 fn cell(c: &mut Criterion) {
@@ -57,5 +102,5 @@ fn cell(c: &mut Criterion) {
     }
 }
 
-criterion_group!(benches, device, cell);
+criterion_group!(benches, device, lanes, cell);
 criterion_main!(benches);

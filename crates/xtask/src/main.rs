@@ -26,7 +26,7 @@ use problem::Problem;
 const HELP: &str = "\
 cargo xtask demo [ARGS]            build the Python package and show what it does
 cargo xtask test                   every check a change must pass
-cargo xtask bench [ARGS]           the benchmarks; ARGS go to `cargo bench`
+cargo xtask bench [ARGS]           the benchmarks, and device evaluations against NumPy; with ARGS only `cargo bench ARGS`
 cargo xtask accuracy [DIR] [ARGS]  our currents against published ones; DIR is ../shared/data/sky130 when left out,
                                    ARGS (such as --json FILE) go to the example `accuracy`
 cargo xtask help                   this text
@@ -72,6 +72,17 @@ fn demo(place: &Place, args: &[OsString]) -> Result<u8, Problem> {
     child::status_of(venv.module("hushrail.demo").args(args))
 }
 
+/// The benchmarks, and unless something was asked of them, a comparison with NumPy in the same run.
 fn bench(place: &Place, args: &[OsString]) -> Result<u8, Problem> {
-    child::status_of(child::cargo(place).args(["bench", "--package", "hushrail"]).args(args))
+    let code = child::status_of(child::cargo(place).args(["bench", "--package", "hushrail"]).args(args))?;
+    if code != 0 || !args.is_empty() {
+        return Ok(code);
+    }
+    let venv = setup::set_up(place)?;
+    extension::build(place, &venv)?;
+    let mut python = venv.module("baselines.speed");
+    python
+        .arg(env::var_os("CARGO").unwrap_or_else(|| "cargo".into()))
+        .current_dir(place.root().join("tests"));
+    child::status_of(&mut python)
 }

@@ -1,6 +1,6 @@
 //! Junction diodes given as elements of a netlist (wells, antenna diodes).
 
-use super::dual::Real;
+use super::dual::{Number, Real};
 use crate::physics::{CELSIUS_ZERO_K, KB_OVER_Q};
 use crate::read::deck::{Deck, DeckScope, ModelText, Note};
 use crate::read::source::{ReadError, nearest};
@@ -99,7 +99,7 @@ impl Diode {
     /// Derivative of the current to temperature at a voltage, A/K.
     pub fn temperature_slope(&self, v: f64, temp_k: f64) -> f64 {
         let x = v / self.nvt_v;
-        self.current(v) * self.d_ln_isat_k - self.isat_a * Real::exp(x) * x / temp_k
+        self.current(v) * self.d_ln_isat_k - self.isat_a * Number::exp(x) * x / temp_k
     }
 
     /// Current from anode to cathode, A.

@@ -3,8 +3,39 @@
 
 use std::ops::{Add, Div, Mul, Neg, Sub};
 
-/// What the device equations need of a number.
-pub trait Real:
+/// What a comparison of [`Number`]s gives.
+pub trait Answer: Copy {
+    /// The answer where there is a single one; a row has one for each point.
+    fn single(self) -> Option<bool>;
+}
+
+impl Answer for bool {
+    #[inline(always)]
+    fn single(self) -> Option<bool> {
+        Some(self)
+    }
+}
+
+/// `choose!(mask, then, otherwise)`: one of two results by a comparison of a [`Number`]. Both sides must be harmless to
+/// evaluate anywhere: infinities and NaN are, panics are not.
+macro_rules! choose {
+    ($mask:expr, $then:expr, $otherwise:expr $(,)?) => {{
+        let mask = $mask;
+        match $crate::device::dual::Answer::single(mask) {
+            Some(true) => $then,
+            Some(false) => $otherwise,
+            None => $crate::device::dual::Number::select(mask, $then, $otherwise),
+        }
+    }};
+}
+pub(crate) use choose;
+
+/// What the device equations need of a number: plain, dual, or a row of bias points ([`super::lanes`]).
+///
+/// A row has no single value to branch on, so equations compare into a mask and choose with the macro `choose!`. A single
+/// number evaluates the side it takes and nothing else; a row evaluates both and takes each point from its own side. The
+/// sides are expressions, not closures: a closure is a function of its own, compiled without the wide instructions.
+pub trait Number:
     Copy
     + std::fmt::Debug
     + Add<Output = Self>
@@ -17,98 +48,175 @@ pub trait Real:
     + Mul<f64, Output = Self>
     + Div<f64, Output = Self>
 {
+    /// The answer of a comparison.
+    type Mask: Answer;
+
+    /// A constant of the same kind as this number.
+    fn like(self, v: f64) -> Self;
+    /// Whether the value is below `c`; false for NaN, as all comparisons.
+    fn below(self, c: f64) -> Self::Mask;
+    /// Whether the value is `c` or less.
+    fn at_most(self, c: f64) -> Self::Mask;
+    /// Whether the value is above `c`.
+    fn above(self, c: f64) -> Self::Mask;
+    /// Whether the value is `c` or more.
+    fn at_least(self, c: f64) -> Self::Mask;
+    /// One of two results.
+    fn select(mask: Self::Mask, then: Self, otherwise: Self) -> Self;
+
+    /// eˣ, continued by its tangent beyond 650 so that no infinity appears.
+    fn exp(self) -> Self;
+    /// eˣ − 1 without cancellation, continued like [`exp`](Number::exp).
+    fn exp_m1(self) -> Self;
+    /// eˣ and eˣ − 1, each with all its digits; for x up to 650.
+    fn exp_and_m1(self) -> (Self, Self);
+    /// Natural logarithm.
+    fn ln(self) -> Self;
+    /// ln(1 + x) without cancellation.
+    fn ln_1p(self) -> Self;
+    /// ln(1 + eˣ), exact in both tails.
+    fn softplus(self) -> Self;
+    /// Square root.
+    fn sqrt(self) -> Self;
+    /// 1/x.
+    fn recip(self) -> Self;
+    /// x².
+    fn sq(self) -> Self;
+    /// Hyperbolic tangent.
+    fn tanh(self) -> Self;
+    /// Magnitude.
+    fn abs(self) -> Self;
+    /// xʸ for positive x.
+    #[inline(always)]
+    fn pow(self, y: Self) -> Self {
+        (self.ln() * y).exp()
+    }
+}
+
+/// A single number, whose value can be looked at.
+pub trait Real: Number<Mask = bool> {
     /// A constant.
     fn of(v: f64) -> Self;
     /// The value without its derivatives.
     fn val(self) -> f64;
     /// Applies a function of which value and slope at `val` are given.
     fn chain(self, value: f64, slope: f64) -> Self;
-
-    /// eˣ, continued by its tangent beyond 650 so that no infinity appears.
-    #[inline]
-    fn exp(self) -> Self {
-        let x = self.val();
-        if x > 650.0 {
-            let top = 650f64.exp();
-            return self.chain(top * (x - 649.0), top);
-        }
-        let e = x.exp();
-        self.chain(e, e)
-    }
-    /// Natural logarithm.
-    #[inline]
-    fn ln(self) -> Self {
-        self.chain(self.val().ln(), 1.0 / self.val())
-    }
-    /// Square root.
-    #[inline]
-    fn sqrt(self) -> Self {
-        let r = self.val().sqrt();
-        self.chain(r, 0.5 / r)
-    }
-    /// 1/x.
-    #[inline]
-    fn recip(self) -> Self {
-        let r = 1.0 / self.val();
-        self.chain(r, -r * r)
-    }
-    /// x².
-    #[inline]
-    fn sq(self) -> Self {
-        self.chain(self.val() * self.val(), 2.0 * self.val())
-    }
-    /// eˣ − 1 without cancellation.
-    #[inline]
-    fn exp_m1(self) -> Self {
-        let x = self.val();
-        if x > 650.0 {
-            return self.exp();
-        }
-        let e = x.exp_m1();
-        self.chain(e, e + 1.0)
-    }
-    /// ln(1 + x) without cancellation.
-    #[inline]
-    fn ln_1p(self) -> Self {
-        self.chain(self.val().ln_1p(), 1.0 / (1.0 + self.val()))
-    }
-    /// ln(1 + eˣ), exact in both tails.
-    #[inline]
-    fn softplus(self) -> Self {
-        let x = self.val();
-        let e = (-x.abs()).exp();
-        let tail = e.ln_1p();
-        if x > 0.0 { self.chain(x + tail, 1.0 / (1.0 + e)) } else { self.chain(tail, e / (1.0 + e)) }
-    }
     /// Arc tangent.
     #[inline]
     fn atan(self) -> Self {
         self.chain(self.val().atan(), 1.0 / (1.0 + self.val() * self.val()))
     }
-    /// Hyperbolic tangent.
-    #[inline]
-    fn tanh(self) -> Self {
-        let t = self.val().tanh();
-        self.chain(t, 1.0 - t * t)
-    }
-    /// xʸ for positive x.
-    #[inline]
-    fn pow(self, y: Self) -> Self {
-        (self.ln() * y).exp()
-    }
-    /// Magnitude.
-    #[inline]
-    fn abs(self) -> Self {
-        if self.val() < 0.0 { -self } else { self }
-    }
+}
+
+/// The functions of a [`Number`] out of `val` and `chain`, for each kind of single number.
+macro_rules! functions_of_single_numbers {
+    () => {
+        type Mask = bool;
+
+        #[inline]
+        fn like(self, v: f64) -> Self {
+            Self::of(v)
+        }
+        #[inline]
+        fn below(self, c: f64) -> bool {
+            self.val() < c
+        }
+        #[inline]
+        fn at_most(self, c: f64) -> bool {
+            self.val() <= c
+        }
+        #[inline]
+        fn above(self, c: f64) -> bool {
+            self.val() > c
+        }
+        #[inline]
+        fn at_least(self, c: f64) -> bool {
+            self.val() >= c
+        }
+        #[inline]
+        fn select(mask: bool, then: Self, otherwise: Self) -> Self {
+            if mask { then } else { otherwise }
+        }
+        #[inline]
+        fn exp(self) -> Self {
+            let x = self.val();
+            if x > 650.0 {
+                let top = 650f64.exp();
+                return self.chain(top * (x - 649.0), top);
+            }
+            let e = x.exp();
+            self.chain(e, e)
+        }
+        #[inline]
+        fn exp_m1(self) -> Self {
+            let x = self.val();
+            if x > 650.0 {
+                return Number::exp(self);
+            }
+            let e = x.exp_m1();
+            self.chain(e, e + 1.0)
+        }
+        #[inline]
+        fn exp_and_m1(self) -> (Self, Self) {
+            if self.val() > -std::f64::consts::LN_2 {
+                let less = Number::exp_m1(self);
+                (less + 1.0, less)
+            } else {
+                let e = Number::exp(self);
+                (e, e - 1.0)
+            }
+        }
+        #[inline]
+        fn ln(self) -> Self {
+            self.chain(self.val().ln(), 1.0 / self.val())
+        }
+        #[inline]
+        fn ln_1p(self) -> Self {
+            self.chain(self.val().ln_1p(), 1.0 / (1.0 + self.val()))
+        }
+        #[inline]
+        fn softplus(self) -> Self {
+            let x = self.val();
+            let e = f64::exp(-x.abs());
+            let tail = f64::ln_1p(e);
+            if x > 0.0 { self.chain(x + tail, 1.0 / (1.0 + e)) } else { self.chain(tail, e / (1.0 + e)) }
+        }
+        #[inline]
+        fn sqrt(self) -> Self {
+            let r = self.val().sqrt();
+            self.chain(r, 0.5 / r)
+        }
+        #[inline]
+        fn recip(self) -> Self {
+            let r = 1.0 / self.val();
+            self.chain(r, -r * r)
+        }
+        #[inline]
+        fn sq(self) -> Self {
+            self.chain(self.val() * self.val(), 2.0 * self.val())
+        }
+        #[inline]
+        fn tanh(self) -> Self {
+            let t = self.val().tanh();
+            self.chain(t, 1.0 - t * t)
+        }
+        #[inline]
+        fn abs(self) -> Self {
+            if self.val() < 0.0 { -self } else { self }
+        }
+    };
 }
 
 /// A number that may be combined with parameters of type `P` (plain, or dual in the parameters).
 pub trait Over<P>:
-    Real + Add<P, Output = Self> + Sub<P, Output = Self> + Mul<P, Output = Self> + Div<P, Output = Self>
+    Number + Add<P, Output = Self> + Sub<P, Output = Self> + Mul<P, Output = Self> + Div<P, Output = Self>
 {
-    /// A parameter as a number of this kind.
-    fn lift(p: P) -> Self;
+    /// A parameter as a number of the same kind as this one.
+    fn lift(self, p: P) -> Self;
+}
+
+impl Number for f64 {
+    functions_of_single_numbers!();
 }
 
 impl Real for f64 {
@@ -128,7 +236,7 @@ impl Real for f64 {
 
 impl Over<f64> for f64 {
     #[inline]
-    fn lift(p: f64) -> Self {
+    fn lift(self, p: f64) -> Self {
         p
     }
 }
@@ -167,6 +275,10 @@ impl<const N: usize> Dual<N> {
     }
 }
 
+impl<const N: usize> Number for Dual<N> {
+    functions_of_single_numbers!();
+}
+
 impl<const N: usize> Real for Dual<N> {
     #[inline]
     fn of(v: f64) -> Self {
@@ -184,14 +296,14 @@ impl<const N: usize> Real for Dual<N> {
 
 impl<const N: usize> Over<f64> for Dual<N> {
     #[inline]
-    fn lift(p: f64) -> Self {
+    fn lift(self, p: f64) -> Self {
         Self::of(p)
     }
 }
 
 impl<const N: usize> Over<Dual<N>> for Dual<N> {
     #[inline]
-    fn lift(p: Self) -> Self {
+    fn lift(self, p: Self) -> Self {
         p
     }
 }

@@ -3,7 +3,7 @@
 use super::mobility;
 use super::prepare::Prepared;
 use super::threshold::Threshold;
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Number, Over, Real, choose};
 
 /// Channel current and what the gate equations need of it.
 #[derive(Debug, Clone, Copy)]
@@ -17,11 +17,18 @@ pub struct Channel<R> {
 }
 
 /// Keeps bulk charge above 0.1 (manual, section 5.1).
-fn at_least_tenth<R: Real>(x: R) -> R {
-    if x.val() < 0.1 { (-x + 0.2) / (x * -20.0 + 3.0) } else { x }
+#[inline(always)]
+fn at_least_tenth<R: Number>(x: R) -> R {
+    choose!(x.below(0.1), (-x + 0.2) / (x * -20.0 + 3.0), x)
 }
 
-impl<R: Real> Channel<R> {
+/// 1/(1 + x), continued positive below −0.9 (manual, sections 5.1 and 5.9).
+#[inline(always)]
+fn shrink<R: Number>(x: R) -> R {
+    choose!(x.at_least(-0.9), (x + 1.0).recip(), (x * 20.0 + 17.0) / (x + 0.8))
+}
+
+impl<R: Number> Channel<R> {
     /// The current at `vds ≥ 0`.
     ///
     /// ```text
@@ -36,20 +43,20 @@ impl<R: Real> Channel<R> {
     /// the current under `W·Coxeff·Vgsteff·v` with the manual's exponent 2·MM = 4.
     ///
     /// Source: BSIM4.8.0 manual, sections 5.1 to 5.9 and 6.1.
+    #[inline(always)]
     pub fn at<P: Real>(p: &Prepared<P>, th: &Threshold<R>, vds: R) -> Self
     where
         R: Over<P>,
     {
-        let one = R::of(1.0);
-        let zero = R::of(0.0);
+        let one = vds.like(1.0);
+        let zero = vds.like(0.0);
         let (vgsteff, vbseff) = (th.vgsteff, th.vbseff);
         let dsqrt = th.sqrt_phis - p.sqrt_phi;
 
-        let mut weff = -((vgsteff * p.dwg + dsqrt * p.dwb) * 2.0) + p.weff;
-        if weff.val() < 2e-8 {
-            weff = (-weff + 4e-8) * 2e-8 / (weff * -2.0 + 6e-8);
-        }
-        let rds = if p.rds0.val() == 0.0 && p.rdswmin.val() == 0.0 {
+        let weff = -((vgsteff * p.dwg + dsqrt * p.dwb) * 2.0) + p.weff;
+        let weff = choose!(weff.below(2e-8), (-weff + 4e-8) * 2e-8 / (weff * -2.0 + 6e-8), weff);
+        let no_rds = p.rds0.val() == 0.0 && p.rdswmin.val() == 0.0;
+        let rds = if no_rds {
             zero
         } else {
             let t2 = (vgsteff * p.prwg + 1.0).recip() + dsqrt * p.prwb;
@@ -57,34 +64,34 @@ impl<R: Real> Channel<R> {
             t3 * p.rds0 * 0.5 + p.rdswmin
         };
 
-        let t1 = R::lift(p.k1ox) * p.lpe_vb * 0.5 / th.sqrt_phis + p.k2ox - R::lift(p.k3b) * p.narrow;
+        let t1 = vds.lift(p.k1ox) * p.lpe_vb * 0.5 / th.sqrt_phis + p.k2ox - vds.lift(p.k3b) * p.narrow;
         let reach = (th.xdep * p.xj).sqrt();
-        let t5 = R::lift(p.leff) / (reach * 2.0 + p.leff);
-        let bulk_width = if p.b0.val() == 0.0 { zero } else { R::lift(p.b0) / (R::lift(p.weff) + p.b1) };
+        let t5 = vds.lift(p.leff) / (reach * 2.0 + p.leff);
+        let bulk_width = if p.b0.val() == 0.0 { zero } else { vds.lift(p.b0) / (vds.lift(p.weff) + p.b1) };
         let abulk0 = t1 * (t5 * p.a0 + bulk_width) + 1.0;
         let slope = -(t1 * (t5 * t5 * t5 * p.a0 * p.ags));
         let t2 = vbseff * p.keta;
-        let keta = if t2.val() >= -0.9 { (t2 + 1.0).recip() } else { (t2 * 20.0 + 17.0) / (t2 + 0.8) };
+        let keta = shrink(t2);
         let abulk = at_least_tenth(abulk0 + slope * vgsteff) * keta;
 
-        let v2t = vgsteff + R::lift(p.vt) * 2.0;
+        let v2t = vgsteff + vds.lift(p.vt) * 2.0;
         let ueff = mobility::effective(p, th);
 
         let wv = weff * p.vsat * p.coxe;
         let wvr = wv * rds;
-        let esat_l = R::lift(p.vsat) * 2.0 / ueff * p.leff;
+        let esat_l = vds.lift(p.vsat) * 2.0 / ueff * p.leff;
         let lambda = if p.a1.val() == 0.0 {
-            R::lift(p.a2)
+            vds.lift(p.a2)
         } else if p.a1.val() > 0.0 {
-            let t0 = -R::lift(p.a2) + 1.0;
+            let t0 = -vds.lift(p.a2) + 1.0;
             let t1 = t0 - vgsteff * p.a1 - 0.0001;
             let t2 = (t1.sq() + t0 * 0.0004).sqrt();
             t0 + p.a2 - (t1 + t2) * 0.5
         } else {
             let t1 = vgsteff * p.a1 + p.a2 - 0.0001;
-            (t1 + (t1.sq() + R::lift(p.a2) * 0.0004).sqrt()) * 0.5
+            (t1 + (t1.sq() + vds.lift(p.a2) * 0.0004).sqrt()) * 0.5
         };
-        let vdsat = if rds.val() == 0.0 && lambda.val() == 1.0 {
+        let vdsat = if no_rds && p.a1.val() == 0.0 && p.a2.val() == 1.0 {
             esat_l * v2t / (abulk * esat_l + v2t)
         } else {
             let t9 = abulk * wvr;
@@ -100,7 +107,7 @@ impl<R: Real> Channel<R> {
         let t2 = (t1.sq() + vdsat * p.delta * 4.0).sqrt();
         let sum = vdsat + vds + p.delta + t2;
         let vdseff = vdsat * vds * 2.0 / sum;
-        let beyond = if t1.val() > 0.0 { vdsat * p.delta * 4.0 / (t2 + t1) } else { t2 - t1 };
+        let beyond = choose!(t1.above(0.0), vdsat * p.delta * 4.0 / (t2 + t1), t2 - t1);
         let diff = vds * beyond / sum;
 
         // velocity overshoot acts beyond the saturation voltage
@@ -110,29 +117,32 @@ impl<R: Real> Channel<R> {
             esat_l = esat_l * ((over * 0.5).tanh() * p.lambda / (ueff * p.leff) + 1.0);
         }
 
-        let field = (vgsteff + p.vtfbphi2) / (R::lift(p.toxp) * 2e8);
-        let deepest = R::lift(p.centroid);
+        let field = (vgsteff + p.vtfbphi2) / (vds.lift(p.toxp) * 2e8);
+        let deepest = vds.lift(p.centroid);
         let centroid =
-            if field.val() > 0.0 { deepest / ((field.ln() * p.centroid_power).exp() + 1.0) } else { deepest };
-        let coxeff = R::lift(p.coxp) * p.eps_sub / (centroid * p.coxp + p.eps_sub);
+            choose!(field.above(0.0), deepest / ((field.ln() * p.centroid_power).exp() + 1.0), deepest);
+        let coxeff = vds.lift(p.coxp) * p.eps_sub / (centroid * p.coxp + p.eps_sub);
         let beta = ueff * coxeff * weff / p.leff;
         let gche = beta * vgsteff * (one - vdseff * abulk * 0.5 / v2t) / (vdseff / esat_l + 1.0);
         let idl = gche / (gche * rds + 1.0);
 
-        let fp =
-            if p.fprout.val() <= 0.0 { one } else { (R::lift(p.leff).sqrt() * p.fprout / v2t + 1.0).recip() };
+        let fp = if p.fprout.val() <= 0.0 {
+            one
+        } else {
+            (vds.lift(p.leff).sqrt() * p.fprout / v2t + 1.0).recip()
+        };
         let pvag = if p.pvag.val() == 0.0 {
             one
         } else {
             let t9 = vgsteff * p.pvag / esat_l;
-            if t9.val() > -0.9 { t9 + 1.0 } else { (t9 + 0.8) / (t9 * 20.0 + 17.0) }
+            choose!(t9.above(-0.9), t9 + 1.0, (t9 + 0.8) / (t9 * 20.0 + 17.0))
         };
         let mut ids = idl;
         if p.theta_rout.val() > 1.7e-15 {
             let t8 = abulk * vdsat;
             let mut va = (v2t - v2t * t8 / (v2t + t8)) / p.theta_rout;
             let t7 = vbseff * p.pdiblcb;
-            va = va * if t7.val() >= -0.9 { (t7 + 1.0).recip() } else { (t7 * 20.0 + 17.0) / (t7 + 0.8) };
+            va = va * shrink(t7);
             ids = ids * (diff / (va * pvag) + 1.0);
         }
         if p.pdits.val() > 1.7e-15 {
@@ -141,7 +151,7 @@ impl<R: Real> Channel<R> {
             ids = ids * (diff / va + 1.0);
         }
         if p.pclm.val() > 1.7e-15 {
-            let t1 = vdsat * ueff / (R::lift(p.vsat) * 2.0) + p.leff;
+            let t1 = vdsat * ueff / (vds.lift(p.vsat) * 2.0) + p.leff;
             let cclm = fp * pvag * (rds * idl + 1.0) * t1 / (p.pclm * p.litl);
             let tmp = one - abulk * vdsat * 0.5 / v2t;
             let va_sat =
@@ -149,13 +159,25 @@ impl<R: Real> Channel<R> {
             ids = ids * ((cclm * diff / va_sat).ln_1p() / cclm + 1.0);
         }
         let mut impact = zero;
-        if p.alpha.val() > 0.0 && p.beta0.val() > 0.0 && diff.val() > p.beta0.val() / 690.0 {
-            let rate = diff * (-(R::lift(p.beta0) / diff)).exp() * p.alpha / p.leff;
-            impact = ids * vdseff * rate * p.nf;
+        if p.alpha.val() > 0.0 && p.beta0.val() > 0.0 {
+            impact = choose!(
+                diff.above(p.beta0.val() / 690.0),
+                {
+                    let rate = diff * (-(diff.lift(p.beta0) / diff)).exp() * p.alpha / p.leff;
+                    ids * vdseff * rate * p.nf
+                },
+                zero
+            );
         }
-        if p.pscbe2.val() > 0.0 && diff.val() > p.pscbe1.val() * p.litl.val() / 690.0 {
-            let inverse = (-(R::lift(p.pscbe1) * p.litl / diff)).exp() * p.pscbe2 / p.leff;
-            ids = ids * (diff * inverse + 1.0);
+        if p.pscbe2.val() > 0.0 {
+            ids = choose!(
+                diff.above(p.pscbe1.val() * p.litl.val() / 690.0),
+                {
+                    let inverse = (-(diff.lift(p.pscbe1) * p.litl / diff)).exp() * p.pscbe2 / p.leff;
+                    ids * (diff * inverse + 1.0)
+                },
+                ids
+            );
         }
         let mut ids = ids * vdseff;
         if let Some(limit) = p.source_velocity {

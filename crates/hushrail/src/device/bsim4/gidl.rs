@@ -1,7 +1,7 @@
 //! Gate-induced drain leakage.
 
 use super::prepare::{Gidl, Prepared};
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Over, Real, choose};
 
 /// Current from a diffusion to the body, all fingers, A; `vdiff_gate` is diffusion minus (effective) gate, `vdb`
 /// diffusion minus body.
@@ -16,23 +16,22 @@ use crate::device::dual::{Over, Real};
 /// Zero for x ≤ 0 and for a forward-biased junction, with all derivatives continuous there in gidlMod 0.
 ///
 /// Source: BSIM4.8.0 manual, section 6.2.
+#[inline(always)]
 pub fn current<P: Real, R: Over<P>>(p: &Prepared<P>, g: &Gidl<P>, vd: R, vg: R, vdb: R) -> R {
-    let zero = R::of(0.0);
-    if vdb.val() <= 0.0 {
-        return zero;
-    }
-    let x = (if p.gidlmod == 0 { vd - vg } else { vd - vg * g.r } - g.e + p.gidl_vfbsd) / p.gidl_reach;
-    if x.val() <= g.b.val() / 690.0 {
-        return zero;
-    }
-    let base = x * (-(R::lift(g.b) / x)).exp() * g.a * p.weffcj * p.nf;
-    if p.gidlmod == 0 {
-        let cube = vdb * vdb * vdb;
-        return base * cube / (cube + g.c);
-    }
-    if g.k.val() == 0.0 {
-        return base;
-    }
-    let reach = -vdb - g.f;
-    if reach.val() >= 0.0 { zero } else { base * (R::lift(g.k) / reach).exp() }
+    let zero = vdb.like(0.0);
+    choose!(vdb.at_most(0.0), zero, {
+        let x = (if p.gidlmod == 0 { vd - vg } else { vd - vg * g.r } - g.e + p.gidl_vfbsd) / p.gidl_reach;
+        choose!(x.at_most(g.b.val() / 690.0), zero, {
+            let base = x * (-(x.lift(g.b) / x)).exp() * g.a * p.weffcj * p.nf;
+            if p.gidlmod == 0 {
+                let cube = vdb * vdb * vdb;
+                base * cube / (cube + g.c)
+            } else if g.k.val() == 0.0 {
+                base
+            } else {
+                let reach = -vdb - g.f;
+                choose!(reach.at_least(0.0), zero, base * (reach.lift(g.k) / reach).exp())
+            }
+        })
+    })
 }

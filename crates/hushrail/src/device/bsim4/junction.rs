@@ -5,7 +5,7 @@ use super::silicon::MODEL_KB_OVER_Q;
 use super::table::Id;
 use super::values::{Card, Values};
 use crate::device::Geometry;
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Over, Real, choose};
 
 /// One trap-assisted component: prefactor (A), NJTS·Vt(Tnom) (V), VTS (V).
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -24,10 +24,34 @@ pub struct JunctionSide<P> {
     nvt_v: P,
     /// Forward voltage above which the current goes on along its tangent, V; infinite when there is none.
     forward_limit_v: f64,
-    /// Prefactor, breakdown voltage, and the reverse voltage beyond which it goes on along its tangent (diode model 2;
-    /// infinite in model 0).
-    breakdown: Option<(P, P, f64)>,
+    /// Breakdown, when it is modelled.
+    breakdown: Option<Breakdown<P>>,
     traps: [Option<Trap<P>>; 3],
+}
+
+/// Breakdown of one junction.
+#[derive(Debug, Clone)]
+struct Breakdown<P> {
+    /// XJBV·Isat, A.
+    prefactor_a: P,
+    /// Breakdown voltage BV, V.
+    bv_v: P,
+    /// Reverse voltage beyond which it goes on along its tangent, V (diode model 2; infinite in model 0).
+    limit_v: f64,
+}
+
+impl<P: Real> Breakdown<P> {
+    /// Current from diffusion to body at the forward voltage `v`, A, with what flows at zero.
+    #[inline(always)]
+    fn at<R: Over<P>>(&self, v: R, nvt_v: P) -> R {
+        if self.limit_v == f64::INFINITY {
+            return (-(v + self.bv_v) / nvt_v).exp() * self.prefactor_a;
+        }
+        let beyond = v.below(-self.limit_v);
+        let held = choose!(beyond, v.like(-self.limit_v), v);
+        let e = (-(held + self.bv_v) / nvt_v).exp() * self.prefactor_a;
+        choose!(beyond, e - (v + self.limit_v) / nvt_v * e, e)
+    }
 }
 
 /// Both junctions.
@@ -127,7 +151,7 @@ impl<P: Real> Junctions<P> {
                 } else {
                     f64::INFINITY
                 };
-                (prefactor, bv, bv.val() + beyond)
+                Breakdown { prefactor_a: prefactor, bv_v: bv, limit_v: bv.val() + beyond }
             });
             let jtw = v[Id::Jtweff];
             let edge_growth = if jtw.val() > 0.0 { (jtw / v.size.weffcj).sqrt() + 1.0 } else { P::of(1.0) };
@@ -155,38 +179,35 @@ impl<P: Real> JunctionSide<P> {
     /// ```
     ///
     /// Above the forward limit the current goes on along its tangent (value and slope continuous).
+    #[inline(always)]
     pub fn current<R: Over<P>>(&self, v: R) -> R {
-        let mut i = R::of(0.0);
+        let mut i = v.like(0.0);
         if self.isat_a.val() > 0.0 {
-            let isat = R::lift(self.isat_a);
-            if v.val() <= self.forward_limit_v {
-                i = isat * (v / self.nvt_v).exp_m1();
+            let isat = v.lift(self.isat_a);
+            i = if self.forward_limit_v < f64::INFINITY {
+                choose!(v.at_most(self.forward_limit_v), isat * (v / self.nvt_v).exp_m1(), {
+                    let edge = P::of(self.forward_limit_v) / self.nvt_v;
+                    let top = self.isat_a * edge.exp();
+                    (v - self.forward_limit_v) / self.nvt_v * top + self.isat_a * edge.exp_m1()
+                })
             } else {
-                let edge = R::of(self.forward_limit_v) / self.nvt_v;
-                let top = isat * edge.exp();
-                i = isat * edge.exp_m1() + top * ((v - self.forward_limit_v) / self.nvt_v);
-            }
-            if let Some((prefactor, bv, limit_v)) = self.breakdown {
+                isat * (v / self.nvt_v).exp_m1()
+            };
+            if let Some(b) = &self.breakdown {
                 // zero at zero bias: the share that breakdown has there is taken off
-                let at = |x: R| {
-                    let held = if x.val() < -limit_v { R::of(-limit_v) } else { x };
-                    let e = (-(held + bv) / self.nvt_v).exp() * prefactor;
-                    if x.val() < -limit_v { e - (x + limit_v) / self.nvt_v * e } else { e }
-                };
-                i = i - (at(v) - at(R::of(0.0)));
+                i = i - (b.at(v, self.nvt_v) - b.at(v.like(0.0), self.nvt_v));
             }
         }
         for t in self.traps.iter().flatten() {
             // VTS − V must stay positive; forward bias beyond VTS/2 has no trap current worth its sign
             let reach = -(v - t.vts_v);
-            if reach.val() > 0.5 * t.vts_v.val() {
-                let x = -(v / t.slope_v) * t.vts_v / reach;
-                i = i - x.exp_m1() * t.current_a;
-            } else {
-                let half = t.vts_v.val() * 0.5;
-                let x = R::of(-half) / t.slope_v * 2.0;
-                i = i - x.exp_m1() * t.current_a;
-            }
+            let half = t.vts_v.val() * 0.5;
+            let x = choose!(
+                reach.above(half),
+                -(v / t.slope_v) * t.vts_v / reach,
+                v.like(-half) / t.slope_v * 2.0
+            );
+            i = i - x.exp_m1() * t.current_a;
         }
         i
     }

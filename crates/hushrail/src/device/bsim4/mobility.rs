@@ -1,8 +1,8 @@
 //! Low-field mobility and what surface roughness, phonons and charged impurities leave of it.
 
 use super::prepare::Prepared;
-use super::threshold::Threshold;
-use crate::device::dual::{Over, Real};
+use super::threshold::{Threshold, folded};
+use crate::device::dual::{Over, Real, choose};
 
 /// Constants of the seven published forms.
 #[derive(Debug, Clone)]
@@ -26,13 +26,23 @@ pub struct Mobility<P> {
 }
 
 /// `ud·(v·toxe/(Vgsteff + 2·√(v² + 10⁻⁴)))²`: scattering by charge, screened by the channel.
+#[inline(always)]
 fn coulomb<P: Real, R: Over<P>>(p: &Prepared<P>, vgsteff: R, v: R) -> R {
     if p.mobility.ud.val() == 0.0 {
-        return R::of(0.0);
+        return v.like(0.0);
     }
     let screened = (v.sq() + 0.0001).sqrt();
     let reach = (vgsteff + screened * 2.0).recip() * p.toxe;
     reach.sq() * p.mobility.ud * v.sq()
+}
+
+/// `(UA + UC·Vbs)·E^EU`.
+#[inline(always)]
+fn lateral<P: Real, R: Over<P>>(p: &Prepared<P>, volts: R, vbseff: R) -> R {
+    let m = &p.mobility;
+    let field = volts / p.toxe;
+    let held = choose!(field.above(0.0), field.pow(volts.lift(m.eu)), volts.like(0.0));
+    held * (vbseff * m.uc + m.ua)
 }
 
 /// Effective mobility, m²/Vs.
@@ -50,26 +60,22 @@ fn coulomb<P: Real, R: Over<P>>(p: &Prepared<P>, vgsteff: R, v: R) -> R {
 /// (`mtrlmod = 1`), `2·type·(PHIG − EASUB − Eg/2 + 0.45)` is taken off the voltage in E.
 ///
 /// Source: BSIM4.8.0 manual, section 5.2 (models 3 to 6 from memory of it).
+#[inline(always)]
 pub fn effective<P: Real, R: Over<P>>(p: &Prepared<P>, th: &Threshold<R>) -> R {
     let m = &p.mobility;
     let (vgsteff, vbseff, vth) = (th.vgsteff, th.vbseff, th.vth);
-    let flat = R::lift(m.vtfbphi1);
+    let flat = vgsteff.lift(m.vtfbphi1);
     let (gate, charge) = match m.model {
         0 | 1 => (vth * 2.0, vth),
         2 => (flat, vth),
         _ => (flat, flat),
     };
     let volts = vgsteff + gate - m.gate_shift;
-    let lateral = |unit: f64| {
-        let field = volts * unit / p.toxe;
-        let held = if field.val() > 0.0 { field.pow(R::lift(m.eu)) } else { R::of(0.0) };
-        held * (vbseff * m.uc + m.ua)
-    };
     let scattering = match m.model {
-        2 | 6 => lateral(1.0) + coulomb(p, vgsteff, charge),
+        2 | 6 => lateral(p, volts, vbseff) + coulomb(p, vgsteff, charge),
         3 => {
             let screen = (vgsteff / m.vgsteff_vth + 1.0) * 0.5;
-            lateral(1e-8 / 6.0) + R::lift(m.ud) / screen.pow(R::lift(m.ucs))
+            lateral(p, volts * (1e-8 / 6.0), vbseff) + vgsteff.lift(m.ud) / screen.pow(vgsteff.lift(m.ucs))
         }
         model => {
             let field = volts / p.toxe;
@@ -82,10 +88,6 @@ pub fn effective<P: Real, R: Over<P>>(p: &Prepared<P>, th: &Threshold<R>) -> R {
         }
     };
     // far below −0.8 (unphysical cards) the denominator turns into a positive hyperbola
-    let denominator = if scattering.val() >= -0.8 {
-        scattering + 1.0
-    } else {
-        (scattering + 0.6) / (scattering * 10.0 + 7.0)
-    };
-    R::lift(m.u0) / denominator
+    let denominator = folded(scattering, -0.8, (0.6, 1.0), (7.0, 10.0));
+    vgsteff.lift(m.u0) / denominator
 }

@@ -20,7 +20,9 @@ pub mod table;
 pub mod threshold;
 pub mod values;
 
+use super::bulk::{RowLaw, Width, sweep};
 use super::dual::{Dual, Over, Real};
+use super::lanes::Lanes;
 use super::range::Outside;
 use super::{Bias, Branches, Device, Polarity};
 use channel::Channel;
@@ -39,7 +41,7 @@ pub struct Bsim4 {
 }
 
 /// Branch currents at a bias, whatever the kind of number.
-pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches<R> {
+pub fn branches<P: Real, R: Over<P> + Real>(p: &Prepared<P>, bias: Bias<R>) -> Branches<R> {
     match &p.series {
         None => inner_branches(p, bias),
         Some(s) => series::through(p, s, bias, |b| inner_branches(p, b)),
@@ -47,36 +49,63 @@ pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches
 }
 
 /// Branch currents between the ends of the channel.
+#[inline(always)]
 fn inner_branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches<R> {
-    let flip = |x: R| if p.polarity == Polarity::P { -x } else { x };
-    let (vgs, vds, vbs) = (flip(bias.vgs), flip(bias.vds), flip(bias.vbs));
-    let exchanged = vds.val() < 0.0;
-    let (vgs_f, vds_f, vbs_f) = if exchanged { (vgs - vds, -vds, vbs - vds) } else { (vgs, vds, vbs) };
-    let th = Threshold::at(p, vgs_f, vds_f, vbs_f);
-    let ch = Channel::at(p, &th, vds_f);
-    let mut b = Branches { channel_ds: ch.ids, impact_db: ch.impact, ..Branches::zero() };
+    let mirrored = p.polarity == Polarity::P;
+    let bias = if mirrored { bias.reversed() } else { bias };
+    let exchanged = bias.vds.below(0.0);
+    let Bias { vgs, vds, vbs } = bias.exchanged(exchanged);
+    let th = Threshold::at(p, vgs, vds, vbs);
+    let ch = Channel::at(p, &th, vds);
+    let zero = vds.like(0.0);
+    let mut b =
+        Branches { channel_ds: ch.ids, impact_db: ch.impact, ..Branches::all(zero) }.exchanged(exchanged);
 
-    // the physical drain keeps its own GIDL and edge parameters whichever way the channel runs
-    let (dg_ids, sg_ids) = if exchanged { (&p.gisl, &p.gidl) } else { (&p.gidl, &p.gisl) };
-    if let Some(g) = dg_ids {
-        b.gidl_db = gidl::current(p, g, vds_f, th.vgs_eff, vds_f - vbs_f);
+    // the physical drain keeps its own GIDL and edge parameters whichever way the channel runs; the end that is the source
+    // of the channel sees the gate without drain: effective gate minus source
+    let (far_body, near_body) = (vds - vbs, -vbs);
+    if let Some(g) = &p.gidl {
+        let (vd, vdb) = (R::select(exchanged, zero, vds), R::select(exchanged, near_body, far_body));
+        b.gidl_db = gidl::current(p, g, vd, th.vgs_eff, vdb);
     }
-    if let Some(g) = sg_ids {
-        // the gate-source edge sees the gate without drain: effective gate minus source
-        b.gidl_sb = gidl::current(p, g, R::of(0.0), th.vgs_eff, -vbs_f);
+    if let Some(g) = &p.gisl {
+        let (vs, vsb) = (R::select(exchanged, vds, zero), R::select(exchanged, far_body, near_body));
+        b.gidl_sb = gidl::current(p, g, vs, th.vgs_eff, vsb);
     }
     if let Some(t) = &p.tunnel {
-        let g = GateCurrents::at(p, t, exchanged, &th, &ch, vgs_f, vds_f);
+        let g = GateCurrents::at(p, t, exchanged, &th, &ch, vgs, vds);
         b.gate_gs = g.gs;
         b.gate_gd = g.gd;
         b.gate_gb = g.gb;
     }
-    if exchanged {
-        b = b.exchanged();
+    b.junction_sb = -p.source.current(bias.vbs);
+    b.junction_db = -p.drain.current(bias.vbs - bias.vds);
+    if mirrored { b.reversed() } else { b }
+}
+
+impl RowLaw for Bsim4 {
+    #[inline(always)]
+    fn row<S: pulp::Simd>(&self, bias: Bias<Lanes<S>>) -> Branches<Lanes<S>> {
+        inner_branches(&self.prepared, bias)
     }
-    b.junction_sb = -p.source.current(vbs);
-    b.junction_db = -p.drain.current(vbs - vds);
-    if p.polarity == Polarity::P { b.map(|x| -x) } else { b }
+}
+
+impl Bsim4 {
+    /// [`Device::branches_many`] with vectors of a width that is asked for.
+    ///
+    /// With resistances outside the channel every point is an iteration of its own and is evaluated alone.
+    ///
+    /// # Panics
+    /// When the lengths differ.
+    pub fn branches_with(&self, biases: &[Bias<f64>], out: &mut [Branches<f64>], width: Width) {
+        if self.prepared.series.is_none() {
+            return sweep(self, biases, out, width);
+        }
+        assert_eq!(biases.len(), out.len(), "one result for each bias");
+        for (b, o) in biases.iter().zip(out) {
+            *o = self.branches(*b);
+        }
+    }
 }
 
 impl Device for Bsim4 {
@@ -85,6 +114,9 @@ impl Device for Bsim4 {
     }
     fn branches(&self, bias: Bias<f64>) -> Branches<f64> {
         branches(&self.prepared, bias)
+    }
+    fn branches_many(&self, biases: &[Bias<f64>], out: &mut [Branches<f64>]) {
+        self.branches_with(biases, out, Width::Machine);
     }
     fn branches_dual(&self, bias: Bias<Dual<3>>) -> Branches<Dual<3>> {
         branches(&self.prepared, bias)

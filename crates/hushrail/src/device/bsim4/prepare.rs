@@ -10,7 +10,7 @@ use super::stress::Stress;
 use super::table::Id;
 use super::threshold::Threshold;
 use super::values::{Card, Values};
-use crate::device::dual::Over;
+use crate::device::dual::{Over, Real};
 use crate::device::{Geometry, Polarity};
 
 /// The gate-tunnelling constants of one device.
@@ -167,7 +167,7 @@ pub struct Prepared<P> {
     pub series: Option<Series<P>>,
 }
 
-impl<P: Over<P>> Prepared<P> {
+impl<P: Real + Over<P>> Prepared<P> {
     /// Works everything out for `card` at geometry `g` and temperature `temp_k`.
     ///
     /// Source: BSIM4.8.0 manual, sections 2, 3, 5, 13 (temperature), 14 (stress), 15.

@@ -42,7 +42,7 @@ impl<P: Real> Series<P> {
     ///
     /// Source: BSIM4.8.0 manual, section 7.1.
     fn at<R: Over<P>>(&self, end: &EndResistance<P>, vg: R, vb: R) -> R {
-        let fixed = R::lift(end.least_ohm) + end.diffusion_ohm;
+        let fixed = vg.lift(end.least_ohm) + end.diffusion_ohm;
         if end.overlap_ohm.val() == 0.0 {
             return fixed;
         }
@@ -62,7 +62,7 @@ const STEPS: usize = 200;
 /// only steers; the iteration ends on the exact equations, three steps after the values stand still, which carries the
 /// derivatives with it (implicit function theorem). Currents that do not converge are returned as NaN, which every
 /// caller reports.
-pub fn through<P: Real, R: Over<P>>(
+pub fn through<P: Real, R: Over<P> + Real>(
     p: &Prepared<P>,
     s: &Series<P>,
     bias: Bias<R>,

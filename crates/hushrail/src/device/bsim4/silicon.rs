@@ -1,6 +1,6 @@
 //! Constants and silicon laws as the published model carries them, kept so that cards mean what their foundry extracted.
 
-use crate::device::dual::Real;
+use crate::device::dual::{Number, Real};
 
 /// k/q as the published model carries it, V/K. Kept so that cards mean what their foundry extracted.
 pub const MODEL_KB_OVER_Q: f64 = 8.617087e-5;
@@ -24,7 +24,8 @@ pub fn intrinsic_density<P: Real>(t: P) -> P {
 }
 
 /// `1/(2·cosh x − 2)` with the model's tiny floor, the length law of all short-channel terms.
-pub(super) fn theta<R: Real>(x: R) -> R {
+#[inline(always)]
+pub(super) fn theta<R: Number>(x: R) -> R {
     let u = (-x).exp();
     u / ((-u + 1.0).sq() + u * (2.0 * 1.713908431e-15))
 }

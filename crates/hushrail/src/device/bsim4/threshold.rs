@@ -3,7 +3,7 @@
 use super::poly::effective_gate;
 use super::prepare::Prepared;
 use super::silicon::theta;
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Number, Over, Real, choose};
 
 /// What later equations need of the threshold.
 #[derive(Debug, Clone, Copy)]
@@ -19,23 +19,25 @@ pub struct Threshold<R> {
 }
 
 /// `1 + x` where it is safe, a smooth positive continuation `(a + b·x)/(c + d·x)` below `limit`.
-pub(super) fn folded<R: Real>(x: R, limit: f64, top: (f64, f64), bottom: (f64, f64)) -> R {
-    if x.val() >= limit { x + 1.0 } else { (x * top.1 + top.0) / (x * bottom.1 + bottom.0) }
+#[inline(always)]
+pub(super) fn folded<R: Number>(x: R, limit: f64, top: (f64, f64), bottom: (f64, f64)) -> R {
+    choose!(x.at_least(limit), x + 1.0, (x * top.1 + top.0) / (x * bottom.1 + bottom.0))
 }
 
 /// Body bias held between a floor far in reverse and 0.95·φs in forward (manual, section 2.1).
 ///
 /// Both limits are hyperbolas; they are written as the quotient of their quadratics, so that zero stays exactly zero.
+#[inline(always)]
 fn effective_body<P: Real, R: Over<P>>(p: &Prepared<P>, vbs: R) -> R {
-    let floor = -R::lift(p.vbsc);
+    let floor = -vbs.lift(p.vbsc);
     let t1 = ((vbs + floor - 0.001).sq() + floor * 0.004).sqrt();
     let low = floor * vbs * 2.0 / (floor - vbs + 0.001 + t1);
-    let top = R::lift(p.phi) * 0.95;
+    let top = vbs.lift(p.phi) * 0.95;
     let t1 = ((top - low - 0.001).sq() + top * 0.004).sqrt();
     top * low * 2.0 / (top + low + 0.001 + t1)
 }
 
-impl<R: Real> Threshold<R> {
+impl<R: Number> Threshold<R> {
     /// Works out the threshold at a bias with `vds ≥ 0`.
     ///
     /// ```text
@@ -48,6 +50,7 @@ impl<R: Real> Threshold<R> {
     /// The exponents are not clamped at ±34 as in the released code; values differ by less than 1e−15 relative.
     ///
     /// Source: BSIM4.8.0 manual, sections 2.2 to 2.6 and 3.1.
+    #[inline(always)]
     pub fn at<P: Real>(p: &Prepared<P>, vgs: R, vds: R, vbs: R) -> Self
     where
         R: Over<P>,
@@ -58,33 +61,30 @@ impl<R: Real> Threshold<R> {
         let xdep = sqrt_phis * p.xdep0_over;
         let root_xdep = xdep.sqrt();
 
-        let stretch = |d: P| folded(vbseff * d, -0.5, (1.0, 3.0), (3.0, 8.0));
-        let lt1 = root_xdep * p.factor1 * stretch(p.dvt2);
-        let theta0 = theta(R::lift(p.dvt1l) / lt1);
+        let lt1 = root_xdep * p.factor1 * folded(vbseff * p.dvt2, -0.5, (1.0, 3.0), (3.0, 8.0));
+        let theta0 = theta(vds.lift(p.dvt1l) / lt1);
         let short = theta0 * p.dvt0 * p.v0;
         let narrow_short = if p.dvt0w.val() == 0.0 {
-            R::of(0.0)
+            vds.like(0.0)
         } else {
-            let ltw = root_xdep * p.factor1 * stretch(p.dvt2w);
-            theta(R::lift(p.dvt1wl) / ltw) * p.dvt0w * p.v0
+            let ltw = root_xdep * p.factor1 * folded(vbseff * p.dvt2w, -0.5, (1.0, 3.0), (3.0, 8.0));
+            theta(vds.lift(p.dvt1wl) / ltw) * p.dvt0w * p.v0
         };
-        let mut dibl = vbseff * p.etab + p.eta0;
-        if dibl.val() < 1e-4 {
-            dibl = (-dibl + 2e-4) / (dibl * -2e4 + 3.0);
-        }
-        let body = (sqrt_phis * p.k1ox - R::lift(p.k1) * p.sqrt_phi) * p.lpe_vb - vbseff * p.k2ox;
+        let dibl = vbseff * p.etab + p.eta0;
+        let dibl = choose!(dibl.below(1e-4), (-dibl + 2e-4) / (dibl * -2e4 + 3.0), dibl);
+        let body = (sqrt_phis * p.k1ox - vds.lift(p.k1) * p.sqrt_phi) * p.lpe_vb - vbseff * p.k2ox;
         let width = (vbseff * p.k3b + p.k3) * p.narrow;
         let mut vth = body + p.vth0 - short - narrow_short + width + p.t1_const + vbseff * p.kt2_tr
             - dibl * p.theta0vb0 * vds;
 
-        let cdep = R::lift(p.nfactor_eps) / xdep;
+        let cdep = vds.lift(p.nfactor_eps) / xdep;
         let coupling = vbseff * p.cdscb + vds * p.cdscd + p.cdsc;
         let x = (cdep + coupling * theta0 + p.cit) / p.coxe;
         let n = folded(x, -0.5, (1.0, 3.0), (3.0, 8.0));
 
         if p.dvtp0.val() > 0.0 {
             let reach = ((-(vds * p.dvtp1)).exp() + 1.0) * p.dvtp0 + p.leff;
-            vth = vth - n * p.vt_dits * (R::lift(p.leff) / reach).ln();
+            vth = vth - n * p.vt_dits * (vds.lift(p.leff) / reach).ln();
         }
         if p.dvtp4.val() != 0.0 && p.dvtp2.val() != 0.0 {
             vth = vth - (vds * p.dvtp4).tanh() * p.dvtp2;

@@ -1,13 +1,15 @@
 //! Channel current from weak to strong inversion, symmetric in drain and source.
 
 use super::prepare::Prepared;
-use crate::device::dual::{Over, Real};
+use crate::device::Bias;
+use crate::device::dual::{Number, Over, Real, choose};
 
 /// The interpolation function `F(v) = ln²(1 + exp(v/2))`.
 ///
 /// # Source
 /// Enz, Krummenacher, Vittoz, *Analog Integr. Circuits Signal Process.* 8 (1995) 83–114, doi:10.1007/BF01239381.
-pub fn interpolation<R: Real>(v: R) -> R {
+#[inline(always)]
+pub fn interpolation<R: Number>(v: R) -> R {
     (v * 0.5).softplus().sq()
 }
 
@@ -29,7 +31,7 @@ pub struct Channel<R> {
     pub drain_v: R,
 }
 
-impl<R: Real> Channel<R> {
+impl<R: Number> Channel<R> {
     /// The current at `vds ≥ 0`.
     ///
     /// ```text
@@ -66,27 +68,20 @@ impl<R: Real> Channel<R> {
     /// Liu et al., *IEEE Trans. Electron Devices* 40 (1993) 86–95 (barrier lowering from both ends); Caughey and Thomas,
     /// *Proc. IEEE* 55 (1967) 2192–2193 (velocity, exponent 2); Tsividis and McAndrew, *Operation and Modeling of the MOS
     /// Transistor* (θ and series resistance).
-    pub fn at<P: Real>(p: &Prepared<P>, vgs: R, vds: R, vbs: R) -> Self
+    #[inline(always)]
+    pub fn at<P: Real>(p: &Prepared<P>, Bias { vgs, vds, vbs }: Bias<R>) -> Self
     where
         R: Over<P>,
     {
         let y = vds / p.two_vt;
-        // exp(−y) and exp(−y) − 1, each with all its digits
-        let (e, fall) = if y.val() < std::f64::consts::LN_2 {
-            let fall = (-y).exp_m1();
-            (fall + 1.0, fall)
-        } else {
-            let e = (-y).exp();
-            (e, e - 1.0)
-        };
+        let (e, fall) = (-y).exp_and_m1();
         // Vds·(1 − tanh(Vds/UT)) = 2·Vds·e⁴/(1 + e⁴) with e = exp(−Vds/2UT)
         let e4 = e.sq().sq();
         let rest = vds * e4 * 2.0 / (e4 + 1.0);
         let drive = vgs - vbs * p.linear - p.vt0 + vds * p.dibl + rest * p.half_rest;
         let above_flat = (drive + p.flat_v) / p.two_vt;
         // 1 + e^−34 is 1 in double precision
-        let above_flat =
-            (if above_flat.val() < 34.0 { above_flat.softplus() } else { above_flat }) * p.two_vt;
+        let above_flat = choose!(above_flat.below(34.0), above_flat.softplus(), above_flat) * p.two_vt;
         let root = above_flat * 2.0 / ((above_flat * (p.linear * 4.0) + p.gamma * p.gamma).sqrt() + p.gamma);
         let ea = ((root.sq() - p.phi + vbs) / p.two_vt).exp();
         let eb = ea * e;

@@ -1,6 +1,6 @@
 //! Direct tunnelling through the gate oxide, at the overlapped edges and over the channel.
 
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Over, Real, choose};
 
 /// Elementary charge, C; exact since the SI of 2019.
 pub(super) const Q: f64 = 1.602176634e-19;
@@ -50,19 +50,23 @@ pub fn tunnel_b<P: Real>(barrier_v: P, mass: P) -> P {
 
 impl<P: Real> Tunnel<P> {
     /// `exp(−B·t·h(z)/φb)` for a voltage from zero up.
+    #[inline(always)]
     fn transmission<R: Over<P>>(&self, v: R) -> R {
         let z = v / self.barrier_v;
-        let h = if z.val() < 1.0 - 1e-9 {
-            // (1 − s³)/(1 − s²) with s = √(1 − z): no cancellation at small z
-            let s = (-z + 1.0).sqrt();
-            (s + s.sq() + 1.0) / (s + 1.0)
-        } else {
+        let h = choose!(
+            z.below(1.0 - 1e-9),
+            {
+                // (1 − s³)/(1 − s²) with s = √(1 − z): no cancellation at small z
+                let s = (-z + 1.0).sqrt();
+                (s + s.sq() + 1.0) / (s + 1.0)
+            },
             z.recip()
-        };
+        );
         (-(h * self.exponent)).exp()
     }
 
     /// Current from the gate into the diffusion below one overlap, A; `v` is gate minus diffusion.
+    #[inline(always)]
     pub fn edge<R: Over<P>>(&self, v: R) -> R {
         let size = v.abs();
         v * size * self.a_t2 * self.edge_m2 * self.transmission(size)
@@ -73,6 +77,7 @@ impl<P: Real> Tunnel<P> {
     /// `v` is gate minus diffusion, `charge_v` the inversion charge there over the oxide capacitance. One factor of the
     /// oxide voltage is replaced by `charge_v` (no carriers, no current) and the other by `v` (no voltage, no current), as in
     /// BSIM4 (manual, section 4.3.2).
+    #[inline(always)]
     pub fn channel_end<R: Over<P>>(&self, v: R, charge_v: R) -> R {
         v * charge_v * self.a_t2 * self.half_channel_m2 * self.transmission(charge_v + self.depletion_v)
     }

@@ -1,6 +1,6 @@
 //! The law of gate-induced drain leakage, usable with any channel law.
 
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Over, Real, choose};
 
 /// Constants of the law for one edge of one device.
 ///
@@ -40,17 +40,16 @@ pub struct GidlLaw<P> {
 
 impl<P: Real> GidlLaw<P> {
     /// Current from the diffusion into the body, A.
+    #[inline(always)]
     pub fn current<R: Over<P>>(&self, width_m: P, vdg: R, vdb: R) -> R {
-        let zero = R::of(0.0);
-        if vdb.val() <= 0.0 {
-            return zero;
-        }
-        let x = (vdg - self.e_v) / (R::lift(self.oxide_m) * 3.0);
-        // exp(−690) is below the smallest normal number
-        if x.val() <= self.b_v_m.val() / 690.0 {
-            return zero;
-        }
-        let cube = vdb * vdb * vdb;
-        x * (-(R::lift(self.b_v_m) / x)).exp() * self.a_s * width_m * cube / (cube + self.c_v3)
+        let zero = vdb.like(0.0);
+        choose!(vdb.at_most(0.0), zero, {
+            let x = (vdg - self.e_v) / (vdg.lift(self.oxide_m) * 3.0);
+            // exp(−690) is below the smallest normal number
+            choose!(x.at_most(self.b_v_m.val() / 690.0), zero, {
+                let cube = vdb * vdb * vdb;
+                x * (-(x.lift(self.b_v_m) / x)).exp() * self.a_s * width_m * cube / (cube + self.c_v3)
+            })
+        })
     }
 }

@@ -2,7 +2,7 @@
 
 use super::gate::{HBAR, M0, Q};
 use crate::device::bsim4::silicon::EPS_SI;
-use crate::device::dual::{Over, Real};
+use crate::device::dual::{Over, Real, choose};
 
 /// Tunnelling mass of silicon in units of the free electron's (Chen et al., *IEEE Electron Device Lett.* 8 (1987) 515).
 const TUNNEL_MASS: f64 = 0.2;
@@ -67,10 +67,11 @@ impl<P: Real> BandToBand<P> {
 
     /// Current from body to diffusion at the forward voltage `v`, A. Forward of zero the field is held, which leaves a
     /// conductance that the diode hides.
+    #[inline(always)]
     fn current<R: Over<P>>(&self, v: R) -> R {
-        let across = if v.val() < 0.0 { -v } else { R::of(0.0) };
+        let across = choose!(v.below(0.0), -v, v.like(0.0));
         let field = ((across + self.built_in_v) * self.field_sq).sqrt();
-        v * field * (-(R::lift(self.b_v_m) / field)).exp() * self.scale
+        v * field * (-(v.lift(self.b_v_m) / field)).exp() * self.scale
     }
 }
 
@@ -86,14 +87,15 @@ impl<P: Real> Junction<P> {
     ///
     /// # Source
     /// Sah, Noyce, Shockley, *Proc. IRE* 45 (1957) 1228–1243; Sze and Ng, *Physics of Semiconductor Devices*, chapter 2.
+    #[inline(always)]
     pub fn current<R: Over<P>>(&self, v: R) -> R {
-        let mut i = R::of(0.0);
+        let mut i = v.like(0.0);
         if self.diffusion_a.val() > 0.0 {
             i = i + (v / self.vt).exp_m1() * self.diffusion_a;
         }
         if self.generation_a.val() > 0.0 {
             let open = -(v / self.built_in_v) + 1.0;
-            let close = R::lift(self.vt) / self.built_in_v * 4.0;
+            let close = v.lift(self.vt) / self.built_in_v * 4.0;
             let width = ((open + (open.sq() + close.sq()).sqrt()) * 0.5).sqrt();
             i = i + (v / (self.vt * 2.0)).exp_m1() * width * self.generation_a;
         }

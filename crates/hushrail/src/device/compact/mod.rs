@@ -27,7 +27,9 @@ pub mod params;
 pub mod prepare;
 pub mod slopes;
 
+use super::bulk::{RowLaw, Width, sweep};
 use super::dual::{Dual, Over, Real};
+use super::lanes::Lanes;
 use super::{Bias, Branches, Device, Polarity};
 pub use card::{CompactCard, CompactError};
 use channel::Channel;
@@ -43,26 +45,45 @@ pub struct Compact {
 }
 
 /// Branch currents at a bias, whatever the kind of number.
+#[inline(always)]
 pub fn branches<P: Real, R: Over<P>>(p: &Prepared<P>, bias: Bias<R>) -> Branches<R> {
-    let flip = |x: R| if p.polarity == Polarity::P { -x } else { x };
-    let (vgs, vds, vbs) = (flip(bias.vgs), flip(bias.vds), flip(bias.vbs));
-    let exchanged = vds.val() < 0.0;
+    let mirrored = p.polarity == Polarity::P;
+    let bias = if mirrored { bias.reversed() } else { bias };
+    let Bias { vgs, vds, vbs } = bias;
     let (vgd, vbd) = (vgs - vds, vbs - vds);
-    let ch = if exchanged { Channel::at(p, vgd, -vds, vbd) } else { Channel::at(p, vgs, vds, vbs) };
-    let mut b = Branches { channel_ds: if exchanged { -ch.ids } else { ch.ids }, ..Branches::zero() };
+    let exchanged = vds.below(0.0);
+    let ch = Channel::at(p, bias.exchanged(exchanged));
+    let mut b = Branches { channel_ds: ch.ids, ..Branches::all(vds.like(0.0)) }.exchanged(exchanged);
     if let Some(g) = &p.gidl {
         b.gidl_db = g.current(p.width_m, -vgd, -vbd);
         b.gidl_sb = g.current(p.width_m, -vgs, -vbs);
     }
     if let Some(t) = &p.tunnel {
-        let (drain_v, source_v) =
-            if exchanged { (ch.source_v, ch.drain_v) } else { (ch.drain_v, ch.source_v) };
+        let drain_v = R::select(exchanged, ch.source_v, ch.drain_v);
+        let source_v = R::select(exchanged, ch.drain_v, ch.source_v);
         b.gate_gd = t.edge(vgd) + t.channel_end(vgd, drain_v);
         b.gate_gs = t.edge(vgs) + t.channel_end(vgs, source_v);
     }
     b.junction_sb = -p.source.current(vbs);
     b.junction_db = -p.drain.current(vbd);
-    if p.polarity == Polarity::P { b.map(|x| -x) } else { b }
+    if mirrored { b.reversed() } else { b }
+}
+
+impl RowLaw for Compact {
+    #[inline(always)]
+    fn row<S: pulp::Simd>(&self, bias: Bias<Lanes<S>>) -> Branches<Lanes<S>> {
+        branches(&self.prepared, bias)
+    }
+}
+
+impl Compact {
+    /// [`Device::branches_many`] with vectors of a width that is asked for.
+    ///
+    /// # Panics
+    /// When the lengths differ.
+    pub fn branches_with(&self, biases: &[Bias<f64>], out: &mut [Branches<f64>], width: Width) {
+        sweep(self, biases, out, width);
+    }
 }
 
 impl Device for Compact {
@@ -71,6 +92,9 @@ impl Device for Compact {
     }
     fn branches(&self, bias: Bias<f64>) -> Branches<f64> {
         branches(&self.prepared, bias)
+    }
+    fn branches_many(&self, biases: &[Bias<f64>], out: &mut [Branches<f64>]) {
+        self.branches_with(biases, out, Width::Machine);
     }
     fn branches_dual(&self, bias: Bias<Dual<3>>) -> Branches<Dual<3>> {
         branches(&self.prepared, bias)

@@ -40,7 +40,7 @@ mod split;
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::sync::{Arc, Mutex, PoisonError};
 
-use super::dual::{Dual, Real};
+use super::dual::{Dual, Number, Real};
 use super::range::{Basis as RangeBasis, Outside};
 use super::{Bias, Branches, Device, Geometry, Polarity};
 use crate::physics::{CELSIUS_ZERO_K, Kelvin};
@@ -324,7 +324,7 @@ fn current_along(x: &[f64], i: &[f64], at: f64) -> f64 {
     let sign = i[0].signum();
     if i.iter().all(|i| i * sign > 0.0) {
         let logs: Vec<f64> = i.iter().map(|i| i.abs().ln()).collect();
-        return sign * Real::exp(spline::along(x, &logs, at));
+        return sign * Number::exp(spline::along(x, &logs, at));
     }
     let y: Vec<f64> = i.iter().map(|i| (i / (2.0 * small)).asinh()).collect();
     2.0 * small * spline::along(x, &y, at).clamp(-650.0, 650.0).sinh()
@@ -349,7 +349,7 @@ impl Signed {
             let fall = rise / (rise + 1.0);
             (self.small_a * (rise + fall) * y.signum(), self.small_a * (rise + 2.0 - fall))
         } else {
-            (self.small_a * Real::exp(y.abs()) * y.signum(), self.small_a * 650f64.exp())
+            (self.small_a * Number::exp(y.abs()) * y.signum(), self.small_a * 650f64.exp())
         };
         spread(v, value, slope.map(|s| s * factor))
     }
@@ -394,7 +394,7 @@ impl TableDevice {
             b.gate_gb = s.current(&v, &basis);
         }
         if exchanged {
-            b = b.exchanged();
+            b = b.exchanged(true);
         }
         let scale = self.width_ratio * self.polarity.sign();
         b.map(|i| i * scale)
