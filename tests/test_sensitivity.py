@@ -51,9 +51,9 @@ def test_cells_and_blocks_of_the_demo() -> None:
     assert table.blocks
     assert not table.failures
     assert calls
-    for row in (*table.cells, *table.blocks):
-        s = row.slopes
-        assert row.current_a > 0
+    found = [(row.current_a, row.slopes) for row in table.cells]
+    for current_a, s in found + [(row.current_a, row.slopes) for row in table.blocks]:
+        assert current_a > 0
         assert s.threshold_v < 0 < s.width_m
         assert s.temperature_k > 0
         assert s.supply_v > 0

@@ -270,3 +270,26 @@ fn described_silicon_is_silicon() {
         }
     }
 }
+
+/// Junctions driven hard forward through a resistance, cold: what the exponential does to a solver inside the device.
+#[test]
+fn resistances_hold_junctions_driven_forward() {
+    for mode in ["rdsmod=1 rsw=80 rdw=90", "rsh=15", "rdsmod=1 rsw=5000 rdw=9000 rsh=1000"] {
+        let p = moded(&format!("{mode} jss=1e-3 ijthsfwd=0"));
+        for model in ["nx", "px"] {
+            for temp_c in [-55.0, 25.0, 150.0] {
+                let dev = make(&p, model, temp_c);
+                for v in biases(600) {
+                    let b = at(v.map(|x| 1.4 * x));
+                    let i = dev.branches_dual(b.dual()).terminals();
+                    let most = i.iter().fold(0.0f64, |m, i| m.max(i.v.abs()));
+                    assert!(
+                        i.iter().all(|i| i.v.is_finite() && i.d.iter().all(|d| d.is_finite())),
+                        "{mode} {model} {v:?}"
+                    );
+                    assert!(i.iter().map(|i| i.v).sum::<f64>().abs() <= 1e-14 * most, "{mode} {model} {v:?}");
+                }
+            }
+        }
+    }
+}

@@ -184,7 +184,8 @@ fn swept(n: usize, sweep: impl FnOnce(&mut [Branches<f64>])) -> Vec<[u64; 10]> {
 
 fn bsim4(model: &str) -> Bsim4 {
     let p = process();
-    let (card, g, _) = p.card(&request(model, 0.4e-6, 60e-9, true), 60.0, &mut Vec::new()).expect(model);
+    let hushrail::device::process::CardOf { card, geometry: g, .. } =
+        p.card(&request(model, 0.4e-6, 60e-9, true), 60.0, &mut Vec::new()).expect(model);
     let values = Values::at(&card, &g, |_, v| v).expect(model);
     Bsim4 { prepared: Prepared::new(&card, &values, &g, at_c(60.0).get()), limits: Limits::of(&card) }
 }

@@ -10,8 +10,9 @@ use super::bsim4::limits::Limits;
 use super::bsim4::material::Material;
 use super::bsim4::prepare::Prepared;
 use super::bsim4::table::{Id, ROWS};
+use super::bsim4::threshold::Threshold;
 use super::bsim4::values::{Card, Values};
-use super::bsim4::{Bsim4, table};
+use super::bsim4::{Bsim4, mobility, table};
 use super::diode::Diode;
 use super::spec::DeviceModel;
 use super::{Bias, Device, Geometry};
@@ -23,6 +24,9 @@ use crate::read::spice::{DeckOptions, read_deck};
 
 /// Relative slack at the edges of bins: sizes written in micrometres do not always survive the conversion to metres.
 const BIN_SLACK: f64 = 1e-9;
+
+/// Mobility over its low-field value from which the published form is continued by a hyperbola (denominator below 0.2).
+const MOBILITY_FOLD: f64 = 5.0;
 
 /// Cards and corner files of one technology at one process corner.
 #[derive(Debug, Clone)]
@@ -349,6 +353,16 @@ impl Process {
                 ),
                 wanted: "all must be above zero; the card does not hold at this temperature".into(),
             });
+        }
+        let on = Threshold::at(&prepared, 1.0, 1.0, 0.0);
+        if mobility::effective(&prepared, &on) > MOBILITY_FOLD * prepared.mobility.u0 {
+            let text = format!(
+                "model family `{}`: the mobility terms of the card nearly cancel at {:.1} °C, so that mobility would rise without \
+                 limit: the card is used outside the temperatures it was made for, and on-currents are not to be trusted",
+                request.model,
+                temp.celsius()
+            );
+            Note::new("card-outside-temperature", text).add_once(notes);
         }
         let device = Bsim4 { prepared, limits: Limits::of(&card) };
         let sign = device.polarity().sign();

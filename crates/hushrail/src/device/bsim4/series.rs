@@ -81,11 +81,13 @@ pub fn through<P: Real, R: Over<P> + Real>(
         ((a + rs * is, b - rd * id), currents, gross)
     };
     let (mut a, mut b) = (R::of(0.0), R::of(0.0));
+    let (mut lacks, mut currents, mut gross) = lack(a, b);
+    let worst = |(f, g): (R, R)| f.val().abs().max(g.val().abs());
     let mut jacobian: Option<[[f64; 2]; 2]> = None;
     let (mut still, mut last) = (0, f64::INFINITY);
     for _ in 0..STEPS {
-        let ((f, g), currents, gross) = lack(a, b);
-        let size = f.val().abs().max(g.val().abs());
+        let (f, g) = lacks;
+        let size = worst(lacks);
         if jacobian.is_none() || size > 0.1 * last {
             let h = 1e-7;
             let ((fa, ga), ..) = lack(a + h, b);
@@ -97,21 +99,28 @@ pub fn through<P: Real, R: Over<P> + Real>(
         let Some([[j11, j12], [j21, j22]]) = jacobian else { break };
         let det = j11 * j22 - j12 * j21;
         let (mut da, mut db) = ((f * j22 - g * j12) / det, (g * j11 - f * j21) / det);
-        // an exponential (a junction driven forward) must not throw the iteration across the bias
         let step = da.val().abs().max(db.val().abs());
-        if step > 0.5 {
-            (da, db) = (da * (0.5 / step), db * (0.5 / step));
-        }
-        let scale = a.val().abs().max(b.val().abs());
-        let noise = 1e-13 * scale + 1e-15 * (gross + scale);
         if !step.is_finite() {
             break;
         }
-        still = if step <= noise { still + 1 } else { 0 };
+        let scale = a.val().abs().max(b.val().abs());
+        still = if step <= 1e-13 * scale + 1e-15 * (gross + scale) { still + 1 } else { 0 };
         if still == 3 {
             return currents;
         }
+        // the exponential of a junction driven forward throws a full step across the bias: go back until it gains
+        let mut tried = lack(a - da, b - db);
+        if step > 1e-9 * scale {
+            for _ in 0..60 {
+                if worst(tried.0) < size {
+                    break;
+                }
+                (da, db) = (da * 0.5, db * 0.5);
+                tried = lack(a - da, b - db);
+            }
+        }
         (a, b) = (a - da, b - db);
+        (lacks, currents, gross) = tried;
     }
     Branches::zero().map(|_: R| R::of(f64::NAN))
 }
