@@ -15,6 +15,7 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "sensitivities",
 ]
 
 __version__: Final[str]

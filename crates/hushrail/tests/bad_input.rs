@@ -301,7 +301,7 @@ fn bins_that_overlap_or_leave_a_gap_are_refused() {
             (None, made) => assert!(made.is_ok()),
             // the upper edge of the last bin below a gap still belongs to it
             (Some(wanted), _) if l0 == "lmin=70n" => {
-                says(&at(65e-9).expect_err("gap"), &[wanted, "net.sp:7:3"])
+                says(&at(65e-9).expect_err("gap"), &[wanted, "net.sp:7:3"]);
             }
             (Some(wanted), made) => says(&made.expect_err("overlap"), &[wanted, "net.sp:7:3"]),
         }
