@@ -2,7 +2,6 @@
 
 mod account;
 pub mod rest;
-pub mod root;
 pub mod scheme;
 pub mod switch;
 

@@ -10,13 +10,13 @@ use std::sync::atomic::AtomicBool;
 use serde::{Deserialize, Serialize};
 
 use super::account::account;
-use super::root::increasing;
 use super::scheme::{Scheme, SchemeError, WellTie};
 use super::switch::{Side, Switch};
 use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, total};
 use crate::cell::{DeviceShelf, Levels};
 use crate::device::process::Process;
 use crate::device::range::Outside;
+use crate::device::root::increasing;
 use crate::device::{Mechanism, Terminal};
 use crate::physics::Kelvin;
 use crate::read::deck::Note;
