@@ -5,20 +5,24 @@ mod common;
 use std::convert::Infallible;
 use std::sync::Arc;
 
-use common::{AllRegion, own_inverter, own_pair, room, weak};
+use common::{AllRegion, Symmetric, own_inverter, own_pair, room, weak};
 use hushrail::awake::AwakeError;
 use hushrail::awake::curve::CurvePoint;
 use hushrail::awake::delay::{Swing, delay_penalty};
-use hushrail::awake::keep::{Collapse, CollapseSide, Mismatch, Need, Population, hold, loops, retention, sigmas};
+use hushrail::awake::keep::{
+    Collapse, CollapseSide, Mismatch, Need, Population, hold, loops, retention, sigmas,
+};
 use hushrail::awake::margin::{AtRails, margins};
 use hushrail::awake::square::butterfly;
 use hushrail::cell::{BoundCell, Levels};
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::device::dual::{Dual, Real};
 use hushrail::device::{Bias, Branches, Device, Polarity};
+use hushrail::physics::Kelvin;
 use hushrail::standby::WellTie;
 
-const HEADER: Collapse = Collapse { side: CollapseSide::Header, nwell: WellTie::Virtual, pwell: WellTie::Virtual };
+const HEADER: Collapse =
+    Collapse { side: CollapseSide::Header, nwell: WellTie::Virtual, pwell: WellTie::Virtual };
 
 fn pair(n: f64) -> BoundCell {
     let two = |p| [weak(p, n), weak(p, n)];
@@ -73,10 +77,35 @@ fn solved_curve_is_the_closed_form() {
 fn ideal_loop_is_lost_where_its_gain_is_one() {
     let o = SolveOptions::default();
     for (n, want) in [(1.0, 35.8385e-3), (1.2, 40.7664e-3), (1.4, 45.2652e-3), (1.5, 47.3759e-3)] {
-        let r = retention(&pair(n), "ideal", 1.0, &HEADER, &[], &Need { margin_v: 0.0, population: None }, &o, &|| false)
-            .expect("holds");
+        let r = retention(
+            &pair(n),
+            "ideal",
+            1.0,
+            &HEADER,
+            &[],
+            &Need { margin_v: 0.0, population: None },
+            &o,
+            &|| false,
+        )
+        .expect("holds");
         assert!((r.retention_v / want - 1.0).abs() < 5e-5, "n {n}: {} for {want}", r.retention_v);
     }
+}
+
+/// The same at 125 °C, where `vT` is 34.309912 mV (reference sheet B1.5): retention voltages rise with temperature.
+#[test]
+fn ideal_loop_needs_more_when_hot() {
+    let hot = Kelvin::from_celsius(125.0).expect("in range");
+    let vt_v = 34.309912e-3;
+    let dev =
+        |polarity| Arc::new(Symmetric { i0_a: 1e-9, n: 1.4, vt_v, polarity, leak_s: 0.0 }) as Arc<dyn Device>;
+    let two = |p| [dev(p), dev(p)];
+    let cell = own_pair(&two(Polarity::N), &two(Polarity::P), hot);
+    let need = Need { margin_v: 0.0, population: None };
+    let r = retention(&cell, "hot", 1.0, &HEADER, &[], &need, &SolveOptions::default(), &|| false)
+        .expect("holds");
+    let want = 2.0 * vt_v * 2.4f64.ln();
+    assert!((r.retention_v / want - 1.0).abs() < 5e-5, "{} for {want}", r.retention_v);
 }
 
 /// A curve no library makes: `y = V/2·(1 − tanh(g·(x − t)/V))`.
@@ -111,13 +140,20 @@ fn brute_force(f: &dyn Fn(f64) -> f64, g: &dyn Fn(f64) -> f64, vdd: f64, upper: 
 
 #[test]
 fn squares_are_those_of_a_brute_force_search() {
-    for (ga, ta, gb, tb) in [(6.0, 0.5, 6.0, 0.5), (10.0, 0.4, 7.0, 0.55), (40.0, 0.3, 25.0, 0.45), (4.0, 0.52, 9.0, 0.5)] {
+    for (ga, ta, gb, tb) in
+        [(6.0, 0.5, 6.0, 0.5), (10.0, 0.4, 7.0, 0.55), (40.0, 0.3, 25.0, 0.45), (4.0, 0.52, 9.0, 0.5)]
+    {
         let (f, g) = (tanh_curve(1.0, ga, ta), tanh_curve(1.0, gb, tb));
-        let b = butterfly(0.0, 1.0, &mut |x| Ok::<_, Infallible>(f(x)), &mut |y| Ok(g(y))).unwrap_or_else(|e| match e {});
+        let b = butterfly(0.0, 1.0, &mut |x| Ok::<_, Infallible>(f(x)), &mut |y| Ok(g(y)))
+            .unwrap_or_else(|e| match e {});
         let s = b.squares.as_ref().expect("bistable");
         for (k, upper) in [(0, true), (1, false)] {
             let want = brute_force(&|x| f(x).out_v, &|y| g(y).out_v, 1.0, upper);
-            assert!((s[k].side_v - want).abs() < 2e-6, "{ga} {ta} {gb} {tb} lobe {k}: {} for {want}", s[k].side_v);
+            assert!(
+                (s[k].side_v - want).abs() < 2e-6,
+                "{ga} {ta} {gb} {tb} lobe {k}: {} for {want}",
+                s[k].side_v
+            );
             // both corners on the curves
             let (x, y, d) = (s[k].x_v, s[k].y_v, s[k].side_v);
             let (low, high) = ((x, y), (x + d, y + d));
@@ -127,7 +163,8 @@ fn squares_are_those_of_a_brute_force_search() {
     }
     // gain below one: nothing is held
     let f = tanh_curve(1.0, 1.9, 0.5);
-    let b = butterfly(0.0, 1.0, &mut |x| Ok::<_, Infallible>(f(x)), &mut |y| Ok(f(y))).unwrap_or_else(|e| match e {});
+    let b = butterfly(0.0, 1.0, &mut |x| Ok::<_, Infallible>(f(x)), &mut |y| Ok(f(y)))
+        .unwrap_or_else(|e| match e {});
     assert!(b.squares.is_none() && b.margin_v() == 0.0);
 }
 
@@ -150,7 +187,8 @@ fn margins_shrink_on_drooped_rails_and_between_rails() {
     // equal devices: symmetric about the middle
     assert!((u.vil_v + u.vih_v - 1.0).abs() < 1e-6 && (u.nml_v - u.nmh_v).abs() < 1e-6, "{u:?}");
     let path = &hushrail::awake::margin::paths(&inverter).expect("listed")[0];
-    let mut t = hushrail::awake::margin::Tracer::of_path(&inverter, path, &Levels::powered(1.0), (0.0, 1.0), &o);
+    let mut t =
+        hushrail::awake::margin::Tracer::of_path(&inverter, path, &Levels::powered(1.0), (0.0, 1.0), &o);
     let mut out = |x: f64| t.at(x).expect("solved").out_v;
     for v in [u.vil_v, u.vih_v] {
         let slope = (out(v + 1e-5) - out(v - 1e-5)) / 2e-5;
@@ -158,7 +196,9 @@ fn margins_shrink_on_drooped_rails_and_between_rails() {
     }
     let drooped = margins(at(0.05, 0.95), at(0.05, 0.95), &o).expect("curves");
     let mixed = margins(at(0.05, 0.95), at(0.0, 1.0), &o).expect("curves");
-    let nm = |m: &hushrail::awake::margin::Margins| (m.nml_v.expect("gain"), m.square.as_ref().expect("pair").margin_v);
+    let nm = |m: &hushrail::awake::margin::Margins| {
+        (m.nml_v.expect("gain"), m.square.as_ref().expect("pair").margin_v)
+    };
     assert!(nm(&drooped).0 < nm(&full).0 && nm(&drooped).1 < nm(&full).1);
     // the margins between rails are made of what either cell does at its own
     let d = drooped.paths[0].unity.expect("gain");
@@ -325,7 +365,8 @@ fn more_bits_and_more_margin_need_more_voltage_and_impossible_needs_are_refused(
     assert!(matches!(&e, AwakeError::StoresNothing { .. } | AwakeError::NeverHolds { .. }), "{e}");
     assert!(with(f64::NAN, None, 0.0, 1.0).is_err());
     assert!(with(0.0, Some(0.0), 0.0, 1.0).is_err());
-    let stopped = retention(&cell, "c", 1.0, &HEADER, &[], &Need { margin_v: 0.0, population: None }, &o, &|| true);
+    let stopped =
+        retention(&cell, "c", 1.0, &HEADER, &[], &Need { margin_v: 0.0, population: None }, &o, &|| true);
     assert!(matches!(stopped, Err(AwakeError::Stopped)));
     let inverter = own_inverter(weak(Polarity::N, 1.0), weak(Polarity::P, 1.0), room());
     let e = loops(&inverter, &Levels::powered(1.0), &[], &o).expect_err("no loop").to_string();

@@ -21,7 +21,8 @@ fn constant(n: usize, a: f64) -> (usize, Load) {
 fn uniform_ladder_is_the_closed_form() {
     let (n, r, rs, i) = (50, 0.3, 0.5, 1e-3);
     let loads: Vec<_> = (0..n).map(|k| constant(k, i)).collect();
-    let s = solve_rail(&Rail::ladder(n, r).expect("rail"), &[(0, Tie::Ohm(rs))], &loads, 10.0).expect("solved");
+    let s =
+        solve_rail(&Rail::ladder(n, r).expect("rail"), &[(0, Tie::Ohm(rs))], &loads, 10.0).expect("solved");
     let mut want = i * n as f64 * rs;
     for (k, d) in s.droop_v.iter().enumerate() {
         if k > 0 {
@@ -100,15 +101,15 @@ fn switch(width_m: f64) -> Switch {
     };
     let t = Kelvin::from_celsius(25.0).expect("in range");
     let origin = Arc::from("test");
-    Switch::new(&spec, Side::Header, &process(), t, 1.0, &mut DeviceShelf::default(), &origin).expect("switch")
+    Switch::new(&spec, Side::Header, &process(), t, 1.0, &mut DeviceShelf::default(), &origin)
+        .expect("switch")
 }
 
 /// Real switches: without rail resistance all carry the same, which is one switch of all their width; with it, more droop.
 #[test]
 fn real_switches_balance_at_every_node() {
     let ties: Vec<_> = (0..4).map(|k| (5 * k, Tie::Switch(switch(1e-5)))).collect();
-    let loads: Vec<_> =
-        (0..20).map(|k| (k, Load::Proportional { current_a: 5e-5 })).collect();
+    let loads: Vec<_> = (0..20).map(|k| (k, Load::Proportional { current_a: 5e-5 })).collect();
     let stiff = solve_rail(&Rail::ladder(20, 1e-6).expect("rail"), &ties, &loads, 1.0).expect("solved");
     let lumped = hushrail::awake::droop::settle_switches(
         &Load::Proportional { current_a: 1e-3 },
@@ -121,7 +122,8 @@ fn real_switches_balance_at_every_node() {
     let soft = solve_rail(&Rail::ladder(20, 20.0).expect("rail"), &ties, &loads, 1.0).expect("solved");
     assert!(soft.worst_v > stiff.worst_v && soft.worst_node == 19, "{soft:?}");
     assert!((soft.tie_a.iter().sum::<f64>() / soft.load_a - 1.0).abs() < 1e-9);
-    let e = solve_rail(&Rail::ladder(20, 1.0).expect("rail"), &ties, &[constant(7, 1.0)], 1.0).expect_err("too much");
+    let e = solve_rail(&Rail::ladder(20, 1.0).expect("rail"), &ties, &[constant(7, 1.0)], 1.0)
+        .expect_err("too much");
     assert!(e.to_string().contains("no operating point on the rail"), "{e}");
 }
 
@@ -148,7 +150,8 @@ fn ring_droops_more_than_grid() {
 #[test]
 fn what_no_switch_reaches_is_named() {
     let rail = Rail { nodes: 3, segments: vec![Segment { a: 0, b: 1, ohm: 1.0 }] };
-    let e = solve_rail(&rail, &[(0, Tie::Ohm(1.0))], &[constant(2, 1.0)], 1.0).expect_err("island").to_string();
+    let e =
+        solve_rail(&rail, &[(0, Tie::Ohm(1.0))], &[constant(2, 1.0)], 1.0).expect_err("island").to_string();
     assert!(e.contains("no switch reaches node 2"), "{e}");
     let rail = Rail::ladder(3, 1.0).expect("rail");
     for (tie, load, wanted) in [

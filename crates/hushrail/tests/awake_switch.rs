@@ -143,7 +143,8 @@ fn neighbour_on_a_shared_switch_is_felt_through_its_resistance() {
     let n = neighbour_step(&load, 0.02, 1.0, &resistor(0.5)).expect("settles");
     assert!((n.noise_v - 0.01).abs() < 1e-14 && (n.before_v - 0.005).abs() < 1e-14, "{n:?}");
     // a victim that draws less on a lower rail feels less
-    let n = neighbour_step(&Load::Proportional { current_a: 1.0 }, 0.02, 1.0, &resistor(0.5)).expect("settles");
+    let n =
+        neighbour_step(&Load::Proportional { current_a: 1.0 }, 0.02, 1.0, &resistor(0.5)).expect("settles");
     assert!((n.noise_v - 0.01 / 1.5).abs() < 1e-14, "{n:?}");
 }
 

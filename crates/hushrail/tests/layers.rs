@@ -3,7 +3,8 @@
 use std::path::Path;
 
 const ROOMS: [&str; 12] = [
-    "physics", "corner", "read", "device", "circuit", "cell", "block", "standby", "awake", "check", "batch", "lib",
+    "physics", "corner", "read", "device", "circuit", "cell", "block", "standby", "awake", "check", "batch",
+    "lib",
 ];
 
 fn files(dir: &Path, out: &mut Vec<std::path::PathBuf>) {

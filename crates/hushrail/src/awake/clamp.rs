@@ -52,7 +52,11 @@ impl Clamp {
         let d = &spec.device;
         d.check("clamp").map_err(|(what, value, wanted)| AwakeError::Range { what, value, wanted })?;
         if d.overdrive_v != 0.0 || d.boost_v != 0.0 || d.well_bias_v != 0.0 {
-            return range("overdrive, boost or well bias of the clamp", "not zero".into(), "want none of them");
+            return range(
+                "overdrive, boost or well bias of the clamp",
+                "not zero".into(),
+                "want none of them",
+            );
         }
         if let Some(g) = spec.gate_v
             && !(-1.0..=vdd_v + 1.0).contains(&g)

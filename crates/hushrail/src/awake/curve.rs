@@ -34,11 +34,7 @@ impl Curve {
     ///
     /// # Errors
     /// Whatever `f` returns.
-    pub fn sample<E>(
-        lo: f64,
-        hi: f64,
-        f: &mut impl FnMut(f64) -> Result<CurvePoint, E>,
-    ) -> Result<Self, E> {
+    pub fn sample<E>(lo: f64, hi: f64, f: &mut impl FnMut(f64) -> Result<CurvePoint, E>) -> Result<Self, E> {
         let mut points = Vec::new();
         for k in 0..FIRST {
             let next = f(lo + (hi - lo) * k as f64 / (FIRST - 1) as f64)?;
@@ -67,11 +63,7 @@ impl Curve {
     ///
     /// # Errors
     /// Whatever `f` returns.
-    pub fn add<E>(
-        &mut self,
-        in_v: f64,
-        f: &mut impl FnMut(f64) -> Result<CurvePoint, E>,
-    ) -> Result<(), E> {
+    pub fn add<E>(&mut self, in_v: f64, f: &mut impl FnMut(f64) -> Result<CurvePoint, E>) -> Result<(), E> {
         let k = self.points.partition_point(|p| p.in_v < in_v);
         let near = |p: &CurvePoint| (p.in_v - in_v).abs() < 1e-12;
         if self.points.get(k).is_some_and(near) || k > 0 && near(&self.points[k - 1]) {

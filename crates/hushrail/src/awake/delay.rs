@@ -120,8 +120,8 @@ pub fn delay_penalty(
                 what: format!("cell `{}`, {edge} with {}", cell.cell.name, words.join(" ")),
                 reason: format!("its output does not reach the middle of its swing {where_}"),
             };
-            let (t0, full_a) = charge_time(cell, s, full, n, reference, options)?
-                .ok_or_else(|| stuck("at full rails"))?;
+            let (t0, full_a) =
+                charge_time(cell, s, full, n, reference, options)?.ok_or_else(|| stuck("at full rails"))?;
             let (t1, drooped_a) = charge_time(cell, s, drooped, n, there, options)?
                 .ok_or_else(|| stuck("on the drooped rails"))?;
             let found = DelayPenalty {

@@ -201,6 +201,20 @@ pub fn resistor(ohm: f64) -> impl Fn(f64) -> f64 {
     move |d| d / ohm
 }
 
+/// Part of a droop that stands across the header of a header and footer in series, V: both carry the same current.
+fn header_share(h: &Switch, f: &Switch, d: f64) -> f64 {
+    let top = (h.awake_current(d).0 + f.awake_current(d).0).max(f64::MIN_POSITIVE);
+    increasing(0.0, d, 1e-17, 1e-14, 200, |x| {
+        Ok::<f64, std::convert::Infallible>((h.awake_current(x).0 - f.awake_current(d - x).0) / top)
+    })
+    .unwrap_or_else(|e| match e {})
+}
+
+/// What header and footer in series carry at a droop over both, A.
+pub fn in_series(h: &Switch, f: &Switch, droop_v: f64) -> f64 {
+    h.awake_current(header_share(h, f, droop_v)).0
+}
+
 /// A domain behind its switch, or behind header and footer in series: droop over both, and over each.
 ///
 /// # Errors
@@ -222,16 +236,7 @@ pub fn settle_switches(
             Ok((d, 0.0, v))
         }
         (Some(h), Some(f)) => {
-            // the share of the header rises with the whole
-            let share = |d: f64| {
-                let top = h.awake_current(d).0 + f.awake_current(d).0;
-                increasing(0.0, d, 1e-17, 1e-14, 200, |x| {
-                    Ok::<f64, std::convert::Infallible>(
-                        (h.awake_current(x).0 - f.awake_current(d - x).0) / top.max(f64::MIN_POSITIVE),
-                    )
-                })
-                .unwrap_or_else(|e| match e {})
-            };
+            let share = |d: f64| header_share(h, f, d);
             let d = settle_droop(load, h.vdd_v, &|d| h.awake_current(share(d)).0)?;
             let x = share(d.droop_v);
             let rest = d.droop_v - x;
@@ -266,7 +271,11 @@ pub fn neighbour_step(
 ) -> Result<CoupledNoise, AwakeError> {
     victim.check(vdd_v)?;
     if !(step_a >= 0.0 && step_a.is_finite()) {
-        return range("the neighbour's step", format!("{step_a} A"), "want zero or a finite current above it");
+        return range(
+            "the neighbour's step",
+            format!("{step_a} A"),
+            "want zero or a finite current above it",
+        );
     }
     let before_v = balance(carrier, vdd_v, &|v| victim.at(v, vdd_v))?;
     let after_v = balance(carrier, vdd_v, &|v| victim.at(v, vdd_v) + step_a)?;

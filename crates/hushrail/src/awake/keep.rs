@@ -87,11 +87,7 @@ pub fn loops(
             for j in i + 1..nets.len() {
                 if !used[i] && !used[j] && falls[i][j] > half && falls[j][i] > half {
                     (used[i], used[j]) = (true, true);
-                    out.push(Loop {
-                        state: s.clone(),
-                        inputs: words.join(" "),
-                        nets: (nets[i], nets[j]),
-                    });
+                    out.push(Loop { state: s.clone(), inputs: words.join(" "), nets: (nets[i], nets[j]) });
                 }
             }
         }
@@ -268,8 +264,7 @@ pub fn hold(
             let (gp, dg) = g.thresholds_at(y2)?;
             sides[k] = fp.iter().zip(&gp).map(|(u, v)| sign * (u / (1.0 - df) - v / (1.0 - dg))).collect();
         }
-        let spread =
-            |s: &[f64]| s.iter().zip(sigma).map(|(d, s)| (d * s) * (d * s)).sum::<f64>().sqrt();
+        let spread = |s: &[f64]| s.iter().zip(sigma).map(|(d, s)| (d * s) * (d * s)).sum::<f64>().sqrt();
         sigma_v = Some([spread(&sides[0]), spread(&sides[1])]);
         to_thresholds = Some(sides);
     }

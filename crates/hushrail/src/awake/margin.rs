@@ -289,7 +289,9 @@ pub fn margins(
         if list.is_empty() {
             return Err(AwakeError::Curve {
                 what: format!("cell `{}`", at.cell.cell.name),
-                reason: "no input moves an output whatever it stores; use the hold margin for cells that store".into(),
+                reason:
+                    "no input moves an output whatever it stores; use the hold margin for cells that store"
+                        .into(),
             });
         }
     }

@@ -109,12 +109,7 @@ pub struct RailDroop {
     pub residual: f64,
 }
 
-fn check(
-    rail: &Rail,
-    ties: &[(usize, Tie)],
-    loads: &[(usize, Load)],
-    vdd_v: f64,
-) -> Result<(), AwakeError> {
+fn check(rail: &Rail, ties: &[(usize, Tie)], loads: &[(usize, Load)], vdd_v: f64) -> Result<(), AwakeError> {
     positive("supply", vdd_v, "V")?;
     if !(1..=MAX_NODES).contains(&rail.nodes) {
         return range("the rail", format!("{} nodes", rail.nodes), "want 1 to 1000000 nodes");

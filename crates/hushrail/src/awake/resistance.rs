@@ -37,7 +37,11 @@ const LEAST_DROOP_V: f64 = 1e-9;
 /// A droop below zero or above the supply, or a switch that is not on at all.
 pub fn on_point(switch: &Switch, droop_v: f64) -> Result<OnPoint, AwakeError> {
     if !(0.0..=switch.vdd_v).contains(&droop_v) {
-        return range("droop", format!("{droop_v} V"), &format!("want 0 V to the supply, {} V", switch.vdd_v));
+        return range(
+            "droop",
+            format!("{droop_v} V"),
+            &format!("want 0 V to the supply, {} V", switch.vdd_v),
+        );
     }
     let at = droop_v.max(LEAST_DROOP_V);
     let (current, slope) = switch.awake_current(at);

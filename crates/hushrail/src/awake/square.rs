@@ -110,15 +110,21 @@ fn lobes(first: &Curve, second: &Curve) -> Lobes {
 /// Rounds in which points are added around the squares and crossings.
 const ROUNDS: i32 = 4;
 
+/// A lobe smaller than this share of the range is rounding of the solved voltages and not a lobe.
+const RESOLVED: f64 = 1e-8;
+
 /// The butterfly of two sampled curves as they are, without further points.
 pub fn butterfly_of(first: Curve, second: Curve) -> Butterfly {
     let l = lobes(&first, &second);
-    let squares = (l.crossings.len() >= 3).then(|| {
-        l.peaks.map(|c| {
-            let (x1, x2) = (first.input_at_offset(c), second.input_at_offset(-c) - c);
-            Square { side_v: (x1 - x2).abs(), x_v: x1.min(x2), y_v: x1.min(x2) + c }
+    let range = first.range_v();
+    let squares = (l.crossings.len() >= 3)
+        .then(|| {
+            l.peaks.map(|c| {
+                let (x1, x2) = (first.input_at_offset(c), second.input_at_offset(-c) - c);
+                Square { side_v: (x1 - x2).abs(), x_v: x1.min(x2), y_v: x1.min(x2) + c }
+            })
         })
-    });
+        .filter(|s| s.iter().all(|s| s.side_v > RESOLVED * (range.1 - range.0)));
     Butterfly { first, second, squares, offsets: l.peaks }
 }
 

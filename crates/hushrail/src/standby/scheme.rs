@@ -60,7 +60,8 @@ impl SwitchSpec {
         if let Some(f) = self.finger_width_m
             && !(f > 0.0 && f <= self.width_m)
         {
-            let wanted = format!("want a width above zero and not above the whole width ({} m)", self.width_m);
+            let wanted =
+                format!("want a width above zero and not above the whole width ({} m)", self.width_m);
             return wrong("finger width", format!("{f} m"), &wanted);
         }
         let volts =
