@@ -139,7 +139,7 @@ class OnPoint:
     droop_v: float
     current_a: float
     chord_ohm: float
-    slope_ohm: float
+    slope_ohm: float | None
 
 
 @dataclass(frozen=True)

@@ -19,7 +19,7 @@ from hushrail.units import engineering
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from hushrail.awake import Butterfly, MeritPoint, RowDroop
+    from hushrail.awake import Butterfly, Curve, MeritPoint, RowDroop
     from hushrail.fit import Residuals
 
 __all__ = [
@@ -301,7 +301,8 @@ def switch_merit(points: Sequence[MeritPoint], names: Sequence[str], ax: Axes | 
     ax.set_yscale("log")
     _engineering_axis(ax, "V", vertical=True)
     ax.set_xlabel("overdrive asleep (V)")
-    ax.set_title("on-resistance × off current")
+    ax.set_ylabel("on-resistance × off current")
+    ax.set_title("switches: lower is better, at any width")
     ax.grid(True, which="major", color="0.9", linewidth=0.8)
     ax.set_axisbelow(True)
     ax.legend(fontsize="small", loc="center left", bbox_to_anchor=(1.0, 0.5), frameon=False)
@@ -324,8 +325,10 @@ def butterfly(butterfly: Butterfly, title: str = "", ax: Axes | None = None) -> 
 
     ax = _axes(ax)
     first, second = butterfly.first, butterfly.second
-    ax.plot(first.in_v, first.out_v, color=_CANDIDATES[0], linewidth=2, label="first, in → out")
-    ax.plot(second.out_v, second.in_v, color=_CANDIDATES[1], linewidth=2, label="second, out ← in")
+    x, y = _through(first)
+    ax.plot(x, y, color=_CANDIDATES[0], linewidth=2, label="first, in → out")
+    y, x = _through(second)
+    ax.plot(x, y, color=_CANDIDATES[1], linewidth=2, label="second, out ← in")
     squares = butterfly.squares or ()
     least = min((s.side_v for s in squares), default=0.0)
     for s in squares:
@@ -357,6 +360,21 @@ def butterfly(butterfly: Butterfly, title: str = "", ax: Axes | None = None) -> 
     return ax
 
 
+def _through(curve: Curve) -> tuple[Any, Any]:
+    """Join the points of a falling curve with their own slopes, without overshoot."""
+    x, y = curve.in_v, curve.out_v
+    slope = np.array([p.slope for p in curve.points])
+    h, t = np.diff(x), np.linspace(0.0, 1.0, 9)[:-1, None]
+    secant = np.diff(y) / h
+    low = np.minimum(3.0 * secant, 0.0)
+    a, b = (np.clip(each, low, 0.0) for each in (slope[:-1], slope[1:]))
+    t2, t3 = t * t, t * t * t
+    out = (2 * t3 - 3 * t2 + 1) * y[:-1] + (t3 - 2 * t2 + t) * h * a
+    out = out + (3 * t2 - 2 * t3) * y[1:] + (t3 - t2) * h * b
+    at = x[:-1] + t * h
+    return np.append(at.T.reshape(-1), x[-1]), np.append(out.T.reshape(-1), y[-1])
+
+
 def row_droop(
     droop: RowDroop, switch_nodes: Sequence[int] = (), rows: int = 1, ax: Axes | None = None
 ) -> Axes:
@@ -373,31 +391,33 @@ def row_droop(
     ax : Axes, optional
         Where to draw.
     """
+    from matplotlib.ticker import MaxNLocator
+
     v = np.array(droop.droop_v)
     if rows < 1 or v.size % rows:
         raise RangeError(f"{v.size} nodes over {rows} rows; want as many in every row")
     ax = _axes(ax)
     columns = v.size // rows
-    for k, own in enumerate(v.reshape(rows, columns)):
+    for k, own in enumerate(1e3 * v.reshape(rows, columns)):
         ax.plot(own, color=_blend(k, rows), linewidth=1.8, label=f"row {k}" if 1 < rows <= 8 else None)
     at = np.array(sorted({int(n) for n in switch_nodes}), dtype=int)
     if at.size:
-        ax.plot(at % columns, v[at], "^", color="black", markersize=6, linestyle="", label="switch")
+        ax.plot(at % columns, 1e3 * v[at], "^", color="black", markersize=6, linestyle="", label="switch")
     worst = droop.worst_node
-    ax.plot(worst % columns, droop.worst_v, "o", color="#c0392b", markersize=7, zorder=4)
+    ax.plot(worst % columns, 1e3 * droop.worst_v, "o", color="#c0392b", markersize=7, zorder=4)
     right = worst % columns > columns // 2
     ax.annotate(
         f"worst {engineering(droop.worst_v, 'V')} at node {worst}",
-        (worst % columns, droop.worst_v),
+        (worst % columns, 1e3 * droop.worst_v),
         xytext=(-8 if right else 8, 6),
         textcoords="offset points",
         ha="right" if right else "left",
         fontsize="small",
     )
-    ax.set_ylim(0.0, 1.15 * droop.worst_v or 1.0)
-    _engineering_axis(ax, "V", vertical=True)
+    ax.set_ylim(0.0, 1.15e3 * droop.worst_v or 1.0)
+    ax.xaxis.set_major_locator(MaxNLocator(integer=True))
     ax.set_xlabel("node along the row")
-    ax.set_ylabel("droop")
+    ax.set_ylabel("droop (mV)")
     ax.set_title(f"load {engineering(droop.load_a, 'A')}")
     ax.grid(True, which="major", color="0.9", linewidth=0.8)
     ax.set_axisbelow(True)

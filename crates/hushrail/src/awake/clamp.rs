@@ -93,7 +93,7 @@ pub struct Clamped {
     pub switch_a: f64,
 }
 
-fn drawn(c: &BlockCurrents, collapse: &Collapse) -> f64 {
+fn drawn(c: &BlockCurrents, collapse: Collapse) -> f64 {
     match collapse.side {
         CollapseSide::Header => {
             total(&c.supply) + if collapse.nwell == WellTie::Virtual { total(&c.nwell) } else { 0.0 }
@@ -116,7 +116,7 @@ pub fn leaks_at(
     stop: &AtomicBool,
 ) -> Result<(f64, BlockCurrents), AwakeError> {
     let c = block.currents(&collapse.levels(vdd_v, span_v), stop)?;
-    Ok((drawn(&c, collapse), c))
+    Ok((drawn(&c, *collapse), c))
 }
 
 /// Where clamp, sleeping switch and block settle.

@@ -64,10 +64,11 @@ impl Load {
                 let found = format!("{} of {name} and {} of current", x.len(), y.len());
                 return range("the load's list", found, "want two or more points of each, as many of both");
             }
-            if let Some(w) = x.windows(2).find(|w| !(w[1] > w[0] && w[0].is_finite() && w[1].is_finite())) {
+            let rises = |w: &&[f64]| w[1] > w[0] && w[0].is_finite() && w[1].is_finite();
+            if let Some([a, b]) = x.windows(2).find(|w| !rises(w)) {
                 return range(
                     &format!("{name} of the load"),
-                    format!("{} after {}", w[1], w[0]),
+                    format!("{b} after {a}"),
                     "want rising numbers",
                 );
             }

@@ -23,10 +23,10 @@ pub enum AwakeError {
     Read(#[from] ReadError),
     /// A cell without operating point.
     #[error(transparent)]
-    Cell(#[from] CellError),
+    Cell(Box<CellError>),
     /// The block.
     #[error(transparent)]
-    Block(#[from] BlockError),
+    Block(Box<BlockError>),
     /// The load asks more than the switch gives at any droop.
     #[error(
         "no operating point{at}: the load draws {load_a:.3e} A where the switch gives at most {given_a:.3e} A (at {droop_v:.4} V droop), \
@@ -104,6 +104,16 @@ pub enum AwakeError {
         /// What the switch asleep gives, A.
         other_a: f64,
     },
+    /// The answer would rest on numbers that the user has not asked for.
+    #[error(
+        "the switch {when} leaves the points of its table: {reason}; add points, or set `extrapolate = true` and read the result as a guess"
+    )]
+    Outside {
+        /// Awake or asleep.
+        when: &'static str,
+        /// Which voltage, and the range.
+        reason: String,
+    },
     /// A part of the rail that no switch reaches.
     #[error("rail network: {reason}")]
     Rail {
@@ -115,11 +125,23 @@ pub enum AwakeError {
     Stopped,
 }
 
+impl From<CellError> for AwakeError {
+    fn from(e: CellError) -> Self {
+        Self::Cell(Box::new(e))
+    }
+}
+
+impl From<BlockError> for AwakeError {
+    fn from(e: BlockError) -> Self {
+        Self::Block(Box::new(e))
+    }
+}
+
 impl From<BindError> for AwakeError {
     fn from(e: BindError) -> Self {
         match e {
             BindError::Read(e) => Self::Read(e),
-            BindError::Block(e) => Self::Block(e),
+            BindError::Block(e) => e.into(),
         }
     }
 }

@@ -46,13 +46,11 @@ pub fn loops(
     let names: Vec<&str> = cell.cell.ports_of(Role::Input).map(|i| &*cell.cell.ports[i]).collect();
     let mut wanted = vec![None; names.len()];
     for (n, b) in given {
-        match names.iter().position(|m| m.eq_ignore_ascii_case(n)) {
-            Some(i) => wanted[i] = Some(*b),
-            None => {
-                let found = format!("`{n}` of cell `{}`", cell.cell.name);
-                return range("an input", found, &format!("want one of {}", names.join(", ")));
-            }
-        }
+        let Some(i) = names.iter().position(|m| m.eq_ignore_ascii_case(n)) else {
+            let found = format!("`{n}` of cell `{}`", cell.cell.name);
+            return range("an input", found, &format!("want one of {}", names.join(", ")));
+        };
+        wanted[i] = Some(*b);
     }
     let nets = Switches::new(&cell.net, &cell.plan).loop_nets();
     let states = cell.states()?;

@@ -10,6 +10,7 @@ use serde::{Deserialize, Serialize};
 
 use super::droop::Load;
 use super::error::{AwakeError, positive, range};
+use super::resistance::inside;
 use crate::standby::switch::Switch;
 
 /// A piece of rail between two nodes.
@@ -109,6 +110,14 @@ pub struct RailDroop {
     pub residual: f64,
 }
 
+fn root(parent: &mut [usize], mut i: usize) -> usize {
+    while parent[i] != i {
+        parent[i] = parent[parent[i]];
+        i = parent[i];
+    }
+    i
+}
+
 fn check(rail: &Rail, ties: &[(usize, Tie)], loads: &[(usize, Load)], vdd_v: f64) -> Result<(), AwakeError> {
     positive("supply", vdd_v, "V")?;
     if !(1..=MAX_NODES).contains(&rail.nodes) {
@@ -138,13 +147,6 @@ fn check(rail: &Rail, ties: &[(usize, Tie)], loads: &[(usize, Load)], vdd_v: f64
     }
     // every piece of rail needs a tie
     let mut parent: Vec<usize> = (0..rail.nodes).collect();
-    fn root(parent: &mut [usize], mut i: usize) -> usize {
-        while parent[i] != i {
-            parent[i] = parent[parent[i]];
-            i = parent[i];
-        }
-        i
-    }
     for s in &rail.segments {
         let (a, b) = (root(&mut parent, s.a), root(&mut parent, s.b));
         parent[a.max(b)] = a.min(b);
@@ -262,6 +264,11 @@ pub fn solve_rail(
             short_a: drawn - given,
             factor: if given > 0.0 { drawn / given } else { f64::MAX },
         });
+    }
+    for (k, t) in ties {
+        if let Tie::Switch(s) = t {
+            inside(s.device.outside(s.awake_bias(d[*k])), "awake")?;
+        }
     }
     let (worst_node, worst_v) = worst_of(&d);
     Ok(RailDroop {

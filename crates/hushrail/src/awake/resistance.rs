@@ -11,6 +11,7 @@ use serde::{Deserialize, Serialize};
 use super::error::{AwakeError, range};
 use crate::cell::DeviceShelf;
 use crate::device::process::Process;
+use crate::device::range::Outside;
 use crate::physics::Kelvin;
 use crate::standby::SwitchSpec;
 use crate::standby::switch::{Side, Switch};
@@ -24,8 +25,16 @@ pub struct OnPoint {
     pub current_a: f64,
     /// Chord resistance V/I, ohm.
     pub chord_ohm: f64,
-    /// Slope resistance dV/dI, ohm.
-    pub slope_ohm: f64,
+    /// Slope resistance dV/dI, ohm; none where the current no longer rises.
+    pub slope_ohm: Option<f64>,
+}
+
+/// Refuses a bias outside the points of a table whose user has not asked for guesses.
+pub(super) fn inside(outside: Option<Outside>, when: &'static str) -> Result<(), AwakeError> {
+    match outside {
+        Some(o) if o.refused => Err(AwakeError::Outside { when, reason: o.to_string() }),
+        _ => Ok(()),
+    }
 }
 
 /// Smallest droop at which a chord is formed, V; below it chord and slope are one to twelve digits.
@@ -52,12 +61,12 @@ pub fn on_point(switch: &Switch, droop_v: f64) -> Result<OnPoint, AwakeError> {
             "want a gate level that turns it on",
         );
     }
+    inside(switch.device.outside(switch.awake_bias(at)), "awake")?;
     Ok(OnPoint {
         droop_v,
         current_a: if droop_v > 0.0 { current } else { 0.0 },
         chord_ohm: at / current,
-        // beyond saturation the slope may vanish; then the chord is all there is
-        slope_ohm: if slope > 0.0 { 1.0 / slope } else { f64::MAX },
+        slope_ohm: (slope > 0.0).then(|| 1.0 / slope),
     })
 }
 
@@ -116,6 +125,7 @@ pub fn merit_figure(
             let on_ohm = on_point(&s, droop_v)?.chord_ohm;
             let off_a = s.off_current_a();
             let collapsed = if *side == Side::Header { 0.0 } else { vdd_v };
+            inside(s.outside(collapsed), "asleep")?;
             let awake = (s.awake_gate_v - s.rail_v).abs();
             let oxide_v = s.oxide_v(collapsed).max(awake);
             Ok(MeritPoint {

@@ -7,6 +7,7 @@ use serde::{Deserialize, Serialize};
 
 use super::droop::{Load, settle_droop};
 use super::error::{AwakeError, positive, range};
+use super::resistance::inside;
 use crate::cell::DeviceShelf;
 use crate::device::process::Process;
 use crate::physics::Kelvin;
@@ -118,6 +119,7 @@ pub fn smallest_switch(
             }
             load.check(c.vdd_v)?;
             let s = Switch::new(&one, side, c.process, c.temp, c.vdd_v, &mut DeviceShelf::default(), origin)?;
+            inside(s.device.outside(s.awake_bias(budget_v)), "awake")?;
             let (given, drawn) = (s.awake_current(budget_v).0, load.at(c.vdd_v - budget_v, c.vdd_v));
             let need = if given > 0.0 { (drawn / given).ceil().max(1.0) } else { f64::INFINITY };
             Ok((s, need))

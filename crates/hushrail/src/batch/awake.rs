@@ -188,7 +188,7 @@ pub fn awake_study(
         at: Place::new(&source.path, 1, 1),
         kind,
         name: name.clone(),
-        nearest: nearest(name, names.into_iter()),
+        nearest: nearest(name, names),
     };
     for name in request.loads.keys() {
         if !loaded.domains.iter().any(|d| d.name == *name) {

@@ -4,7 +4,7 @@
 use super::bound::{BoundCell, CellError, Levels, State};
 use super::cell::Role;
 use crate::circuit::eliminate::solve_pivoting;
-use crate::circuit::network::{Element, Network, Node, Volt};
+use crate::circuit::network::{Element, Network, Node, Volt, bias_of};
 use crate::circuit::newton::{SolveOptions, Solver, Workspace};
 use crate::circuit::plan::Plan;
 
@@ -97,7 +97,7 @@ impl<'a> Posed<'a> {
     /// Solves for all other nodes, starting where the last solution was.
     ///
     /// # Errors
-    /// No balance within the limits of the options.
+    /// No balance within the limits of the options, or a transistor outside the points of its table.
     pub fn solve(&mut self) -> Result<(), CellError> {
         let rails: Vec<f64> = (0..self.v.len()).filter(|&n| self.held[n]).map(|n| self.v[n].rail).collect();
         let vt = self.cell.temp.thermal_voltage();
@@ -112,7 +112,20 @@ impl<'a> Posed<'a> {
             residual_a: e.residual_a,
             allowed_a: e.allowed_a,
             steps: e.steps,
-        })
+        })?;
+        // every solution here is part of an answer: guesses beyond a table are refused unless its device says otherwise
+        let refused = |e: &Element| match e {
+            Element::Transistor(p) => p.device.outside(bias_of(&p.nodes, &self.v)).filter(|o| o.refused),
+            _ => None,
+        };
+        match self.net.elements.iter().find_map(refused) {
+            Some(o) => Err(CellError::Outside {
+                cell: self.cell.cell.name.to_string(),
+                state: self.label.clone(),
+                reason: o.to_string(),
+            }),
+            None => Ok(()),
+        }
     }
 
     /// Voltage of a node, V.
@@ -208,10 +221,10 @@ impl BoundCell {
             .iter()
             .zip(&self.net.elements)
             .map(|(part, e)| match (part, e) {
-                (super::cell::Part::Transistor(r, _), Element::Transistor(p)) => {
+                (Part::Transistor(r, _), Element::Transistor(p)) => {
                     Some(get(r, "w")? * get(r, "l")? * p.count)
                 }
-                (Part::Diode(..) | Part::Conductance(..), _) | (Part::Transistor(..), _) => None,
+                _ => None,
             })
             .collect()
     }
