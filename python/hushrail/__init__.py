@@ -4,7 +4,8 @@ The main job is one call: :func:`estimate` runs a study, a TOML file that names 
 sleep schemes and corners. :func:`cells` gives the leakage table behind it, :func:`compare` holds it against a
 published one, :func:`count` counts the instances of a netlist. :class:`Process` and :class:`Device` give the
 currents of single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without
-cards, and ``hushrail.fit`` calibrates the former. Plots are in ``hushrail.plot``, the demonstration in
+cards, and ``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its
+domain works and the lowest rail that keeps state. Plots are in ``hushrail.plot``, the demonstration in
 ``hushrail.demo``.
 """
 

@@ -19,9 +19,19 @@ from hushrail.units import engineering
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
+    from hushrail.awake import Butterfly, Curve, MeritPoint, RowDroop
     from hushrail.fit import Residuals
 
-__all__ = ["COLOURS", "overdrive_curve", "residuals", "rest_points", "standby_power"]
+__all__ = [
+    "COLOURS",
+    "butterfly",
+    "overdrive_curve",
+    "residuals",
+    "rest_points",
+    "row_droop",
+    "standby_power",
+    "switch_merit",
+]
 
 COLOURS = {
     "channel": "#2a6fb0",
@@ -32,6 +42,7 @@ COLOURS = {
 }
 """One colour for each mechanism, the same in every picture."""
 
+_CANDIDATES = ("#2a6fb0", "#d9762b", "#3c9a6a", "#8a5fb0", "#8c8c8c")
 _MARKERS = "os^Dv<>ph*"
 _COLD, _MILD, _HOT = (0.16, 0.44, 0.76), (0.55, 0.55, 0.55), (0.80, 0.22, 0.18)
 
@@ -254,6 +265,165 @@ def off_currents(
     else:
         parts = device.by_mechanism(vd=vdd_v, vg=-over, vs=0.0, vb=0.0)[..., 0]
     return over, parts.sum(axis=-1), parts
+
+
+def switch_merit(points: Sequence[MeritPoint], names: Sequence[str], ax: Axes | None = None) -> Axes:
+    """Draw on-resistance times off current of switches over overdrive, one line for each candidate and boost.
+
+    Lower is better; a mark stands where a line is lowest.
+
+    Parameters
+    ----------
+    points : sequence of MeritPoint
+        What :func:`hushrail.awake.figure` found.
+    names : sequence of str
+        Names of the candidates.
+    ax : Axes, optional
+        Where to draw.
+    """
+    if not points:
+        raise RangeError("there is no point to draw; want at least one")
+    count = 1 + max(p.candidate for p in points)
+    if len(names) != count:
+        raise RangeError(f"{len(names)} names for {count} candidates; want as many")
+    ax = _axes(ax)
+    boosts = sorted({p.boost_v for p in points})
+    styles = ["-", "--", ":", "-."]
+    for k, name in enumerate(names):
+        colour = _CANDIDATES[k % len(_CANDIDATES)]
+        for j, boost in enumerate(boosts):
+            own = sorted((p.overdrive_v, p.merit_v) for p in points if (p.candidate, p.boost_v) == (k, boost))
+            over, merit = np.array(own).T
+            label = name if len(boosts) == 1 else f"{name}, boost {boost:g} V"
+            ax.plot(over, merit, color=colour, linestyle=styles[j % 4], linewidth=1.8, label=label)
+            best = int(merit.argmin())
+            ax.plot(over[best], merit[best], "o", color=colour, markersize=5)
+    ax.set_yscale("log")
+    _engineering_axis(ax, "V", vertical=True)
+    ax.set_xlabel("overdrive asleep (V)")
+    ax.set_ylabel("on-resistance × off current")
+    ax.set_title("switches: lower is better, at any width")
+    ax.grid(True, which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+    ax.legend(fontsize="small", loc="center left", bbox_to_anchor=(1.0, 0.5), frameon=False)
+    return ax
+
+
+def butterfly(butterfly: Butterfly, title: str = "", ax: Axes | None = None) -> Axes:
+    """Draw two transfer curves over each other with the largest square of each lobe.
+
+    Parameters
+    ----------
+    butterfly : Butterfly
+        From :func:`hushrail.awake.margins` or :func:`hushrail.awake.keep`.
+    title : str
+        Heading; the margin stands in it when left out.
+    ax : Axes, optional
+        Where to draw.
+    """
+    from matplotlib.patches import Rectangle
+
+    ax = _axes(ax)
+    first, second = butterfly.first, butterfly.second
+    x, y = _through(first)
+    ax.plot(x, y, color=_CANDIDATES[0], linewidth=2, label="first, in → out")
+    y, x = _through(second)
+    ax.plot(x, y, color=_CANDIDATES[1], linewidth=2, label="second, out ← in")
+    squares = butterfly.squares or ()
+    least = min((s.side_v for s in squares), default=0.0)
+    for s in squares:
+        worst = s.side_v == least
+        ax.add_patch(
+            Rectangle(
+                (s.x_v, s.y_v),
+                s.side_v,
+                s.side_v,
+                facecolor="#e8c96a",
+                alpha=0.45 if worst else 0.2,
+                edgecolor="0.35",
+                linewidth=1.2 if worst else 0.8,
+            )
+        )
+        ax.annotate(
+            engineering(s.side_v, "V"),
+            (s.x_v + 0.5 * s.side_v, s.y_v + 0.5 * s.side_v),
+            ha="center",
+            va="center",
+            fontsize="small",
+        )
+    ax.set_aspect("equal")
+    ax.set_xlabel("input of the first (V)")
+    ax.set_ylabel("output of the first (V)")
+    held = f"margin {engineering(least, 'V')}" if squares else "nothing is held"
+    ax.set_title(title or held)
+    ax.legend(fontsize="small", loc="upper center", bbox_to_anchor=(0.5, -0.14), ncols=2, frameon=False)
+    return ax
+
+
+def _through(curve: Curve) -> tuple[Any, Any]:
+    """Join the points of a falling curve with their own slopes, without overshoot."""
+    x, y = curve.in_v, curve.out_v
+    slope = np.array([p.slope for p in curve.points])
+    h, t = np.diff(x), np.linspace(0.0, 1.0, 9)[:-1, None]
+    secant = np.diff(y) / h
+    low = np.minimum(3.0 * secant, 0.0)
+    a, b = (np.clip(each, low, 0.0) for each in (slope[:-1], slope[1:]))
+    t2, t3 = t * t, t * t * t
+    out = (2 * t3 - 3 * t2 + 1) * y[:-1] + (t3 - 2 * t2 + t) * h * a
+    out = out + (3 * t2 - 2 * t3) * y[1:] + (t3 - t2) * h * b
+    at = x[:-1] + t * h
+    return np.append(at.T.reshape(-1), x[-1]), np.append(out.T.reshape(-1), y[-1])
+
+
+def row_droop(
+    droop: RowDroop, switch_nodes: Sequence[int] = (), rows: int = 1, ax: Axes | None = None
+) -> Axes:
+    """Draw the local droop along a rail, one line for each row, with switches and worst node marked.
+
+    Parameters
+    ----------
+    droop : RowDroop
+        What :func:`hushrail.awake.row` found.
+    switch_nodes : sequence of int
+        Nodes with a switch.
+    rows : int
+        Rows of the rail.
+    ax : Axes, optional
+        Where to draw.
+    """
+    from matplotlib.ticker import MaxNLocator
+
+    v = np.array(droop.droop_v)
+    if rows < 1 or v.size % rows:
+        raise RangeError(f"{v.size} nodes over {rows} rows; want as many in every row")
+    ax = _axes(ax)
+    columns = v.size // rows
+    for k, own in enumerate(1e3 * v.reshape(rows, columns)):
+        ax.plot(own, color=_blend(k, rows), linewidth=1.8, label=f"row {k}" if 1 < rows <= 8 else None)
+    at = np.array(sorted({int(n) for n in switch_nodes}), dtype=int)
+    if at.size:
+        ax.plot(at % columns, 1e3 * v[at], "^", color="black", markersize=6, linestyle="", label="switch")
+    worst = droop.worst_node
+    ax.plot(worst % columns, 1e3 * droop.worst_v, "o", color="#c0392b", markersize=7, zorder=4)
+    right = worst % columns > columns // 2
+    ax.annotate(
+        f"worst {engineering(droop.worst_v, 'V')} at node {worst}",
+        (worst % columns, 1e3 * droop.worst_v),
+        xytext=(-8 if right else 8, 6),
+        textcoords="offset points",
+        ha="right" if right else "left",
+        fontsize="small",
+    )
+    ax.set_ylim(0.0, 1.15e3 * droop.worst_v or 1.0)
+    ax.xaxis.set_major_locator(MaxNLocator(integer=True))
+    ax.set_xlabel("node along the row")
+    ax.set_ylabel("droop (mV)")
+    ax.set_title(f"load {engineering(droop.load_a, 'A')}")
+    ax.grid(True, which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+    if at.size or 1 < rows <= 8:
+        ax.legend(fontsize="small", loc="best", framealpha=0.9)
+    return ax
 
 
 _LABELS = {

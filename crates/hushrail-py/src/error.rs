@@ -37,6 +37,11 @@ pub fn range(text: String) -> PyErr {
     python::RangeError::new_err(text)
 }
 
+/// A question without answer.
+pub fn solve(text: String) -> PyErr {
+    python::SolveError::new_err(text)
+}
+
 /// A temperature out of range.
 pub fn temperature(e: TemperatureOutOfRange) -> PyErr {
     range(e.to_string())

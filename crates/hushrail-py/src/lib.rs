@@ -2,6 +2,7 @@
 
 #![expect(clippy::needless_pass_by_value, reason = "signatures that the border takes")]
 
+mod awake;
 mod device;
 mod error;
 mod own;
@@ -15,6 +16,8 @@ use pyo3::prelude::*;
 mod _core {
     use super::{Bound, PyModule, PyModuleMethods, PyResult};
 
+    #[pymodule_export]
+    use crate::awake::{awake_domains, awake_droop, awake_figure, awake_keep, awake_margins, awake_rail};
     #[pymodule_export]
     use crate::device::{Device, Process};
     #[pymodule_export]

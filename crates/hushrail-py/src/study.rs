@@ -16,7 +16,8 @@ use pyo3::prelude::*;
 use crate::error;
 use crate::run::run;
 
-fn text<T: serde::Serialize>(value: &T) -> PyResult<String> {
+/// A result as JSON text.
+pub fn text<T: serde::Serialize>(value: &T) -> PyResult<String> {
     serde_json::to_string(value).map_err(|e| error::range(format!("result cannot be written as JSON: {e}")))
 }
 

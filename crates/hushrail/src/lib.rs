@@ -13,6 +13,8 @@
 //! - [`cell`]: cells, their states (stored ones found by solving), the current of every terminal in every state.
 //! - [`block`]: counts × state weights × currents, as a function of rails and wells.
 //! - [`standby`]: schemes, switches, the rest point of the virtual rails, every real supply.
+//! - [`awake`]: what the switch costs while the domain works (on-resistance, droop, width, noise margins, delay), and what
+//!   keeps stored values alive on a lowered rail.
 //! - [`check`]: predictions against published tables.
 //! - [`batch`]: study files, whole grids in parallel with the same bits for any number of threads, progress and stop.
 //!
@@ -45,6 +47,7 @@
 
 #![forbid(unsafe_code)]
 
+pub mod awake;
 pub mod batch;
 pub mod block;
 pub mod cell;

@@ -1,5 +1,6 @@
 //! Studies in parallel: loading what a study names, planning its points, running them.
 
+pub mod awake;
 pub mod characterise;
 pub mod compare;
 pub mod load;

@@ -360,38 +360,15 @@ impl BoundCell {
         w: &mut Workspace,
     ) -> Result<(Vec<Volt>, Effort, bool), CellError> {
         let cell = &self.cell;
-        let mut v = vec![Volt::default(); cell.nodes.len()];
-        let mut rails = Vec::with_capacity(cell.ports.len());
-        let held = cell.held();
         let mut bits = state.inputs.iter();
-        for (r, &n) in cell.roles.iter().zip(&cell.port_nodes) {
-            if *r == Role::Input {
-                let high = bits.next().copied().unwrap_or(false);
-                v[n] = Volt::held(if high { levels.high_v } else { levels.low_v });
-                rails.push(v[n].rail);
-            }
-        }
-        for (r, &n) in cell.roles.iter().zip(&cell.port_nodes) {
-            let level = match r {
-                Role::Supply => levels.supply_v,
-                Role::Ground => levels.ground_v,
-                Role::Nwell => levels.nwell_v,
-                Role::Pwell => levels.pwell_v,
-                Role::Input | Role::Output => continue,
-            };
-            v[n] = Volt::held(level);
-            rails.push(level);
-        }
+        let mut v = self.held_volts(levels, || {
+            if bits.next().copied().unwrap_or(false) { levels.high_v } else { levels.low_v }
+        });
+        let held = cell.held();
+        let rails: Vec<f64> = (0..v.len()).filter(|&n| held[n]).map(|n| v[n].rail).collect();
         let vt = self.temp.thermal_voltage();
-        let (lo, hi) = (levels.ground_v, levels.supply_v);
         for n in (0..v.len()).filter(|&n| !held[n]) {
-            v[n] = match (state.logic[n], self.plan.polarity[n]) {
-                (Logic::Low, _) => Volt { rail: lo, offset: 0.0 },
-                (Logic::High, _) => Volt { rail: hi, offset: 0.0 },
-                (Logic::Floating, Some(crate::device::Polarity::N)) => Volt { rail: lo, offset: 1.5 * vt },
-                (Logic::Floating, Some(crate::device::Polarity::P)) => Volt { rail: hi, offset: -1.5 * vt },
-                _ => Volt { rail: lo, offset: 0.5 * (hi - lo) },
-            };
+            v[n] = self.guess(state.logic[n], n, levels);
         }
         let mut solver = Solver::new(&self.net, &self.plan, options, vt, &rails);
         solver.solve(&mut v, w).map_err(|e| CellError::Unbalanced {
@@ -407,6 +384,41 @@ impl BoundCell {
         })?;
         let stable = self.keeps(state, &v, levels) && solver.is_stable(&v, w);
         Ok((v, solver.effort, stable))
+    }
+
+    /// Voltages of rails, wells and inputs; those of the inputs come from `input`, in the order of the ports.
+    pub(super) fn held_volts(&self, levels: &Levels, mut input: impl FnMut() -> f64) -> Vec<Volt> {
+        let cell = &self.cell;
+        let mut v = vec![Volt::default(); cell.nodes.len()];
+        for (r, &n) in cell.roles.iter().zip(&cell.port_nodes) {
+            if *r == Role::Input {
+                v[n] = Volt::held(input());
+            }
+        }
+        for (r, &n) in cell.roles.iter().zip(&cell.port_nodes) {
+            let level = match r {
+                Role::Supply => levels.supply_v,
+                Role::Ground => levels.ground_v,
+                Role::Nwell => levels.nwell_v,
+                Role::Pwell => levels.pwell_v,
+                Role::Input | Role::Output => continue,
+            };
+            v[n] = Volt::held(level);
+        }
+        v
+    }
+
+    /// Where the voltage of an unknown node is sought first.
+    pub(super) fn guess(&self, logic: Logic, node: usize, levels: &Levels) -> Volt {
+        let vt = self.temp.thermal_voltage();
+        let (lo, hi) = (levels.ground_v, levels.supply_v);
+        match (logic, self.plan.polarity[node]) {
+            (Logic::Low, _) => Volt { rail: lo, offset: 0.0 },
+            (Logic::High, _) => Volt { rail: hi, offset: 0.0 },
+            (Logic::Floating, Some(crate::device::Polarity::N)) => Volt { rail: lo, offset: 1.5 * vt },
+            (Logic::Floating, Some(crate::device::Polarity::P)) => Volt { rail: hi, offset: -1.5 * vt },
+            _ => Volt { rail: lo, offset: 0.5 * (hi - lo) },
+        }
     }
 
     /// Whether every net that gates a transistor of a cell with loops still has the value of the state: where rails have

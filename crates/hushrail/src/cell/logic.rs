@@ -104,7 +104,7 @@ impl<'a> Switches<'a> {
     }
 
     /// Nets that gate something inside the loop they belong to.
-    fn loop_nets(&self) -> Vec<Node> {
+    pub fn loop_nets(&self) -> Vec<Node> {
         let mut nets = Vec::new();
         for g in &self.plan.groups {
             let looped = g.len() > 1 || self.plan.components[g[0]].coupled;

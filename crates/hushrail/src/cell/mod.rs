@@ -4,6 +4,7 @@ pub mod bound;
 #[expect(clippy::module_inception, reason = "the file holds the cell itself")]
 pub mod cell;
 pub mod logic;
+pub mod posed;
 pub mod sensitivity;
 pub mod when;
 pub use bound::{BoundCell, CellError, DeviceShelf, Levels, State, StateCurrents, supply_power};

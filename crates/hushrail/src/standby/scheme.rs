@@ -29,6 +29,9 @@ pub struct SwitchSpec {
     /// How far past its off rail the gate is driven asleep, V.
     #[serde(default)]
     pub overdrive_v: f64,
+    /// How far past its on rail the gate is driven awake, V.
+    #[serde(default)]
+    pub boost_v: f64,
     /// Body voltage beyond the rail, reverse positive, V.
     #[serde(default)]
     pub well_bias_v: f64,
@@ -38,6 +41,43 @@ pub struct SwitchSpec {
     /// Gate to diffusion edge, m, for layout stress; none when left out.
     #[serde(default)]
     pub edge_m: Option<f64>,
+}
+
+impl SwitchSpec {
+    /// Checks every number; the error is what is wrong, what was found, what would be right.
+    ///
+    /// # Errors
+    /// Sizes that are not positive, a finger wider than the whole, voltages outside −1 V to 5 V.
+    pub fn check(&self, what: &str) -> Result<(), (String, String, String)> {
+        let wrong = |name: &str, value: String, wanted: &str| {
+            Err((format!("{what} {name}"), value, wanted.to_owned()))
+        };
+        for (name, v) in [("width", self.width_m), ("length", self.length_m)] {
+            if !(v > 0.0 && v.is_finite()) {
+                return wrong(name, format!("{v} m"), "want a size above zero");
+            }
+        }
+        if let Some(f) = self.finger_width_m
+            && !(f > 0.0 && f <= self.width_m)
+        {
+            let wanted =
+                format!("want a width above zero and not above the whole width ({} m)", self.width_m);
+            return wrong("finger width", format!("{f} m"), &wanted);
+        }
+        let volts =
+            [("overdrive", self.overdrive_v), ("boost", self.boost_v), ("well bias", self.well_bias_v)];
+        for (name, v) in volts {
+            if !(-1.0..=5.0).contains(&v) {
+                return wrong(name, format!("{v} V"), "want -1 V to 5 V");
+            }
+        }
+        for (name, v) in [("diffusion", self.diffusion_m), ("edge", self.edge_m)] {
+            if v.is_some_and(|v| !(v > 0.0 && v < 1e-3)) {
+                return wrong(name, format!("{v:?} m"), "want a length above zero");
+            }
+        }
+        Ok(())
+    }
 }
 
 /// Everything done to a domain in standby. Without header and footer the domain stays powered.
@@ -112,30 +152,7 @@ impl Scheme {
         };
         for (what, s) in [("header", &self.header), ("footer", &self.footer)] {
             let Some(s) = s else { continue };
-            for (name, v) in [("width", s.width_m), ("length", s.length_m)] {
-                if !(v > 0.0 && v.is_finite()) {
-                    return wrong(&format!("{what} {name}"), format!("{v} m"), "want a size above zero");
-                }
-            }
-            if let Some(f) = s.finger_width_m
-                && !(f > 0.0 && f <= s.width_m)
-            {
-                return wrong(
-                    &format!("{what} finger width"),
-                    format!("{f} m"),
-                    &format!("want a width above zero and not above the whole width ({} m)", s.width_m),
-                );
-            }
-            for (name, v) in [("overdrive", s.overdrive_v), ("well bias", s.well_bias_v)] {
-                if !(-1.0..=5.0).contains(&v) {
-                    return wrong(&format!("{what} {name}"), format!("{v} V"), "want -1 V to 5 V");
-                }
-            }
-            for (name, v) in [("diffusion", s.diffusion_m), ("edge", s.edge_m)] {
-                if v.is_some_and(|v| !(v > 0.0 && v < 1e-3)) {
-                    return wrong(&format!("{what} {name}"), format!("{v:?} m"), "want a length above zero");
-                }
-            }
+            s.check(what).or_else(|(name, value, wanted)| wrong(&name, value, &wanted))?;
         }
         for (name, v) in [("n-well bias", self.nwell_bias_v), ("p-well bias", self.pwell_bias_v)] {
             if !(-1.0..=5.0).contains(&v) {

@@ -1,4 +1,4 @@
-//! A switch at a corner: its transistor, and its currents when it is off.
+//! A switch at a corner: its transistor, and its currents off and on.
 
 use std::sync::Arc;
 
@@ -32,6 +32,10 @@ pub struct Switch {
     pub rail_v: f64,
     /// Gate asleep, V.
     pub gate_v: f64,
+    /// Gate awake, V.
+    pub awake_gate_v: f64,
+    /// Supply, V.
+    pub vdd_v: f64,
     /// Body, V.
     pub body_v: f64,
 }
@@ -70,9 +74,19 @@ impl Switch {
         let t = shelf.transistor(process, &request, temp)?;
         let p_channel = t.device.polarity() == Polarity::P;
         let gate_v = if p_channel { vdd_v + spec.overdrive_v } else { -spec.overdrive_v };
+        let awake_gate_v = if p_channel { -spec.boost_v } else { vdd_v + spec.boost_v };
         let body_v = if p_channel { vdd_v + spec.well_bias_v } else { -spec.well_bias_v };
         let rail_v = if side == Side::Header { vdd_v } else { 0.0 };
-        Ok(Self { device: t.device, fingers: spec.width_m / finger * t.count, side, rail_v, gate_v, body_v })
+        Ok(Self {
+            device: t.device,
+            fingers: spec.width_m / finger * t.count,
+            side,
+            rail_v,
+            gate_v,
+            awake_gate_v,
+            vdd_v,
+            body_v,
+        })
     }
 
     /// Branch currents of the whole switch with its virtual rail at `v`; the source is on the real rail.
@@ -82,6 +96,35 @@ impl Switch {
 
     fn bias(&self, v: f64) -> Bias<f64> {
         Bias::from_terminals(v, self.gate_v, self.rail_v, self.body_v)
+    }
+
+    /// Voltage of the virtual rail when `droop_v` is lost across the switch.
+    pub fn virtual_rail_v(&self, droop_v: f64) -> f64 {
+        if self.side == Side::Header { self.rail_v - droop_v } else { self.rail_v + droop_v }
+    }
+
+    /// Bias awake with `droop_v` across the switch; the body stays where the scheme ties it.
+    pub fn awake_bias(&self, droop_v: f64) -> Bias<f64> {
+        Bias::from_terminals(self.virtual_rail_v(droop_v), self.awake_gate_v, self.rail_v, self.body_v)
+    }
+
+    /// Current of the whole switch at its virtual rail, positive as the load draws it, and its slope to the droop: A and S.
+    fn through(&self, bias: Bias<f64>) -> (f64, f64) {
+        let drain = self.device.branches_dual(bias.dual()).terminals()[0];
+        // the slope to the drain voltage is that to vds
+        let sign = if self.side == Side::Header { -1.0 } else { 1.0 };
+        (sign * drain.v * self.fingers, drain.d[1] * self.fingers)
+    }
+
+    /// What the switch gives its load awake at a droop, A, and the slope to the droop, S.
+    pub fn awake_current(&self, droop_v: f64) -> (f64, f64) {
+        self.through(self.awake_bias(droop_v))
+    }
+
+    /// What the switch lets through asleep with its virtual rail fully collapsed, A.
+    pub fn off_current_a(&self) -> f64 {
+        let collapsed = if self.side == Side::Header { 0.0 } else { self.vdd_v };
+        self.through(self.bias(collapsed)).0
     }
 
     /// What its bias asks beyond what its model rests on, with the virtual rail at `v`.

@@ -3,13 +3,16 @@
 
 use std::sync::Arc;
 
+use hushrail::cell::cell::Part;
+use hushrail::cell::{BoundCell, Cell, Role};
 use hushrail::circuit::network::{Element, Network, Placed, Volt};
 use hushrail::circuit::newton::{SolveOptions, Solver, Workspace};
 use hushrail::circuit::plan::Plan;
 use hushrail::device::dual::{Dual, Real};
-use hushrail::device::process::Process;
+use hushrail::device::process::{Process, Request};
 use hushrail::device::{Bias, Branches, Device, Polarity};
-use hushrail::read::{DeckOptions, Source};
+use hushrail::physics::Kelvin;
+use hushrail::read::{DeckOptions, Place, Source};
 
 /// The engineering subthreshold law that the stack literature uses:
 /// `I = I0·W·exp((Vgs − Vt0 − kg·Vsb + η·Vds)/(n·vT))·(1 − exp(−Vds/vT))` for `Vds ≥ 0`.
@@ -286,4 +289,69 @@ mf2 f G s VNW px w=0.3u l=60n
 /// The process of [`CARDS`].
 pub fn process() -> Process {
     Process::read("x", &[Source::from_text("cards.lib", CARDS)], &DeckOptions::default()).expect("test cards")
+}
+
+/// A cell of devices of one's own: ports with roles (nodes 0, 1, … in that order), inner nodes after them, transistors with their
+/// drawn sizes.
+pub fn own_cell(
+    name: &str,
+    ports: &[(&str, Role)],
+    inner: &[&str],
+    transistors: Vec<(Arc<dyn Device>, [usize; 4], f64, f64)>,
+    temp: Kelvin,
+) -> BoundCell {
+    let at = Place::new(&Arc::from("test"), 1, 1);
+    let names = ports.iter().map(|p| Arc::from(p.0)).collect::<Vec<Arc<str>>>();
+    let nodes: Vec<Arc<str>> = names.iter().cloned().chain(inner.iter().map(|n| Arc::from(*n))).collect();
+    let parts = transistors.iter().map(|(_, n, w, l)| {
+        let params = vec![("w".into(), *w), ("l".into(), *l)];
+        Part::Transistor(Request { model: "own".into(), params, at: at.clone() }, *n)
+    });
+    let cell = Cell {
+        name: name.into(),
+        port_nodes: (0..ports.len()).collect(),
+        roles: ports.iter().map(|p| p.1).collect(),
+        ports: names,
+        parts: parts.collect(),
+        nodes,
+        at: at.clone(),
+    };
+    let elements = transistors
+        .into_iter()
+        .map(|(device, nodes, ..)| Element::Transistor(Placed { device, count: 1.0, nodes }))
+        .collect();
+    let net = Network { n_nodes: cell.nodes.len(), elements, floor_s: 0.0 };
+    let plan = Plan::new(&net, &cell.held());
+    BoundCell { cell: Arc::new(cell), net, plan, temp, has_gidl: false }
+}
+
+/// Ports of an own inverter.
+pub const INVERTER: [(&str, Role); 4] =
+    [("VDD", Role::Supply), ("VSS", Role::Ground), ("A", Role::Input), ("Y", Role::Output)];
+
+/// Identical weak-inversion devices of either type: the transfer curve of reference sheet A23 at 300 K.
+pub fn weak(polarity: Polarity, n: f64) -> Arc<dyn Device> {
+    Arc::new(Symmetric { i0_a: 1e-9, n, vt_v: 25.851999786e-3, polarity, leak_s: 0.0 })
+}
+
+/// An inverter of two devices.
+pub fn own_inverter(n: Arc<dyn Device>, p: Arc<dyn Device>, temp: Kelvin) -> BoundCell {
+    let t = vec![(n, [3, 2, 1, 1], 1e-6, 1e-7), (p, [3, 2, 0, 0], 1e-6, 1e-7)];
+    own_cell("inverter", &INVERTER, &[], t, temp)
+}
+
+/// Two inverters in a loop.
+pub fn own_pair(n: &[Arc<dyn Device>; 2], p: &[Arc<dyn Device>; 2], temp: Kelvin) -> BoundCell {
+    let ports = [("VDD", Role::Supply), ("VSS", Role::Ground), ("Q", Role::Output), ("QN", Role::Output)];
+    let mut t = Vec::new();
+    for (k, (from, to)) in [(2, 3), (3, 2)].into_iter().enumerate() {
+        t.push((Arc::clone(&n[k]), [to, from, 1, 1], 0.2e-6, 0.1e-6));
+        t.push((Arc::clone(&p[k]), [to, from, 0, 0], 0.4e-6, 0.1e-6));
+    }
+    own_cell("pair", &ports, &[], t, temp)
+}
+
+/// 300 K.
+pub fn room() -> Kelvin {
+    Kelvin::from_celsius(26.85).expect("in range")
 }

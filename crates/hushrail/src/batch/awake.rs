@@ -1,0 +1,650 @@
+//! Domains of a study awake, and cells that keep their state: the questions of the room `awake` at every corner, in parallel.
+
+use std::path::Path;
+use std::sync::Arc;
+use std::sync::atomic::Ordering;
+
+use indexmap::IndexMap;
+use rayon::prelude::*;
+use serde::{Deserialize, Serialize};
+
+use super::load::{Library, Loaded, load_study};
+use super::run::Failure;
+use super::study::read_study;
+use super::watch::{Progress, Watch, watched};
+use crate::awake::AwakeError;
+use crate::awake::clamp::leaks_at;
+use crate::awake::delay::{DelayPenalty, Swing, delay_penalty};
+use crate::awake::droop::{CoupledNoise, Droop, Load, in_series, neighbour_step, settle_switches};
+use crate::awake::keep::{Collapse, CollapseSide, Need, Retention, retention};
+use crate::awake::margin::{AtRails, Margins, margins};
+use crate::awake::resistance::{OnPoint, on_point};
+use crate::awake::size::{LayoutDensity, SizeCorner, Sized, smallest_switch};
+use crate::block::BoundBlock;
+use crate::cell::{BoundCell, Cell, DeviceShelf, Levels};
+use crate::circuit::newton::SolveOptions;
+use crate::corner::Corner;
+use crate::device::process::Process;
+use crate::read::source::{Place, ReadError, Source, nearest};
+use crate::standby::switch::{Side, Switch};
+use crate::standby::{Scheme, SwitchSpec, WellTie};
+
+/// What is asked of a study's domains while they work.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct AwakeRequest {
+    /// Load of each domain by name; domains without one are left out.
+    pub loads: IndexMap<String, Load>,
+    /// Current step of a neighbour on the same virtual rail, A.
+    #[serde(default)]
+    pub neighbour_a: Option<f64>,
+    /// Droop to size for, V, over one switch; no sizes when left out. Widths go up to that of the scheme times `widest`.
+    #[serde(default)]
+    pub budget_v: Option<f64>,
+    /// Largest width tried, as a multiple of the scheme's.
+    #[serde(default = "widest")]
+    pub widest: f64,
+    /// Layout density of switch cells.
+    #[serde(default)]
+    pub density: Option<LayoutDensity>,
+    /// Cells (`*` for any run of characters) whose noise margins and delay penalties are wanted.
+    #[serde(default)]
+    pub cells: Vec<String>,
+    /// Swing of the delay penalty; by default the drooped rails.
+    #[serde(default = "local")]
+    pub swing: Swing,
+}
+
+fn local() -> Swing {
+    Swing::Local
+}
+
+fn widest() -> f64 {
+    1000.0
+}
+
+/// One switch of a domain awake.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct SwitchAwake {
+    /// At its droop.
+    pub on: OnPoint,
+    /// Off current with the rail fully collapsed, A.
+    pub off_a: f64,
+    /// Chord resistance × off current, V.
+    pub merit_v: f64,
+    /// Body of the switch past its rail while awake, V, as the scheme ties it.
+    pub body_v: f64,
+}
+
+/// One cell on the drooped rails.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct CellAwake {
+    /// The cell.
+    pub cell: String,
+    /// Smallest low margin at unity gain, V; none where the cell stores or restores nothing.
+    pub nml_v: Option<f64>,
+    /// Smallest high margin, V.
+    pub nmh_v: Option<f64>,
+    /// Side of the largest square of its worst pair of curves, V.
+    pub square_v: Option<f64>,
+    /// The same at full rails, V.
+    pub full_square_v: Option<f64>,
+    /// Delay penalty of every output and edge.
+    pub delays: Vec<DelayPenalty>,
+}
+
+/// A domain awake behind a scheme's switches at a corner.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct AwakePoint {
+    /// Domain.
+    pub domain: String,
+    /// Scheme.
+    pub scheme: String,
+    /// Corner.
+    pub corner: String,
+    /// Droop over all its switches.
+    pub droop: Droop,
+    /// Virtual supply, V.
+    pub virtual_supply_v: f64,
+    /// Virtual ground, V.
+    pub virtual_ground_v: f64,
+    /// Header.
+    pub header: Option<SwitchAwake>,
+    /// Footer.
+    pub footer: Option<SwitchAwake>,
+    /// What a neighbour's step couples in.
+    pub neighbour: Option<CoupledNoise>,
+    /// Cells asked for.
+    pub cells: Vec<CellAwake>,
+}
+
+/// The smallest switch of a domain and scheme over all corners.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct SizePoint {
+    /// Domain.
+    pub domain: String,
+    /// Scheme.
+    pub scheme: String,
+    /// The answer.
+    pub size: Sized,
+}
+
+/// Everything found.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct AwakeReport {
+    /// Always `hushrail-awake`.
+    pub format: String,
+    /// Version of this format.
+    pub version: u32,
+    /// Heading of the study.
+    pub title: String,
+    /// Corners in order.
+    pub corners: Vec<Corner>,
+    /// Domains, then schemes, then corners.
+    pub points: Vec<AwakePoint>,
+    /// Smallest switches.
+    pub sizes: Vec<SizePoint>,
+    /// What could not be computed.
+    pub failures: Vec<Failure>,
+    /// Whether the run was stopped before its end.
+    pub stopped: bool,
+}
+
+fn study(path: &str) -> Result<(super::study::Study, Source), ReadError> {
+    let source = Source::open(Path::new(path))?;
+    let study = read_study(&source)?;
+    Ok((study, source))
+}
+
+fn process<'a>(all: &'a IndexMap<String, Process>, c: &Corner) -> Result<&'a Process, AwakeError> {
+    all.get(&c.process).ok_or_else(|| AwakeError::Range {
+        what: format!("process of corner `{}`", c.name),
+        value: format!("`{}`", c.process),
+        wanted: "want a process of the study".into(),
+    })
+}
+
+fn temperature(c: &Corner) -> Result<crate::physics::Kelvin, AwakeError> {
+    c.check().map_err(|e| AwakeError::Range {
+        what: format!("{} of corner `{}`", e.what, e.corner),
+        value: e.value,
+        wanted: e.wanted,
+    })
+}
+
+/// Runs the awake question on a study.
+///
+/// # Errors
+/// Files that cannot be read, or a load of a domain that the study does not have; what fails at a point is listed in the report.
+pub fn awake_study(
+    path: &str,
+    request: &AwakeRequest,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<AwakeReport, ReadError> {
+    let (s, source) = study(path)?;
+    let loaded = load_study(&s, &source.path, &source.folder)?;
+    let unknown = |kind, name: &String, names: Vec<&str>| ReadError::Unknown {
+        at: Place::new(&source.path, 1, 1),
+        kind,
+        name: name.clone(),
+        nearest: nearest(name, names),
+    };
+    for name in request.loads.keys() {
+        if !loaded.domains.iter().any(|d| d.name == *name) {
+            return Err(unknown("domain", name, loaded.domains.iter().map(|d| &*d.name).collect()));
+        }
+    }
+    let cells = if request.cells.is_empty() {
+        Vec::new()
+    } else {
+        Library::load(&s, &source.folder)?.cells(&request.cells, &mut Vec::new())?
+    };
+    let switched = |s: &&Scheme| s.header.is_some() || s.footer.is_some();
+    let mut plan = Vec::new();
+    for d in &loaded.domains {
+        let Some(load) = request.loads.get(&d.name) else { continue };
+        for s in loaded.schemes.iter().filter(switched).filter(|s| s.applies_to(&d.name)) {
+            plan.extend(loaded.corners.iter().map(|c| (&*d.name, load, s, c)));
+        }
+    }
+    let (points, sizes, stopped) = watched(plan.len(), progress, |watch| {
+        let points: Vec<Result<AwakePoint, Failure>> = plan
+            .par_iter()
+            .map(|(d, load, s, c)| {
+                let r = point(&loaded, d, load, s, c, request, &cells, options, watch);
+                watch.done.fetch_add(1, Ordering::Relaxed);
+                r.map_err(|e| Failure {
+                    domain: (*d).to_owned(),
+                    scheme: s.name.clone(),
+                    corner: c.name.clone(),
+                    reason: e.to_string(),
+                })
+            })
+            .collect();
+        let sizes = request.budget_v.map(|b| sizes(&loaded, request, b)).unwrap_or_default();
+        (points, sizes, watch.stop.load(Ordering::Relaxed))
+    });
+    let mut report = AwakeReport {
+        format: "hushrail-awake".into(),
+        version: 1,
+        title: loaded.title.clone(),
+        corners: loaded.corners.clone(),
+        points: Vec::new(),
+        sizes: Vec::new(),
+        failures: Vec::new(),
+        stopped,
+    };
+    for p in points {
+        match p {
+            Ok(p) => report.points.push(p),
+            Err(f) if stopped && f.reason == AwakeError::Stopped.to_string() => {}
+            Err(f) => report.failures.push(f),
+        }
+    }
+    for s in sizes {
+        match s {
+            Ok(s) => report.sizes.push(s),
+            Err(f) => report.failures.push(f),
+        }
+    }
+    Ok(report)
+}
+
+fn sizes(loaded: &Loaded, request: &AwakeRequest, budget_v: f64) -> Vec<Result<SizePoint, Failure>> {
+    let mut out = Vec::new();
+    for d in &loaded.domains {
+        let Some(load) = request.loads.get(&d.name) else { continue };
+        for s in loaded.schemes.iter().filter(|s| s.applies_to(&d.name)) {
+            let (spec, side) = match (&s.header, &s.footer) {
+                (Some(h), None) => (h, Side::Header),
+                (None, Some(f)) => (f, Side::Footer),
+                // of two switches in series neither has a smallest width of its own
+                _ => continue,
+            };
+            let finger_width_m = Some(spec.finger_width_m.unwrap_or(spec.width_m));
+            let largest =
+                SwitchSpec { width_m: spec.width_m * request.widest, finger_width_m, ..spec.clone() };
+            let sized = loaded
+                .corners
+                .iter()
+                .map(|c| {
+                    let (process, temp) = (process(&loaded.processes, c)?, temperature(c)?);
+                    Ok(SizeCorner { name: &c.name, process, temp, vdd_v: c.vdd_v })
+                })
+                .collect::<Result<Vec<_>, AwakeError>>()
+                .and_then(|corners| {
+                    let density = request.density.as_ref();
+                    smallest_switch(&largest, side, load, budget_v, &corners, density, &loaded.origin)
+                });
+            out.push(match sized {
+                Ok(size) => Ok(SizePoint { domain: d.name.clone(), scheme: s.name.clone(), size }),
+                Err(e) => Err(Failure {
+                    domain: d.name.clone(),
+                    scheme: s.name.clone(),
+                    corner: String::new(),
+                    reason: e.to_string(),
+                }),
+            });
+        }
+    }
+    out
+}
+
+#[expect(clippy::too_many_arguments, reason = "one point of the plan: everything that defines it")]
+fn point(
+    loaded: &Loaded,
+    domain: &str,
+    load: &Load,
+    scheme: &Scheme,
+    corner: &Corner,
+    request: &AwakeRequest,
+    cells: &[Arc<Cell>],
+    options: &SolveOptions,
+    watch: &Watch,
+) -> Result<AwakePoint, AwakeError> {
+    let stopped = || watch.stop.load(Ordering::Relaxed);
+    if stopped() {
+        return Err(AwakeError::Stopped);
+    }
+    let (process, temp) = (process(&loaded.processes, corner)?, temperature(corner)?);
+    let vdd = corner.vdd_v;
+    let mut shelf = DeviceShelf::default();
+    let mut make = |spec: &Option<SwitchSpec>, side| {
+        spec.as_ref()
+            .map(|s| Switch::new(s, side, process, temp, vdd, &mut shelf, &loaded.origin))
+            .transpose()
+    };
+    let (header, footer) = (make(&scheme.header, Side::Header)?, make(&scheme.footer, Side::Footer)?);
+    let (droop, over_header, over_footer) = settle_switches(load, header.as_ref(), footer.as_ref())?;
+    let awake = |s: &Option<Switch>, d: f64| {
+        s.as_ref()
+            .map(|s| {
+                let (on, off_a) = (on_point(s, d)?, s.off_current_a());
+                Ok::<_, AwakeError>(SwitchAwake {
+                    merit_v: on.chord_ohm * off_a,
+                    body_v: (s.body_v - s.rail_v).abs(),
+                    on,
+                    off_a,
+                })
+            })
+            .transpose()
+    };
+    let neighbour = match (request.neighbour_a, &header, &footer) {
+        (None, ..) | (_, None, None) => None,
+        (Some(step), Some(s), None) | (Some(step), None, Some(s)) => {
+            Some(neighbour_step(load, step, vdd, &|d| s.awake_current(d).0)?)
+        }
+        (Some(step), Some(h), Some(f)) => Some(neighbour_step(load, step, vdd, &|d| in_series(h, f, d))?),
+    };
+    let (supply_v, ground_v) = (vdd - over_header, over_footer);
+    let full = Levels::powered(vdd);
+    let drooped = Levels {
+        supply_v,
+        ground_v,
+        nwell_v: if scheme.nwell == WellTie::Virtual { supply_v } else { vdd },
+        pwell_v: if scheme.pwell == WellTie::Virtual { ground_v } else { 0.0 },
+        high_v: supply_v,
+        low_v: ground_v,
+    };
+    let mut list = Vec::new();
+    for cell in cells {
+        if stopped() {
+            return Err(AwakeError::Stopped);
+        }
+        let bound = BoundCell::new(cell, process, temp, 0.0, &mut shelf)?;
+        let own = |levels| {
+            let at = AtRails { cell: &bound, levels };
+            match margins(at, at, options) {
+                Ok(m) => Ok(Some(m)),
+                // cells that store have a hold margin instead
+                Err(AwakeError::Curve { .. }) => Ok(None),
+                Err(e) => Err(e),
+            }
+        };
+        let (at_full, at_drooped) = (own(full)?, own(drooped)?);
+        let square = |m: &Option<Margins>| m.as_ref().and_then(|m| m.square.as_ref()).map(|s| s.margin_v);
+        list.push(CellAwake {
+            cell: cell.name.to_string(),
+            nml_v: at_drooped.as_ref().and_then(|m| m.nml_v),
+            nmh_v: at_drooped.as_ref().and_then(|m| m.nmh_v),
+            square_v: square(&at_drooped),
+            full_square_v: square(&at_full),
+            delays: delay_penalty(&bound, &full, &drooped, request.swing, options)?,
+        });
+    }
+    Ok(AwakePoint {
+        domain: domain.to_owned(),
+        scheme: scheme.name.clone(),
+        corner: corner.name.clone(),
+        header: awake(&header, over_header)?,
+        footer: awake(&footer, over_footer)?,
+        droop,
+        virtual_supply_v: supply_v,
+        virtual_ground_v: ground_v,
+        neighbour,
+        cells: list,
+    })
+}
+
+/// What is asked of cells that store.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct KeepRequest {
+    /// Cells (`*` for any run of characters).
+    pub cells: Vec<String>,
+    /// Inputs that are known, such as a clock that stands low; all vectors are tried for the others.
+    #[serde(default)]
+    pub inputs: IndexMap<String, bool>,
+    /// How the rails come together.
+    pub collapse: Collapse,
+    /// What must be left.
+    pub need: Need,
+    /// Domain whose leakage at the lowest span is wanted.
+    #[serde(default)]
+    pub domain: Option<String>,
+}
+
+/// Everything found.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct KeepReport {
+    /// Cells, then corners.
+    pub retentions: Vec<Retention>,
+    /// Clamp level of each corner: the span that keeps every cell asked for, and what leaks there.
+    pub levels: Vec<ClampLevel>,
+    /// What could not be computed (`domain` holds the cell).
+    pub failures: Vec<Failure>,
+    /// Whether the run was stopped before its end.
+    pub stopped: bool,
+}
+
+/// The span a clamp must leave at a corner.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct ClampLevel {
+    /// The corner.
+    pub corner: String,
+    /// Span between the rails, V.
+    pub span_v: f64,
+    /// The rail that moves, V.
+    pub rail_v: f64,
+    /// The cell that decides.
+    pub cell: String,
+    /// Current the domain draws at its moving rail there, A; where a domain was named.
+    pub leak_a: Option<f64>,
+    /// The same at full rails, A.
+    pub full_leak_a: Option<f64>,
+}
+
+/// Lowest spans that keep the state of a study's cells.
+///
+/// # Errors
+/// Files that cannot be read, cells or a domain that do not exist; what fails at a corner is listed in the report.
+pub fn keep_study(
+    path: &str,
+    request: &KeepRequest,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<KeepReport, ReadError> {
+    let (s, source) = study(path)?;
+    let library = Library::load(&s, &source.folder)?;
+    let cells = library.cells(&request.cells, &mut Vec::new())?;
+    let loaded = match &request.domain {
+        None => None,
+        Some(name) => {
+            let loaded = load_study(&s, &source.path, &source.folder)?;
+            if !loaded.domains.iter().any(|d| d.name == *name) {
+                return Err(ReadError::Unknown {
+                    at: Place::new(&source.path, 1, 1),
+                    kind: "domain",
+                    name: name.clone(),
+                    nearest: nearest(name, loaded.domains.iter().map(|d| &*d.name)),
+                });
+            }
+            Some(loaded)
+        }
+    };
+    let given: Vec<(String, bool)> = request.inputs.iter().map(|(n, b)| (n.clone(), *b)).collect();
+    let plan: Vec<(&Arc<Cell>, &Corner)> =
+        cells.iter().flat_map(|c| library.corners.iter().map(move |k| (c, k))).collect();
+    let total = plan.len() + library.corners.len();
+    Ok(watched(total, progress, |watch| {
+        let failed = |of: &str, c: &Corner, e: &AwakeError| Failure {
+            domain: of.to_owned(),
+            scheme: String::new(),
+            corner: c.name.clone(),
+            reason: e.to_string(),
+        };
+        let found: Vec<Result<Retention, AwakeError>> = plan
+            .par_iter()
+            .map(|(cell, c)| {
+                let (process, temp) = (process(&library.processes, c)?, temperature(c)?);
+                let bound = BoundCell::new(cell, process, temp, 0.0, &mut DeviceShelf::default())?;
+                let stop = || watch.stop.load(Ordering::Relaxed);
+                let (collapse, need) = (&request.collapse, &request.need);
+                let r = retention(&bound, &c.name, c.vdd_v, collapse, &given, need, options, &stop);
+                watch.done.fetch_add(1, Ordering::Relaxed);
+                r
+            })
+            .collect();
+        let levels: Vec<Option<Result<ClampLevel, AwakeError>>> = library
+            .corners
+            .par_iter()
+            .enumerate()
+            .map(|(k, c)| {
+                let of_corner = (0..cells.len()).map(|i| &found[i * library.corners.len() + k]);
+                let held: Vec<&Retention> = of_corner.filter_map(|r| r.as_ref().ok()).collect();
+                // a level that some cell does not keep is none
+                if held.len() < cells.len() {
+                    return None;
+                }
+                let worst = held.into_iter().max_by(|a, b| a.retention_v.total_cmp(&b.retention_v))?;
+                let level = || {
+                    let span_v = worst.retention_v;
+                    let (mut leak_a, mut full_leak_a) = (None, None);
+                    if let (Some(loaded), Some(name)) = (&loaded, &request.domain)
+                        && let Some(d) = loaded.domains.iter().find(|d| d.name == *name)
+                    {
+                        let (process, temp) = (process(&loaded.processes, c)?, temperature(c)?);
+                        let block = BoundBlock::new(
+                            &d.block,
+                            process,
+                            temp,
+                            c.vdd_v,
+                            &mut DeviceShelf::default(),
+                            options,
+                        )?;
+                        let at =
+                            |v| leaks_at(&block, &request.collapse, c.vdd_v, v, &watch.stop).map(|x| x.0);
+                        (leak_a, full_leak_a) = (Some(at(span_v)?), Some(at(c.vdd_v)?));
+                    }
+                    let rail_v = match request.collapse.side {
+                        CollapseSide::Header => span_v,
+                        CollapseSide::Footer => c.vdd_v - span_v,
+                    };
+                    let (corner, cell) = (c.name.clone(), worst.cell.clone());
+                    Ok(ClampLevel { corner, span_v, rail_v, cell, leak_a, full_leak_a })
+                };
+                let r = level();
+                watch.done.fetch_add(1, Ordering::Relaxed);
+                Some(r)
+            })
+            .collect();
+        let stopped = watch.stop.load(Ordering::Relaxed);
+        let mut report =
+            KeepReport { retentions: Vec::new(), levels: Vec::new(), failures: Vec::new(), stopped };
+        for ((cell, c), r) in plan.iter().zip(found) {
+            match r {
+                Ok(r) => report.retentions.push(r),
+                Err(AwakeError::Stopped) => {}
+                Err(e) => report.failures.push(failed(&cell.name, c, &e)),
+            }
+        }
+        for (c, r) in library.corners.iter().zip(levels) {
+            match r {
+                Some(Ok(l)) => report.levels.push(l),
+                Some(Err(e)) if !stopped => report.failures.push(failed("", c, &e)),
+                _ => {}
+            }
+        }
+        report
+    }))
+}
+
+/// Noise margins between two cells of a study.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct MarginRequest {
+    /// The cell that drives.
+    pub driver: String,
+    /// The cell that receives; the driver's own when left out.
+    #[serde(default)]
+    pub receiver: Option<String>,
+    /// Voltage lost at supply and ground of the driver, V; wells stay at the full rails.
+    #[serde(default)]
+    pub driver_droop_v: (f64, f64),
+    /// The same of the receiver.
+    #[serde(default)]
+    pub receiver_droop_v: (f64, f64),
+    /// Corners by name; all when empty.
+    #[serde(default)]
+    pub corners: Vec<String>,
+}
+
+/// Margins at a corner.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct CornerMargins {
+    /// The corner.
+    pub corner: String,
+    /// The margins.
+    pub margins: Margins,
+}
+
+/// Noise margins at the corners asked for.
+///
+/// # Errors
+/// Whatever is wrong with files, names or rails, and the first corner without answer.
+pub fn margin_study(
+    path: &str,
+    request: &MarginRequest,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Vec<CornerMargins>, AwakeError> {
+    let (s, source) = study(path)?;
+    let library = Library::load(&s, &source.folder)?;
+    let receiver = request.receiver.as_ref().unwrap_or(&request.driver);
+    let cells = library.with_reader(|r| {
+        [&request.driver, receiver]
+            .into_iter()
+            .map(|n| r.cell(n, &mut Vec::new()).map(Arc::new))
+            .collect::<Result<Vec<_>, _>>()
+    })?;
+    for name in &request.corners {
+        if !library.corners.iter().any(|c| c.name == *name) {
+            return Err(AwakeError::Read(ReadError::Unknown {
+                at: Place::new(&source.path, 1, 1),
+                kind: "corner",
+                name: name.clone(),
+                nearest: nearest(name, library.corners.iter().map(|c| &*c.name)),
+            }));
+        }
+    }
+    let wanted: Vec<&Corner> = library
+        .corners
+        .iter()
+        .filter(|c| request.corners.is_empty() || request.corners.contains(&c.name))
+        .collect();
+    watched(wanted.len(), progress, |watch| {
+        wanted
+            .par_iter()
+            .map(|c| {
+                if watch.stop.load(Ordering::Relaxed) {
+                    return Err(AwakeError::Stopped);
+                }
+                let (process, temp) = (process(&library.processes, c)?, temperature(c)?);
+                let mut shelf = DeviceShelf::default();
+                let bound = cells
+                    .iter()
+                    .map(|cell| BoundCell::new(cell, process, temp, 0.0, &mut shelf))
+                    .collect::<Result<Vec<_>, _>>()?;
+                let levels = |(up, down): (f64, f64)| {
+                    let l = Levels::powered(c.vdd_v);
+                    let (supply_v, ground_v) = (c.vdd_v - up, down);
+                    if !(up >= 0.0 && down >= 0.0 && supply_v > ground_v) {
+                        return Err(AwakeError::Range {
+                            what: "droop of the rails".into(),
+                            value: format!("{up} and {down} V"),
+                            wanted: format!("want zero or more, together below the supply, {} V", c.vdd_v),
+                        });
+                    }
+                    Ok(Levels { supply_v, ground_v, high_v: supply_v, low_v: ground_v, ..l })
+                };
+                let driver = AtRails { cell: &bound[0], levels: levels(request.driver_droop_v)? };
+                let second = usize::from(receiver != &request.driver);
+                let receiver = AtRails { cell: &bound[second], levels: levels(request.receiver_droop_v)? };
+                let margins = margins(driver, receiver, options)?;
+                watch.done.fetch_add(1, Ordering::Relaxed);
+                Ok(CornerMargins { corner: c.name.clone(), margins })
+            })
+            .collect()
+    })
+}
