@@ -26,6 +26,18 @@ pub enum BlockError {
     /// The user stopped the work.
     #[error("stopped")]
     Stopped,
+    /// Levels that a curve was not sampled at.
+    #[error(
+        "the block's curve was sampled with other wells or rails: {what} at {given_v:.4} V, the curve has {curve_v:.4} V there"
+    )]
+    OffCurve {
+        /// The rail or well.
+        what: &'static str,
+        /// Asked for, V.
+        given_v: f64,
+        /// Of the curve, V.
+        curve_v: f64,
+    },
     /// State weights that fit no state or do not add up.
     #[error("state weights of `{master}`: {reason}")]
     Weights {
@@ -104,7 +116,8 @@ pub fn total(x: &[f64; 5]) -> f64 {
 }
 
 impl BlockCurrents {
-    fn zero() -> Self {
+    /// No current anywhere.
+    pub fn zero() -> Self {
         Self {
             supply: [0.0; 5],
             ground: [0.0; 5],

@@ -2,6 +2,8 @@
 
 pub mod build;
 pub mod current;
+pub mod curve;
 
 pub use build::{Block, BlockCell, Policy, StateWeights, Uncovered, build_block};
 pub use current::{BlockCurrents, BlockError, BlockSensitivity, BoundBlock};
+pub use curve::{BlockCurve, Book, Collapsing, CurveError, Draw};

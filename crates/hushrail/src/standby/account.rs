@@ -86,11 +86,7 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
                      there, GIDL above all, extrapolate the card's equations; ask the foundry before relying on an optimum"
                 ),
             ));
-            notes.push(Note::new(
-                "oxide-caution",
-                "a gate driven past its rail stresses its oxide; the limit is the foundry's reliability rule, and only a \
-                 qualified sign-off can say that it is kept",
-            ));
+            notes.push(super::stress::caution());
         }
     }
     // the block's rails: real ones are booked, virtual ones are inside

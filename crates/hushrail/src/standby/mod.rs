@@ -1,9 +1,12 @@
 //! Standby: what is done to a domain asleep, where its rails come to rest, what it still draws.
 
 mod account;
+pub mod curve;
 pub mod rest;
 pub mod scheme;
+pub mod stress;
 pub mod switch;
 
-pub use rest::{Asleep, PathShare, RestError, SupplyCurrent, settle};
+pub use rest::{Asleep, PathShare, RestError, SupplyCurrent, rest_rails, settle, settle_with};
 pub use scheme::{Scheme, SwitchSpec, WellTie};
+pub use stress::{StressLimits, SwitchStress};

@@ -10,9 +10,10 @@ use std::sync::atomic::AtomicBool;
 use serde::{Deserialize, Serialize};
 
 use super::account::account;
-use super::scheme::{Scheme, SchemeError, WellTie};
+use super::scheme::{Scheme, SchemeError};
 use super::switch::{Side, Switch};
 use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, total};
+use crate::block::{Collapsing, Draw};
 use crate::cell::{DeviceShelf, Levels};
 use crate::device::process::Process;
 use crate::device::range::Outside;
@@ -136,7 +137,7 @@ const EVALUATIONS: usize = 120;
 /// A domain about to be put to rest.
 pub(super) struct Domain<'a> {
     pub(super) scheme: &'a Scheme,
-    pub(super) block: &'a BoundBlock,
+    pub(super) block: &'a dyn Draw,
     pub(super) vdd_v: f64,
     pub(super) header: Option<Switch>,
     pub(super) footer: Option<Switch>,
@@ -146,32 +147,19 @@ pub(super) struct Domain<'a> {
 
 impl Domain<'_> {
     pub(super) fn levels(&self, supply: f64, ground: f64) -> Levels {
-        let s = self.scheme;
-        let nwell = if s.nwell == WellTie::Virtual { supply } else { self.vdd_v };
-        let pwell = if s.pwell == WellTie::Virtual { ground } else { 0.0 };
-        Levels {
-            supply_v: supply,
-            ground_v: ground,
-            nwell_v: nwell + s.nwell_bias_v,
-            pwell_v: pwell - s.pwell_bias_v,
-            high_v: supply,
-            low_v: ground,
-        }
+        self.scheme.levels(self.vdd_v, supply, ground)
     }
 
     /// Current the block takes from its supply rail and what hangs on it, and returns into its ground rail.
-    fn block(&mut self, supply: f64, ground: f64) -> Result<(BlockCurrents, f64, f64), RestError> {
+    fn block(&mut self, supply: f64, ground: f64) -> Result<(f64, f64), RestError> {
         self.evaluations += 1;
-        let c = self.block.currents(&self.levels(supply, ground), self.stop)?;
-        let mut from_supply = total(&c.supply);
-        let mut into_ground = -total(&c.ground);
-        if self.scheme.nwell == WellTie::Virtual && self.scheme.nwell_bias_v == 0.0 {
-            from_supply += total(&c.nwell);
-        }
-        if self.scheme.pwell == WellTie::Virtual && self.scheme.pwell_bias_v == 0.0 {
-            into_ground -= total(&c.pwell);
-        }
-        Ok((c, from_supply, into_ground))
+        Ok(self.on_rails(self.block.draw_totals(&self.levels(supply, ground), self.stop)?))
+    }
+
+    /// What of the books (supply, ground, n-wells, p-wells) hangs on the virtual rails.
+    fn on_rails(&self, totals: [f64; 4]) -> (f64, f64) {
+        let sum = |rail| self.scheme.on_rail(rail).iter().map(|b| totals[*b as usize]).sum::<f64>();
+        (sum(Collapsing::Supply), -sum(Collapsing::Ground))
     }
 
     /// Current out of the header into the virtual supply.
@@ -214,9 +202,27 @@ pub fn settle(
     let mut make = |spec, side| Switch::new(spec, side, process, temp, vdd_v, shelf, origin);
     let header = scheme.header.as_ref().map(|s| make(s, Side::Header)).transpose()?;
     let footer = scheme.footer.as_ref().map(|s| make(s, Side::Footer)).transpose()?;
+    settle_with(scheme, block, vdd_v, header, footer, stop)
+}
+
+/// Puts a domain to rest whose switches are made; the block may be a curve, which takes microseconds.
+///
+/// # Errors
+/// As [`settle`].
+pub fn settle_with(
+    scheme: &Scheme,
+    block: &dyn Draw,
+    vdd_v: f64,
+    header: Option<Switch>,
+    footer: Option<Switch>,
+    stop: &AtomicBool,
+) -> Result<Asleep, RestError> {
     let mut d = Domain { scheme, block, vdd_v, header, footer, stop, evaluations: 0 };
     let (supply, ground) = rest_voltages(&mut d)?;
-    let (currents, from_supply, into_ground) = d.block(supply, ground)?;
+    let currents = d.block.draw(&d.levels(supply, ground), stop)?;
+    d.evaluations += 1;
+    let c = &currents;
+    let (from_supply, into_ground) = d.on_rails([&c.supply, &c.ground, &c.nwell, &c.pwell].map(total));
     let mut residual = 0.0f64;
     if d.header.is_some() {
         residual = residual.max((d.header_gives(supply) - from_supply).abs() / from_supply.abs().max(1e-40));
@@ -252,20 +258,35 @@ pub fn settle(
     Ok(asleep)
 }
 
+/// Only where the virtual rails (supply, ground) come to rest, V, without the books: on a curve, a few microseconds.
+///
+/// # Errors
+/// The rails do not settle, or the block has no operating point.
+pub fn rest_rails(
+    scheme: &Scheme,
+    block: &dyn Draw,
+    vdd_v: f64,
+    header: Option<Switch>,
+    footer: Option<Switch>,
+    stop: &AtomicBool,
+) -> Result<(f64, f64), RestError> {
+    rest_voltages(&mut Domain { scheme, block, vdd_v, header, footer, stop, evaluations: 0 })
+}
+
 fn rest_voltages(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
     let vdd = d.vdd_v;
     match (d.header.is_some(), d.footer.is_some()) {
         (false, false) => Ok((vdd, 0.0)),
         (true, false) => {
             let v = one_rail(vdd, |v| {
-                let (_, i, _) = d.block(v, 0.0)?;
+                let (i, _) = d.block(v, 0.0)?;
                 Ok(log_ratio(i, d.header_gives(v)))
             })?;
             Ok((v, 0.0))
         }
         (false, true) => {
             let u = one_rail(vdd, |u| {
-                let (_, _, i) = d.block(vdd, vdd - u)?;
+                let (_, i) = d.block(vdd, vdd - u)?;
                 Ok(log_ratio(i, d.footer_takes(vdd - u)))
             })?;
             Ok((vdd, vdd - u))
@@ -287,7 +308,7 @@ fn falls_in_a_jump(d: &mut Domain<'_>, supply: f64, ground: f64) -> Result<bool,
             (false, true) => (supply, ground - dv),
             _ => (supply + 0.5 * dv, ground - 0.5 * dv),
         };
-        let (_, from, into) = d.block(s, g)?;
+        let (from, into) = d.block(s, g)?;
         let balance = if d.header.is_some() { from - d.header_gives(s) } else { into - d.footer_takes(g) };
         signs[k] = balance > 0.0;
     }
@@ -308,7 +329,7 @@ fn one_rail(vdd: f64, mut f: impl FnMut(f64) -> Result<f64, RestError>) -> Resul
 fn both_rails_newton(d: &mut Domain<'_>) -> Result<Option<(f64, f64)>, RestError> {
     let vdd = d.vdd_v;
     let balance = |d: &mut Domain<'_>, x: [f64; 2]| -> Result<[f64; 2], RestError> {
-        let (_, from, into) = d.block(x[0], x[1])?;
+        let (from, into) = d.block(x[0], x[1])?;
         // both grow with the span between the rails
         Ok([log_ratio(from, d.header_gives(x[0])), log_ratio(into, d.footer_takes(x[1]))])
     };
@@ -363,12 +384,12 @@ fn both_rails(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
     let mut at = (0.5 * vdd, 0.5 * vdd);
     let span = one_rail(vdd, |span| {
         let ground = increasing(0.0, vdd - span, 1e-14, BALANCE, 60, |g| {
-            let (_, from, into) = d.block(g + span, g)?;
+            let (from, into) = d.block(g + span, g)?;
             // charge balance of the pair: higher position, less from the header and more into the footer
             Ok::<f64, RestError>(log_ratio(d.footer_takes(g) + (from - into), d.header_gives(g + span)))
         })?;
         at = (ground + span, ground);
-        let (_, from, _) = d.block(at.0, at.1)?;
+        let (from, _) = d.block(at.0, at.1)?;
         Ok(log_ratio(from, d.header_gives(at.0)))
     })?;
     at.0 = at.1 + span;

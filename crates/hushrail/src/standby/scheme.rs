@@ -2,6 +2,9 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::block::{Book, Collapsing};
+use crate::cell::Levels;
+
 /// Where the wells of the block are tied.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default, Serialize, Deserialize)]
 #[serde(rename_all = "lowercase")]
@@ -140,6 +143,34 @@ impl Scheme {
     /// Whether nothing is switched or biased.
     pub fn is_ungated(&self) -> bool {
         self.header.is_none() && self.footer.is_none() && self.nwell_bias_v == 0.0 && self.pwell_bias_v == 0.0
+    }
+
+    /// Rails and wells of the block with its virtual rails where they are.
+    pub fn levels(&self, vdd_v: f64, supply_v: f64, ground_v: f64) -> Levels {
+        let nwell = if self.nwell == WellTie::Virtual { supply_v } else { vdd_v };
+        let pwell = if self.pwell == WellTie::Virtual { ground_v } else { 0.0 };
+        Levels {
+            supply_v,
+            ground_v,
+            nwell_v: nwell + self.nwell_bias_v,
+            pwell_v: pwell - self.pwell_bias_v,
+            high_v: supply_v,
+            low_v: ground_v,
+        }
+    }
+
+    /// Books of the block that hang on a virtual rail: the rail's own, and the well's when it is tied to it without bias.
+    pub fn on_rail(&self, rail: Collapsing) -> &'static [Book] {
+        match rail {
+            Collapsing::Supply if self.nwell == WellTie::Virtual && self.nwell_bias_v == 0.0 => {
+                &[Book::Supply, Book::Nwell]
+            }
+            Collapsing::Supply => &[Book::Supply],
+            Collapsing::Ground if self.pwell == WellTie::Virtual && self.pwell_bias_v == 0.0 => {
+                &[Book::Ground, Book::Pwell]
+            }
+            Collapsing::Ground => &[Book::Ground],
+        }
     }
 
     /// Checks every number.
