@@ -3,6 +3,7 @@
 pub mod awake;
 pub mod characterise;
 pub mod compare;
+pub mod keep;
 pub mod load;
 pub mod run;
 pub mod sensitivity;
