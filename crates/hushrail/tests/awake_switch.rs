@@ -72,6 +72,7 @@ fn footer(k: f64) -> Switch {
         awake_gate_v: 1.0,
         vdd_v: 1.0,
         body_v: 0.0,
+        awake_body_v: 0.0,
     }
 }
 
@@ -162,6 +163,8 @@ fn spec(model: &str, width_m: f64) -> SwitchSpec {
         well_bias_v: 0.0,
         diffusion_m: None,
         edge_m: None,
+        body_to_gate: false,
+        stacked: 1,
     }
 }
 

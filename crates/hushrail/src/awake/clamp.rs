@@ -5,77 +5,31 @@ use std::sync::atomic::AtomicBool;
 
 use serde::{Deserialize, Serialize};
 
-use super::error::{AwakeError, range};
+use super::error::AwakeError;
 use super::keep::{Collapse, CollapseSide};
 use crate::block::current::{BlockCurrents, BoundBlock, total};
 use crate::cell::DeviceShelf;
 use crate::device::process::Process;
 use crate::device::root::increasing;
-use crate::device::{Bias, Polarity};
 use crate::physics::Kelvin;
 use crate::standby::switch::{Side, Switch};
-use crate::standby::{SwitchSpec, WellTie};
+use crate::standby::{Clamp, ClampSpec, WellTie};
 
-/// A transistor between real and virtual rail that conducts when they are far apart: connected as a diode, or with its gate at a
-/// level of its own (reference sheet A19). Overdrive, boost and well bias of the spec have no meaning here and must be zero.
-#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
-#[serde(deny_unknown_fields)]
-pub struct ClampSpec {
-    /// The transistor.
-    pub device: SwitchSpec,
-    /// Level of its gate, V; as a diode when left out.
-    #[serde(default)]
-    pub gate_v: Option<f64>,
-}
-
-/// A clamp at a corner.
-#[derive(Debug, Clone)]
-pub struct Clamp {
-    switch: Switch,
-    gate_v: Option<f64>,
-}
-
-impl Clamp {
-    /// Makes its device.
-    ///
-    /// # Errors
-    /// No card or bin, or numbers that cannot be.
-    pub fn new(
-        spec: &ClampSpec,
-        side: Side,
-        process: &Process,
-        temp: Kelvin,
-        vdd_v: f64,
-        shelf: &mut DeviceShelf,
-        origin: &Arc<str>,
-    ) -> Result<Self, AwakeError> {
-        let d = &spec.device;
-        d.check("clamp").map_err(|(what, value, wanted)| AwakeError::Range { what, value, wanted })?;
-        if d.overdrive_v != 0.0 || d.boost_v != 0.0 || d.well_bias_v != 0.0 {
-            return range(
-                "overdrive, boost or well bias of the clamp",
-                "not zero".into(),
-                "want none of them",
-            );
-        }
-        if let Some(g) = spec.gate_v
-            && !(-1.0..=vdd_v + 1.0).contains(&g)
-        {
-            return range("gate of the clamp", format!("{g} V"), &format!("want -1 V to {} V", vdd_v + 1.0));
-        }
-        Ok(Self { switch: Switch::new(d, side, process, temp, vdd_v, shelf, origin)?, gate_v: spec.gate_v })
-    }
-
-    /// Current it gives the block with the virtual rail at `v`, A.
-    pub fn gives_a(&self, v: f64) -> f64 {
-        let s = &self.switch;
-        let natural = (s.side == Side::Header) == (s.device.polarity() == Polarity::P);
-        // the diode's gate sits on its drain: the virtual rail for the polarity that switches this rail, the real one otherwise
-        let gate = self.gate_v.unwrap_or(if natural { v } else { s.rail_v });
-        let drain = s.device.branches(Bias::from_terminals(v, gate, s.rail_v, s.body_v)).terminals()[0];
-        let sign = if s.side == Side::Header { -1.0 } else { 1.0 };
-        sign * drain * s.fingers
-    }
+/// Makes a clamp after checking its numbers.
+///
+/// # Errors
+/// No card or bin, or numbers that cannot be.
+pub fn make_clamp(
+    spec: &ClampSpec,
+    side: Side,
+    process: &Process,
+    temp: Kelvin,
+    vdd_v: f64,
+    shelf: &mut DeviceShelf,
+    origin: &Arc<str>,
+) -> Result<Clamp, AwakeError> {
+    spec.check("clamp").map_err(|(what, value, wanted)| AwakeError::Range { what, value, wanted })?;
+    Ok(Clamp::new(spec, side, process, temp, vdd_v, shelf, origin)?)
 }
 
 /// A clamped domain.
@@ -130,7 +84,7 @@ pub fn settle_clamped(
     collapse: &Collapse,
     stop: &AtomicBool,
 ) -> Result<Clamped, AwakeError> {
-    let vdd = clamp.switch.vdd_v;
+    let vdd = clamp.vdd_v();
     let rail = |span: f64| match collapse.side {
         CollapseSide::Header => span,
         CollapseSide::Footer => vdd - span,

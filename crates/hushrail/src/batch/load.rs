@@ -57,6 +57,8 @@ pub struct Loaded {
     pub corners: Vec<Corner>,
     /// Schemes.
     pub schemes: Vec<Scheme>,
+    /// Cells that schemes add, by the name they use.
+    pub added: IndexMap<String, Arc<Cell>>,
     /// Limits.
     pub limits: Limits,
     /// Where messages about schemes point.
@@ -211,6 +213,13 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
         };
         domains.push(LoadedDomain { name: d.name.clone(), block, summary });
     }
+    let mut added = IndexMap::new();
+    for name in study.scheme.iter().flat_map(|s| s.added.keys()) {
+        if !added.contains_key(name) {
+            let cell = library.with_reader(|reader| reader.cell(name, &mut notes))?;
+            added.insert(name.clone(), Arc::new(cell));
+        }
+    }
     let mut distinct: Vec<Note> = Vec::new();
     for n in notes {
         n.add_once(&mut distinct);
@@ -221,6 +230,7 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
         domains,
         corners: library.corners,
         schemes: study.scheme.clone(),
+        added,
         limits: study.limits.clone(),
         origin: origin.into(),
         notes: distinct,

@@ -1,5 +1,6 @@
 //! The main job: domains × schemes × corners, in parallel, the same bits for any number of threads.
 
+use std::sync::Arc;
 use std::sync::atomic::Ordering;
 
 use rayon::prelude::*;
@@ -12,7 +13,8 @@ use crate::cell::DeviceShelf;
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
 use crate::read::deck::Note;
-use crate::standby::{Asleep, Scheme, settle};
+use crate::standby::scheme::SchemeError;
+use crate::standby::{Asleep, RestError, Scheme, settle};
 
 /// A limit and how a result stands to it.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -172,7 +174,22 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
             return part;
         }
     };
-    let mut one = |scheme: &Scheme| {
+    let mut one = |scheme: &Scheme| -> Result<Asleep, RestError> {
+        if !scheme.changes_block() {
+            return settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop);
+        }
+        let added: Vec<_> = scheme
+            .added
+            .iter()
+            .filter_map(|(name, n)| loaded.added.get(name).map(|cell| (Arc::clone(cell), *n)))
+            .collect();
+        let block = d.block.changed(&scheme.changes, &scheme.powered, &added).map_err(|e| SchemeError {
+            scheme: scheme.name.clone(),
+            what: e.what,
+            value: e.value,
+            wanted: e.wanted,
+        })?;
+        let bound = BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options)?;
         settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop)
     };
     let reference = one(&Scheme::ungated("ungated"));

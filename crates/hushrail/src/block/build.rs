@@ -45,6 +45,8 @@ pub struct BlockCell {
     pub count: u64,
     /// Weights of its states.
     pub weights: StateWeights,
+    /// Whether it stays on the real rails asleep.
+    pub powered: bool,
 }
 
 /// A master without transistors, and what was done about it.
@@ -149,7 +151,7 @@ pub fn build_block(
                 }
                 let cell = Arc::new(reader.cell(&name, notes)?);
                 let weights = weights.get(master).cloned().unwrap_or_default();
-                block.cells.push(BlockCell { master: master.clone(), cell, count, weights });
+                block.cells.push(BlockCell { master: master.clone(), cell, count, weights, powered: false });
             }
             (None, Some(Policy::Error)) => lost.push((master, count)),
             (None, Some(policy)) => {

@@ -1,5 +1,6 @@
 //! The current of a block at given rails and wells: count × state weight × current, summed in a fixed order.
 
+use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 
 use rayon::prelude::*;
@@ -49,23 +50,25 @@ pub enum BlockError {
 }
 
 /// A cell of the block at a corner with its weighted states.
-#[derive(Debug)]
-struct Member {
-    master: String,
-    count: u64,
-    bound: BoundCell,
-    states: Vec<(State, f64)>,
+#[derive(Debug, Clone)]
+pub(super) struct Member {
+    pub(super) master: String,
+    pub(super) count: u64,
+    pub(super) bound: Arc<BoundCell>,
+    pub(super) states: Vec<(State, f64)>,
+    /// Whether it stays on the real rails asleep.
+    pub(super) powered: bool,
 }
 
 /// A block with the devices of one corner.
 #[derive(Debug)]
 pub struct BoundBlock {
-    members: Vec<Member>,
+    pub(super) members: Vec<Member>,
     /// Current of masters given by value, A at full supply.
-    given_a: f64,
+    pub(super) given_a: f64,
     /// Full supply the given currents refer to, V.
-    vdd_v: f64,
-    options: SolveOptions,
+    pub(super) vdd_v: f64,
+    pub(super) options: SolveOptions,
     /// Whether all transistors have GIDL in their cards.
     pub has_gidl: bool,
 }
@@ -94,6 +97,18 @@ pub struct BlockCurrents {
     pub pwell: [f64; 5],
     /// Power that each mechanism dissipates inside, W, wherever its current flows.
     pub power_w: [f64; 5],
+    /// From the real supply, past any switch: cells that stay powered, and what live neighbours hold at one.
+    #[serde(default)]
+    pub real_supply: [f64; 5],
+    /// Into the real ground, past any switch (negative: it flows out).
+    #[serde(default)]
+    pub real_ground: [f64; 5],
+    /// Part of `supply` that enters through inputs at one.
+    #[serde(default)]
+    pub inputs_high: [f64; 5],
+    /// Part of `ground` that enters through inputs at zero.
+    #[serde(default)]
+    pub inputs_low: [f64; 5],
     /// Part of `supply` given by value and not computed, A.
     pub given_a: f64,
     /// By cell, in the order of the netlist.
@@ -124,6 +139,10 @@ impl BlockCurrents {
             nwell: [0.0; 5],
             pwell: [0.0; 5],
             power_w: [0.0; 5],
+            real_supply: [0.0; 5],
+            real_ground: [0.0; 5],
+            inputs_high: [0.0; 5],
+            inputs_low: [0.0; 5],
             given_a: 0.0,
             cells: Vec::new(),
             states: 0,
@@ -161,7 +180,8 @@ impl BoundBlock {
             has_gidl &= bound.has_gidl;
             let states = bound.states().map_err(BlockError::Cell)?;
             let states = weigh(&c.master, &bound, states, &c.weights)?;
-            members.push(Member { master: c.master.clone(), count: c.count, bound, states });
+            let (master, bound) = (c.master.clone(), Arc::new(bound));
+            members.push(Member { master, count: c.count, bound, states, powered: c.powered });
         }
         let given_a = block
             .uncovered
@@ -194,6 +214,8 @@ impl BoundBlock {
                 (&mut sum.nwell, &p.nwell),
                 (&mut sum.pwell, &p.pwell),
                 (&mut sum.power_w, &p.power_w),
+                (&mut sum.inputs_high, &p.inputs_high),
+                (&mut sum.inputs_low, &p.inputs_low),
             ] {
                 add(to, x, 1.0);
             }
@@ -285,7 +307,7 @@ pub enum BindError {
 }
 
 /// Matches weights to states.
-fn weigh(
+pub(super) fn weigh(
     master: &str,
     bound: &BoundCell,
     states: Vec<State>,
@@ -359,7 +381,13 @@ impl Member {
             }
             // an input at one is held by a driver on the supply, an input at zero by one on the ground
             for (i, &high) in cell.ports_of(Role::Input).zip(&state.inputs) {
-                add(if high { &mut sum.supply } else { &mut sum.ground }, &c.ports[i], x);
+                for to in if high {
+                    [&mut sum.supply, &mut sum.inputs_high]
+                } else {
+                    [&mut sum.ground, &mut sum.inputs_low]
+                } {
+                    add(to, &c.ports[i], x);
+                }
             }
             add(&mut sum.power_w, &c.power_w, x);
             sum.states += 1;

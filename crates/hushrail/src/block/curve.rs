@@ -147,6 +147,9 @@ pub struct CurvePoints {
     pub full: Levels,
     /// Part of the supply current given by value at full supply, A.
     pub given_a: f64,
+    /// From the real supply and into the real ground past any switch, whatever is left between the rails, A.
+    #[serde(default)]
+    pub real: [[f64; 5]; 2],
     /// States of the block.
     pub states: usize,
     /// Knots by rising span, the first at zero.
@@ -217,10 +220,12 @@ impl BlockCurve {
         let mut evaluations = 0;
         let mut states = 0;
         let mut given_a = 0.0;
+        let mut real = [[0.0; 5]; 2];
         let mut knot = |span_v: f64| -> Result<Knot, CurveError> {
             evaluations += 1;
             let c = block.draw(&levels(span_v), stop)?;
             (states, given_a) = (c.states, if span_v > 0.0 { c.given_a * vdd_v / span_v } else { given_a });
+            real = [c.real_supply, c.real_ground];
             let books = [c.supply, c.ground, c.nwell, c.pwell, c.power_w];
             if books.iter().flatten().any(|x| !x.is_finite()) {
                 return Err(CurveError::Points(format!("a current at {span_v:.4} V is not a number")));
@@ -289,6 +294,7 @@ impl BlockCurve {
             empty: levels(0.0),
             full: levels(vdd_v),
             given_a,
+            real,
             states,
             knots,
             accuracy,
@@ -336,6 +342,10 @@ impl BlockCurve {
             nwell,
             pwell,
             power_w,
+            real_supply: p.real[0],
+            real_ground: p.real[1],
+            inputs_high: [0.0; 5],
+            inputs_low: [0.0; 5],
             given_a: p.given_a * span_v / p.vdd_v,
             cells: Vec::new(),
             states: p.states,

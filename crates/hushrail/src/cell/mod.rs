@@ -3,6 +3,7 @@
 pub mod bound;
 #[expect(clippy::module_inception, reason = "the file holds the cell itself")]
 pub mod cell;
+pub mod edit;
 pub mod logic;
 pub mod posed;
 pub mod sensitivity;

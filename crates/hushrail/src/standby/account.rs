@@ -89,6 +89,65 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
             notes.push(super::stress::caution());
         }
     }
+    for (clamp, rail, name, v, sign) in [
+        (&d.clamps.header, "vdd", "header", supply, -1.0),
+        (&d.clamps.footer, "ground", "footer", ground, 1.0),
+    ] {
+        let Some(clamp) = clamp else { continue };
+        let b = clamp.branches(v);
+        let t = b.terminals();
+        book(rail, clamp.rail_v(), t[Terminal::Source as usize]);
+        let gate_v = clamp.gate_at(v);
+        let supply_at = |level: f64, other: &str| -> String {
+            if level == vdd {
+                "vdd".into()
+            } else if level == 0.0 {
+                "ground".into()
+            } else {
+                format!("{name}_{other}")
+            }
+        };
+        if !clamp.gate_moves() {
+            book(&supply_at(gate_v, "clamp_gate"), gate_v, t[Terminal::Gate as usize]);
+        }
+        book(&supply_at(clamp.body_v(), "clamp_well"), clamp.body_v(), t[Terminal::Body as usize]);
+        for m in Mechanism::ALL {
+            let of = b.terminals_of(m);
+            let at = [v, gate_v, clamp.rail_v(), clamp.body_v()];
+            power_by[m as usize] += of.iter().zip(at).map(|(i, x)| i * x).sum::<f64>();
+            way(&format!("{name} clamp"), m, sign * of[Terminal::Drain as usize]);
+        }
+        let all = if name == "header" { d.header_gives(v) } else { d.footer_takes(v) };
+        if b.channel_ds.abs() <= 0.01 * all {
+            let text = format!(
+                "the {name} clamp hardly conducts where the rail rests ({v:.3} V): it holds nothing there"
+            );
+            notes.push(Note::new("clamp-idle", text));
+        }
+    }
+    // a second supply gives what switch and clamp do not
+    let held = |gives: f64, needs: f64| needs - gives;
+    let on = d.on_rails([&c.supply, &c.ground, &c.nwell, &c.pwell].map(total));
+    if let Some(v) = s.held_supply_v {
+        let i = held(d.header_gives(supply), on.0);
+        book("held_supply", v, i);
+        way("held supply", Mechanism::Channel, i);
+    }
+    if let Some(v) = s.held_ground_v {
+        let i = held(d.footer_takes(ground), on.1);
+        book("held_ground", v, -i);
+    }
+    // what stays on the real rails whatever is switched
+    for (name, v, currents) in [("vdd", vdd, &c.real_supply), ("ground", 0.0, &c.real_ground)] {
+        if currents.iter().any(|i| *i != 0.0) {
+            book(name, v, total(currents));
+            for (m, i) in Mechanism::ALL.iter().zip(currents) {
+                if name == "vdd" {
+                    way("powered cells", *m, *i);
+                }
+            }
+        }
+    }
     // the block's rails: real ones are booked, virtual ones are inside
     if d.header.is_none() {
         book("vdd", vdd, total(&c.supply));
@@ -118,6 +177,22 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
     if s.overhead_a > 0.0 {
         way("overhead", Mechanism::Channel, s.overhead_a);
     }
+    let mut overhead_w = s.overhead_a * vdd;
+    if let Some(e) = s.pump_efficiency {
+        let beyond = supplies.iter().filter(|x| x.voltage_v > vdd || x.voltage_v < 0.0);
+        let made: f64 = beyond.map(|x| x.power_w.max(0.0)).sum();
+        let lost = made * (1.0 / e - 1.0);
+        overhead_w += lost;
+        if let Some(x) = supplies.iter_mut().find(|x| x.supply == "vdd") {
+            x.current_a += lost / vdd;
+            x.power_w += lost;
+        }
+        paths.push(PathShare {
+            path: "pump loss".into(),
+            mechanism: Mechanism::Channel,
+            current_a: lost / vdd,
+        });
+    }
     let current_a = supplies.iter().filter(|x| x.voltage_v > 0.0).map(|x| x.current_a).sum();
     let power_w = supplies.iter().map(|x| x.power_w).sum();
     if c.unstable > 0 {
@@ -143,6 +218,7 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
         block: c,
         evaluations: d.evaluations,
         residual,
+        overhead_w,
         notes,
     }
 }

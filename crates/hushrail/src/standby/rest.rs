@@ -10,10 +10,11 @@ use std::sync::atomic::AtomicBool;
 use serde::{Deserialize, Serialize};
 
 use super::account::account;
+use super::clamp::{Clamp, ClampSpec};
 use super::scheme::{Scheme, SchemeError};
 use super::switch::{Side, Switch};
 use crate::block::current::{BindError, BlockCurrents, BlockError, BoundBlock, total};
-use crate::block::{Collapsing, Draw};
+use crate::block::{Collapsing, Draw, Parts};
 use crate::cell::{DeviceShelf, Levels};
 use crate::device::process::Process;
 use crate::device::range::Outside;
@@ -125,6 +126,9 @@ pub struct Asleep {
     pub evaluations: usize,
     /// Relative imbalance left at the virtual rails.
     pub residual: f64,
+    /// Power that makes the scheme work: the stated overhead, and what the pump loses, W.
+    #[serde(default)]
+    pub overhead_w: f64,
     /// Remarks.
     pub notes: Vec<Note>,
 }
@@ -134,6 +138,15 @@ const BALANCE: f64 = 1e-9;
 /// Evaluations of the block before giving up.
 const EVALUATIONS: usize = 120;
 
+/// Clamps beside header and footer, made for a corner.
+#[derive(Debug, Clone, Default)]
+pub struct Clamps {
+    /// Beside the header.
+    pub header: Option<Clamp>,
+    /// Beside the footer.
+    pub footer: Option<Clamp>,
+}
+
 /// A domain about to be put to rest.
 pub(super) struct Domain<'a> {
     pub(super) scheme: &'a Scheme,
@@ -141,6 +154,7 @@ pub(super) struct Domain<'a> {
     pub(super) vdd_v: f64,
     pub(super) header: Option<Switch>,
     pub(super) footer: Option<Switch>,
+    pub(super) clamps: Clamps,
     pub(super) stop: &'a AtomicBool,
     pub(super) evaluations: usize,
 }
@@ -157,18 +171,20 @@ impl Domain<'_> {
     }
 
     /// What of the books (supply, ground, n-wells, p-wells) hangs on the virtual rails.
-    fn on_rails(&self, totals: [f64; 4]) -> (f64, f64) {
+    pub(super) fn on_rails(&self, totals: [f64; 4]) -> (f64, f64) {
         let sum = |rail| self.scheme.on_rail(rail).iter().map(|b| totals[*b as usize]).sum::<f64>();
         (sum(Collapsing::Supply), -sum(Collapsing::Ground))
     }
 
     /// Current out of the header into the virtual supply.
-    fn header_gives(&self, v: f64) -> f64 {
-        self.header.as_ref().map_or(0.0, |h| -h.branches(v).terminals()[Terminal::Drain as usize])
+    pub(super) fn header_gives(&self, v: f64) -> f64 {
+        let clamp = self.clamps.header.as_ref().map_or(0.0, |c| c.gives_a(v));
+        clamp + self.header.as_ref().map_or(0.0, |h| -h.branches(v).terminals()[Terminal::Drain as usize])
     }
     /// Current out of the virtual ground into the footer.
-    fn footer_takes(&self, v: f64) -> f64 {
-        self.footer.as_ref().map_or(0.0, |f| f.branches(v).terminals()[Terminal::Drain as usize])
+    pub(super) fn footer_takes(&self, v: f64) -> f64 {
+        let clamp = self.clamps.footer.as_ref().map_or(0.0, |c| c.gives_a(v));
+        clamp + self.footer.as_ref().map_or(0.0, |f| f.branches(v).terminals()[Terminal::Drain as usize])
     }
 }
 
@@ -202,7 +218,16 @@ pub fn settle(
     let mut make = |spec, side| Switch::new(spec, side, process, temp, vdd_v, shelf, origin);
     let header = scheme.header.as_ref().map(|s| make(s, Side::Header)).transpose()?;
     let footer = scheme.footer.as_ref().map(|s| make(s, Side::Footer)).transpose()?;
-    settle_with(scheme, block, vdd_v, header, footer, stop)
+    let mut clamp = |spec: &Option<ClampSpec>, side| {
+        let made = spec.as_ref().map(|c| Clamp::new(c, side, process, temp, vdd_v, shelf, origin));
+        made.transpose()
+    };
+    let clamps = Clamps {
+        header: clamp(&scheme.header_clamp, Side::Header)?,
+        footer: clamp(&scheme.footer_clamp, Side::Footer)?,
+    };
+    let parts = Parts::new(block, &scheme.parked, scheme.zigzag, vdd_v)?;
+    settle_clamped(scheme, &parts, vdd_v, header, footer, clamps, stop)
 }
 
 /// Puts a domain to rest whose switches are made; the block may be a curve, which takes microseconds.
@@ -217,17 +242,33 @@ pub fn settle_with(
     footer: Option<Switch>,
     stop: &AtomicBool,
 ) -> Result<Asleep, RestError> {
-    let mut d = Domain { scheme, block, vdd_v, header, footer, stop, evaluations: 0 };
+    settle_clamped(scheme, block, vdd_v, header, footer, Clamps::default(), stop)
+}
+
+/// The same with clamps.
+///
+/// # Errors
+/// As [`settle`].
+pub fn settle_clamped(
+    scheme: &Scheme,
+    block: &dyn Draw,
+    vdd_v: f64,
+    header: Option<Switch>,
+    footer: Option<Switch>,
+    clamps: Clamps,
+    stop: &AtomicBool,
+) -> Result<Asleep, RestError> {
+    let mut d = Domain { scheme, block, vdd_v, header, footer, clamps, stop, evaluations: 0 };
     let (supply, ground) = rest_voltages(&mut d)?;
     let currents = d.block.draw(&d.levels(supply, ground), stop)?;
     d.evaluations += 1;
     let c = &currents;
     let (from_supply, into_ground) = d.on_rails([&c.supply, &c.ground, &c.nwell, &c.pwell].map(total));
     let mut residual = 0.0f64;
-    if d.header.is_some() {
+    if d.header.is_some() && scheme.held_supply_v.is_none() {
         residual = residual.max((d.header_gives(supply) - from_supply).abs() / from_supply.abs().max(1e-40));
     }
-    if d.footer.is_some() {
+    if d.footer.is_some() && scheme.held_ground_v.is_none() {
         residual = residual.max((d.footer_takes(ground) - into_ground).abs() / into_ground.abs().max(1e-40));
     }
     let mut asleep = account(&d, currents, supply, ground, residual);
@@ -270,27 +311,37 @@ pub fn rest_rails(
     footer: Option<Switch>,
     stop: &AtomicBool,
 ) -> Result<(f64, f64), RestError> {
-    rest_voltages(&mut Domain { scheme, block, vdd_v, header, footer, stop, evaluations: 0 })
+    let clamps = Clamps::default();
+    rest_voltages(&mut Domain { scheme, block, vdd_v, header, footer, clamps, stop, evaluations: 0 })
 }
 
 fn rest_voltages(d: &mut Domain<'_>) -> Result<(f64, f64), RestError> {
     let vdd = d.vdd_v;
-    match (d.header.is_some(), d.footer.is_some()) {
-        (false, false) => Ok((vdd, 0.0)),
-        (true, false) => {
-            let v = one_rail(vdd, |v| {
-                let (i, _) = d.block(v, 0.0)?;
-                Ok(log_ratio(i, d.header_gives(v)))
-            })?;
-            Ok((v, 0.0))
-        }
-        (false, true) => {
-            let u = one_rail(vdd, |u| {
-                let (_, i) = d.block(vdd, vdd - u)?;
-                Ok(log_ratio(i, d.footer_takes(vdd - u)))
-            })?;
-            Ok((vdd, vdd - u))
-        }
+    let (held_supply, held_ground) = (d.scheme.held_supply_v, d.scheme.held_ground_v);
+    let header = d.header.is_some() && held_supply.is_none();
+    let footer = d.footer.is_some() && held_ground.is_none();
+    let (supply, ground) = (held_supply.unwrap_or(vdd), held_ground.unwrap_or(0.0));
+    // one rail settles while the other stays where it is
+    let sink = |d: &mut Domain<'_>, ground: f64| {
+        one_rail(vdd - ground, |span| {
+            let (i, _) = d.block(ground + span, ground)?;
+            Ok(log_ratio(i, d.header_gives(ground + span)))
+        })
+        .map(|span| ground + span)
+    };
+    let rise = |d: &mut Domain<'_>, supply: f64| {
+        one_rail(supply, |span| {
+            let (_, i) = d.block(supply, supply - span)?;
+            Ok(log_ratio(i, d.footer_takes(supply - span)))
+        })
+        .map(|span| supply - span)
+    };
+    match (header, footer) {
+        (false, false) => Ok((supply, ground)),
+        (true, false) => Ok((sink(d, ground)?, ground)),
+        (false, true) => Ok((supply, rise(d, supply)?)),
+        // each row sees one virtual rail only
+        (true, true) if d.scheme.zigzag => Ok((sink(d, 0.0)?, rise(d, vdd)?)),
         (true, true) => match both_rails_newton(d)? {
             Some(at) => Ok(at),
             None => both_rails(d),

@@ -1,7 +1,11 @@
 //! Schemes: everything done to a domain in standby.
 
+use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
+use super::clamp::ClampSpec;
+
+use crate::block::change::{CellChange, Parked};
 use crate::block::{Book, Collapsing};
 use crate::cell::Levels;
 
@@ -38,12 +42,22 @@ pub struct SwitchSpec {
     /// Body voltage beyond the rail, reverse positive, V.
     #[serde(default)]
     pub well_bias_v: f64,
+    /// Body tied to the gate: reverse-biased by the overdrive asleep, driven forward awake.
+    #[serde(default)]
+    pub body_to_gate: bool,
+    /// Transistors in series behind one gate.
+    #[serde(default = "one")]
+    pub stacked: usize,
     /// Length of the drain and source diffusions of a finger, m, for its junctions; none when left out.
     #[serde(default)]
     pub diffusion_m: Option<f64>,
     /// Gate to diffusion edge, m, for layout stress; none when left out.
     #[serde(default)]
     pub edge_m: Option<f64>,
+}
+
+fn one() -> usize {
+    1
 }
 
 impl SwitchSpec {
@@ -79,6 +93,12 @@ impl SwitchSpec {
                 return wrong(name, format!("{v:?} m"), "want a length above zero");
             }
         }
+        if !(1..=4).contains(&self.stacked) {
+            return wrong("stacked", self.stacked.to_string(), "want 1 to 4 in series");
+        }
+        if self.body_to_gate && self.well_bias_v != 0.0 {
+            return wrong("well bias", format!("{} V", self.well_bias_v), "want none with body_to_gate");
+        }
         Ok(())
     }
 }
@@ -113,6 +133,37 @@ pub struct Scheme {
     /// Supply current of what makes the scheme work (pump, level shifter, bias generator), A.
     #[serde(default)]
     pub overhead_a: f64,
+    /// Share of the power drawn from the supply that reaches voltages beyond the rails (gates driven past them, biased wells);
+    /// free when left out.
+    #[serde(default)]
+    pub pump_efficiency: Option<f64>,
+    /// Holds the virtual supply from below when it falls far, so that state is kept.
+    #[serde(default)]
+    pub header_clamp: Option<ClampSpec>,
+    /// Holds the virtual ground from above when it rises far.
+    #[serde(default)]
+    pub footer_clamp: Option<ClampSpec>,
+    /// Level at which a second supply holds the virtual supply asleep, V.
+    #[serde(default)]
+    pub held_supply_v: Option<f64>,
+    /// Level at which a second supply holds the virtual ground asleep, V.
+    #[serde(default)]
+    pub held_ground_v: Option<f64>,
+    /// Header for the cells parked at zero and footer for those parked at one: every output keeps a real rail.
+    #[serde(default)]
+    pub zigzag: bool,
+    /// States in which cells are parked: pattern of masters (`*` for any run) to a product of pins, such as `A&!B`.
+    #[serde(default)]
+    pub parked: Parked,
+    /// Cells that stay on the real rails: patterns of masters (retention registers, always-on buffers).
+    #[serde(default)]
+    pub powered: Vec<String>,
+    /// Cells added on the real rails, with their number: isolation, retention latches, buffers.
+    #[serde(default)]
+    pub added: IndexMap<String, u64>,
+    /// Cells changed inside: other thresholds, longer channels, forced stacks.
+    #[serde(default)]
+    pub changes: Vec<CellChange>,
 }
 
 /// A scheme that cannot be.
@@ -142,7 +193,17 @@ impl Scheme {
 
     /// Whether nothing is switched or biased.
     pub fn is_ungated(&self) -> bool {
-        self.header.is_none() && self.footer.is_none() && self.nwell_bias_v == 0.0 && self.pwell_bias_v == 0.0
+        self.header.is_none()
+            && self.footer.is_none()
+            && self.nwell_bias_v == 0.0
+            && self.pwell_bias_v == 0.0
+            && self.parked.is_empty()
+            && !self.changes_block()
+    }
+
+    /// Whether the block is another one than the netlist says.
+    pub fn changes_block(&self) -> bool {
+        !(self.changes.is_empty() && self.powered.is_empty() && self.added.is_empty())
     }
 
     /// Rails and wells of the block with its virtual rails where they are.
@@ -184,6 +245,45 @@ impl Scheme {
         for (what, s) in [("header", &self.header), ("footer", &self.footer)] {
             let Some(s) = s else { continue };
             s.check(what).or_else(|(name, value, wanted)| wrong(&name, value, &wanted))?;
+        }
+        for (what, c, switch) in [
+            ("header clamp", &self.header_clamp, self.header.is_some()),
+            ("footer clamp", &self.footer_clamp, self.footer.is_some()),
+        ] {
+            let Some(c) = c else { continue };
+            c.check(what).or_else(|(name, value, wanted)| wrong(&name, value, &wanted))?;
+            if !switch {
+                return wrong(what, "without its switch".into(), "want the switch it stands beside");
+            }
+        }
+        for (what, v, switch) in [
+            ("held_supply_v", self.held_supply_v, self.header.is_some()),
+            ("held_ground_v", self.held_ground_v, self.footer.is_some()),
+        ] {
+            let Some(v) = v else { continue };
+            if !(0.0..=5.0).contains(&v) {
+                return wrong(what, format!("{v} V"), "want a level between the rails");
+            }
+            if !switch {
+                return wrong(what, "without its switch".into(), "want the switch it stands beside");
+            }
+        }
+        if self.zigzag {
+            if self.header.is_none() || self.footer.is_none() {
+                return wrong("zigzag", "without header and footer".into(), "want both");
+            }
+            if self.nwell == WellTie::Virtual || self.pwell == WellTie::Virtual {
+                return wrong(
+                    "wells",
+                    "virtual".into(),
+                    "want real wells in zigzag rows: neighbours share them",
+                );
+            }
+        }
+        if let Some(e) = self.pump_efficiency
+            && !(e > 0.0 && e <= 1.0)
+        {
+            return wrong("pump_efficiency", e.to_string(), "want a share above 0 and up to 1");
         }
         for (name, v) in [("n-well bias", self.nwell_bias_v), ("p-well bias", self.pwell_bias_v)] {
             if !(-1.0..=5.0).contains(&v) {

@@ -4,6 +4,7 @@ use std::sync::Arc;
 
 use super::scheme::SwitchSpec;
 use crate::cell::DeviceShelf;
+use crate::device::in_series::InSeries;
 use crate::device::process::{Process, Request};
 use crate::device::range::Outside;
 use crate::device::{Bias, Branches, Device, Polarity};
@@ -36,8 +37,10 @@ pub struct Switch {
     pub awake_gate_v: f64,
     /// Supply, V.
     pub vdd_v: f64,
-    /// Body, V.
+    /// Body asleep, V.
     pub body_v: f64,
+    /// Body awake, V.
+    pub awake_body_v: f64,
 }
 
 impl Switch {
@@ -78,14 +81,15 @@ impl Switch {
         let body_v = if p_channel { vdd_v + spec.well_bias_v } else { -spec.well_bias_v };
         let rail_v = if side == Side::Header { vdd_v } else { 0.0 };
         Ok(Self {
-            device: t.device,
+            device: InSeries::of(&t.device, spec.stacked),
             fingers: spec.width_m / finger * t.count,
             side,
             rail_v,
             gate_v,
             awake_gate_v,
             vdd_v,
-            body_v,
+            body_v: if spec.body_to_gate { gate_v } else { body_v },
+            awake_body_v: if spec.body_to_gate { awake_gate_v } else { body_v },
         })
     }
 
@@ -105,7 +109,7 @@ impl Switch {
 
     /// Bias awake with `droop_v` across the switch; the body stays where the scheme ties it.
     pub fn awake_bias(&self, droop_v: f64) -> Bias<f64> {
-        Bias::from_terminals(self.virtual_rail_v(droop_v), self.awake_gate_v, self.rail_v, self.body_v)
+        Bias::from_terminals(self.virtual_rail_v(droop_v), self.awake_gate_v, self.rail_v, self.awake_body_v)
     }
 
     /// Current of the whole switch at its virtual rail, positive as the load draws it, and its slope to the droop: A and S.
