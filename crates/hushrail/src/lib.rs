@@ -13,6 +13,7 @@
 //! - [`cell`]: cells, their states (stored ones found by solving), the current of every terminal in every state.
 //! - [`block`]: counts × state weights × currents, as a function of rails and wells.
 //! - [`standby`]: schemes, switches, the rest point of the virtual rails, every real supply.
+//! - [`transition`]: waking and falling asleep, in-rush, bounce, energy of the round trip, break-even, duty.
 //! - [`check`]: predictions against published tables.
 //! - [`batch`]: study files, whole grids in parallel with the same bits for any number of threads, progress and stop.
 //!
@@ -55,3 +56,4 @@ pub mod device;
 pub mod physics;
 pub mod read;
 pub mod standby;
+pub mod transition;

@@ -2,8 +2,20 @@
 
 use std::path::Path;
 
-const ROOMS: [&str; 11] =
-    ["physics", "corner", "read", "device", "circuit", "cell", "block", "standby", "check", "batch", "lib"];
+const ROOMS: [&str; 12] = [
+    "physics",
+    "corner",
+    "read",
+    "device",
+    "circuit",
+    "cell",
+    "block",
+    "standby",
+    "transition",
+    "check",
+    "batch",
+    "lib",
+];
 
 fn files(dir: &Path, out: &mut Vec<std::path::PathBuf>) {
     for e in std::fs::read_dir(dir).expect("source folder").map(|e| e.expect("entry").path()) {

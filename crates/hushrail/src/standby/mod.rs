@@ -11,3 +11,4 @@ pub mod switch;
 pub use rest::{Asleep, PathShare, RestError, SupplyCurrent, rest_rails, settle, settle_with};
 pub use scheme::{Scheme, SwitchSpec, WellTie};
 pub use stress::{StressLimits, SwitchStress};
+pub use switch::Switch;
