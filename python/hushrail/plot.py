@@ -18,6 +18,7 @@ from hushrail.units import engineering
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
+    from matplotlib.axis import Axis
 
     from hushrail.fit import Residuals
     from hushrail.transition import TransitionPoint
@@ -388,7 +389,8 @@ def rail_collapse(point: TransitionPoint, ax: Axes | None = None, *, currents: b
 def wake_up(point: TransitionPoint, ax: Axes | None = None) -> Axes:
     """Waking: voltage left to the block, and the current of the switch on a second axis.
 
-    A ring marks the in-rush peak, ticks at the foot the starts of the segments, the dotted line the time to ready.
+    A ring marks the in-rush peak, ticks at the foot the starts of the segments, a dotted line when it is
+    ready.
 
     Parameters
     ----------
@@ -415,6 +417,7 @@ def wake_up(point: TransitionPoint, ax: Axes | None = None) -> Axes:
         clip_on=False,
     )
     _time_axis(ax)
+    _fine_axis(ax.xaxis, "s")
     ax.set_xlim(0.0, t[-1])
     ax.set_ylim(0.0, 1.1 * point.vdd_v)
     ax.set_ylabel("voltage (V)")
@@ -433,7 +436,7 @@ def wake_up(point: TransitionPoint, ax: Axes | None = None) -> Axes:
         twin.axhline(point.ladder.limit_a, color=_RAIL["switch"], linestyle="--", linewidth=1.0)
     low = min(0.0, *w.supply_a)
     twin.set_ylim(1.1 * low, 1.15 * max(w.peak_a, *w.supply_a))
-    _engineering_axis(twin, "A", vertical=True)
+    _fine_axis(twin.yaxis, "A")
     twin.set_ylabel("current")
     _legend_below(ax, lines)
     return ax
@@ -500,6 +503,13 @@ def _time_axis(ax: Axes, label: str = "time") -> None:
     ax.set_xlabel(label)
     ax.grid(True, which="major", color="0.92", linewidth=0.8)
     ax.set_axisbelow(True)
+
+
+def _fine_axis(axis: Axis, unit: str) -> None:
+    """Label a linear axis with as many digits as its ticks need."""
+    from matplotlib.ticker import EngFormatter
+
+    axis.set_major_formatter(EngFormatter(unit))
 
 
 def _legend_below(ax: Axes, lines: Sequence[Any], columns: int | None = None) -> None:

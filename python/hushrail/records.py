@@ -96,6 +96,8 @@ def _make(kind: Any, plain: Any, name: str, where: str) -> Any:  # noqa: ANN401
             raise wrong("an object")
         return {key: _make(args[1], each, name, f"{where}.{key}") for key, each in plain.items()}
     if origin in (typing.Union, types.UnionType):
+        if plain is None and type(None) in args:
+            return None
         for each in args:
             try:
                 return _make(each, plain, name, where)

@@ -1,11 +1,12 @@
-"""Waking and falling asleep: in-rush, bounce, what a round trip costs, from which sleep on it pays, duty, stress.
+"""Waking and falling asleep: in-rush, bounce, costs of a round trip, break-even, duty, stress.
 
 Nothing is guessed: without capacitances there is no transition, and the numbers of lifetime laws are the
 caller's. Stress is computed from the card's electrical oxide thickness; the limits are the foundry's.
 
 Sources. The rail obeys ``C dV/dt = I_switch - I_block`` with the devices' own currents (Kirchhoff); energy is
 booked by what the supplies deliver and by what the block takes, which agree; the gate costs
-``C (Vdd + overdrive + boost)**2 / efficiency`` (derived). Lifetime laws: E model after McPherson, 1/E after Chen
+``C (Vdd + overdrive + boost)**2 / efficiency`` (derived). Lifetime laws: E model after McPherson, 1/E after
+Chen
 and Hu, power law after Wu et al. 2002 (from memory).
 """
 
@@ -57,12 +58,13 @@ __all__ = [
 ]
 
 
-# ---------------------------------------------------------------------------------------------- what is asked for
+# ------------------------------------------------------------------------------------------ what is asked for
 @dataclass(frozen=True)
 class Rail:
     """Capacitance of the virtual rail, counted across the block; what is given is added up.
 
-    ``total_f`` in all, F; ``per_instance_f`` of one instance, F; ``per_area_f_m2`` with ``area_m2``, F/m² and m².
+    ``total_f`` in all, F; ``per_instance_f`` of one instance, F; ``per_area_f_m2`` with ``area_m2``, F/m²
+    and m².
     """
 
     total_f: float | None = None
@@ -75,7 +77,8 @@ class Rail:
 class Gate:
     """Capacitance of the switch's gate, given in one of three ways.
 
-    ``total_f`` in all, F; ``per_width_f_m`` of a metre of width, F/m; ``overlap_f_m`` of both edges, F/m, on top of
+    ``total_f`` in all, F; ``per_width_f_m`` of a metre of width, F/m; ``overlap_f_m`` of both edges, F/m, on
+    top of
     the card's oxide over the channel.
     """
 
@@ -88,7 +91,8 @@ class Gate:
 class Costs:
     """Costs of a round trip besides the rail; energies in J that are left out count as zero and are said to.
 
-    ``pump_efficiency`` must be given with overdrive, boost or well bias; ``nwell_f`` and ``pwell_f``, F, with bias.
+    ``pump_efficiency`` must be given with overdrive, boost or well bias; ``nwell_f`` and ``pwell_f``, F,
+    with bias.
     """
 
     gate: Gate = Gate()
@@ -125,7 +129,8 @@ class Package:
 class WakeSpec:
     """How a domain is woken.
 
-    The whole switch at zero without ``segments``; gates take ``gate_slew_s`` from off to on; ready within the share
+    The whole switch at zero without ``segments``; gates take ``gate_slew_s`` from off to on; ready within
+    the share
     ``ready_within`` of the supply; from the rest point unless ``from_span_v``, V, is given.
     """
 
@@ -157,7 +162,8 @@ class Idle:
 class DutyProfile:
     """What a domain does over time.
 
-    Idle times (one, or a histogram), mean work between two, s, and power at work, W. It sleeps through every idle
+    Idle times (one, or a histogram), mean work between two, s, and power at work, W. It sleeps through every
+    idle
     time (``always``) or none (``never``), through those longer than ``threshold_s`` (``if_longer``), or from
     ``threshold_s`` on (``after``).
     """
@@ -171,7 +177,7 @@ class DutyProfile:
 
 @dataclass(frozen=True)
 class Battery:
-    """A battery: ampere-hours, share lost by itself in a year; V and efficiency of a converter, or neither."""
+    """A battery: Ah, share lost by itself in a year; V and efficiency of a converter, or neither."""
 
     capacity_ah: float
     self_discharge_per_year: float = 0.0
@@ -197,10 +203,12 @@ class Area:
     weibull_slope: float
 
 
-# ------------------------------------------------------------------------------------------------- what is found
+# ---------------------------------------------------------------------------------------- what is found
+
+
 @dataclass(frozen=True)
 class RailCurve:
-    """Current of the block over its rail: span left, V; what the block takes and the sleeping switch gives, A."""
+    """The block over its rail: span left, V; what it takes and what the sleeping switch gives, A."""
 
     span_v: tuple[float, ...]
     block_a: tuple[float, ...]
@@ -214,7 +222,8 @@ class RailCurve:
 class Collapse:
     """Falling asleep: rows over ``times_s``, s.
 
-    Span, V; currents, A; energy saved by the block's ledger and by the supply's, J. ``time_constant_s`` is when the
+    Span, V; currents, A; energy saved by the block's ledger and by the supply's, J. ``time_constant_s`` is
+    when the
     rail has gone 1 - 1/e of its way to rest; ``ohmic_time_constant_s`` is C Vdd / I awake.
     """
 
@@ -240,8 +249,10 @@ class Collapse:
 class Wake:
     """Waking: rows over ``times_s``, s.
 
-    Span and loss at the real rail, V; currents of switch, block and supply, A; the gates furthest on and off, V.
-    Peaks in A and A/s (none without a slew time), times in s, bounce and overshoot in V, charge in C, energy in J.
+    Span and loss at the real rail, V; currents of switch, block and supply, A; the gates furthest on and
+    off, V.
+    Peaks in A and A/s (none without a slew time), times in s, bounce and overshoot in V, charge in C, energy
+    in J.
     """
 
     times_s: tuple[float, ...]
@@ -254,7 +265,7 @@ class Wake:
     gate_last_v: tuple[float, ...]
     peak_a: float
     peak_s: float
-    peak_rate_a_s: None | float
+    peak_rate_a_s: float | None
     rail_ready_s: float
     ready_s: float
     starts_s: tuple[float, ...]
@@ -268,7 +279,7 @@ class Wake:
 
 @dataclass(frozen=True)
 class Ladder:
-    """Segments that keep a limit: fingers, widths (m), starts (s), span over supply there; limit and peak, A."""
+    """Segments that keep a limit: fingers, widths (m), starts (s), span over supply; limit, peak (A)."""
 
     fingers: tuple[float, ...]
     width_m: tuple[float, ...]
@@ -296,12 +307,12 @@ class RoundTrip:
 
 @dataclass(frozen=True)
 class BreakEven:
-    """Sleep from which a round trip pays, s (none when it never does), and the formula of a collapsed rail, s."""
+    """Sleep from which it pays, s (none when it never does), and the formula of a collapsed rail, s."""
 
-    time_s: None | float
-    span_v: None | float
-    full_collapse_s: None | float
-    ratio: None | float
+    time_s: float | None
+    span_v: float | None
+    full_collapse_s: float | None
+    ratio: float | None
     costs: RoundTrip
     notes: tuple[Note, ...]
 
@@ -315,7 +326,7 @@ class Duty:
     never_asleep_w: float
     share_asleep: float
     sleeps_per_s: float
-    battery_life_s: None | float
+    battery_life_s: float | None
     notes: tuple[Note, ...]
 
 
@@ -337,7 +348,7 @@ class PairStress:
     phase: str
     voltage_v: float
     time_s: float
-    field_v_m: None | float
+    field_v_m: float | None
     limits: tuple[StressCheck, ...]
 
 
@@ -365,9 +376,9 @@ class TransitionPoint:
     curve: RailCurve
     collapse: Collapse
     wake: Wake
-    ladder: None | Ladder
+    ladder: Ladder | None
     break_even: BreakEven
-    duty: None | Duty
+    duty: Duty | None
     stress: SwitchStress
 
 
@@ -526,7 +537,8 @@ def oxide_lifetime(
     Parameters
     ----------
     law : str
-        ``field``: reference_s, reference_field_v_m, gamma_m_v, activation_ev, reference_temp_c. ``inverse_field``:
+        ``field``: reference_s, reference_field_v_m, gamma_m_v, activation_ev, reference_temp_c.
+        ``inverse_field``:
         reference_s, reference_field_v_m, g_v_m. ``power``: reference_s, reference_v, exponent.
     numbers : dict
         The numbers of the law, units in their names.

@@ -177,15 +177,11 @@ impl<'a> Gated<'a> {
         if over > 0.0 && !self.switch.device.has_gidl() {
             notes.push(crate::block::current::gidl_note("the switch"));
         }
-        let j = &self.curve.points().jumps_v;
-        if let Some(at) = j.first() {
+        if !self.curve.points().jumps_v.is_empty() {
             notes.push(Note::new(
                 "curve-jumps",
-                format!(
-                    "the block's current jumps at {} spans, the first at {at:.3} V: stored states are lost there on the way down, and \
-                     the way up is taken along the same curve",
-                    j.len()
-                ),
+                "the block's current jumps on the way of the rail: stored states are lost there, and the way up is taken along \
+                 the curve of the way down",
             ));
         }
         notes
