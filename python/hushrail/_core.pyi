@@ -185,6 +185,10 @@ def sensitivities(
     blocks: bool = True,
     progress: Callable[[int, int], Any] | None = None,
 ) -> str: ...
+def transitions(path: str, spec: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...
+def oxide_lifetime(
+    law: str, voltage_v: float, oxide_m: float, temp_c: float, *, area: str | None = None
+) -> tuple[float, list[tuple[str, str]]]: ...
 def compare(
     path: str,
     table: str,

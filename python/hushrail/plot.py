@@ -18,19 +18,24 @@ from hushrail.units import engineering
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
+    from matplotlib.axis import Axis
 
     from hushrail.awake import Butterfly, Curve, MeritPoint, RowDroop
     from hushrail.fit import Residuals
+    from hushrail.transition import TransitionPoint
 
 __all__ = [
     "COLOURS",
     "butterfly",
+    "energy_saved",
     "overdrive_curve",
+    "rail_collapse",
     "residuals",
     "rest_points",
     "row_droop",
     "standby_power",
     "switch_merit",
+    "wake_up",
 ]
 
 COLOURS = {
@@ -500,6 +505,186 @@ def residuals(residuals: Residuals, ax: Axes | None = None, *, by: str | None = 
     ax.grid(True, which="major", color="0.9", linewidth=0.8)
     ax.set_axisbelow(True)
     return ax
+
+
+def rail_collapse(point: TransitionPoint, ax: Axes | None = None, *, currents: bool = True) -> Axes:
+    """Collapse of a virtual rail, over the logarithm of time; the currents that move it on a second axis.
+
+    The dotted line marks the time constant: 1 - 1/e of the way to rest.
+
+    Parameters
+    ----------
+    point : TransitionPoint
+        One point of :func:`hushrail.transition.transitions`.
+    ax : Axes, optional
+        Where to draw.
+    currents : bool
+        Whether block and switch currents are drawn as well.
+    """
+    ax = _axes(ax)
+    c = point.collapse
+    t = np.asarray(c.times_s)
+    shown = t > 1e-4 * c.time_constant_s
+    rail = ax.plot(t[shown], np.asarray(c.span_v)[shown], color="black", label="left to the block")
+    ax.axvline(c.time_constant_s, color="0.6", linestyle=":", linewidth=1.2, zorder=1)
+    ax.annotate(
+        f" {engineering(c.time_constant_s, 's', 3)}",
+        (c.time_constant_s, 0.03),
+        xycoords=("data", "axes fraction"),
+        color="0.35",
+        fontsize="small",
+    )
+    ax.set_xscale("log")
+    _time_axis(ax)
+    ax.set_ylim(0.0, 1.05 * point.vdd_v)
+    ax.set_ylabel("voltage left to the block (V)")
+    ax.set_title(f"{point.domain}, {point.scheme}: falling asleep at {point.corner}", fontsize="medium")
+    if currents:
+        twin = ax.twinx()
+        rail += twin.plot(t[shown], np.asarray(c.block_a)[shown], color=_RAIL["block"], label="block")
+        rail += twin.plot(t[shown], np.asarray(c.switch_a)[shown], color=_RAIL["switch"], label="switch")
+        twin.set_yscale("log")
+        _engineering_axis(twin, "A", vertical=True)
+        twin.set_ylabel("current")
+    _legend_below(ax, rail)
+    return ax
+
+
+def wake_up(point: TransitionPoint, ax: Axes | None = None) -> Axes:
+    """Waking: voltage left to the block, and the current of the switch on a second axis.
+
+    A ring marks the in-rush peak, ticks at the foot the starts of the segments, a dotted line when it is
+    ready.
+
+    Parameters
+    ----------
+    point : TransitionPoint
+        One point of :func:`hushrail.transition.transitions`.
+    ax : Axes, optional
+        Where to draw.
+    """
+    ax = _axes(ax)
+    w = point.wake
+    t = np.asarray(w.times_s)
+    lines = ax.plot(t, w.span_v, color="black", label="left to the block")
+    if max(w.loss_v) > 0.0:
+        real = point.vdd_v - np.asarray(w.loss_v)
+        lines += ax.plot(t, real, color="0.55", linewidth=1.2, label="real rail")
+    ax.axvline(w.ready_s, color="0.6", linestyle=":", linewidth=1.2, zorder=1)
+    ax.plot(
+        w.starts_s,
+        [0.0] * len(w.starts_s),
+        linestyle="",
+        marker="|",
+        markersize=12,
+        color=_RAIL["switch"],
+        clip_on=False,
+    )
+    _time_axis(ax)
+    _fine_axis(ax.xaxis, "s")
+    ax.set_xlim(0.0, t[-1])
+    ax.set_ylim(0.0, 1.1 * point.vdd_v)
+    ax.set_ylabel("voltage (V)")
+    ax.set_title(
+        f"{point.domain}, {point.scheme}: ready after {engineering(w.ready_s, 's', 3)} at {point.corner}",
+        fontsize="medium",
+    )
+    twin = ax.twinx()
+    lines += twin.plot(t, w.switch_a, color=_RAIL["switch"], label="switch")
+    twin.plot(
+        w.peak_s, w.peak_a, "o", markersize=9, markerfacecolor="none", color=_RAIL["switch"], clip_on=False
+    )
+    if max(w.loss_v) > 0.0:
+        lines += twin.plot(t, w.supply_a, color=_RAIL["supply"], linewidth=1.2, label="through the package")
+    if point.ladder is not None:
+        twin.axhline(point.ladder.limit_a, color=_RAIL["switch"], linestyle="--", linewidth=1.0)
+    low = min(0.0, *w.supply_a)
+    twin.set_ylim(1.1 * low, 1.15 * max(w.peak_a, *w.supply_a))
+    _fine_axis(twin.yaxis, "A")
+    twin.set_ylabel("current")
+    _legend_below(ax, lines)
+    return ax
+
+
+def energy_saved(points: Sequence[TransitionPoint], ax: Axes | None = None) -> Axes:
+    """Energy a sleep saves, costs taken off, over its length; a mark where it begins to pay.
+
+    Thin dashed lines are the formula of a rail that is collapsed from the start.
+
+    Parameters
+    ----------
+    points : sequence of TransitionPoint
+        What to compare, such as one domain and scheme at several corners.
+    ax : Axes, optional
+        Where to draw.
+    """
+    if not points:
+        raise RangeError("no point to draw; want one or more transitions")
+    ax = _axes(ax)
+    marked = [p.break_even.time_s for p in points if p.break_even.time_s is not None]
+    first = min(marked, default=min(p.collapse.time_constant_s for p in points))
+    last = max(marked, default=max(p.collapse.settled_s for p in points))
+    times = np.geomspace(0.05 * first, 20.0 * last, 400)
+    scale = max(p.break_even.costs.fixed_j for p in points)
+    for i, p in enumerate(points):
+        colour = _blend(i, len(points))
+        c, cost = p.collapse, p.break_even.costs.fixed_j
+        at_rest = c.ungated_power_w - c.rest_power_w
+        saved = np.interp(times, c.times_s, c.saved_j)
+        late = times > c.settled_s
+        saved[late] = c.saved_j[-1] + at_rest * (times[late] - c.settled_s)
+        ax.plot(times, (saved - cost), color=colour, label=f"{p.domain}, {p.scheme}, {p.corner}")
+        bound = at_rest * times - cost - p.rail_f * p.vdd_v**2
+        ax.plot(times, bound, color=colour, linestyle="--", linewidth=0.9)
+        if p.break_even.time_s is not None:
+            ax.plot(p.break_even.time_s, 0.0, "o", color=colour, markeredgecolor="white", zorder=4)
+            ax.annotate(
+                engineering(p.break_even.time_s, "s", 3),
+                (p.break_even.time_s, 0.0),
+                xytext=(-4, 7 + 11 * (i % 3)),
+                textcoords="offset points",
+                ha="right",
+                fontsize="small",
+                color=colour,
+            )
+    ax.axhline(0.0, color="0.4", linewidth=0.8)
+    ax.set_xscale("log")
+    ax.set_ylim(-1.6 * scale, 2.5 * scale)
+    _time_axis(ax, "length of the sleep")
+    _engineering_axis(ax, "J", vertical=True)
+    ax.set_ylabel("energy saved, costs taken off")
+    ax.set_title("From which sleep on it pays", fontsize="medium")
+    _legend_below(ax, ax.get_legend_handles_labels()[0], columns=1)
+    return ax
+
+
+_RAIL = {"block": "#2a6fb0", "switch": "#d9762b", "supply": "#8a5fb0"}
+"""One colour for each current of a rail."""
+
+
+def _time_axis(ax: Axes, label: str = "time") -> None:
+    _engineering_axis(ax, "s")
+    ax.set_xlabel(label)
+    ax.grid(True, which="major", color="0.92", linewidth=0.8)
+    ax.set_axisbelow(True)
+
+
+def _fine_axis(axis: Axis, unit: str) -> None:
+    """Label a linear axis with as many digits as its ticks need."""
+    from matplotlib.ticker import EngFormatter
+
+    axis.set_major_formatter(EngFormatter(unit))
+
+
+def _legend_below(ax: Axes, lines: Sequence[Any], columns: int | None = None) -> None:
+    ax.legend(
+        handles=list(lines),
+        loc="upper center",
+        bbox_to_anchor=(0.5, -0.13),
+        ncols=columns or len(lines),
+        fontsize="small",
+        frameon=False,
+    )
 
 
 def _label(by: str, value: Any) -> str:  # noqa: ANN401

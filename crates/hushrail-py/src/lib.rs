@@ -23,7 +23,7 @@ mod _core {
     #[pymodule_export]
     use crate::own::{CellTable, CompactModel, TableModel};
     #[pymodule_export]
-    use crate::study::{cell_table, compare, count, estimate, sensitivities};
+    use crate::study::{cell_table, compare, count, estimate, oxide_lifetime, sensitivities, transitions};
 
     #[pymodule_init]
     fn init(m: &Bound<'_, PyModule>) -> PyResult<()> {

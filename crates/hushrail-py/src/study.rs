@@ -6,11 +6,14 @@ use hushrail::batch::characterise::{TableRequest, table_of_study};
 use hushrail::batch::compare::{CompareRequest, compare_study};
 use hushrail::batch::sensitivity::{SensitivityRequest, sensitivities_of_study};
 use hushrail::batch::study::read_study;
+use hushrail::batch::transition::{TransitionRequest, transitions_of_study};
 use hushrail::batch::{estimate as core_estimate, load_study};
 use hushrail::check::suspects::SuspectRules;
 use hushrail::circuit::newton::SolveOptions;
+use hushrail::physics::Kelvin;
 use hushrail::read::verilog::read_verilog;
 use hushrail::read::{ReadError, Source};
+use hushrail::standby::stress::{Area, LifetimeLaw, lifetime};
 use pyo3::prelude::*;
 
 use crate::error;
@@ -65,6 +68,35 @@ pub fn sensitivities(
     let result =
         run(py, progress.as_ref(), |p| sensitivities_of_study(&request, &SolveOptions::default(), p))?;
     text(&result.map_err(|e| error::read(&e))?)
+}
+
+/// Transitions of the domains of a study; JSON in, JSON out.
+#[pyfunction]
+#[pyo3(signature = (path, spec, *, progress=None))]
+pub fn transitions(py: Python<'_>, path: &str, spec: &str, progress: Option<Py<PyAny>>) -> PyResult<String> {
+    let spec = serde_json::from_str(spec).map_err(|e| error::range(format!("transitions: {e}")))?;
+    let request = TransitionRequest { study: path.into(), spec };
+    let result = run(py, progress.as_ref(), |p| transitions_of_study(&request, &SolveOptions::default(), p))?;
+    text(&result.map_err(|e| error::read(&e))?)
+}
+
+/// Lifetime of an oxide under a law, s, and the caution that goes with it as (code, text).
+#[pyfunction]
+#[pyo3(signature = (law, voltage_v, oxide_m, temp_c, *, area=None))]
+pub fn oxide_lifetime(
+    law: &str,
+    voltage_v: f64,
+    oxide_m: f64,
+    temp_c: f64,
+    area: Option<&str>,
+) -> PyResult<(f64, Vec<(String, String)>)> {
+    let wrong = |e: serde_json::Error| error::range(format!("lifetime: {e}"));
+    let law: LifetimeLaw = serde_json::from_str(law).map_err(wrong)?;
+    let area: Option<Area> = area.map(serde_json::from_str).transpose().map_err(wrong)?;
+    let temp = Kelvin::from_celsius(temp_c).map_err(error::temperature)?;
+    let found =
+        lifetime(&law, voltage_v, oxide_m, temp, area.as_ref()).map_err(|e| error::range(e.to_string()))?;
+    Ok((found.lifetime_s, found.notes.into_iter().map(|n| (n.code, n.text)).collect()))
 }
 
 /// Predictions against a published table; JSON.

@@ -15,6 +15,7 @@
 //! - [`standby`]: schemes, switches, the rest point of the virtual rails, every real supply.
 //! - [`awake`]: what the switch costs while the domain works (on-resistance, droop, width, noise margins, delay), and what
 //!   keeps stored values alive on a lowered rail.
+//! - [`transition`]: waking and falling asleep, in-rush, bounce, energy of the round trip, break-even, duty.
 //! - [`check`]: predictions against published tables.
 //! - [`batch`]: study files, whole grids in parallel with the same bits for any number of threads, progress and stop.
 //!
@@ -58,3 +59,4 @@ pub mod device;
 pub mod physics;
 pub mod read;
 pub mod standby;
+pub mod transition;

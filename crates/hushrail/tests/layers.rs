@@ -2,8 +2,19 @@
 
 use std::path::Path;
 
-const ROOMS: [&str; 12] = [
-    "physics", "corner", "read", "device", "circuit", "cell", "block", "standby", "awake", "check", "batch",
+const ROOMS: [&str; 13] = [
+    "physics",
+    "corner",
+    "read",
+    "device",
+    "circuit",
+    "cell",
+    "block",
+    "standby",
+    "awake",
+    "transition",
+    "check",
+    "batch",
     "lib",
 ];
 

@@ -8,9 +8,11 @@ pub mod load;
 pub mod run;
 pub mod sensitivity;
 pub mod study;
+pub mod transition;
 pub mod watch;
 
 pub use characterise::{LeakageRow, characterise};
 pub use load::{Library, Loaded, LoadedDomain, load_study};
 pub use run::{Estimate, PointResult, estimate};
+pub use transition::{TransitionSpec, Transitions, transitions};
 pub use watch::Progress;

@@ -319,7 +319,7 @@ impl BlockCurve {
         let at = self.place(span_v);
         let mut sum = Sloped::default();
         for c in &self.columns[5 * book as usize..][..5] {
-            let x = self.column(c, &at);
+            let x = Self::column(c, &at);
             sum.value += x.value;
             sum.per_v += x.per_v;
         }
@@ -332,7 +332,7 @@ impl BlockCurve {
         let p = &self.points;
         let mut books = [[0.0; 5]; BOOKS];
         for (to, c) in books.iter_mut().flatten().zip(&self.columns) {
-            *to = self.column(c, &at).value;
+            *to = Self::column(c, &at).value;
         }
         let [supply, ground, nwell, pwell, power_w] = books;
         let (a, b) = (&p.knots[at.knot], &p.knots[at.knot + 1]);
@@ -384,7 +384,7 @@ impl BlockCurve {
         Place { knot, x, over: span_v - x, wide, t, straight: (x - a) / (b - a), per_v: 1.0 / (b - a) }
     }
 
-    fn column(&self, c: &Column, at: &Place) -> Sloped {
+    fn column(c: &Column, at: &Place) -> Sloped {
         if c.blank {
             return Sloped::default();
         }

@@ -12,3 +12,4 @@ pub use clamp::{Clamp, ClampSpec};
 pub use rest::{Asleep, PathShare, RestError, SupplyCurrent, rest_rails, settle, settle_with};
 pub use scheme::{Scheme, SwitchSpec, WellTie};
 pub use stress::{StressLimits, SwitchStress};
+pub use switch::Switch;
