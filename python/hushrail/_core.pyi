@@ -15,6 +15,9 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "oxide_lifetime",
+    "sensitivities",
+    "transitions",
 ]
 
 __version__: Final[str]
