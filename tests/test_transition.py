@@ -153,14 +153,15 @@ def test_nothing_is_guessed(study: Path) -> None:
 
 def test_lifetimes_take_every_number_from_the_caller() -> None:
     power = {"reference_s": 1e8, "reference_v": 1.0, "exponent": 45.0}
-    at = {"voltage_v": 1.1, "oxide_m": 2e-9, "temp_c": 125.0}
-    life = oxide_lifetime("power", power, **at)
+    life = oxide_lifetime("power", power, voltage_v=1.1, oxide_m=2e-9, temp_c=125.0)
     assert life.lifetime_s == pytest.approx(1e8 * 1.1**-45)
     assert life.notes[0].code == "oxide-caution"
-    half = oxide_lifetime("power", power, **at, area=Area(4e-12, 1e-12, 2.0))
+    area = Area(4e-12, 1e-12, 2.0)
+    half = oxide_lifetime("power", power, voltage_v=1.1, oxide_m=2e-9, temp_c=125.0, area=area)
     assert half.lifetime_s == pytest.approx(life.lifetime_s / 2)
+    del power["exponent"]
     with pytest.raises(hushrail.RangeError, match="missing field `exponent`"):
-        oxide_lifetime("power", {"reference_s": 1e8, "reference_v": 1.0}, **at)
+        oxide_lifetime("power", power, voltage_v=1.1, oxide_m=2e-9, temp_c=125.0)
 
 
 @pytest.fixture

@@ -21,7 +21,9 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "oxide_lifetime",
     "sensitivities",
+    "transitions",
 ]
 
 __version__: Final[str]

@@ -5,9 +5,11 @@ mod common;
 
 use std::hint::black_box;
 use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
 
 use common::{CELLS, process, uniform};
 use criterion::{Criterion, Throughput, criterion_group, criterion_main};
+use hushrail::block::{Block, BlockCell, BoundBlock, StateWeights};
 use hushrail::cell::{BoundCell, CellReader, DeviceShelf, Levels, RailNames};
 use hushrail::circuit::newton::{SolveOptions, Workspace};
 use hushrail::device::bulk::Width;
@@ -16,6 +18,9 @@ use hushrail::device::process::Request;
 use hushrail::device::{Bias, Branches, Device, Geometry};
 use hushrail::physics::Kelvin;
 use hushrail::read::{DeckOptions, Place, Source, read_deck};
+use hushrail::standby::scheme::SwitchSpec;
+use hushrail::standby::switch::Side;
+use hushrail::standby::{Scheme, Switch, rest_rails, settle_with};
 
 /// Points of one array: within the first cache.
 const POINTS: u64 = 512;
@@ -102,5 +107,52 @@ fn cell(c: &mut Criterion) {
     }
 }
 
-criterion_group!(benches, device, lanes, cell);
+/// The rest point of a block of three kinds of cells from its curve: the root, and with all books. The bar is 20 µs.
+fn rest_on_curve(c: &mut Criterion) {
+    let p = process();
+    let temp = Kelvin::from_celsius(25.0).expect("in range");
+    let header = SwitchSpec {
+        model: "px".into(),
+        width_m: 2e-5,
+        length_m: 6e-8,
+        finger_width_m: None,
+        overdrive_v: 0.1,
+        well_bias_v: 0.0,
+        diffusion_m: Some(1e-7),
+        edge_m: None,
+    };
+    let scheme = Scheme { header: Some(header.clone()), ..Scheme::ungated("header") };
+    let deck = read_deck(&[Source::from_text("cells.sp", CELLS)], &DeckOptions::default()).expect("cells");
+    let reader = CellReader { deck: &deck, rails: &RailNames::default(), is_device: &|name| p.defines(name) };
+    let cells = ["inv", "nand2", "latch"].map(|name| BlockCell {
+        master: name.into(),
+        cell: Arc::new(reader.cell(name, &mut Vec::new()).expect("cell")),
+        count: 100,
+        weights: StateWeights::Uniform,
+    });
+    let block = Block { cells: cells.to_vec(), uncovered: Vec::new() };
+    let mut shelf = DeviceShelf::default();
+    let bound = BoundBlock::new(&block, &p, temp, 1.0, &mut shelf, &SolveOptions::default()).expect("block");
+    let stop = AtomicBool::new(false);
+    let curve = scheme.curve(&bound, 1.0, 1e-3, &stop).expect("curve");
+    let switch =
+        Switch::new(&header, Side::Header, &p, temp, 1.0, &mut shelf, &Arc::from("bench")).expect("switch");
+    c.bench_function("rest point on a curve", |b| {
+        b.iter(|| {
+            rest_rails(&scheme, black_box(&curve), 1.0, Some(switch.clone()), None, &stop).expect("rest")
+        });
+    });
+    c.bench_function("rest point on a curve, all books", |b| {
+        b.iter(|| {
+            settle_with(&scheme, black_box(&curve), 1.0, Some(switch.clone()), None, &stop).expect("rest")
+        });
+    });
+    c.bench_function("rest point by the block itself", |b| {
+        b.iter(|| {
+            rest_rails(&scheme, black_box(&bound), 1.0, Some(switch.clone()), None, &stop).expect("rest")
+        });
+    });
+}
+
+criterion_group!(benches, device, lanes, cell, rest_on_curve);
 criterion_main!(benches);

@@ -1,8 +1,6 @@
 //! A block of open SKY130 cells put to sleep and woken, when the open data set stands beside the project. Nothing here is
 //! compared with silicon: what is held is what must be so whatever the numbers are.
 
-#![expect(clippy::print_stdout, reason = "skips are said aloud")]
-
 use std::ops::ControlFlow;
 use std::path::PathBuf;
 

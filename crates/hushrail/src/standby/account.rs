@@ -69,6 +69,7 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
         if ox > oxide.0 {
             oxide = (ox, ox / sw.device.oxide_m());
         }
+        super::stress::caution().add_once(&mut notes);
         if over > 0.0 && !sw.device.has_gidl() {
             notes.push(gidl_note(&format!("the {name} switch")));
         }
@@ -86,7 +87,6 @@ pub(super) fn account(d: &Domain<'_>, c: BlockCurrents, supply: f64, ground: f64
                      there, GIDL above all, extrapolate the card's equations; ask the foundry before relying on an optimum"
                 ),
             ));
-            notes.push(super::stress::caution());
         }
     }
     for (clamp, rail, name, v, sign) in [
