@@ -138,6 +138,10 @@ class CellShare:
     current_a: float
 
 
+NOTHING = ByMechanism(0.0, 0.0, 0.0, 0.0, 0.0)
+"""No current by any mechanism."""
+
+
 @dataclass(frozen=True)
 class Outside:
     """A bias that a model's card or table does not cover; voltages of an n-channel device, V.
@@ -158,7 +162,9 @@ class Outside:
 class Block:
     """Currents of the block at the rest point, A, by mechanism, positive into the block.
 
-    ``power_w`` is what each mechanism dissipates inside, W.
+    ``power_w`` is what each mechanism dissipates inside, W. ``real_supply`` and ``real_ground`` flow past any
+    switch: cells that stay powered, rows with a real rail. ``inputs_high`` and ``inputs_low`` are the parts of
+    ``supply`` and ``ground`` that enter through inputs.
     """
 
     supply: ByMechanism
@@ -173,6 +179,10 @@ class Block:
     steps: int
     fallbacks: int
     outside: Outside | None = None
+    real_supply: ByMechanism = NOTHING
+    real_ground: ByMechanism = NOTHING
+    inputs_high: ByMechanism = NOTHING
+    inputs_low: ByMechanism = NOTHING
 
 
 @dataclass(frozen=True)
@@ -181,7 +191,8 @@ class Rest:
 
     ``mechanisms`` is the power that each mechanism dissipates over the supply voltage, A: together with the
     overhead it adds up to ``power_w`` over the supply. ``switch_mechanisms`` splits the current of the switch
-    at its virtual rail (the header's where there are two), which holds the domain.
+    at its virtual rail (the header's where there are two), which holds the domain. ``overhead_w`` is what
+    makes the scheme work: the stated overhead, and what the pump loses, W.
     """
 
     virtual_supply_v: float
@@ -198,6 +209,7 @@ class Rest:
     evaluations: int
     residual: float
     notes: tuple[Note, ...]
+    overhead_w: float = 0.0
 
     @property
     def shares(self) -> dict[str, float]:
