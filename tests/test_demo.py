@@ -50,3 +50,20 @@ def test_a_folder_that_is_not_there_is_said_before_any_work(tmp_path: Path) -> N
     )
     assert done.returncode == 2
     assert "no such folder" in done.stderr
+
+
+def test_every_part_of_a_scheme_has_an_example() -> None:
+    """The catalogue names every key that a scheme or a switch may have, and its books balance."""
+    text = demo.CATALOGUE.read_text(encoding="utf-8")
+    keys = "header footer stacked overdrive_v well_bias_v body_to_gate nwell_bias_v pwell_bias_v header_clamp"
+    keys += " footer_clamp held_supply_v parked zigzag changes models lengthen_m stack powered added"
+    keys += " overhead_a pump_efficiency share"
+    for key in keys.split():
+        assert f"{key} =" in text, key
+    result = hushrail.estimate(demo.CATALOGUE)
+    assert not result.failures
+    for p in result.points:
+        total = sum(p.asleep.mechanisms) * 1.1 + p.asleep.overhead_w
+        assert abs(total - p.power_w) <= 2e-6 * p.power_w, p.scheme
+    shown = demo.catalogue(result, 100)
+    assert all(scheme in shown for scheme in result.schemes)

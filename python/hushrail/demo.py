@@ -20,13 +20,16 @@ from hushrail import command, report, study
 from hushrail.device import Process
 from hushrail.errors import HushrailError
 from hushrail.results import Estimate, Point
+from hushrail.table import Column, render
 from hushrail.units import engineering, factor
 
-__all__ = ["CARDS", "STUDY", "main", "picture", "story"]
+__all__ = ["CARDS", "CATALOGUE", "STUDY", "catalogue", "main", "picture", "story"]
 
 DATA = Path(__file__).parent / "demo_data"
 STUDY = DATA / "study.toml"
 """The study that is run."""
+CATALOGUE = DATA / "catalogue.toml"
+"""Every part of a scheme, each in a scheme of its own."""
 CARDS = DATA / "cards" / "kelp40.lib"
 """Cards of the invented process, with the sections tt, ss, ff, sf and fs."""
 PICTURE = "hushrail-demo.png"
@@ -79,11 +82,25 @@ def _run(folder: Path) -> int:
                 line, width, initial_indent="  - ", subsequent_indent="    ", break_on_hyphens=False
             )
         )
+    print("\n" + catalogue(study.estimate(CATALOGUE), width))
     path = folder / PICTURE
     figure = picture(result, process)
     figure.savefig(path, dpi=150)
     print(f"\npicture: {path}")
     return 2 if result.failures else 0
+
+
+def catalogue(result: Estimate, width: int) -> str:
+    """Write one line for each part that a scheme may be made of, with its power at each corner."""
+    columns = [Column("every part of a scheme, alone", "left")]
+    columns += [Column(c.name) for c in result.corners] + [Column("to")]
+    lines = []
+    for scheme in result.schemes:
+        points = [p for p in result.points if p.scheme == scheme]
+        worst = max(points, key=lambda p: p.power_w)
+        powers = [engineering(p.power_w, "W") for p in points]
+        lines.append([scheme, *powers, factor(worst.power_w, worst.ungated_power_w)])
+    return f"{result.title}\n\n{render(columns, lines, width)}"
 
 
 def story(result: Estimate, process: Process) -> list[str]:
