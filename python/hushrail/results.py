@@ -163,8 +163,8 @@ class Block:
     """Currents of the block at the rest point, A, by mechanism, positive into the block.
 
     ``power_w`` is what each mechanism dissipates inside, W. ``real_supply`` and ``real_ground`` flow past
-    any switch: cells that stay powered, rows with a real rail. ``inputs_high`` and ``inputs_low`` are the parts of
-    ``supply`` and ``ground`` that enter through inputs.
+    any switch: cells that stay powered, rows with a real rail. ``inputs_high`` and ``inputs_low`` are the
+    parts of ``supply`` and ``ground`` that enter through inputs.
     """
 
     supply: ByMechanism
