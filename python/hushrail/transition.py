@@ -460,7 +460,6 @@ def transitions(
     costs: Costs,
     wake: WakeSpec | None = None,
     ladder: LadderSpec | None = None,
-    boost_v: float = 0.0,
     sleep_slew_s: float = 0.0,
     duty: DutyProfile | None = None,
     battery: Battery | None = None,
@@ -483,8 +482,6 @@ def transitions(
         The wake-up; the whole switch at once when left out.
     ladder : LadderSpec, optional
         A ladder to design in the place of the wake-up's segments.
-    boost_v : float
-        How far past its on rail the gate is driven awake, V.
     sleep_slew_s : float
         Time the gate takes from on to off, s.
     duty, battery : DutyProfile, Battery, optional
@@ -510,7 +507,6 @@ def transitions(
         "costs": asdict(costs),
         "wake": _wake(wake or WakeSpec()),
         "ladder": None if ladder is None else asdict(ladder),
-        "boost_v": boost_v,
         "sleep": {"gate_slew_s": sleep_slew_s},
         "duty": None if duty is None else _duty(duty),
         "battery": None if battery is None else asdict(battery),

@@ -111,16 +111,8 @@ fn cell(c: &mut Criterion) {
 fn rest_on_curve(c: &mut Criterion) {
     let p = process();
     let temp = Kelvin::from_celsius(25.0).expect("in range");
-    let header = SwitchSpec {
-        model: "px".into(),
-        width_m: 2e-5,
-        length_m: 6e-8,
-        finger_width_m: None,
-        overdrive_v: 0.1,
-        well_bias_v: 0.0,
-        diffusion_m: Some(1e-7),
-        edge_m: None,
-    };
+    let header =
+        SwitchSpec { overdrive_v: 0.1, diffusion_m: Some(1e-7), ..SwitchSpec::new("px", 2e-5, 6e-8) };
     let scheme = Scheme { header: Some(header.clone()), ..Scheme::ungated("header") };
     let deck = read_deck(&[Source::from_text("cells.sp", CELLS)], &DeckOptions::default()).expect("cells");
     let reader = CellReader { deck: &deck, rails: &RailNames::default(), is_device: &|name| p.defines(name) };
@@ -129,6 +121,7 @@ fn rest_on_curve(c: &mut Criterion) {
         cell: Arc::new(reader.cell(name, &mut Vec::new()).expect("cell")),
         count: 100,
         weights: StateWeights::Uniform,
+        powered: false,
     });
     let block = Block { cells: cells.to_vec(), uncovered: Vec::new() };
     let mut shelf = DeviceShelf::default();

@@ -10,7 +10,7 @@ use std::sync::atomic::AtomicBool;
 
 use common::{CELLS, process};
 use hushrail::awake::AwakeError;
-use hushrail::awake::clamp::{Clamp, ClampSpec, leaks_at, settle_clamped};
+use hushrail::awake::clamp::{leaks_at, make_clamp, settle_clamped};
 use hushrail::awake::keep::{Collapse, CollapseSide, Mismatch, Need, Population, hold, loops, retention};
 use hushrail::awake::margin::{AtRails, margins};
 use hushrail::block::{BoundBlock, build_block};
@@ -21,6 +21,7 @@ use hushrail::physics::Kelvin;
 use hushrail::read::counts::read_counts_csv;
 use hushrail::read::spice::read_deck;
 use hushrail::read::{DeckOptions, Source};
+use hushrail::standby::ClampSpec;
 use hushrail::standby::switch::Side;
 use hushrail::standby::{SwitchSpec, WellTie};
 use indexmap::IndexMap;
@@ -117,22 +118,12 @@ fn clamp_settles_between_switch_and_block_or_says_that_it_never_conducts() {
     let t = celsius(25.0);
     let b = BoundBlock::new(&block, &p, t, 1.0, &mut DeviceShelf::default(), &SolveOptions::default())
         .expect("bound");
-    let spec = |width_m| SwitchSpec {
-        model: "px".into(),
-        width_m,
-        length_m: 60e-9,
-        finger_width_m: None,
-        overdrive_v: 0.0,
-        boost_v: 0.0,
-        well_bias_v: 0.0,
-        diffusion_m: None,
-        edge_m: None,
-    };
+    let spec = |width_m| SwitchSpec::new("px", width_m, 60e-9);
     let stop = AtomicBool::new(false);
     let origin = Arc::from("test");
     let clamp = |w, gate_v| {
         let s = ClampSpec { device: spec(w), gate_v };
-        Clamp::new(&s, Side::Header, &p, t, 1.0, &mut DeviceShelf::default(), &origin)
+        make_clamp(&s, Side::Header, &p, t, 1.0, &mut DeviceShelf::default(), &origin)
     };
     let real = Collapse { nwell: WellTie::Real, ..HEADER };
     let at = |w| settle_clamped(&clamp(w, None).expect("clamp"), None, &b, &real, &stop).expect("settles");
@@ -159,7 +150,7 @@ fn clamp_settles_between_switch_and_block_or_says_that_it_never_conducts() {
     let e = settle_clamped(&shut, Some(&asleep), &b, &real, &stop).expect_err("idle").to_string();
     assert!(e.contains("the clamp never conducts") && e.contains("widen it"), "{e}");
     let boosted = ClampSpec { device: SwitchSpec { boost_v: 0.1, ..spec(1e-6) }, gate_v: None };
-    assert!(Clamp::new(&boosted, Side::Header, &p, t, 1.0, &mut DeviceShelf::default(), &origin).is_err());
+    assert!(make_clamp(&boosted, Side::Header, &p, t, 1.0, &mut DeviceShelf::default(), &origin).is_err());
     assert!(clamp(1e-6, Some(9.0)).is_err());
 }
 

@@ -5,7 +5,7 @@ mod common;
 use std::convert::Infallible;
 use std::sync::Arc;
 
-use common::{AllRegion, Symmetric, own_inverter, own_pair, room, weak};
+use common::{AllRegion, Symmetric, channel_device, own_inverter, own_pair, room, weak};
 use hushrail::awake::AwakeError;
 use hushrail::awake::curve::CurvePoint;
 use hushrail::awake::delay::{Swing, delay_penalty};
@@ -16,7 +16,7 @@ use hushrail::awake::margin::{AtRails, margins};
 use hushrail::awake::square::butterfly;
 use hushrail::cell::{BoundCell, Levels};
 use hushrail::circuit::newton::SolveOptions;
-use hushrail::device::dual::{Dual, Real};
+use hushrail::device::dual::Real;
 use hushrail::device::{Bias, Branches, Device, Polarity};
 use hushrail::physics::Kelvin;
 use hushrail::standby::WellTie;
@@ -226,29 +226,7 @@ impl Alpha {
     }
 }
 
-impl Device for Alpha {
-    fn polarity(&self) -> Polarity {
-        self.polarity
-    }
-    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
-        self.law(b)
-    }
-    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
-        self.law(b)
-    }
-    fn has_gate_current(&self) -> bool {
-        false
-    }
-    fn has_gidl(&self) -> bool {
-        false
-    }
-    fn oxide_m(&self) -> f64 {
-        2e-9
-    }
-    fn thermal_voltage(&self) -> f64 {
-        25.85e-3
-    }
-}
+channel_device!(Alpha, |d| d.polarity, |_| 25.85e-3);
 
 /// B9.5 to B9.7. The leak of the off device is 1e-6 of 0.7^α of the on one, which is the tolerance in both conventions.
 #[test]

@@ -88,17 +88,7 @@ fn irregular_grids_are_the_dense_solution() {
 }
 
 fn switch(width_m: f64) -> Switch {
-    let spec = SwitchSpec {
-        model: "px".into(),
-        width_m,
-        length_m: 60e-9,
-        finger_width_m: Some(1e-6),
-        overdrive_v: 0.0,
-        boost_v: 0.0,
-        well_bias_v: 0.0,
-        diffusion_m: None,
-        edge_m: None,
-    };
+    let spec = SwitchSpec { finger_width_m: Some(1e-6), ..SwitchSpec::new("px", width_m, 60e-9) };
     let t = Kelvin::from_celsius(25.0).expect("in range");
     let origin = Arc::from("test");
     Switch::new(&spec, Side::Header, &process(), t, 1.0, &mut DeviceShelf::default(), &origin)

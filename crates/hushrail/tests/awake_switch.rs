@@ -4,14 +4,14 @@ mod common;
 
 use std::sync::Arc;
 
-use common::process;
+use common::{channel_device, process};
 use hushrail::awake::droop::{neighbour_step, resistor, settle_droop, settle_switches};
 use hushrail::awake::resistance::{merit_figure, on_point};
 use hushrail::awake::size::{LayoutDensity, SizeCorner, smallest_switch};
 use hushrail::awake::{AwakeError, Load};
 use hushrail::cell::DeviceShelf;
-use hushrail::device::dual::{Dual, Real};
-use hushrail::device::{Bias, Branches, Device, Polarity};
+use hushrail::device::dual::Real;
+use hushrail::device::{Bias, Branches, Polarity};
 use hushrail::physics::Kelvin;
 use hushrail::standby::SwitchSpec;
 use hushrail::standby::switch::{Side, Switch};
@@ -37,29 +37,7 @@ impl SquareLaw {
     }
 }
 
-impl Device for SquareLaw {
-    fn polarity(&self) -> Polarity {
-        Polarity::N
-    }
-    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
-        self.law(b)
-    }
-    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
-        self.law(b)
-    }
-    fn has_gate_current(&self) -> bool {
-        false
-    }
-    fn has_gidl(&self) -> bool {
-        false
-    }
-    fn oxide_m(&self) -> f64 {
-        2e-9
-    }
-    fn thermal_voltage(&self) -> f64 {
-        25.85e-3
-    }
-}
+channel_device!(SquareLaw, |_| Polarity::N, |_| 25.85e-3);
 
 /// A footer at 1 V with 0.55 V overdrive awake.
 fn footer(k: f64) -> Switch {
@@ -153,19 +131,7 @@ fn neighbour_on_a_shared_switch_is_felt_through_its_resistance() {
 }
 
 fn spec(model: &str, width_m: f64) -> SwitchSpec {
-    SwitchSpec {
-        model: model.into(),
-        width_m,
-        length_m: 60e-9,
-        finger_width_m: Some(2e-6),
-        overdrive_v: 0.0,
-        boost_v: 0.0,
-        well_bias_v: 0.0,
-        diffusion_m: None,
-        edge_m: None,
-        body_to_gate: false,
-        stacked: 1,
-    }
+    SwitchSpec { finger_width_m: Some(2e-6), ..SwitchSpec::new(model, width_m, 60e-9) }
 }
 
 fn celsius(c: f64) -> Kelvin {

@@ -6,10 +6,10 @@ mod common;
 use std::sync::Arc;
 use std::sync::atomic::AtomicBool;
 
-use common::{AllRegion, Ideal, r1};
+use common::{AllRegion, Ideal, channel_device, r1};
 use hushrail::block::{BlockCurrents, BlockCurve, BlockError, Collapsing, CurveError, Draw};
 use hushrail::cell::Levels;
-use hushrail::device::dual::{Dual, Real};
+use hushrail::device::dual::Real;
 use hushrail::device::{Bias, Branches, Device, Polarity};
 use hushrail::standby::scheme::SwitchSpec;
 use hushrail::standby::stress::{Area, LifetimeLaw, Pair, lifetime, switch_stress};
@@ -65,41 +65,11 @@ impl Plain {
     }
 }
 
-impl Device for Plain {
-    fn polarity(&self) -> Polarity {
-        Polarity::N
-    }
-    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
-        self.law(b)
-    }
-    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
-        self.law(b)
-    }
-    fn has_gate_current(&self) -> bool {
-        false
-    }
-    fn has_gidl(&self) -> bool {
-        false
-    }
-    fn oxide_m(&self) -> f64 {
-        2e-9
-    }
-    fn thermal_voltage(&self) -> f64 {
-        25.852e-3
-    }
-}
+channel_device!(Plain, |_| Polarity::N, |_| 25.852e-3);
 
 fn scheme(width_m: f64, overdrive_v: f64) -> Scheme {
-    let footer = SwitchSpec {
-        model: "nx".into(),
-        width_m,
-        length_m: 6e-8,
-        finger_width_m: Some(1e-6),
-        overdrive_v,
-        well_bias_v: 0.0,
-        diffusion_m: None,
-        edge_m: None,
-    };
+    let footer =
+        SwitchSpec { finger_width_m: Some(1e-6), overdrive_v, ..SwitchSpec::new("nx", width_m, 6e-8) };
     Scheme { footer: Some(footer), ..Scheme::ungated("foot") }
 }
 
@@ -111,7 +81,10 @@ fn switch(device: impl Device + 'static, scheme: &Scheme) -> Switch {
         side: Side::Footer,
         rail_v: 0.0,
         gate_v: -spec.overdrive_v,
+        awake_gate_v: 1.0,
+        vdd_v: 1.0,
         body_v: 0.0,
+        awake_body_v: 0.0,
     }
 }
 
@@ -131,7 +104,7 @@ fn charging_follows_the_closed_forms() {
     let s = scheme(1e-3, 0.0);
     let none = curve(&s, |_| 0.0);
     let ohm = switch(Plain { on: On::Ohmic(1e-3), leak_a: 0.0 }, &s);
-    let g = Gated::new(&s, &none, &ohm, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &none, &ohm, C).expect("domain");
     for (within, want) in [(0.1, 460.517e-12), (0.01, 921.034e-12)] {
         let spec = WakeSpec { ready_within: within, from_span_v: Some(0.0), ..WakeSpec::default() };
         let w = wake_up(&g, &spec).expect("awake");
@@ -144,7 +117,7 @@ fn charging_follows_the_closed_forms() {
         }
     }
     let source = switch(Plain { on: On::Constant(50e-6), leak_a: 0.0 }, &s);
-    let g = Gated::new(&s, &none, &source, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &none, &source, C).expect("domain");
     let spec = WakeSpec { ready_within: 0.1, from_span_v: Some(0.0), ..WakeSpec::default() };
     let w = wake_up(&g, &spec).expect("awake");
     close(w.ready_s, 0.9 * 4.0e-9, 1e-7, "time at constant current");
@@ -158,7 +131,7 @@ fn collapse_of_a_law_with_dibl() {
     let s = scheme(1e-3, 0.0);
     let c = curve(&s, |x| 1e-3 * (-a * (1.0 - x)).exp());
     let sw = switch(Plain { on: On::Ohmic(1.0), leak_a: 0.0 }, &s);
-    let g = Gated::new(&s, &c, &sw, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &sw, C).expect("domain");
     let fall =
         fall_asleep(&g, &SleepSpec { from_span_v: Some(1.0), ..SleepSpec::default() }, 1e-3).expect("asleep");
     for (t, want) in [(10e-9, 46.835e-3), (100e-9, 0.314054), (1e-6, 0.975626)] {
@@ -188,7 +161,7 @@ fn collapse_of_an_ohmic_block() {
     };
     let from = SleepSpec { from_span_v: Some(1.0), ..SleepSpec::default() };
     let tight = switch(Plain { on: On::Ohmic(1.0), leak_a: 0.0 }, &s);
-    let g = Gated::new(&s, &c, &tight, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &tight, C).expect("domain");
     let fall = fall_asleep(&g, &from, 1e-3).expect("asleep");
     let b = break_even(&fall, &costs).expect("solved");
     close(b.time_s.expect("pays"), 46.4520e-9, 1e-5, "break-even");
@@ -200,7 +173,7 @@ fn collapse_of_an_ohmic_block() {
     assert!(report.ledger_mismatch < 1e-6, "{}", report.ledger_mismatch);
 
     let leaky = switch(Plain { on: On::Ohmic(1.0), leak_a: 10e-9 }, &s);
-    let g = Gated::new(&s, &c, &leaky, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &leaky, C).expect("domain");
     let fall = fall_asleep(&g, &from, 1e-3).expect("asleep");
     close(fall.rest_span_v, 0.01, 1e-7, "rest point");
     let b = break_even(&fall, &costs).expect("solved");
@@ -221,7 +194,8 @@ fn the_gate_is_paid_over_its_full_swing() {
     let s = Scheme { pwell_bias_v: 0.5, ..scheme(1e-3, 0.2) };
     let c = curve(&s, |x| 1e-3 * x);
     let sw = switch(Plain { on: On::Ohmic(1.0), leak_a: 0.0 }, &s);
-    let g = Gated::new(&s, &c, &sw, C, 0.1).expect("domain");
+    let sw = Switch { awake_gate_v: 1.1, ..sw };
+    let g = Gated::new(&s, &c, &sw, C).expect("domain");
     let fall = fall_asleep(&g, &SleepSpec::default(), 1e-3).expect("asleep");
     let gate = GateCapacitance { per_width_f_m: Some(1e-9), ..Default::default() };
     let costs = CycleCosts { gate, pump_efficiency: Some(0.5), pwell_f: Some(10e-12), ..Default::default() };
@@ -247,7 +221,7 @@ fn bounce_of_a_current_step() {
     let none = curve(&s, |_| 0.0);
     let source = switch(Plain { on: On::Constant(50e-6), leak_a: 0.0 }, &s);
     // a rail so large that the current stays what it is
-    let g = Gated::new(&s, &none, &source, 1e-6, 0.0).expect("domain");
+    let g = Gated::new(&s, &none, &source, 1e-6).expect("domain");
     let p = Package { inductance_h: 1e-9, resistance_ohm: 0.2, decoupling_f: 1e-9 };
     let spec =
         WakeSpec { from_span_v: Some(0.0), ready_within: 0.5, package: Some(p), ..WakeSpec::default() };
@@ -276,7 +250,7 @@ fn ladders_keep_their_limit() {
     let s = scheme(1e-3, 0.0);
     let c = curve(&s, |x| 1e-5 * x);
     let ohm = switch(Plain { on: On::Ohmic(1e-3), leak_a: 1e-12 }, &s);
-    let g = Gated::new(&s, &c, &ohm, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &ohm, C).expect("domain");
     let want = LadderSpec { peak_a: 0.1, segments: 4 };
     let spec = WakeSpec { from_span_v: Some(0.0), ..WakeSpec::default() };
     let l = design_ladder(&g, &spec, &want).expect("ladder");
@@ -300,7 +274,7 @@ fn ladders_keep_their_limit() {
     let soft =
         AllRegion { is_a: 1e-6, n: 1.4, vt0_v: 0.35, vt_v: 25.852e-3, polarity: Polarity::N, leak_s: 0.0 };
     let soft = switch(soft, &s);
-    let g = Gated::new(&s, &c, &soft, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &soft, C).expect("domain");
     let whole = wake_up(&g, &WakeSpec { gate_slew_s: 1e-10, ..WakeSpec::default() }).expect("awake").peak_a;
     for package in [None, Some(Package { inductance_h: 1e-10, resistance_ohm: 0.01, decoupling_f: 2e-9 })] {
         let spec = WakeSpec { gate_slew_s: 1e-10, package, ..WakeSpec::default() };
@@ -419,7 +393,7 @@ fn duty_and_battery() {
     let s = scheme(1e-3, 0.0);
     let c = curve(&s, |x| 1e-3 * x);
     let sw = switch(Plain { on: On::Ohmic(1.0), leak_a: 10e-9 }, &s);
-    let g = Gated::new(&s, &c, &sw, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &sw, C).expect("domain");
     let fall =
         fall_asleep(&g, &SleepSpec { from_span_v: Some(1.0), ..SleepSpec::default() }, 1e-3).expect("asleep");
     let costs = CycleCosts {
@@ -473,7 +447,7 @@ fn what_cannot_be_is_refused_in_words() {
     let s = scheme(1e-3, 0.0);
     let c = curve(&s, |x| 1e-6 * x);
     let ohm = switch(Plain { on: On::Ohmic(1e-3), leak_a: 1e-12 }, &s);
-    let g = Gated::new(&s, &c, &ohm, C, 0.0).expect("domain");
+    let g = Gated::new(&s, &c, &ohm, C).expect("domain");
     let says = |e: TransitionError, text: &str| assert!(e.to_string().contains(text), "{e}");
 
     says(
@@ -489,12 +463,12 @@ fn what_cannot_be_is_refused_in_words() {
         GateCapacitance::default().farads(&ohm, 1e-3, 6e-8).expect_err("none"),
         "no capacitance given for the switch's gate",
     );
-    says(Gated::new(&s, &c, &ohm, -1.0, 0.0).expect_err("negative"), "rail capacitance (F) is -1");
-    says(Gated::new(&Scheme::ungated("on"), &c, &ohm, C, 0.0).expect_err("no switch"), "no switch");
+    says(Gated::new(&s, &c, &ohm, -1.0).expect_err("negative"), "rail capacitance (F) is -1");
+    says(Gated::new(&Scheme::ungated("on"), &c, &ohm, C).expect_err("no switch"), "no switch");
 
     // a switch that leaks more than the block draws holds the rail up
     let holds = switch(Plain { on: On::Ohmic(1e-3), leak_a: 1e-3 }, &s);
-    let held = Gated::new(&s, &c, &holds, C, 0.0).expect("domain");
+    let held = Gated::new(&s, &c, &holds, C).expect("domain");
     let e = fall_asleep(&held, &SleepSpec { from_span_v: Some(0.9999), ..SleepSpec::default() }, 1e-6)
         .expect_err("held");
     says(e, "the rail does not collapse");

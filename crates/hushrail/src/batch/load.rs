@@ -1,5 +1,6 @@
 //! What a study names, read: cards, cells, domains.
 
+use std::borrow::Cow;
 use std::path::Path;
 use std::sync::Arc;
 
@@ -19,6 +20,7 @@ use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
 use crate::read::verilog::read_verilog;
 use crate::standby::Scheme;
+use crate::standby::scheme::SchemeError;
 
 /// A domain with its block.
 #[derive(Debug, Clone)]
@@ -65,6 +67,31 @@ pub struct Loaded {
     pub origin: Arc<str>,
     /// Remarks of the readers.
     pub notes: Vec<Note>,
+}
+
+impl Loaded {
+    /// The block of a domain under a scheme: its own, or one with cells changed, left powered or added.
+    ///
+    /// # Errors
+    /// Changes that cannot be made.
+    pub fn block_under<'a>(
+        &self,
+        d: &'a LoadedDomain,
+        scheme: &Scheme,
+    ) -> Result<Cow<'a, Block>, SchemeError> {
+        if !scheme.changes_block() {
+            return Ok(Cow::Borrowed(&d.block));
+        }
+        let known = |(name, n): (&String, &u64)| self.added.get(name).map(|cell| (Arc::clone(cell), *n));
+        let added: Vec<_> = scheme.added.iter().filter_map(known).collect();
+        let changed = d.block.changed(&scheme.changes, &scheme.powered, &added);
+        changed.map(Cow::Owned).map_err(|e| SchemeError {
+            scheme: scheme.name.clone(),
+            what: e.what,
+            value: e.value,
+            wanted: e.wanted,
+        })
+    }
 }
 
 /// Reads the cards of a process.

@@ -1,6 +1,5 @@
 //! The main job: domains × schemes × corners, in parallel, the same bits for any number of threads.
 
-use std::sync::Arc;
 use std::sync::atomic::Ordering;
 
 use rayon::prelude::*;
@@ -13,7 +12,6 @@ use crate::cell::DeviceShelf;
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
 use crate::read::deck::Note;
-use crate::standby::scheme::SchemeError;
 use crate::standby::{Asleep, RestError, Scheme, settle};
 
 /// A limit and how a result stands to it.
@@ -178,17 +176,7 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
         if !scheme.changes_block() {
             return settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop);
         }
-        let added: Vec<_> = scheme
-            .added
-            .iter()
-            .filter_map(|(name, n)| loaded.added.get(name).map(|cell| (Arc::clone(cell), *n)))
-            .collect();
-        let block = d.block.changed(&scheme.changes, &scheme.powered, &added).map_err(|e| SchemeError {
-            scheme: scheme.name.clone(),
-            what: e.what,
-            value: e.value,
-            wanted: e.wanted,
-        })?;
+        let block = loaded.block_under(d, scheme)?;
         let bound = BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options)?;
         settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop)
     };

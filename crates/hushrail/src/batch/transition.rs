@@ -3,6 +3,7 @@
 use std::path::PathBuf;
 use std::sync::atomic::Ordering;
 
+use indexmap::IndexMap;
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
@@ -10,7 +11,7 @@ use super::load::{Loaded, LoadedDomain, load_study};
 use super::run::Failure;
 use super::study::read_study;
 use super::watch::{Progress, Watch, watched};
-use crate::block::{BoundBlock, Draw};
+use crate::block::{BlockCurve, BoundBlock, Draw, Parts};
 use crate::cell::{DeviceShelf, Levels};
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
@@ -34,9 +35,6 @@ pub struct TransitionSpec {
     /// Costs of a round trip.
     #[serde(default)]
     pub costs: CycleCosts,
-    /// How far past its on rail the gate is driven awake, V.
-    #[serde(default)]
-    pub boost_v: f64,
     /// The wake-up.
     #[serde(default)]
     pub wake: WakeSpec,
@@ -78,7 +76,6 @@ impl Default for TransitionSpec {
         Self {
             rail: RailCapacitance::default(),
             costs: CycleCosts::default(),
-            boost_v: 0.0,
             wake: WakeSpec::default(),
             sleep: SleepSpec::default(),
             ladder: None,
@@ -211,7 +208,23 @@ pub fn transitions(
             tasks.extend(loaded.corners.iter().filter(|c| wanted(&spec.corners, &c.name)).map(|c| (d, s, c)));
         }
     }
-    let parts = watched(tasks.len(), progress, |watch| {
+    // schemes that leave the block alike share its curve: it is what takes the time
+    let mut distinct: IndexMap<String, (&LoadedDomain, &Scheme, &Corner)> = IndexMap::new();
+    for &(d, s, c) in &tasks {
+        distinct.entry(curve_key(d, s, c)).or_insert((d, s, c));
+    }
+    let distinct: Vec<(String, (&LoadedDomain, &Scheme, &Corner))> = distinct.into_iter().collect();
+    let parts = watched(distinct.len() + tasks.len(), progress, |watch| {
+        let curves: IndexMap<&str, Result<Ready, String>> = distinct
+            .par_iter()
+            .map(|(key, (d, s, c))| {
+                let ready = ready(loaded, d, s, c, spec.tolerance, options, watch);
+                watch.done.fetch_add(1, Ordering::Relaxed);
+                (key.as_str(), ready)
+            })
+            .collect::<Vec<_>>()
+            .into_iter()
+            .collect();
         tasks
             .par_iter()
             .map(|(d, s, c)| {
@@ -219,7 +232,10 @@ pub fn transitions(
                     return None;
                 }
                 let mut notes = Vec::new();
-                let found = one(loaded, d, s, c, spec, options, watch, &mut notes);
+                let found = match &curves[curve_key(d, s, c).as_str()] {
+                    Ok(ready) => one(loaded, d, s, c, spec, ready, &mut notes),
+                    Err(e) => Err(e.clone()),
+                };
                 watch.done.fetch_add(1, Ordering::Relaxed);
                 Some((found, notes, watch.stop.load(Ordering::Relaxed)))
             })
@@ -268,15 +284,55 @@ pub fn transitions(
     out
 }
 
-#[expect(clippy::too_many_arguments, reason = "one point of the grid: everything that defines it")]
+/// What the curve of a block depends on.
+fn curve_key(d: &LoadedDomain, s: &Scheme, c: &Corner) -> String {
+    let wells = (s.nwell, s.pwell, s.nwell_bias_v, s.pwell_bias_v);
+    format!(
+        "{}|{}|{:?}|{wells:?}|{:?}",
+        d.name,
+        c.name,
+        s.collapsing(),
+        (&s.parked, &s.powered, &s.added, &s.changes)
+    )
+}
+
+/// The curve of a block, and its power when nothing is switched.
+struct Ready {
+    curve: BlockCurve,
+    ungated_w: f64,
+    notes: Vec<Note>,
+}
+
+fn ready(
+    loaded: &Loaded,
+    d: &LoadedDomain,
+    scheme: &Scheme,
+    c: &Corner,
+    tolerance: f64,
+    options: &SolveOptions,
+    watch: &Watch,
+) -> Result<Ready, String> {
+    let temp = c.check().map_err(|e| e.to_string())?;
+    let process = loaded.processes.get(&c.process).ok_or_else(|| format!("no process `{}`", c.process))?;
+    scheme.check().map_err(|e| e.to_string())?;
+    let mut shelf = DeviceShelf::default();
+    let block = loaded.block_under(d, scheme).map_err(|e| e.to_string())?;
+    let bound =
+        BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options).map_err(|e| e.to_string())?;
+    let powered = bound.draw_totals(&Levels::powered(c.vdd_v), &watch.stop).map_err(|e| e.to_string())?;
+    let ungated_w = c.vdd_v * (powered[0] + powered[2]);
+    let parts = Parts::new(&bound, &scheme.parked, false, c.vdd_v).map_err(|e| e.to_string())?;
+    let curve = scheme.curve(&parts, c.vdd_v, tolerance, &watch.stop).map_err(|e| e.to_string())?;
+    Ok(Ready { curve, ungated_w, notes: shelf.notes })
+}
+
 fn one(
     loaded: &Loaded,
     d: &LoadedDomain,
     scheme: &Scheme,
     c: &Corner,
     spec: &TransitionSpec,
-    options: &SolveOptions,
-    watch: &Watch,
+    ready: &Ready,
     notes: &mut Vec<Note>,
 ) -> Result<TransitionPoint, String> {
     let temp = c.check().map_err(|e| e.to_string())?;
@@ -293,16 +349,24 @@ fn one(
         let found = if scheme.header.is_some() { "header and footer" } else { "no switch" };
         return Err(TransitionError::Switches { scheme: scheme.name.clone(), found }.to_string());
     };
+    if scheme.header_clamp.is_some()
+        || scheme.footer_clamp.is_some()
+        || scheme.held_supply_v.is_some()
+        || scheme.held_ground_v.is_some()
+    {
+        return Err(format!(
+            "scheme `{}`: transitions of a rail that is clamped or held are not computed; want a scheme without",
+            scheme.name
+        ));
+    }
     let switch = Switch::new(switch_spec, side, process, temp, c.vdd_v, &mut shelf, &loaded.origin)
         .map_err(|e| e.to_string())?;
-    let bound =
-        BoundBlock::new(&d.block, process, temp, c.vdd_v, &mut shelf, options).map_err(|e| e.to_string())?;
     notes.append(&mut shelf.notes);
-    let powered = bound.draw_totals(&Levels::powered(c.vdd_v), &watch.stop).map_err(|e| e.to_string())?;
-    let ungated_w = c.vdd_v * (powered[0] + powered[2]);
-    let curve = scheme.curve(&bound, c.vdd_v, spec.tolerance, &watch.stop).map_err(|e| e.to_string())?;
+    notes.extend(ready.notes.iter().cloned());
+    let Ready { curve, ungated_w, .. } = ready;
+    let ungated_w = *ungated_w;
     let words = |e: TransitionError| e.to_string();
-    let g = Gated::new(scheme, &curve, &switch, rail_f, spec.boost_v).map_err(words)?;
+    let g = Gated::new(scheme, curve, &switch, rail_f).map_err(words)?;
     let fall = fall_asleep(&g, &spec.sleep, ungated_w).map_err(words)?;
     let pays = break_even(&fall, &spec.costs).map_err(words)?;
     let duty = match &spec.duty {

@@ -61,6 +61,23 @@ fn one() -> usize {
 }
 
 impl SwitchSpec {
+    /// A switch of one finger without overdrive, bias or junctions.
+    pub fn new(model: &str, width_m: f64, length_m: f64) -> Self {
+        Self {
+            model: model.to_owned(),
+            width_m,
+            length_m,
+            finger_width_m: None,
+            overdrive_v: 0.0,
+            boost_v: 0.0,
+            well_bias_v: 0.0,
+            body_to_gate: false,
+            stacked: 1,
+            diffusion_m: None,
+            edge_m: None,
+        }
+    }
+
     /// Checks every number; the error is what is wrong, what was found, what would be right.
     ///
     /// # Errors

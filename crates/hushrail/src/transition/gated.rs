@@ -6,7 +6,7 @@
 
 use std::sync::atomic::AtomicBool;
 
-use super::error::{TransitionError, not_negative, positive};
+use super::error::{TransitionError, positive};
 use crate::block::curve::Sloped;
 use crate::block::{BlockCurve, Book, Collapsing};
 use crate::device::dual::Real;
@@ -64,7 +64,6 @@ impl<'a> Gated<'a> {
         curve: &'a BlockCurve,
         switch: &'a Switch,
         rail_f: f64,
-        boost_v: f64,
     ) -> Result<Self, TransitionError> {
         scheme.check().map_err(crate::standby::RestError::from)?;
         let found = match (&scheme.header, &scheme.footer) {
@@ -83,9 +82,10 @@ impl<'a> Gated<'a> {
         }
         positive("rail capacitance (F)", rail_f)?;
         positive("fingers of the switch", switch.fingers)?;
-        not_negative("boost (V)", boost_v)?;
         let vdd_v = curve.vdd_v();
-        let on_v = if switch.device.polarity() == Polarity::P { -boost_v } else { vdd_v + boost_v };
+        let on_v = switch.awake_gate_v;
+        let past = if switch.device.polarity() == Polarity::P { -on_v } else { on_v - vdd_v };
+        let boost_v = past.max(0.0);
         Ok(Self { scheme, curve, switch, vdd_v, rail_f, boost_v, on_v, rail })
     }
 

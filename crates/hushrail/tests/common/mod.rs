@@ -8,11 +8,47 @@ use hushrail::cell::{BoundCell, Cell, Role};
 use hushrail::circuit::network::{Element, Network, Placed, Volt};
 use hushrail::circuit::newton::{SolveOptions, Solver, Workspace};
 use hushrail::circuit::plan::Plan;
-use hushrail::device::dual::{Dual, Real};
+use hushrail::device::dual::Real;
 use hushrail::device::process::{Process, Request};
 use hushrail::device::{Bias, Branches, Device, Polarity};
 use hushrail::physics::Kelvin;
 use hushrail::read::{DeckOptions, Place, Source};
+
+/// A device that is its channel and nothing else: the type, its polarity, its thermal voltage; `law` gives the currents.
+macro_rules! channel_device {
+    ($name:ty, $polarity:expr, $vt:expr) => {
+        impl hushrail::device::Device for $name {
+            fn polarity(&self) -> hushrail::device::Polarity {
+                let of: fn(&Self) -> hushrail::device::Polarity = $polarity;
+                of(self)
+            }
+            fn branches(&self, b: hushrail::device::Bias<f64>) -> hushrail::device::Branches<f64> {
+                self.law(b)
+            }
+            fn branches_dual(
+                &self,
+                b: hushrail::device::Bias<hushrail::device::dual::Dual<3>>,
+            ) -> hushrail::device::Branches<hushrail::device::dual::Dual<3>> {
+                self.law(b)
+            }
+            fn has_gate_current(&self) -> bool {
+                false
+            }
+            fn has_gidl(&self) -> bool {
+                false
+            }
+            fn oxide_m(&self) -> f64 {
+                2e-9
+            }
+            fn thermal_voltage(&self) -> f64 {
+                let of: fn(&Self) -> f64 = $vt;
+                of(self)
+            }
+        }
+    };
+}
+#[allow(unused_imports, reason = "not every test brings a device of its own")]
+pub(crate) use channel_device;
 
 /// The engineering subthreshold law that the stack literature uses:
 /// `I = I0·W·exp((Vgs − Vt0 − kg·Vsb + η·Vds)/(n·vT))·(1 − exp(−Vds/vT))` for `Vds ≥ 0`.
@@ -47,29 +83,7 @@ impl Ideal {
     }
 }
 
-impl Device for Ideal {
-    fn polarity(&self) -> Polarity {
-        Polarity::N
-    }
-    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
-        self.law(b)
-    }
-    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
-        self.law(b)
-    }
-    fn has_gate_current(&self) -> bool {
-        false
-    }
-    fn has_gidl(&self) -> bool {
-        false
-    }
-    fn oxide_m(&self) -> f64 {
-        2e-9
-    }
-    fn thermal_voltage(&self) -> f64 {
-        self.vt_v
-    }
-}
+channel_device!(Ideal, |_| Polarity::N, |d| d.vt_v);
 
 /// Bulk-referred symmetric law `I = I0·exp(Vgb/(n·vT))·(exp(−Vsb/vT) − exp(−Vdb/vT))`: with it N off devices in series leak
 /// exactly 1/N of one.
@@ -100,29 +114,7 @@ impl Symmetric {
     }
 }
 
-impl Device for Symmetric {
-    fn polarity(&self) -> Polarity {
-        self.polarity
-    }
-    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
-        self.law(b)
-    }
-    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
-        self.law(b)
-    }
-    fn has_gate_current(&self) -> bool {
-        false
-    }
-    fn has_gidl(&self) -> bool {
-        false
-    }
-    fn oxide_m(&self) -> f64 {
-        2e-9
-    }
-    fn thermal_voltage(&self) -> f64 {
-        self.vt_v
-    }
-}
+channel_device!(Symmetric, |d| d.polarity, |d| d.vt_v);
 
 /// Solves a chain of devices from `vdd` (first) to 0 V (last), all bodies at 0 V; returns node voltages from the rail up and
 /// the current.
@@ -197,29 +189,7 @@ impl AllRegion {
     }
 }
 
-impl Device for AllRegion {
-    fn polarity(&self) -> Polarity {
-        self.polarity
-    }
-    fn branches(&self, b: Bias<f64>) -> Branches<f64> {
-        self.law(b)
-    }
-    fn branches_dual(&self, b: Bias<Dual<3>>) -> Branches<Dual<3>> {
-        self.law(b)
-    }
-    fn has_gate_current(&self) -> bool {
-        false
-    }
-    fn has_gidl(&self) -> bool {
-        false
-    }
-    fn oxide_m(&self) -> f64 {
-        2e-9
-    }
-    fn thermal_voltage(&self) -> f64 {
-        self.vt_v
-    }
-}
+channel_device!(AllRegion, |d| d.polarity, |d| d.vt_v);
 
 /// Where a gate of [`chain`] is.
 #[derive(Debug, Clone, Copy)]
