@@ -8,7 +8,7 @@ use serde::{Deserialize, Serialize};
 
 use super::load::{DomainSummary, Loaded, LoadedDomain};
 use super::watch::{Progress, Watch, watched};
-use crate::block::BoundBlock;
+use crate::block::{Block, BoundBlock};
 use crate::cell::DeviceShelf;
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
@@ -178,17 +178,7 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
         if !scheme.changes_block() {
             return settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop);
         }
-        let added: Vec<_> = scheme
-            .added
-            .iter()
-            .filter_map(|(name, n)| loaded.added.get(name).map(|cell| (Arc::clone(cell), *n)))
-            .collect();
-        let block = d.block.changed(&scheme.changes, &scheme.powered, &added).map_err(|e| SchemeError {
-            scheme: scheme.name.clone(),
-            what: e.what,
-            value: e.value,
-            wanted: e.wanted,
-        })?;
+        let block = block_under(loaded, d, scheme)?;
         let bound = BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options)?;
         settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop)
     };
@@ -241,4 +231,25 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
     }
     part.notes = shelf.notes;
     part
+}
+
+/// The block of a domain as a scheme changes it.
+///
+/// # Errors
+/// A change that fits nothing or cannot be.
+pub(super) fn block_under(loaded: &Loaded, d: &LoadedDomain, scheme: &Scheme) -> Result<Block, SchemeError> {
+    if !scheme.changes_block() {
+        return Ok(d.block.clone());
+    }
+    let added: Vec<_> = scheme
+        .added
+        .iter()
+        .filter_map(|(name, n)| loaded.added.get(name).map(|cell| (Arc::clone(cell), *n)))
+        .collect();
+    d.block.changed(&scheme.changes, &scheme.powered, &added).map_err(|e| SchemeError {
+        scheme: scheme.name.clone(),
+        what: e.what,
+        value: e.value,
+        wanted: e.wanted,
+    })
 }
