@@ -45,7 +45,7 @@ fn load(cards: &str, schemes: &str, temps: &str) -> Loaded {
     ));
     std::fs::create_dir_all(&dir).expect("folder");
     std::fs::write(dir.join("cells.sp"), CELLS).expect("file");
-    std::fs::write(dir.join("n.csv"), "cell,count\ninv,3000\nnand2,2000\nlatch,50\n").expect("file");
+    std::fs::write(dir.join("n.csv"), "cell,count\ninv,3000\nnand2,2000\n").expect("file");
     let mut text = String::new();
     for (name, dv) in [("ss", 0.04), ("sf", 0.02), ("tt", 0.0), ("fs", -0.02), ("ff", -0.04)] {
         let shifted = cards.replace(".param dv = 0.0", &format!(".param dv = {dv}"));
