@@ -39,7 +39,9 @@ def found(study: Path, scheme: str) -> Optimum:
 def choice(study: Path, scheme: str) -> Choice:
     limits = Limits(droop_v=0.2, oxide_v=1.25)
     load = Load.constant(1e-4)
-    return choose(study, KNOBS, scheme=scheme, limits=limits, load=load, density=DENSITY, rail=Rail(total_f=1e-13))
+    return choose(
+        study, KNOBS, scheme=scheme, limits=limits, load=load, density=DENSITY, rail=Rail(total_f=1e-13)
+    )
 
 
 def test_optimum_is_least_of_its_sweep(found: Optimum) -> None:

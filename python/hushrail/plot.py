@@ -266,7 +266,8 @@ def leakage_by_setting(found: Optimum, corner: str, ax: Axes | None = None) -> A
         if share.max() > floor:
             shown = np.where(share > 0.0, share, np.nan)
             ax.plot(x, shown, color=COLOURS.get(name, "#b03060"), linewidth=1.7, label=name)
-    ax.axvline(found.compromise.value * scale, color="0.6", linewidth=1, linestyle="--", zorder=1, label="compromise")
+    common = found.compromise.value * scale
+    ax.axvline(common, color="0.6", linewidth=1, linestyle="--", zorder=1, label="compromise")
     if best.value is not None:
         at = best.value * scale
         ax.plot(at, best.power_w, "o", color="black", markersize=7, zorder=4)
@@ -340,9 +341,7 @@ def pareto_front(choice: Choice, ax: Axes | None = None) -> Axes:
     x, y = along(front, others[0], scale), along(front, "power_w", 1.0)
     if len(others) > 1:
         colour, factor = named[others[1]]
-        dots = ax.scatter(
-            x, y, c=along(front, others[1], factor), cmap="viridis", s=34, edgecolors="white", linewidths=0.6, zorder=3
-        )
+        dots = ax.scatter(x, y, c=along(front, others[1], factor), s=34, edgecolors="white", zorder=3)
         ax.figure.colorbar(dots, ax=ax, label=colour)
     else:
         order = np.argsort(x)
