@@ -33,13 +33,15 @@ fn choice(c: &mut Criterion) {
         .iter()
         .map(|dv| {
             let cards = CARDS.replace(".param dv = 0.0", &format!(".param dv = {dv}"));
-            Process::read("x", &[Source::from_text("cards.lib", cards)], &DeckOptions::default()).expect("cards")
+            Process::read("x", &[Source::from_text("cards.lib", cards)], &DeckOptions::default())
+                .expect("cards")
         })
         .collect();
     let deck = read_deck(&[Source::from_text("cells.sp", CELLS)], &DeckOptions::default()).expect("cells");
     let rails = RailNames::default();
     let reader = CellReader { deck: &deck, rails: &rails, is_device: &|n| processes[0].defines(n) };
-    let counts = read_counts_csv(&Source::from_text("n.csv", "cell,count\ninv,3000\nnand2,2000\n")).expect("counts");
+    let counts =
+        read_counts_csv(&Source::from_text("n.csv", "cell,count\ninv,3000\nnand2,2000\n")).expect("counts");
     let block = build_block(&counts, &reader, &Default::default(), &Default::default(), &mut Vec::new())
         .expect("block");
     let origin: Arc<str> = Arc::from("bench");
@@ -47,13 +49,21 @@ fn choice(c: &mut Criterion) {
     for p in &processes {
         for t in [-40.0, 0.0, 25.0, 85.0, 125.0] {
             let temp = Kelvin::from_celsius(t).expect("in range");
-            let bound = BoundBlock::new(&block, p, temp, 1.0, &mut DeviceShelf::default(), &SolveOptions::default());
+            let bound =
+                BoundBlock::new(&block, p, temp, 1.0, &mut DeviceShelf::default(), &SolveOptions::default());
             at.push((format!("{t}"), p, temp, bound.expect("bound")));
         }
     }
     let sites: Vec<Site<'_>> = at
         .iter()
-        .map(|(corner, process, temp, block)| Site { corner, process, temp: *temp, vdd_v: 1.0, block, origin: &origin })
+        .map(|(corner, process, temp, block)| Site {
+            corner,
+            process,
+            temp: *temp,
+            vdd_v: 1.0,
+            block,
+            origin: &origin,
+        })
         .collect();
     let footer = SwitchSpec {
         model: "nx".into(),
@@ -82,7 +92,9 @@ fn choice(c: &mut Criterion) {
     };
     let mut group = c.benchmark_group("choice");
     group.sample_size(10).measurement_time(Duration::from_secs(20));
-    for (name, rail_f, every) in [("10,000 candidates x 25 corners", None, 1), ("500 x 25 with wake-up", Some(20e-12), 20)] {
+    for (name, rail_f, every) in
+        [("10,000 candidates x 25 corners", None, 1), ("500 x 25 with wake-up", Some(20e-12), 20)]
+    {
         let mut spec = ChooseSpec { rail_f, ..spec.clone() };
         if every > 1 {
             spec.knobs[1].values = line(2, 20e-6, 200e-6);
@@ -90,7 +102,8 @@ fn choice(c: &mut Criterion) {
         group.throughput(Throughput::Elements(spec.size() as u64 * 25));
         group.bench_function(name, |b| {
             b.iter(|| {
-                let found = choose(&sites, &scheme, &spec, &AtomicUsize::new(0), &AtomicBool::new(false)).expect("chosen");
+                let found = choose(&sites, &scheme, &spec, &AtomicUsize::new(0), &AtomicBool::new(false))
+                    .expect("chosen");
                 assert!(found.failed == 0);
                 found.front.len()
             });

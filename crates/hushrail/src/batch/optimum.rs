@@ -1,6 +1,6 @@
 //! Optima and choices of a study: a domain under a scheme with free knobs, at every corner.
 
-use std::path::PathBuf;
+use std::path::Path;
 
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
@@ -201,7 +201,7 @@ impl<'a> BoundCorners<'a> {
 }
 
 /// Reads a study.
-fn load(path: &PathBuf) -> Result<Loaded, ReadError> {
+fn load(path: &Path) -> Result<Loaded, ReadError> {
     let source = Source::open(path)?;
     load_study(&read_study(&source)?, &source.path, &source.folder)
 }
@@ -211,7 +211,7 @@ fn load(path: &PathBuf) -> Result<Loaded, ReadError> {
 /// # Errors
 /// A file, a name, or what [`compromise`] cannot do.
 pub fn optimum_of_study(
-    study: &PathBuf,
+    study: &Path,
     spec: &OptimumSpec,
     options: &SolveOptions,
     progress: &mut Progress<'_>,
@@ -252,7 +252,7 @@ pub fn optimum(
 /// # Errors
 /// A file, a name, or what [`choose`] cannot do.
 pub fn choice_of_study(
-    study: &PathBuf,
+    study: &Path,
     spec: &ChoiceSpec,
     options: &SolveOptions,
     progress: &mut Progress<'_>,

@@ -179,12 +179,11 @@ pub fn compromise(
     let value = value_of(x);
     let last = parts(value, false)?;
     let objective = join(&last).exp();
-    let deciding = match goal {
-        Goal::Mean(_) => Vec::new(),
-        _ => {
-            let top = join(&last);
-            (0..sites.len()).filter(|k| last[*k] >= top - LEVEL).map(|k| sites[k].corner.to_owned()).collect()
-        }
+    let deciding = if matches!(goal, Goal::Mean(_)) {
+        Vec::new()
+    } else {
+        let top = join(&last);
+        (0..sites.len()).filter(|k| last[*k] >= top - LEVEL).map(|k| sites[k].corner.to_owned()).collect()
     };
     let corners = optima
         .iter()

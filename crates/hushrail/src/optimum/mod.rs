@@ -6,6 +6,7 @@
 //! - [`corner`]: the optimum of one knob at one corner, and the mechanism that takes over beyond it.
 //! - [`compromise`]: one setting for all corners, and what each loses by it.
 //! - [`limits`]: what a choice must meet, and how far a candidate is from it.
+//! - [`front`]: candidates that none beats, and the nearest where none fits.
 //! - [`choose`]: candidates at all corners, limits, the Pareto front.
 //!
 //! The objective is the power of all supplies asleep: what makes a voltage (quiescent current and efficiency of the pump, level
@@ -15,6 +16,7 @@ pub mod choose;
 pub mod compromise;
 pub mod corner;
 mod error;
+pub mod front;
 pub mod knob;
 pub mod limits;
 pub mod search;

@@ -120,16 +120,16 @@ fn brent<E>(
         let fu = f(u)?;
         if fu <= fx {
             if u < x {
-                b = x
+                b = x;
             } else {
-                a = x
+                a = x;
             }
             (v, fv, w, fw, x, fx) = (w, fw, x, fx, u, fu);
         } else {
             if u < x {
-                a = u
+                a = u;
             } else {
-                b = u
+                b = u;
             }
             if fu <= fw || w == x {
                 (v, fv, w, fw) = (w, fw, u, fu);
