@@ -5,7 +5,8 @@ sleep schemes and corners. :func:`cells` gives the leakage table behind it, :fun
 published one, :func:`count` counts the instances of a netlist. :class:`Process` and :class:`Device` give the
 currents of single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without
 cards, and ``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its
-domain works and the lowest rail that keeps state. Plots are in ``hushrail.plot``, the demonstration in
+domain works and the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width
+and the choice under limits. Plots are in ``hushrail.plot``, the demonstration in
 ``hushrail.demo``.
 """
 

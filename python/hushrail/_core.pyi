@@ -18,9 +18,11 @@ __all__ = [
     "awake_margins",
     "awake_rail",
     "cell_table",
+    "choose",
     "compare",
     "count",
     "estimate",
+    "optimum",
     "oxide_lifetime",
     "sensitivities",
     "transitions",
@@ -180,6 +182,8 @@ def cell_table(
     floor_s: float = 0.0,
     progress: Callable[[int, int], Any] | None = None,
 ) -> str: ...
+def choose(path: str, spec: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...
+def optimum(path: str, spec: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...
 def sensitivities(
     path: str,
     *,

@@ -22,13 +22,16 @@ if TYPE_CHECKING:
 
     from hushrail.awake import Butterfly, Curve, MeritPoint, RowDroop
     from hushrail.fit import Residuals
+    from hushrail.optimum import Choice, Optimum
     from hushrail.transition import TransitionPoint
 
 __all__ = [
     "COLOURS",
     "butterfly",
     "energy_saved",
+    "leakage_by_setting",
     "overdrive_curve",
+    "pareto_front",
     "rail_collapse",
     "residuals",
     "rest_points",
@@ -229,6 +232,139 @@ def overdrive_curve(
     ax.set_xlim(over.min(), over.max())
     ax.set_xlabel("overdrive (V)")
     ax.set_title(f"{model} at {temp_c:g} °C")
+    ax.grid(True, which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+    ax.legend(fontsize="small", loc="best", framealpha=0.9)
+    return ax
+
+
+def leakage_by_setting(found: Optimum, corner: str, ax: Axes | None = None) -> Axes:
+    """Standby power of a domain against a knob such as the overdrive, by mechanism, at one corner.
+
+    The optimum is marked, and so is the setting that is the compromise over all corners.
+
+    Parameters
+    ----------
+    found : Optimum
+        What :func:`hushrail.optimum.optimum` gave.
+    corner : str
+        The corner.
+    ax : Axes, optional
+        Where to draw.
+    """
+    ax = _axes(ax)
+    best = found.at(corner)
+    knob = found.compromise.knob
+    size = knob.endswith(("width", "length"))
+    scale, unit = (1e6, "µm") if size else (1.0, "V")
+    x = np.array([s.value for s in best.sweep]) * scale
+    total = np.array([s.power_w for s in best.sweep])
+    shares = np.array([s.by_w for s in best.sweep])
+    floor = float(total.min()) * 1e-3
+    ax.plot(x, total, color="black", linewidth=2.2, label="all", zorder=3)
+    for name, share in zip((*MECHANISMS, "overhead"), shares.T, strict=True):
+        if share.max() > floor:
+            shown = np.where(share > 0.0, share, np.nan)
+            ax.plot(x, shown, color=COLOURS.get(name, "#b03060"), linewidth=1.7, label=name)
+    common = found.compromise.value * scale
+    ax.axvline(common, color="0.6", linewidth=1, linestyle="--", zorder=1, label="compromise")
+    if best.value is not None:
+        at = best.value * scale
+        ax.plot(at, best.power_w, "o", color="black", markersize=7, zorder=4)
+        left = at < 0.5 * (x.min() + x.max())
+        over = f"; {best.takes_over} takes over" if best.takes_over else ""
+        ax.annotate(
+            f"least {engineering(best.power_w, 'W')} at {at:.3g} {unit}{over}",
+            (at, best.power_w),
+            xytext=(0 if left else 6, -14),
+            textcoords="offset points",
+            fontsize="small",
+            ha="left" if left else "right",
+            va="top",
+        )
+    ax.set_yscale("log")
+    ax.set_ylim(floor, 2.0 * float(total.max()))
+    _engineering_axis(ax, "W", vertical=True)
+    if size:
+        ax.set_xscale("log")
+    ax.set_xlim(x.min(), x.max())
+    ax.set_xlabel(f"{knob.replace('_', ' ')} ({unit})")
+    ax.set_title(f"{found.domain}, {found.scheme}: {corner}")
+    ax.grid(True, which="major", color="0.9", linewidth=0.8)
+    ax.set_axisbelow(True)
+    ax.legend(fontsize="small", loc="best", framealpha=0.9)
+    return ax
+
+
+def pareto_front(choice: Choice, ax: Axes | None = None) -> Axes:
+    """Standby power against area of every candidate that meets the limits, with the front.
+
+    Without an area, power stands against wake-up time. A third objective is the colour of the front's
+    points.
+
+    Parameters
+    ----------
+    choice : Choice
+        What :func:`hushrail.optimum.choose` gave.
+    ax : Axes, optional
+        Where to draw.
+
+    Raises
+    ------
+    RangeError
+        No candidate meets the limits, or power is the only objective.
+    """
+    chosen = choice.chosen
+    if not chosen.front:
+        reason = "no candidate has an answer" if chosen.infeasible is None else chosen.infeasible.reason
+        raise RangeError(f"there is no front to draw: {reason}")
+    named = {"area_m2": ("area of the switches (µm²)", 1e12), "wake_s": ("wake-up time (ns)", 1e9)}
+    others = [o for o in chosen.objectives if o in named]
+    if not others:
+        raise RangeError("power is the only objective; give a density or a rail to draw a front")
+    ax = _axes(ax)
+    label, scale = named[others[0]]
+
+    def along(candidates: Sequence[Any], key: str, factor: float) -> Any:  # noqa: ANN401
+        return np.array([getattr(c, key) for c in candidates], dtype=float) * factor
+
+    front = [p.candidate for p in chosen.front]
+    ax.plot(
+        along(chosen.feasible, others[0], scale),
+        along(chosen.feasible, "power_w", 1.0),
+        ".",
+        color="0.8",
+        markersize=4,
+        label=f"{len(chosen.feasible)} within limits",
+        zorder=1,
+    )
+    x, y = along(front, others[0], scale), along(front, "power_w", 1.0)
+    if len(others) > 1:
+        colour, factor = named[others[1]]
+        dots = ax.scatter(x, y, c=along(front, others[1], factor), s=34, edgecolors="white", zorder=3)
+        ax.figure.colorbar(dots, ax=ax, label=colour)
+    else:
+        order = np.argsort(x)
+        ax.step(x[order], y[order], where="post", color=_CANDIDATES[0], linewidth=1.4, zorder=2)
+        for n, limit in enumerate(sorted({c.binding.limit if c.binding else "no limit" for c in front})):
+            here = [k for k, c in enumerate(front) if (c.binding.limit if c.binding else "no limit") == limit]
+            ax.plot(
+                x[here],
+                y[here],
+                linestyle="",
+                marker=_MARKERS[n % len(_MARKERS)],
+                color=_CANDIDATES[n % len(_CANDIDATES)],
+                markersize=7,
+                markeredgecolor="white",
+                markeredgewidth=0.6,
+                label=f"front, nearest limit: {limit.replace('_', ' ')}",
+                zorder=3,
+            )
+    ax.set_yscale("log")
+    _engineering_axis(ax, "W", vertical=True)
+    ax.set_xlabel(label)
+    ax.set_ylabel("standby power")
+    ax.set_title(f"{choice.domain}, {choice.scheme}: {len(chosen.corners)} corners")
     ax.grid(True, which="major", color="0.9", linewidth=0.8)
     ax.set_axisbelow(True)
     ax.legend(fontsize="small", loc="best", framealpha=0.9)

@@ -505,7 +505,7 @@ def transitions(
     spec = {
         "rail": asdict(rail),
         "costs": asdict(costs),
-        "wake": _wake(wake or WakeSpec()),
+        "wake": wake_request(wake or WakeSpec()),
         "ladder": None if ladder is None else asdict(ladder),
         "sleep": {"gate_slew_s": sleep_slew_s},
         "duty": None if duty is None else _duty(duty),
@@ -562,7 +562,8 @@ def _text(spec: object) -> str:
         raise RangeError("a number of the request is not finite; want finite numbers") from None
 
 
-def _wake(wake: WakeSpec) -> dict[str, Any]:
+def wake_request(wake: WakeSpec) -> dict[str, Any]:
+    """Give the core's form of a wake-up."""
     plain = asdict(wake)
     if wake.segments is not None:
         plain["segments"] = [_segment(s) for s in wake.segments]

@@ -5,6 +5,7 @@
 mod awake;
 mod device;
 mod error;
+mod optimum;
 mod own;
 mod run;
 mod study;
@@ -20,6 +21,8 @@ mod _core {
     use crate::awake::{awake_domains, awake_droop, awake_figure, awake_keep, awake_margins, awake_rail};
     #[pymodule_export]
     use crate::device::{Device, Process};
+    #[pymodule_export]
+    use crate::optimum::{choose, optimum};
     #[pymodule_export]
     use crate::own::{CellTable, CompactModel, TableModel};
     #[pymodule_export]

@@ -16,6 +16,7 @@
 //! - [`awake`]: what the switch costs while the domain works (on-resistance, droop, width, noise margins, delay), and what
 //!   keeps stored values alive on a lowered rail.
 //! - [`transition`]: waking and falling asleep, in-rush, bounce, energy of the round trip, break-even, duty.
+//! - [`optimum`]: the best setting of a knob, one compromise over corners, the choice among schemes under limits.
 //! - [`check`]: predictions against published tables.
 //! - [`batch`]: study files, whole grids in parallel with the same bits for any number of threads, progress and stop.
 //!
@@ -56,6 +57,7 @@ pub mod check;
 pub mod circuit;
 pub mod corner;
 pub mod device;
+pub mod optimum;
 pub mod physics;
 pub mod read;
 pub mod standby;

@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-const ROOMS: [&str; 13] = [
+const ROOMS: [&str; 14] = [
     "physics",
     "corner",
     "read",
@@ -13,6 +13,7 @@ const ROOMS: [&str; 13] = [
     "standby",
     "awake",
     "transition",
+    "optimum",
     "check",
     "batch",
     "lib",

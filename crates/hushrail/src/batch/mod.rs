@@ -5,6 +5,7 @@ pub mod characterise;
 pub mod compare;
 pub mod keep;
 pub mod load;
+pub mod optimum;
 pub mod run;
 pub mod sensitivity;
 pub mod study;
@@ -13,6 +14,7 @@ pub mod watch;
 
 pub use characterise::{LeakageRow, characterise};
 pub use load::{Library, Loaded, LoadedDomain, load_study};
+pub use optimum::{ChoiceSpec, OptimumSpec, choice, optimum};
 pub use run::{Estimate, PointResult, estimate};
 pub use transition::{TransitionSpec, Transitions, transitions};
 pub use watch::Progress;

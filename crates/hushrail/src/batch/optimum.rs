@@ -1,0 +1,293 @@
+//! Optima and choices of a study: a domain under a scheme with free knobs, at every corner.
+
+use std::path::Path;
+
+use rayon::prelude::*;
+use serde::{Deserialize, Serialize};
+
+use super::load::{Loaded, LoadedDomain, load_study};
+use super::study::read_study;
+use super::watch::{Progress, Watch, watched};
+use crate::block::BoundBlock;
+use crate::cell::DeviceShelf;
+use crate::circuit::newton::SolveOptions;
+use crate::corner::Corner;
+use crate::device::process::Process;
+use crate::optimum::{
+    ChooseSpec, Chosen, Compromise, Goal, KnobRange, OptimumError, Site, choose, compromise,
+};
+use crate::physics::Kelvin;
+use crate::read::deck::Note;
+use crate::read::source::{ReadError, Source};
+use crate::standby::Scheme;
+use crate::transition::RailCapacitance;
+
+/// Where an optimum is sought.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct Where {
+    /// The domain; the only one when left out.
+    #[serde(default)]
+    pub domain: Option<String>,
+    /// The scheme; the only one when left out.
+    #[serde(default)]
+    pub scheme: Option<String>,
+    /// Corners; all when empty.
+    #[serde(default)]
+    pub corners: Vec<String>,
+}
+
+/// An optimum asked of a study.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct OptimumSpec {
+    /// Where.
+    #[serde(default)]
+    pub at: Where,
+    /// The knob and its range.
+    pub range: KnobRange,
+    /// What the compromise is judged by.
+    #[serde(default)]
+    pub goal: Goal,
+}
+
+/// A choice asked of a study.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct ChoiceSpec {
+    /// Where.
+    #[serde(default)]
+    pub at: Where,
+    /// The virtual rail's capacitance; wake-up is not computed without it.
+    #[serde(default)]
+    pub rail: Option<RailCapacitance>,
+    /// The choice; its `rail_f` comes from `rail`.
+    pub choice: ChooseSpec,
+}
+
+/// The optimum of a knob over the corners of a study.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Optimum {
+    /// Domain.
+    pub domain: String,
+    /// Scheme.
+    pub scheme: String,
+    /// Corners in order.
+    pub corners: Vec<Corner>,
+    /// One setting for all, with each corner's own.
+    pub compromise: Compromise,
+    /// Remarks, each once.
+    pub notes: Vec<Note>,
+}
+
+/// A choice over the corners of a study.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Choice {
+    /// Domain.
+    pub domain: String,
+    /// Scheme.
+    pub scheme: String,
+    /// Corners in order.
+    pub corners: Vec<Corner>,
+    /// What was found.
+    pub chosen: Chosen,
+    /// Remarks, each once.
+    pub notes: Vec<Note>,
+}
+
+/// A study's question without answer.
+#[derive(Debug, thiserror::Error)]
+#[non_exhaustive]
+pub enum OptimumFailure {
+    /// A file.
+    #[error(transparent)]
+    Read(#[from] ReadError),
+    /// The search.
+    #[error(transparent)]
+    Optimum(#[from] OptimumError),
+    /// A part of the request that the study does not have.
+    #[error("{0}")]
+    Request(String),
+}
+
+/// Blocks of a domain under a scheme at corners, bound: what sites are made of.
+#[derive(Debug)]
+pub struct BoundCorners<'a> {
+    loaded: &'a Loaded,
+    /// Domain.
+    pub domain: &'a LoadedDomain,
+    /// Scheme.
+    pub scheme: &'a Scheme,
+    /// Corners.
+    pub corners: Vec<&'a Corner>,
+    blocks: Vec<(&'a Process, Kelvin, BoundBlock)>,
+}
+
+impl<'a> BoundCorners<'a> {
+    /// Finds and binds what a request names.
+    ///
+    /// # Errors
+    /// A name the study does not have, or a block that cannot be made at a corner.
+    pub fn new(loaded: &'a Loaded, at: &Where, options: &SolveOptions) -> Result<Self, OptimumFailure> {
+        fn pick<'t, T>(
+            kind: &str,
+            all: &'t [T],
+            name: &dyn Fn(&T) -> &str,
+            wanted: Option<&str>,
+        ) -> Result<&'t T, OptimumFailure> {
+            let found = match (wanted, all) {
+                (None, [one]) => Some(one),
+                (None, _) => None,
+                (Some(w), _) => all.iter().find(|x| name(x) == w),
+            };
+            found.ok_or_else(|| {
+                let names: Vec<&str> = all.iter().map(name).collect();
+                let asked = wanted.map_or_else(
+                    || format!("no {kind} is named"),
+                    |w| format!("the study has no {kind} `{w}`"),
+                );
+                OptimumFailure::Request(format!("{asked}; it has {}", names.join(", ")))
+            })
+        }
+        let domain = pick("domain", &loaded.domains, &|d| &d.name, at.domain.as_deref())?;
+        let scheme = pick("scheme", &loaded.schemes, &|s| &s.name, at.scheme.as_deref())?;
+        let corners = if at.corners.is_empty() {
+            loaded.corners.iter().collect()
+        } else {
+            let one = |c: &String| pick("corner", &loaded.corners, &|c: &Corner| &c.name, Some(c));
+            at.corners.iter().map(one).collect::<Result<Vec<_>, _>>()?
+        };
+        let block = loaded.block_under(domain, scheme).map_err(OptimumError::Scheme)?;
+        let blocks = corners
+            .par_iter()
+            .map(|c| {
+                let wrong = |e: String| OptimumFailure::Request(format!("corner `{}`: {e}", c.name));
+                let temp = c.check().map_err(|e| wrong(e.to_string()))?;
+                let process = loaded
+                    .processes
+                    .get(&c.process)
+                    .ok_or_else(|| wrong(format!("no process `{}`", c.process)))?;
+                let mut shelf = DeviceShelf::default();
+                let bound = BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options)
+                    .map_err(|e| wrong(e.to_string()))?;
+                Ok((process, temp, bound))
+            })
+            .collect::<Vec<Result<_, OptimumFailure>>>()
+            .into_iter()
+            .collect::<Result<_, _>>()?;
+        Ok(Self { loaded, domain, scheme, corners, blocks })
+    }
+
+    /// The sites.
+    pub fn sites(&self) -> Vec<Site<'_>> {
+        self.corners
+            .iter()
+            .zip(&self.blocks)
+            .map(|(c, (process, temp, block))| Site {
+                corner: &c.name,
+                process,
+                temp: *temp,
+                vdd_v: c.vdd_v,
+                block,
+                origin: &self.loaded.origin,
+            })
+            .collect()
+    }
+
+    fn owned(&self) -> Vec<Corner> {
+        self.corners.iter().map(|c| (*c).clone()).collect()
+    }
+}
+
+/// Reads a study.
+fn load(path: &Path) -> Result<Loaded, ReadError> {
+    let source = Source::open(path)?;
+    load_study(&read_study(&source)?, &source.path, &source.folder)
+}
+
+/// The optimum of a knob of a study's scheme, at every corner and over all of them.
+///
+/// # Errors
+/// A file, a name, or what [`compromise`] cannot do.
+pub fn optimum_of_study(
+    study: &Path,
+    spec: &OptimumSpec,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Optimum, OptimumFailure> {
+    optimum(&load(study)?, spec, options, progress)
+}
+
+/// The same of a loaded study; the same bits for any number of threads.
+///
+/// # Errors
+/// As [`optimum_of_study`].
+pub fn optimum(
+    loaded: &Loaded,
+    spec: &OptimumSpec,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Optimum, OptimumFailure> {
+    let bound = BoundCorners::new(loaded, &spec.at, options)?;
+    let sites = bound.sites();
+    let found = watched(sites.len(), progress, |w: &Watch| {
+        compromise(&sites, bound.scheme, &spec.range, &spec.goal, &w.done, &w.stop)
+    })?;
+    let mut notes = loaded.notes.clone();
+    for n in found.notes.iter().chain(found.optima.iter().flat_map(|o| &o.notes)) {
+        n.clone().add_once(&mut notes);
+    }
+    Ok(Optimum {
+        domain: bound.domain.name.clone(),
+        scheme: bound.scheme.name.clone(),
+        corners: bound.owned(),
+        compromise: found,
+        notes,
+    })
+}
+
+/// A choice among the settings of a study's scheme.
+///
+/// # Errors
+/// A file, a name, or what [`choose`] cannot do.
+pub fn choice_of_study(
+    study: &Path,
+    spec: &ChoiceSpec,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Choice, OptimumFailure> {
+    choice(&load(study)?, spec, options, progress)
+}
+
+/// The same of a loaded study; the same bits for any number of threads.
+///
+/// # Errors
+/// As [`choice_of_study`].
+pub fn choice(
+    loaded: &Loaded,
+    spec: &ChoiceSpec,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Choice, OptimumFailure> {
+    let bound = BoundCorners::new(loaded, &spec.at, options)?;
+    let sites = bound.sites();
+    let mut asked = spec.choice.clone();
+    if let Some(rail) = &spec.rail {
+        let farads = rail.farads(bound.domain.summary.instances);
+        asked.rail_f = Some(farads.map_err(|e| OptimumFailure::Request(e.to_string()))?);
+    }
+    let total = sites.len() * asked.size();
+    let chosen =
+        watched(total, progress, |w: &Watch| choose(&sites, bound.scheme, &asked, &w.done, &w.stop))?;
+    let mut notes = loaded.notes.clone();
+    for n in &chosen.notes {
+        n.clone().add_once(&mut notes);
+    }
+    Ok(Choice {
+        domain: bound.domain.name.clone(),
+        scheme: bound.scheme.name.clone(),
+        corners: bound.owned(),
+        chosen,
+        notes,
+    })
+}
