@@ -136,8 +136,8 @@ pub struct Chosen {
 
 /// Most candidates of one choice.
 const MOST: usize = 1_000_000;
-/// Candidates that one task works at one corner.
-const CHUNK: usize = 128;
+/// Candidates that one task works at one corner; droops are shared within it, so that it is not small.
+const CHUNK: usize = 1024;
 
 /// One candidate at one corner.
 #[derive(Debug, Clone, Copy)]
