@@ -23,6 +23,7 @@ use hushrail::read::counts::read_counts_csv;
 use hushrail::read::{DeckOptions, Source, read_deck};
 use hushrail::standby::Scheme;
 use hushrail::standby::scheme::SwitchSpec;
+use indexmap::IndexMap;
 
 fn line(n: usize, lo: f64, hi: f64) -> Vec<f64> {
     (0..n).map(|k| lo + (hi - lo) * k as f64 / (n - 1) as f64).collect()
@@ -33,7 +34,7 @@ fn choice(c: &mut Criterion) {
         .iter()
         .map(|dv| {
             let cards = CARDS.replace(".param dv = 0.0", &format!(".param dv = {dv}"));
-            Process::read("x", &[Source::from_text("cards.lib", cards)], &DeckOptions::default())
+            Process::read("x", &[Source::from_text("cards.lib", &cards)], &DeckOptions::default())
                 .expect("cards")
         })
         .collect();
@@ -42,8 +43,8 @@ fn choice(c: &mut Criterion) {
     let reader = CellReader { deck: &deck, rails: &rails, is_device: &|n| processes[0].defines(n) };
     let counts =
         read_counts_csv(&Source::from_text("n.csv", "cell,count\ninv,3000\nnand2,2000\n")).expect("counts");
-    let block = build_block(&counts, &reader, &Default::default(), &Default::default(), &mut Vec::new())
-        .expect("block");
+    let block =
+        build_block(&counts, &reader, &IndexMap::new(), &IndexMap::new(), &mut Vec::new()).expect("block");
     let origin: Arc<str> = Arc::from("bench");
     let mut at = Vec::new();
     for p in &processes {

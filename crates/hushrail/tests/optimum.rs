@@ -3,6 +3,7 @@
 
 mod common;
 
+use std::fmt::Write as _;
 use std::ops::ControlFlow;
 use std::path::PathBuf;
 use std::sync::OnceLock;
@@ -51,12 +52,14 @@ fn load(cards: &str, schemes: &str, temps: &str) -> Loaded {
     for (name, dv) in [("ss", 0.04), ("sf", 0.02), ("tt", 0.0), ("fs", -0.02), ("ff", -0.04)] {
         let shifted = cards.replace(".param dv = 0.0", &format!(".param dv = {dv}"));
         std::fs::write(dir.join(format!("{name}.lib")), shifted).expect("file");
-        text.push_str(&format!("[process.{name}]\nfiles=[\"{name}.lib\"]\n"));
+        write!(text, "[process.{name}]\nfiles=[\"{name}.lib\"]\n").expect("in memory");
     }
-    text.push_str(&format!(
+    write!(
+        text,
         "[cells]\nnetlists=[\"cells.sp\"]\n[grid]\nprocess=[\"ss\",\"sf\",\"tt\",\"fs\",\"ff\"]\nvdd_v=[1.0]\ntemp_c={temps}\n\
          [[domain]]\nname=\"d\"\ncounts=\"n.csv\"\n{schemes}"
-    ));
+    )
+    .expect("in memory");
     let study = read_study(&Source::from_text("s.toml", &text)).expect("study");
     let loaded = load_study(&study, "s.toml", &PathBuf::from(&dir)).expect("loaded");
     std::fs::remove_dir_all(&dir).expect("removed");
