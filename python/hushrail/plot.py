@@ -281,6 +281,8 @@ def leakage_by_setting(found: Optimum, corner: str, ax: Axes | None = None) -> A
             fontsize="small",
             ha="left" if left else "right",
             va="top",
+            bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 1.5},
+            zorder=5,
         )
     ax.set_yscale("log")
     ax.set_ylim(floor, 2.0 * float(total.max()))
