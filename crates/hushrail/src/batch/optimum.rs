@@ -208,7 +208,7 @@ fn load(path: &Path) -> Result<Loaded, ReadError> {
 /// The optimum of a knob of a study's scheme, at every corner and over all of them.
 ///
 /// # Errors
-/// A file, a name, or what [`compromise`] cannot do.
+/// A file, a name, or what [`compromise()`] cannot do.
 pub fn optimum_of_study(
     study: &Path,
     spec: &OptimumSpec,
@@ -249,7 +249,7 @@ pub fn optimum(
 /// A choice among the settings of a study's scheme.
 ///
 /// # Errors
-/// A file, a name, or what [`choose`] cannot do.
+/// A file, a name, or what [`choose()`] cannot do.
 pub fn choice_of_study(
     study: &Path,
     spec: &ChoiceSpec,

@@ -4,10 +4,10 @@
 //! - [`search`]: valleys of one variable, and the point in them where the slope is nothing.
 //! - [`site`]: a domain at a corner, asked again and again under schemes that differ in a knob.
 //! - [`corner`]: the optimum of one knob at one corner, and the mechanism that takes over beyond it.
-//! - [`compromise`]: one setting for all corners, and what each loses by it.
+//! - [`mod@compromise`]: one setting for all corners, and what each loses by it.
 //! - [`limits`]: what a choice must meet, and how far a candidate is from it.
 //! - [`front`]: candidates that none beats, and the nearest where none fits.
-//! - [`choose`]: candidates at all corners, limits, the Pareto front.
+//! - [`mod@choose`]: candidates at all corners, limits, the Pareto front.
 //!
 //! The objective is the power of all supplies asleep: what makes a voltage (quiescent current and efficiency of the pump, level
 //! shifter, bias generator) is in it.
