@@ -131,6 +131,30 @@ pub fn total(x: &[f64; 5]) -> f64 {
 }
 
 impl BlockCurrents {
+    /// Adds the books of another part.
+    pub(super) fn join(&mut self, other: Self) {
+        self.given_a += other.given_a;
+        self.cells.extend(other.cells);
+        self.states += other.states;
+        self.unstable += other.unstable;
+        self.steps += other.steps;
+        self.fallbacks += other.fallbacks;
+        self.outside = Outside::worse(self.outside.take(), other.outside);
+        for (to, x) in [
+            (&mut self.supply, &other.supply),
+            (&mut self.ground, &other.ground),
+            (&mut self.nwell, &other.nwell),
+            (&mut self.pwell, &other.pwell),
+            (&mut self.power_w, &other.power_w),
+            (&mut self.real_supply, &other.real_supply),
+            (&mut self.real_ground, &other.real_ground),
+            (&mut self.inputs_high, &other.inputs_high),
+            (&mut self.inputs_low, &other.inputs_low),
+        ] {
+            add(to, x, 1.0);
+        }
+    }
+
     /// No current anywhere.
     pub fn zero() -> Self {
         Self {
@@ -154,7 +178,7 @@ impl BlockCurrents {
     }
 }
 
-fn add(to: &mut [f64; 5], x: &[f64; 5], weight: f64) {
+pub(super) fn add(to: &mut [f64; 5], x: &[f64; 5], weight: f64) {
     for (t, v) in to.iter_mut().zip(x) {
         *t += weight * v;
     }
@@ -207,24 +231,7 @@ impl BoundBlock {
             .collect();
         let mut sum = BlockCurrents::zero();
         for p in parts {
-            let p = p?;
-            for (to, x) in [
-                (&mut sum.supply, &p.supply),
-                (&mut sum.ground, &p.ground),
-                (&mut sum.nwell, &p.nwell),
-                (&mut sum.pwell, &p.pwell),
-                (&mut sum.power_w, &p.power_w),
-                (&mut sum.inputs_high, &p.inputs_high),
-                (&mut sum.inputs_low, &p.inputs_low),
-            ] {
-                add(to, x, 1.0);
-            }
-            sum.cells.extend(p.cells);
-            sum.states += p.states;
-            sum.unstable += p.unstable;
-            sum.steps += p.steps;
-            sum.fallbacks += p.fallbacks;
-            sum.outside = Outside::worse(sum.outside.take(), p.outside);
+            sum.join(p?);
         }
         if self.given_a != 0.0 {
             let i = self.given_a * (levels.supply_v - levels.ground_v) / self.vdd_v;

@@ -5,10 +5,9 @@ use std::sync::atomic::AtomicBool;
 
 use super::build::{StateWeights, fits_pattern};
 use super::change::Parked;
-use super::current::{BlockCurrents, BlockError, BoundBlock, Member, weigh};
+use super::current::{BlockCurrents, BlockError, BoundBlock, Member, add, weigh};
 use super::curve::Draw;
 use crate::cell::{Levels, Role};
-use crate::device::range::Outside;
 
 impl BoundBlock {
     fn with_members(&self, members: Vec<Member>, given_a: f64) -> Self {
@@ -115,36 +114,7 @@ impl Parts {
     }
 }
 
-fn add(to: &mut [f64; 5], x: &[f64; 5], sign: f64) {
-    for (t, v) in to.iter_mut().zip(x) {
-        *t += sign * v;
-    }
-}
-
 impl BlockCurrents {
-    fn join(&mut self, other: &Self) {
-        self.given_a += other.given_a;
-        self.cells.extend(other.cells.iter().cloned());
-        self.states += other.states;
-        self.unstable += other.unstable;
-        self.steps += other.steps;
-        self.fallbacks += other.fallbacks;
-        self.outside = Outside::worse(self.outside.take(), other.outside.clone());
-        for (to, x) in [
-            (&mut self.supply, &other.supply),
-            (&mut self.ground, &other.ground),
-            (&mut self.nwell, &other.nwell),
-            (&mut self.pwell, &other.pwell),
-            (&mut self.power_w, &other.power_w),
-            (&mut self.real_supply, &other.real_supply),
-            (&mut self.real_ground, &other.real_ground),
-            (&mut self.inputs_high, &other.inputs_high),
-            (&mut self.inputs_low, &other.inputs_low),
-        ] {
-            add(to, x, 1.0);
-        }
-    }
-
     /// Books all of it on the real rails, wells included.
     fn on_real_rails(mut self) -> Self {
         for (real, rail, well) in [
@@ -177,12 +147,12 @@ impl Draw for Parts {
                 down.ground = [0.0; 5];
                 add(&mut down.real_supply, &down.inputs_high, 1.0);
                 add(&mut down.supply, &down.inputs_high, -1.0);
-                up.join(&down);
+                up.join(down);
                 up
             }
         };
         if let Some(island) = self.island(stop)? {
-            sum.join(&island.clone().on_real_rails());
+            sum.join(island.clone().on_real_rails());
         }
         Ok(sum)
     }

@@ -465,6 +465,15 @@ pub const RANGES: &[(Id, Range, &[Id])] = &[
     (Id::Tnom, Range::Above(-273.15), &[]),
 ];
 
+/// Values outside the ranges that bear on a card with these values, in the order of [`RANGES`].
+pub fn ranges_broken(value: impl Fn(Id) -> f64) -> impl Iterator<Item = (Id, f64, Range)> {
+    RANGES.iter().filter_map(move |&(id, range, used_by)| {
+        let bears = used_by.is_empty() || used_by.iter().any(|&flag| value(flag) != 0.0);
+        let v = value(id);
+        (bears && !range.allows(v)).then_some((id, v, range))
+    })
+}
+
 /// Number of parameters.
 pub const COUNT: usize = ROWS.len();
 

@@ -3,7 +3,7 @@
 use std::ops::Index;
 
 use super::table::{
-    COUNT, Fallback, IDS, Id, Kind, Meaning, Part, RANGES, ROWS, Range, known_names, meaning,
+    COUNT, Fallback, IDS, Id, Kind, Meaning, Part, ROWS, Range, known_names, meaning, ranges_broken,
 };
 use crate::device::dual::Real;
 use crate::device::{Geometry, Polarity};
@@ -204,12 +204,10 @@ impl Card {
             return Err(ReadError::Range { at: place(Id::Version), name: "version".into(), value, wanted });
         }
         // a value without bins is refused where it stands; see `Values::out_of_range` for the others
-        for &(id, range, used_by) in RANGES {
-            let used = used_by.is_empty() || used_by.iter().any(|&flag| self.base(flag) != 0.0);
-            if used && !range.allows(self.base(id)) && self.terms.iter().all(|t| t.0 != id) {
-                let (name, value) = (ROWS[id as usize].name.to_owned(), self.base(id).to_string());
-                return Err(ReadError::Range { at: place(id), name, value, wanted: format!("want {range}") });
-            }
+        let bins = |id: Id| self.terms.iter().any(|t| t.0 == id);
+        if let Some((id, value, range)) = ranges_broken(|id| self.base(id)).find(|(id, ..)| !bins(*id)) {
+            let (name, value) = (ROWS[id as usize].name.to_owned(), value.to_string());
+            return Err(ReadError::Range { at: place(id), name, value, wanted: format!("want {range}") });
         }
         Ok(())
     }
@@ -307,10 +305,7 @@ impl<P: Real> Values<P> {
 
     /// The first value outside its range, with the range.
     pub fn out_of_range(&self) -> Option<(Id, f64, Range)> {
-        let holds =
-            |used_by: &[Id]| used_by.is_empty() || used_by.iter().any(|&flag| self[flag].val() != 0.0);
-        let mut all = RANGES.iter().filter(|(.., used_by)| holds(used_by));
-        all.find_map(|&(id, range, _)| (!range.allows(self[id].val())).then(|| (id, self[id].val(), range)))
+        ranges_broken(|id| self[id].val()).next()
     }
 
     /// Replaces one value.
