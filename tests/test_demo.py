@@ -57,7 +57,10 @@ def test_every_part_of_a_scheme_has_an_example() -> None:
     text = demo.CATALOGUE.read_text(encoding="utf-8")
     keys = "header footer stacked overdrive_v well_bias_v body_to_gate nwell_bias_v pwell_bias_v header_clamp"
     keys += " footer_clamp held_supply_v parked zigzag changes models lengthen_m stack powered added"
-    keys += " overhead_a pump_efficiency share"
+    keys += (
+        " overhead_a pump_efficiency share boost_v awake_well_bias_v awake_nwell_bias_v awake_pwell_bias_v"
+    )
+    keys += " nwell"
     for key in keys.split():
         assert f"{key} =" in text, key
     result = hushrail.estimate(demo.CATALOGUE)

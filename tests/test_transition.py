@@ -32,7 +32,7 @@ from hushrail.transition import (
 from scipy.integrate import solve_ivp
 
 RAIL = Rail(per_instance_f=2e-15)
-COSTS = Costs(gate=Gate(overlap_f_m=3e-10), pump_efficiency=0.5, control_j=1e-15)
+COSTS = Costs(gate=Gate(overlap_f_m=3e-10), control_j=1e-15)
 SLEW_S = 1e-10
 WIDTH_M, FINGER_M = 1e-5, 2e-6
 START_S = 2e-10

@@ -104,6 +104,7 @@ class Switch:
     overdrive_v: float = 0.0
     boost_v: float = 0.0
     well_bias_v: float = 0.0
+    awake_well_bias_v: float | None = None
     diffusion_m: float | None = None
     edge_m: float | None = None
 
@@ -255,11 +256,19 @@ class Report:
             raise RangeError(f"no point of domain `{domain}` under scheme `{scheme}`; see `failures`")
         return max(own, key=lambda p: p.droop.droop_v)
 
+    def to_json(self, indent: int | None = None) -> str:
+        """Write as JSON text."""
+        return records.to_text(self, indent)
+
+    def flat(self) -> Iterator[dict[str, Any]]:
+        """Give one flat row for each point, SI."""
+        return map(_flat, self.points)
+
     def to_pandas(self) -> pd.DataFrame:
         """One row for each point, SI units in the column names."""
         import pandas as pd
 
-        return pd.DataFrame([_flat(p) for p in self.points])
+        return pd.DataFrame(list(self.flat()))
 
 
 def _flat(p: Point) -> dict[str, Any]:
@@ -441,12 +450,21 @@ class Kept:
     failures: tuple[Failure, ...]
     stopped: bool
 
+    def to_json(self, indent: int | None = None) -> str:
+        """Write as JSON text."""
+        return records.to_text(self, indent)
+
+    def flat(self) -> Iterator[dict[str, Any]]:
+        """Give one flat row for each cell and corner, SI."""
+        columns = ("cell", "corner", "retention_v", "z_score")
+        for r in self.retentions:
+            yield {c: getattr(r, c) for c in columns}
+
     def to_pandas(self) -> pd.DataFrame:
         """One row for each cell and corner."""
         import pandas as pd
 
-        columns = ("cell", "corner", "retention_v", "z_score")
-        return pd.DataFrame([{c: getattr(r, c) for c in columns} for r in self.retentions])
+        return pd.DataFrame(list(self.flat()))
 
 
 @dataclass(frozen=True)

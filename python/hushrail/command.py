@@ -15,10 +15,10 @@ from pathlib import Path
 from typing import Any, NoReturn, TextIO, TypeVar
 
 from hushrail import __doc__ as hushrail_doc
-from hushrail import __version__, report, study
+from hushrail import __version__, asked, costs, report, study
 from hushrail.errors import HushrailError
 from hushrail.leakage import Comparison
-from hushrail.results import Note
+from hushrail.results import Failure, Note
 from hushrail.study import Progress
 
 __all__ = ["interrupted", "main", "terminal_width", "watched"]
@@ -29,7 +29,7 @@ T = TypeVar("T")
 
 EXITS = """exit status:
   0  done
-  1  done, and a limit is broken (estimate)
+  1  done, and a limit is broken or met by no candidate
   2  could not run, or could not run in full: what failed is listed"""
 
 
@@ -110,6 +110,16 @@ def _parser() -> argparse.ArgumentParser:
     sub = command("estimate", _estimate, "run a study: domains × schemes × corners")
     sub.add_argument("study", metavar="STUDY.toml", help="the study; paths in it start at its folder")
 
+    for name, run, text in (
+        ("awake", _awake, "droop, on-resistance, size and margins that a study's [awake] table asks for"),
+        ("keep", _keep, "lowest rails that keep state, as a study's [keep] table asks"),
+        ("transitions", _transitions, "falling asleep and waking, as a study's [transition] table asks"),
+        ("optimum", _optimum, "best settings of a knob, as a study's [[optimum]] tables ask"),
+        ("choose", _choose, "fronts of schemes under limits, as a study's [[choice]] tables ask"),
+    ):
+        sub = command(name, run, text)
+        sub.add_argument("study", metavar="STUDY.toml", help="the study; paths in it start at its folder")
+
     sub = command("cells", _cells, "leakage table of a study's cells at its corners")
     sub.add_argument("study", metavar="STUDY.toml", help="the study; its domains and schemes are not needed")
     sub.add_argument(
@@ -163,6 +173,78 @@ def _estimate(args: argparse.Namespace) -> int:
     if result.failures:
         return _error("not every point could be computed", report.of_failures(result.failures))
     return LIMIT if result.broken else OK
+
+
+def _awake(args: argparse.Namespace) -> int:
+    _check_outputs(args, [args.study])
+    result = watched("points", lambda progress: asked.awake(args.study, progress), quiet=args.quiet)
+    _deliver(
+        args,
+        result.to_json,
+        result.flat(),
+        to_text=lambda width: costs.of_awake(result, width, failures=False),
+    )
+    return _listed_failures(result.failures)
+
+
+def _keep(args: argparse.Namespace) -> int:
+    _check_outputs(args, [args.study])
+    result = watched("cells", lambda progress: asked.keep(args.study, progress), quiet=args.quiet)
+    _deliver(
+        args,
+        result.to_json,
+        result.flat(),
+        to_text=lambda width: costs.of_keep(result, width, failures=False),
+    )
+    return _listed_failures(result.failures)
+
+
+def _transitions(args: argparse.Namespace) -> int:
+    _check_outputs(args, [args.study])
+    result = watched("points", lambda progress: asked.transitions(args.study, progress), quiet=args.quiet)
+    _deliver(
+        args,
+        result.to_json,
+        result.flat(),
+        notes=result.notes,
+        to_text=lambda width: costs.of_transitions(result, width, failures=False),
+    )
+    code = _listed_failures(result.failures)
+    return code or (LIMIT if any(not p.stress.holds for p in result.points) else OK)
+
+
+def _optimum(args: argparse.Namespace) -> int:
+    _check_outputs(args, [args.study])
+    result = watched("corners", lambda progress: asked.optima(args.study, progress), quiet=args.quiet)
+    notes = [n for each in result.answers for n in each.notes]
+    _deliver(
+        args,
+        result.to_json,
+        result.flat(),
+        notes=notes,
+        to_text=lambda width: costs.of_optima(result, width),
+    )
+    return OK
+
+
+def _choose(args: argparse.Namespace) -> int:
+    _check_outputs(args, [args.study])
+    result = watched("candidates", lambda progress: asked.choices(args.study, progress), quiet=args.quiet)
+    notes = [n for each in result.answers for n in each.notes]
+    _deliver(
+        args,
+        result.to_json,
+        result.flat(),
+        notes=notes,
+        to_text=lambda width: costs.of_choices(result, width),
+    )
+    return LIMIT if any(each.chosen.infeasible is not None for each in result.answers) else OK
+
+
+def _listed_failures(failures: Sequence[Failure]) -> int:
+    if failures:
+        return _error("not everything could be computed", report.of_failures(failures))
+    return OK
 
 
 def _cells(args: argparse.Namespace) -> int:

@@ -16,7 +16,7 @@ from typing import Any
 
 import numpy as np
 
-from hushrail import command, report, study
+from hushrail import command, demo_costs, report, study
 from hushrail.device import Process
 from hushrail.errors import HushrailError
 from hushrail.results import Estimate, Point
@@ -33,6 +33,7 @@ CATALOGUE = DATA / "catalogue.toml"
 CARDS = DATA / "cards" / "kelp40.lib"
 """Cards of the invented process, with the sections tt, ss, ff, sf and fs."""
 PICTURE = "hushrail-demo.png"
+COSTS_PICTURE = "hushrail-demo-costs.png"
 
 VDD_V = 1.1
 TEMPS_C = (-40.0, 25.0, 125.0)
@@ -51,15 +52,15 @@ FINGER: dict[str, float] = {
 
 
 def main(argv: Sequence[str] | None = None) -> int:
-    """Run the study, print its tables and what they tell, write the picture."""
+    """Run the studies, print their tables and what they tell, write the pictures."""
     parser = argparse.ArgumentParser(
         prog="python -m hushrail.demo", description=(__doc__ or "").split("\n")[0]
     )
-    parser.add_argument("--out", metavar="DIR", default=".", help="folder for the picture (the current one)")
+    parser.add_argument("--out", metavar="DIR", default=".", help="folder for the pictures (the current one)")
     args = parser.parse_args(argv)
     folder = Path(args.out)
     if not folder.is_dir():
-        print(f"error: {folder}: no such folder; want one for {PICTURE}", file=sys.stderr)
+        print(f"error: {folder}: no such folder; want one for {PICTURE} and {COSTS_PICTURE}", file=sys.stderr)
         return 2
     try:
         return _run(folder)
@@ -83,11 +84,13 @@ def _run(folder: Path) -> int:
             )
         )
     print("\n" + catalogue(study.estimate(CATALOGUE), width))
-    path = folder / PICTURE
-    figure = picture(result, process)
-    figure.savefig(path, dpi=150)
-    print(f"\npicture: {path}")
-    return 2 if result.failures else 0
+    answers = demo_costs.answers(process, lambda what, work: command.watched(what, work))
+    print("\n" + demo_costs.tables(answers, width))
+    drawn = {PICTURE: picture(result, process), COSTS_PICTURE: demo_costs.picture(answers)}
+    for name, figure in drawn.items():
+        figure.savefig(folder / name, dpi=150 if name == PICTURE else 110)
+        print(f"\npicture: {folder / name}")
+    return 2 if result.failures or answers.failed else 0
 
 
 def catalogue(result: Estimate, width: int) -> str:

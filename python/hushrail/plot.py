@@ -789,10 +789,12 @@ def energy_saved(points: Sequence[TransitionPoint], ax: Axes | None = None) -> A
     ax.set_xscale("log")
     ax.set_ylim(-1.6 * scale, 2.5 * scale)
     _time_axis(ax, "length of the sleep")
-    _engineering_axis(ax, "J", vertical=True)
+    _fine_axis(ax.yaxis, "J")
     ax.set_ylabel("energy saved, costs taken off")
     ax.set_title("From which sleep on it pays", fontsize="medium")
-    _legend_below(ax, ax.get_legend_handles_labels()[0], columns=1)
+    lines = ax.get_legend_handles_labels()[0]
+    lines += ax.plot([], [], color="0.3", linestyle="--", linewidth=0.9, label="if the rail fell at once")
+    _legend_below(ax, lines, columns=1)
     return ax
 
 

@@ -13,10 +13,14 @@ from hushrail.table import Column, render
 from hushrail.units import engineering, factor, percent, span
 
 __all__ = [
+    "BROKEN",
+    "NONE",
+    "listed",
     "of_comparison",
     "of_counts",
     "of_estimate",
     "of_failures",
+    "of_notes",
     "of_table",
     "of_unmatched",
 ]
@@ -58,7 +62,7 @@ def of_estimate(result: Estimate, width: int = 100, *, failures: bool = True) ->
     parts += _broken(result, width)
     parts += _uncovered(result.domains, width)
     if failures:
-        parts += _listed("Failed", of_failures(result.failures), width)
+        parts += listed("Failed", of_failures(result.failures), width)
     parts += _notes(result.notes, width)
     return "\n\n".join(part for part in parts if part)
 
@@ -186,7 +190,7 @@ def _broken(result: Estimate, width: int) -> list[str]:
             lines.append(f"{title}: limit {allowed} broken at {_many(len(broken), 'point')}; most {most}")
         else:
             lines.append(f"{title}: limit {allowed} kept at every point; most {most}")
-    return _listed("Limits", lines, width)
+    return listed("Limits", lines, width)
 
 
 def _over(check: LimitCheck) -> float:
@@ -212,7 +216,7 @@ def _uncovered(domains: Iterable[Domain], width: int) -> list[str]:
             names = ", ".join(f"{each.master} ×{each.count:,}" for each in masters)
             total = sum(each.count for each in masters)
             lines.append(f"{domain.name}: {_many(total, 'instance')} {policy}: {names}")
-    return _listed("Not computed from transistors", lines, width)
+    return listed("Not computed from transistors", lines, width)
 
 
 def of_failures(failures: Iterable[Failure]) -> list[str]:
@@ -236,10 +240,11 @@ def of_notes(notes: Sequence[Note], width: int = 100) -> str:
 
 
 def _notes(notes: Sequence[Note], width: int) -> list[str]:
-    return _listed("Notes", [f"{note.text} [{note.code}]" for note in dict.fromkeys(notes)], width)
+    return listed("Notes", [f"{note.text} [{note.code}]" for note in dict.fromkeys(notes)], width)
 
 
-def _listed(title: str, lines: Sequence[str], width: int) -> list[str]:
+def listed(title: str, lines: Sequence[str], width: int) -> list[str]:
+    """Write lines under a title, wrapped; a list of one text, or of none."""
     if not lines:
         return []
     wrapped = [
@@ -282,7 +287,7 @@ def of_table(result: LeakageTable, width: int = 100, *, states: bool = False, fa
     elif result.rows:
         parts.append(_cells(result, width))
     if failures:
-        parts += _listed("Failed", of_failures(result.failures), width)
+        parts += listed("Failed", of_failures(result.failures), width)
     parts += _notes(result.notes, width)
     return "\n\n".join(part for part in parts if part)
 
@@ -378,9 +383,9 @@ def of_comparison(result: Comparison, width: int = 100, *, worst: int = 10, fail
             doubts.append(f"{where}: {power}: {'; '.join(each.reasons)}")
         more = len(result.suspects) - len(doubts)
         doubts += [f"and {_many(more, 'row')} more"] if more else []
-        parts += _listed("Rows of the table under suspicion", doubts, width)
+        parts += listed("Rows of the table under suspicion", doubts, width)
     if failures:
-        parts += _listed("Not compared", of_unmatched(result), width)
+        parts += listed("Not compared", of_unmatched(result), width)
     parts += _notes(result.compared.notes, width)
     return "\n\n".join(parts)
 

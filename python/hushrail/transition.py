@@ -91,12 +91,12 @@ class Gate:
 class Costs:
     """Costs of a round trip besides the rail; energies in J that are left out count as zero and are said to.
 
-    ``pump_efficiency`` must be given with overdrive, boost or well bias; ``nwell_f`` and ``pwell_f``, F,
-    with bias.
+    ``nwell_f`` and ``pwell_f``, F, must be given when the block's wells are at another bias asleep than
+    awake, ``switch_well_f``, F, when the switch's is. The pump's efficiency is that of the scheme.
     """
 
     gate: Gate = Gate()
-    pump_efficiency: float | None = None
+    switch_well_f: float | None = None
     nwell_f: float | None = None
     pwell_f: float | None = None
     retention_save_j: float | None = None

@@ -22,6 +22,11 @@ use crate::error;
 use crate::run::run;
 use crate::study::text;
 
+/// What is asked, or nothing: then a table of the study says it.
+fn maybe<T: DeserializeOwned>(json: Option<&str>) -> PyResult<Option<T>> {
+    json.map(request).transpose()
+}
+
 fn request<T: DeserializeOwned>(json: &str) -> PyResult<T> {
     serde_json::from_str(json).map_err(|e| error::range(format!("request: {e}")))
 }
@@ -36,24 +41,29 @@ fn raised(e: &AwakeError) -> PyErr {
 
 /// Domains of a study awake; JSON.
 #[pyfunction]
-#[pyo3(signature = (path, json, *, progress=None))]
+#[pyo3(signature = (path, json=None, *, progress=None))]
 pub fn awake_domains(
     py: Python<'_>,
     path: &str,
-    json: &str,
+    json: Option<&str>,
     progress: Option<Py<PyAny>>,
 ) -> PyResult<String> {
-    let r = request(json)?;
-    let found = run(py, progress.as_ref(), |p| awake_study(path, &r, &SolveOptions::default(), p))?;
+    let r = maybe(json)?;
+    let found = run(py, progress.as_ref(), |p| awake_study(path, r.as_ref(), &SolveOptions::default(), p))?;
     text(&found.map_err(|e| error::read(&e))?)
 }
 
 /// Lowest spans that keep state; JSON.
 #[pyfunction]
-#[pyo3(signature = (path, json, *, progress=None))]
-pub fn awake_keep(py: Python<'_>, path: &str, json: &str, progress: Option<Py<PyAny>>) -> PyResult<String> {
-    let r = request(json)?;
-    let found = run(py, progress.as_ref(), |p| keep_study(path, &r, &SolveOptions::default(), p))?;
+#[pyo3(signature = (path, json=None, *, progress=None))]
+pub fn awake_keep(
+    py: Python<'_>,
+    path: &str,
+    json: Option<&str>,
+    progress: Option<Py<PyAny>>,
+) -> PyResult<String> {
+    let r = maybe(json)?;
+    let found = run(py, progress.as_ref(), |p| keep_study(path, r.as_ref(), &SolveOptions::default(), p))?;
     text(&found.map_err(|e| error::read(&e))?)
 }
 

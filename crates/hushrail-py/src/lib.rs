@@ -22,7 +22,7 @@ mod _core {
     #[pymodule_export]
     use crate::device::{Device, Process};
     #[pymodule_export]
-    use crate::optimum::{choose, optimum};
+    use crate::optimum::{choices_asked, choose, optima_asked, optimum};
     #[pymodule_export]
     use crate::own::{CellTable, CompactModel, TableModel};
     #[pymodule_export]

@@ -2,10 +2,13 @@
 
 use std::path::PathBuf;
 
-use hushrail::batch::optimum::{OptimumFailure, choice_of_study, optimum_of_study};
+use hushrail::batch::optimum::{
+    OptimumFailure, choice_of_study, choices_of_study, optima_of_study, optimum_of_study,
+};
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::optimum::OptimumError;
 use pyo3::prelude::*;
+use serde::Serialize;
 
 use crate::error;
 use crate::run::run;
@@ -38,4 +41,25 @@ pub fn choose(py: Python<'_>, path: PathBuf, spec: &str, progress: Option<Py<PyA
     let spec = serde_json::from_str(spec).map_err(|e| error::range(format!("choose: {e}")))?;
     let found = run(py, progress.as_ref(), |p| choice_of_study(&path, &spec, &SolveOptions::default(), p))?;
     text(&found.map_err(|e| raised(&e))?)
+}
+
+#[derive(Serialize)]
+struct Answers<T> {
+    answers: Vec<T>,
+}
+
+/// Every optimum that the tables of a study ask for; JSON.
+#[pyfunction]
+#[pyo3(signature = (path, *, progress=None))]
+pub fn optima_asked(py: Python<'_>, path: PathBuf, progress: Option<Py<PyAny>>) -> PyResult<String> {
+    let found = run(py, progress.as_ref(), |p| optima_of_study(&path, &SolveOptions::default(), p))?;
+    text(&Answers { answers: found.map_err(|e| raised(&e))? })
+}
+
+/// Every choice that the tables of a study ask for; JSON.
+#[pyfunction]
+#[pyo3(signature = (path, *, progress=None))]
+pub fn choices_asked(py: Python<'_>, path: PathBuf, progress: Option<Py<PyAny>>) -> PyResult<String> {
+    let found = run(py, progress.as_ref(), |p| choices_of_study(&path, &SolveOptions::default(), p))?;
+    text(&Answers { answers: found.map_err(|e| raised(&e))? })
 }

@@ -70,11 +70,17 @@ pub fn sensitivities(
     text(&result.map_err(|e| error::read(&e))?)
 }
 
-/// Transitions of the domains of a study; JSON in, JSON out.
+/// Transitions of the domains of a study, as asked or as its own table asks; JSON in, JSON out.
 #[pyfunction]
-#[pyo3(signature = (path, spec, *, progress=None))]
-pub fn transitions(py: Python<'_>, path: &str, spec: &str, progress: Option<Py<PyAny>>) -> PyResult<String> {
-    let spec = serde_json::from_str(spec).map_err(|e| error::range(format!("transitions: {e}")))?;
+#[pyo3(signature = (path, spec=None, *, progress=None))]
+pub fn transitions(
+    py: Python<'_>,
+    path: &str,
+    spec: Option<&str>,
+    progress: Option<Py<PyAny>>,
+) -> PyResult<String> {
+    let spec = spec.map(serde_json::from_str).transpose();
+    let spec = spec.map_err(|e| error::range(format!("transitions: {e}")))?;
     let request = TransitionRequest { study: path.into(), spec };
     let result = run(py, progress.as_ref(), |p| transitions_of_study(&request, &SolveOptions::default(), p))?;
     text(&result.map_err(|e| error::read(&e))?)

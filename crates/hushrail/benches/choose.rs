@@ -67,17 +67,9 @@ fn choice(c: &mut Criterion) {
         })
         .collect();
     let footer = SwitchSpec {
-        model: "nx".into(),
-        width_m: 40e-6,
-        length_m: 60e-9,
         finger_width_m: Some(1e-6),
-        overdrive_v: 0.0,
-        boost_v: 0.0,
-        well_bias_v: 0.0,
-        body_to_gate: false,
-        stacked: 1,
         diffusion_m: Some(120e-9),
-        edge_m: None,
+        ..SwitchSpec::new("nx", 40e-6, 60e-9)
     };
     let scheme = Scheme { name: "footer".into(), footer: Some(footer), ..Scheme::default() };
     let spec = ChooseSpec {

@@ -18,6 +18,7 @@ use hushrail::device::process::Request;
 use hushrail::device::{Bias, Branches, Device, Geometry};
 use hushrail::physics::Kelvin;
 use hushrail::read::{DeckOptions, Place, Source, read_deck};
+use hushrail::standby::rest::Clamps;
 use hushrail::standby::scheme::SwitchSpec;
 use hushrail::standby::switch::Side;
 use hushrail::standby::{Scheme, Switch, rest_rails, settle_with};
@@ -132,7 +133,8 @@ fn rest_on_curve(c: &mut Criterion) {
         Switch::new(&header, Side::Header, &p, temp, 1.0, &mut shelf, &Arc::from("bench")).expect("switch");
     c.bench_function("rest point on a curve", |b| {
         b.iter(|| {
-            rest_rails(&scheme, black_box(&curve), 1.0, Some(switch.clone()), None, &stop).expect("rest")
+            rest_rails(&scheme, black_box(&curve), 1.0, Some(switch.clone()), None, Clamps::default(), &stop)
+                .expect("rest")
         });
     });
     c.bench_function("rest point on a curve, all books", |b| {
@@ -142,7 +144,8 @@ fn rest_on_curve(c: &mut Criterion) {
     });
     c.bench_function("rest point by the block itself", |b| {
         b.iter(|| {
-            rest_rails(&scheme, black_box(&bound), 1.0, Some(switch.clone()), None, &stop).expect("rest")
+            rest_rails(&scheme, black_box(&bound), 1.0, Some(switch.clone()), None, Clamps::default(), &stop)
+                .expect("rest")
         });
     });
 }

@@ -50,9 +50,11 @@ counts = "n.csv"
 [[scheme]]
 name = "header"
 header = {{ model = "pfet_01v8_hvt", width_m = 2e-4, length_m = 1.5e-7, finger_width_m = 1e-6, overdrive_v = 0.2, diffusion_m = 2.8e-7 }}
+pump_efficiency = 0.5
 [[scheme]]
 name = "footer"
 footer = {{ model = "nfet_01v8", width_m = 1e-4, length_m = 1.5e-7, finger_width_m = 1e-6, overdrive_v = 0.2, diffusion_m = 2.8e-7 }}
+pump_efficiency = 0.5
 "#
     );
     let study = read_study(&Source::from_text("study.toml", &text)).expect("study");
@@ -63,7 +65,6 @@ footer = {{ model = "nfet_01v8", width_m = 1e-4, length_m = 1.5e-7, finger_width
         rail: RailCapacitance { per_instance_f: Some(3e-15), ..Default::default() },
         costs: CycleCosts {
             gate: GateCapacitance { overlap_f_m: Some(5e-10), ..Default::default() },
-            pump_efficiency: Some(0.5),
             ..Default::default()
         },
         wake: WakeSpec { gate_slew_s: 1e-10, ..Default::default() },

@@ -279,7 +279,7 @@ pub fn hold(
 }
 
 /// What a cell must keep.
-#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct Need {
     /// Side of the square that must be left, V.

@@ -10,7 +10,7 @@ use serde::{Deserialize, Serialize};
 
 use super::load::{Library, Loaded, load_study};
 use super::run::Failure;
-use super::study::read_study;
+use super::study::{asked, read_study};
 use super::watch::{Progress, Watch, watched};
 use crate::awake::AwakeError;
 use crate::awake::delay::{DelayPenalty, Swing, delay_penalty};
@@ -24,7 +24,7 @@ use crate::corner::Corner;
 use crate::device::process::Process;
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::standby::switch::{Side, Switch};
-use crate::standby::{Scheme, SwitchSpec, WellTie};
+use crate::standby::{Scheme, SwitchSpec};
 
 /// What is asked of a study's domains while they work.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -169,17 +169,18 @@ pub(super) fn temperature(c: &Corner) -> Result<crate::physics::Kelvin, AwakeErr
     })
 }
 
-/// Runs the awake question on a study.
+/// Runs the awake question on a study; what its `[awake]` table asks when no request is given.
 ///
 /// # Errors
 /// Files that cannot be read, or a load of a domain that the study does not have; what fails at a point is listed in the report.
 pub fn awake_study(
     path: &str,
-    request: &AwakeRequest,
+    request: Option<&AwakeRequest>,
     options: &SolveOptions,
     progress: &mut Progress<'_>,
 ) -> Result<AwakeReport, ReadError> {
     let (s, source) = study(path)?;
+    let request = &asked(request, s.awake.as_ref(), "[awake]", &source)?;
     let loaded = load_study(&s, &source.path, &source.folder)?;
     let unknown = |kind, name: &String, names: Vec<&str>| ReadError::Unknown {
         at: Place::new(&source.path, 1, 1),
@@ -320,7 +321,7 @@ fn point(
                 let (on, off_a) = (on_point(s, d)?, s.off_current_a());
                 Ok::<_, AwakeError>(SwitchAwake {
                     merit_v: on.chord_ohm * off_a,
-                    body_v: (s.body_v - s.rail_v).abs(),
+                    body_v: (s.awake_body_v - s.rail_v).abs(),
                     on,
                     off_a,
                 })
@@ -336,14 +337,7 @@ fn point(
     };
     let (supply_v, ground_v) = (vdd - over_header, over_footer);
     let full = Levels::powered(vdd);
-    let drooped = Levels {
-        supply_v,
-        ground_v,
-        nwell_v: if scheme.nwell == WellTie::Virtual { supply_v } else { vdd },
-        pwell_v: if scheme.pwell == WellTie::Virtual { ground_v } else { 0.0 },
-        high_v: supply_v,
-        low_v: ground_v,
-    };
+    let drooped = scheme.awake_levels(vdd, supply_v, ground_v);
     let mut list = Vec::new();
     for cell in cells {
         if stopped() {

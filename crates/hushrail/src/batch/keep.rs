@@ -10,6 +10,7 @@ use serde::{Deserialize, Serialize};
 use super::awake::{process, study, temperature};
 use super::load::{Library, load_study};
 use super::run::Failure;
+use super::study::asked;
 use super::watch::{Progress, watched};
 use crate::awake::AwakeError;
 use crate::awake::clamp::leaks_at;
@@ -33,6 +34,7 @@ pub struct KeepRequest {
     /// How the rails come together.
     pub collapse: Collapse,
     /// What must be left.
+    #[serde(default)]
     pub need: Need,
     /// Domain whose leakage at the lowest span is wanted.
     #[serde(default)]
@@ -69,17 +71,18 @@ pub struct ClampLevel {
     pub full_leak_a: Option<f64>,
 }
 
-/// Lowest spans that keep the state of a study's cells.
+/// Lowest spans that keep the state of a study's cells; what its `[keep]` table asks when no request is given.
 ///
 /// # Errors
 /// Files that cannot be read, cells or a domain that do not exist; what fails at a corner is listed in the report.
 pub fn keep_study(
     path: &str,
-    request: &KeepRequest,
+    request: Option<&KeepRequest>,
     options: &SolveOptions,
     progress: &mut Progress<'_>,
 ) -> Result<KeepReport, ReadError> {
     let (s, source) = study(path)?;
+    let request = &asked(request, s.keep.as_ref(), "[keep]", &source)?;
     let library = Library::load(&s, &source.folder)?;
     let cells = library.cells(&request.cells, &mut Vec::new())?;
     let loaded = match &request.domain {

@@ -6,7 +6,7 @@ use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
 use super::load::{Loaded, LoadedDomain, load_study};
-use super::study::read_study;
+use super::study::{Study, asked, read_study};
 use super::watch::{Progress, Watch, watched};
 use crate::block::BoundBlock;
 use crate::cell::DeviceShelf;
@@ -201,8 +201,13 @@ impl<'a> BoundCorners<'a> {
 
 /// Reads a study.
 fn load(path: &Path) -> Result<Loaded, ReadError> {
+    load_with(path).map(|(loaded, ..)| loaded)
+}
+
+fn load_with(path: &Path) -> Result<(Loaded, Study, Source), ReadError> {
     let source = Source::open(path)?;
-    load_study(&read_study(&source)?, &source.path, &source.folder)
+    let study = read_study(&source)?;
+    Ok((load_study(&study, &source.path, &source.folder)?, study, source))
 }
 
 /// The optimum of a knob of a study's scheme, at every corner and over all of them.
@@ -216,6 +221,36 @@ pub fn optimum_of_study(
     progress: &mut Progress<'_>,
 ) -> Result<Optimum, OptimumFailure> {
     optimum(&load(study)?, spec, options, progress)
+}
+
+/// Every optimum that the `[[optimum]]` tables of a study ask for.
+///
+/// # Errors
+/// No such table, or as [`optimum_of_study`].
+pub fn optima_of_study(
+    study: &Path,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Vec<Optimum>, OptimumFailure> {
+    let (loaded, study, source) = load_with(study)?;
+    let some = (!study.optimum.is_empty()).then_some(&study.optimum);
+    let list = asked(None, some, "[[optimum]]", &source)?;
+    list.iter().map(|spec| optimum(&loaded, spec, options, progress)).collect()
+}
+
+/// Every choice that the `[[choice]]` tables of a study ask for.
+///
+/// # Errors
+/// No such table, or as [`choice_of_study`].
+pub fn choices_of_study(
+    study: &Path,
+    options: &SolveOptions,
+    progress: &mut Progress<'_>,
+) -> Result<Vec<Choice>, OptimumFailure> {
+    let (loaded, study, source) = load_with(study)?;
+    let some = (!study.choice.is_empty()).then_some(&study.choice);
+    let list = asked(None, some, "[[choice]]", &source)?;
+    list.iter().map(|spec| choice(&loaded, spec, options, progress)).collect()
 }
 
 /// The same of a loaded study; the same bits for any number of threads.

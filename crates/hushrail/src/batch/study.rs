@@ -3,6 +3,10 @@
 use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
+use super::awake::AwakeRequest;
+use super::keep::KeepRequest;
+use super::optimum::{ChoiceSpec, OptimumSpec};
+use super::transition::TransitionSpec;
 use crate::block::{Policy, StateWeights};
 use crate::cell::RailNames;
 use crate::corner::Corner;
@@ -42,6 +46,21 @@ pub struct Study {
     /// Limits.
     #[serde(default)]
     pub limits: Limits,
+    /// What is asked of awake domains.
+    #[serde(default)]
+    pub awake: Option<AwakeRequest>,
+    /// What is asked of cells that keep state.
+    #[serde(default)]
+    pub keep: Option<KeepRequest>,
+    /// What is asked of falling asleep and waking.
+    #[serde(default)]
+    pub transition: Option<TransitionSpec>,
+    /// Optima asked for.
+    #[serde(default)]
+    pub optimum: Vec<OptimumSpec>,
+    /// Choices asked for.
+    #[serde(default)]
+    pub choice: Vec<ChoiceSpec>,
 }
 
 /// Where the cards of one process corner are.
@@ -228,6 +247,23 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
     twice("scheme", study.scheme.iter().map(|d| d.name.as_str()).collect())?;
     let corners = study.corners();
     twice("corner", corners.iter().map(|d| d.name.as_str()).collect())
+}
+
+/// What is given, or else what a table of the study asks.
+///
+/// # Errors
+/// Neither is there.
+pub fn asked<T: Clone>(
+    given: Option<&T>,
+    own: Option<&T>,
+    table: &str,
+    source: &Source,
+) -> Result<T, ReadError> {
+    given.or(own).cloned().ok_or_else(|| ReadError::Syntax {
+        at: Place::new(&source.path, 1, 1),
+        found: format!("the study has no {table} table"),
+        wanted: format!("want {table} with what is asked"),
+    })
 }
 
 impl Study {

@@ -9,7 +9,7 @@ use serde::{Deserialize, Serialize};
 
 use super::load::{Loaded, LoadedDomain, load_study};
 use super::run::Failure;
-use super::study::read_study;
+use super::study::{asked, read_study};
 use super::watch::{Progress, Watch, watched};
 use crate::block::{BlockCurve, BoundBlock, Draw, Parts};
 use crate::cell::{DeviceShelf, Levels};
@@ -19,7 +19,7 @@ use crate::read::deck::Note;
 use crate::read::source::{ReadError, Source};
 use crate::standby::stress::{Moment, switch_stress};
 use crate::standby::switch::Side;
-use crate::standby::{Scheme, StressLimits, Switch, SwitchStress};
+use crate::standby::{Clamp, Scheme, StressLimits, Switch, SwitchStress};
 use crate::transition::{
     Battery, BreakEven, Collapse, CycleCosts, Duty, DutyProfile, Gated, Ladder, LadderSpec, RailCapacitance,
     SleepSpec, TransitionError, Wake, WakeSpec, break_even, design_ladder, duty, fall_asleep, wake_up,
@@ -171,8 +171,8 @@ pub struct Transitions {
 pub struct TransitionRequest {
     /// The study.
     pub study: PathBuf,
-    /// What of it.
-    pub spec: TransitionSpec,
+    /// What of it; what its `[transition]` table asks when left out.
+    pub spec: Option<TransitionSpec>,
 }
 
 /// Works the transitions of a study out.
@@ -186,8 +186,9 @@ pub fn transitions_of_study(
 ) -> Result<Transitions, ReadError> {
     let source = Source::open(&request.study)?;
     let study = read_study(&source)?;
+    let spec = asked(request.spec.as_ref(), study.transition.as_ref(), "[transition]", &source)?;
     let loaded = load_study(&study, &source.path, &source.folder)?;
-    Ok(transitions(&loaded, &request.spec, options, progress))
+    Ok(transitions(&loaded, &spec, options, progress))
 }
 
 /// Works the transitions of a loaded study out; the same bits for any number of threads.
@@ -349,24 +350,21 @@ fn one(
         let found = if scheme.header.is_some() { "header and footer" } else { "no switch" };
         return Err(TransitionError::Switches { scheme: scheme.name.clone(), found }.to_string());
     };
-    if scheme.header_clamp.is_some()
-        || scheme.footer_clamp.is_some()
-        || scheme.held_supply_v.is_some()
-        || scheme.held_ground_v.is_some()
-    {
-        return Err(format!(
-            "scheme `{}`: transitions of a rail that is clamped or held are not computed; want a scheme without",
-            scheme.name
-        ));
-    }
     let switch = Switch::new(switch_spec, side, process, temp, c.vdd_v, &mut shelf, &loaded.origin)
+        .map_err(|e| e.to_string())?;
+    let clamp = if side == Side::Header { &scheme.header_clamp } else { &scheme.footer_clamp };
+    let clamp = clamp
+        .as_ref()
+        .map(|x| Clamp::new(x, side, process, temp, c.vdd_v, &mut shelf, &loaded.origin))
+        .transpose()
         .map_err(|e| e.to_string())?;
     notes.append(&mut shelf.notes);
     notes.extend(ready.notes.iter().cloned());
     let Ready { curve, ungated_w, .. } = ready;
     let ungated_w = *ungated_w;
     let words = |e: TransitionError| e.to_string();
-    let g = Gated::new(scheme, curve, &switch, rail_f).map_err(words)?;
+    let g =
+        Gated::new(scheme, curve, &switch, rail_f).and_then(|g| g.clamped(clamp.as_ref())).map_err(words)?;
     let fall = fall_asleep(&g, &spec.sleep, ungated_w).map_err(words)?;
     let pays = break_even(&fall, &spec.costs).map_err(words)?;
     let duty = match &spec.duty {

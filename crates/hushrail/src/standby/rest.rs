@@ -309,9 +309,9 @@ pub fn rest_rails(
     vdd_v: f64,
     header: Option<Switch>,
     footer: Option<Switch>,
+    clamps: Clamps,
     stop: &AtomicBool,
 ) -> Result<(f64, f64), RestError> {
-    let clamps = Clamps::default();
     rest_voltages(&mut Domain { scheme, block, vdd_v, header, footer, clamps, stop, evaluations: 0 })
 }
 

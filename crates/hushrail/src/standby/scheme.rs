@@ -42,6 +42,9 @@ pub struct SwitchSpec {
     /// Body voltage beyond the rail, reverse positive, V.
     #[serde(default)]
     pub well_bias_v: f64,
+    /// The same awake, V; as asleep when left out. Between the two the body moves with the gate.
+    #[serde(default)]
+    pub awake_well_bias_v: Option<f64>,
     /// Body tied to the gate: reverse-biased by the overdrive asleep, driven forward awake.
     #[serde(default)]
     pub body_to_gate: bool,
@@ -71,11 +74,17 @@ impl SwitchSpec {
             overdrive_v: 0.0,
             boost_v: 0.0,
             well_bias_v: 0.0,
+            awake_well_bias_v: None,
             body_to_gate: false,
             stacked: 1,
             diffusion_m: None,
             edge_m: None,
         }
+    }
+
+    /// Body voltage beyond the rail awake, V.
+    pub fn awake_well_bias_v(&self) -> f64 {
+        self.awake_well_bias_v.unwrap_or(self.well_bias_v)
     }
 
     /// Checks every number; the error is what is wrong, what was found, what would be right.
@@ -98,8 +107,12 @@ impl SwitchSpec {
                 format!("want a width above zero and not above the whole width ({} m)", self.width_m);
             return wrong("finger width", format!("{f} m"), &wanted);
         }
-        let volts =
-            [("overdrive", self.overdrive_v), ("boost", self.boost_v), ("well bias", self.well_bias_v)];
+        let volts = [
+            ("overdrive", self.overdrive_v),
+            ("boost", self.boost_v),
+            ("well bias", self.well_bias_v),
+            ("awake well bias", self.awake_well_bias_v.unwrap_or(0.0)),
+        ];
         for (name, v) in volts {
             if !(-1.0..=5.0).contains(&v) {
                 return wrong(name, format!("{v} V"), "want -1 V to 5 V");
@@ -113,8 +126,10 @@ impl SwitchSpec {
         if !(1..=4).contains(&self.stacked) {
             return wrong("stacked", self.stacked.to_string(), "want 1 to 4 in series");
         }
-        if self.body_to_gate && self.well_bias_v != 0.0 {
-            return wrong("well bias", format!("{} V", self.well_bias_v), "want none with body_to_gate");
+        for (name, v) in [("well bias", self.well_bias_v), ("awake well bias", self.awake_well_bias_v())] {
+            if self.body_to_gate && v != 0.0 {
+                return wrong(name, format!("{v} V"), "want none with body_to_gate");
+            }
         }
         Ok(())
     }
@@ -147,11 +162,17 @@ pub struct Scheme {
     /// Block p-wells below their rail, reverse positive, V.
     #[serde(default)]
     pub pwell_bias_v: f64,
+    /// Block n-wells above their rail awake, V; negative: forward, faster.
+    #[serde(default)]
+    pub awake_nwell_bias_v: f64,
+    /// Block p-wells below their rail awake, V; negative: forward, faster.
+    #[serde(default)]
+    pub awake_pwell_bias_v: f64,
     /// Supply current of what makes the scheme work (pump, level shifter, bias generator), A.
     #[serde(default)]
     pub overhead_a: f64,
     /// Share of the power drawn from the supply that reaches voltages beyond the rails (gates driven past them, biased wells);
-    /// free when left out.
+    /// without loss when left out.
     #[serde(default)]
     pub pump_efficiency: Option<f64>,
     /// Holds the virtual supply from below when it falls far, so that state is kept.
@@ -214,6 +235,8 @@ impl Scheme {
             && self.footer.is_none()
             && self.nwell_bias_v == 0.0
             && self.pwell_bias_v == 0.0
+            && self.awake_nwell_bias_v == 0.0
+            && self.awake_pwell_bias_v == 0.0
             && self.parked.is_empty()
             && !self.changes_block()
     }
@@ -234,6 +257,16 @@ impl Scheme {
             pwell_v: pwell - self.pwell_bias_v,
             high_v: supply_v,
             low_v: ground_v,
+        }
+    }
+
+    /// The same awake: wells at their awake bias.
+    pub fn awake_levels(&self, vdd_v: f64, supply_v: f64, ground_v: f64) -> Levels {
+        let asleep = self.levels(vdd_v, supply_v, ground_v);
+        Levels {
+            nwell_v: asleep.nwell_v - self.nwell_bias_v + self.awake_nwell_bias_v,
+            pwell_v: asleep.pwell_v + self.pwell_bias_v - self.awake_pwell_bias_v,
+            ..asleep
         }
     }
 
@@ -302,7 +335,12 @@ impl Scheme {
         {
             return wrong("pump_efficiency", e.to_string(), "want a share above 0 and up to 1");
         }
-        for (name, v) in [("n-well bias", self.nwell_bias_v), ("p-well bias", self.pwell_bias_v)] {
+        for (name, v) in [
+            ("n-well bias", self.nwell_bias_v),
+            ("p-well bias", self.pwell_bias_v),
+            ("awake n-well bias", self.awake_nwell_bias_v),
+            ("awake p-well bias", self.awake_pwell_bias_v),
+        ] {
             if !(-1.0..=5.0).contains(&v) {
                 return wrong(name, format!("{v} V"), "want -1 V to 5 V");
             }

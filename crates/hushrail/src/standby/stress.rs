@@ -194,7 +194,7 @@ impl Switch {
 
     /// Terminal voltages switched on, with the gate at `gate_v` and the virtual rail at `rail_v`.
     pub fn awake(&self, gate_v: f64, rail_v: f64) -> Moment {
-        Moment { phase: Phase::Awake, gate_v, ..self.asleep(rail_v) }
+        Moment { phase: Phase::Awake, gate_v, body_v: self.body_at(gate_v).0, ..self.asleep(rail_v) }
     }
 
     /// Terminal voltages with the span `span_v` left to the block and `loss_v` lost at the real rail.
@@ -203,7 +203,8 @@ impl Switch {
             Side::Header => (span_v, vdd_v - loss_v),
             Side::Footer => (vdd_v - span_v, loss_v),
         };
-        Moment { phase: Phase::Waking, time_s, gate_v, drain_v, source_v, body_v: self.body_v }
+        let body_v = self.body_at(gate_v).0;
+        Moment { phase: Phase::Waking, time_s, gate_v, drain_v, source_v, body_v }
     }
 }
 

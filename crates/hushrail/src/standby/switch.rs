@@ -78,7 +78,8 @@ impl Switch {
         let p_channel = t.device.polarity() == Polarity::P;
         let gate_v = if p_channel { vdd_v + spec.overdrive_v } else { -spec.overdrive_v };
         let awake_gate_v = if p_channel { -spec.boost_v } else { vdd_v + spec.boost_v };
-        let body_v = if p_channel { vdd_v + spec.well_bias_v } else { -spec.well_bias_v };
+        let body = |bias: f64| if p_channel { vdd_v + bias } else { -bias };
+        let (body_v, awake_body_v) = (body(spec.well_bias_v), body(spec.awake_well_bias_v()));
         let rail_v = if side == Side::Header { vdd_v } else { 0.0 };
         Ok(Self {
             device: InSeries::of(&t.device, spec.stacked),
@@ -89,7 +90,7 @@ impl Switch {
             awake_gate_v,
             vdd_v,
             body_v: if spec.body_to_gate { gate_v } else { body_v },
-            awake_body_v: if spec.body_to_gate { awake_gate_v } else { body_v },
+            awake_body_v: if spec.body_to_gate { awake_gate_v } else { awake_body_v },
         })
     }
 
@@ -100,6 +101,21 @@ impl Switch {
 
     fn bias(&self, v: f64) -> Bias<f64> {
         Bias::from_terminals(v, self.gate_v, self.rail_v, self.body_v)
+    }
+
+    /// Body while the gate is at a voltage, V, and its slope: between its two levels it moves with the gate.
+    pub fn body_at(&self, gate_v: f64) -> (f64, f64) {
+        let (swing, move_v) = (self.awake_gate_v - self.gate_v, self.awake_body_v - self.body_v);
+        if move_v == 0.0 || swing == 0.0 {
+            return (self.body_v, 0.0);
+        }
+        let slope = move_v / swing;
+        (self.body_v + slope * (gate_v - self.gate_v), slope)
+    }
+
+    /// The switch as it is awake: gate and body at their levels then.
+    pub fn awakened(&self) -> Self {
+        Self { gate_v: self.awake_gate_v, body_v: self.awake_body_v, ..self.clone() }
     }
 
     /// Voltage of the virtual rail when `droop_v` is lost across the switch.

@@ -101,6 +101,22 @@ pub enum TransitionError {
         /// What draws it.
         why: String,
     },
+    /// Segments too few for a block that draws much.
+    #[error(
+        "no ladder of {segments} segments keeps {limit_a:.3e} A: with {:.1} % of the switch on the rail stops at {stops_v:.4} V, where the \
+         block takes what comes, and the next step there breaks the limit; want more segments or a higher limit",
+        100.0 * share
+    )]
+    ShortLadder {
+        /// Segments allowed.
+        segments: usize,
+        /// Where the rail stops, V.
+        stops_v: f64,
+        /// Share of the switch that is on.
+        share: f64,
+        /// The limit, A.
+        limit_a: f64,
+    },
     /// The equations of motion.
     #[error("integration stopped at {time_s:.3e} s: {reason}")]
     Integration {

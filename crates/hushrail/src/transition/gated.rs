@@ -7,14 +7,17 @@
 use std::sync::atomic::AtomicBool;
 
 use super::error::{TransitionError, positive};
+use crate::block::current::total;
 use crate::block::curve::Sloped;
 use crate::block::{BlockCurve, Book, Collapsing};
 use crate::device::dual::Real;
 use crate::device::{Bias, Polarity, Terminal, per_terminal};
 use crate::read::deck::Note;
+use crate::standby::clamp::ClampCurrent;
+use crate::standby::rest::Clamps;
 use crate::standby::stress::caution;
 use crate::standby::switch::Side;
-use crate::standby::{Scheme, Switch, rest_rails};
+use crate::standby::{Clamp, Scheme, Switch, rest_rails};
 
 /// A domain with one switch, ready to be moved.
 #[derive(Debug, Clone)]
@@ -34,6 +37,7 @@ pub struct Gated<'a> {
     /// Gate awake, V.
     pub on_v: f64,
     rail: Collapsing,
+    clamp: Option<&'a Clamp>,
 }
 
 /// Current of one finger into the block with its slopes.
@@ -86,7 +90,35 @@ impl<'a> Gated<'a> {
         let on_v = switch.awake_gate_v;
         let past = if switch.device.polarity() == Polarity::P { -on_v } else { on_v - vdd_v };
         let boost_v = past.max(0.0);
-        Ok(Self { scheme, curve, switch, vdd_v, rail_f, boost_v, on_v, rail })
+        Ok(Self { scheme, curve, switch, vdd_v, rail_f, boost_v, on_v, rail, clamp: None })
+    }
+
+    /// The same with the clamp of its scheme, made for the corner.
+    ///
+    /// # Errors
+    /// A clamp of the other rail.
+    pub fn clamped(self, clamp: Option<&'a Clamp>) -> Result<Self, TransitionError> {
+        if clamp.is_some_and(|c| c.side() != self.switch.side) {
+            return Err(TransitionError::Switches {
+                scheme: self.scheme.name.clone(),
+                found: "a clamp of the other rail",
+            });
+        }
+        Ok(Self { clamp, ..self })
+    }
+
+    /// Span at which a second supply holds the rail asleep, V.
+    pub fn held_span_v(&self) -> Option<f64> {
+        match self.rail {
+            Collapsing::Supply => self.scheme.held_supply_v,
+            Collapsing::Ground => self.scheme.held_ground_v.map(|v| self.vdd_v - v),
+        }
+    }
+
+    /// What the clamp gives with a span left and a loss at the real rail.
+    pub fn clamp_gives(&self, span_v: f64, loss_v: f64) -> ClampCurrent {
+        let none = ClampCurrent { rail_a: 0.0, real_a: 0.0, rail_per: [0.0; 2], real_per: [0.0; 2] };
+        self.clamp.map_or(none, |c| c.gives(span_v, loss_v))
     }
 
     /// Current that the block takes from its rail with a span left, A.
@@ -108,8 +140,9 @@ impl<'a> Gated<'a> {
             Side::Header => (span_v, self.vdd_v - loss_v, -1.0),
             Side::Footer => (self.vdd_v - span_v, loss_v, 1.0),
         };
+        let (body_v, body_per_gate) = s.body_at(gate_v);
         let t =
-            s.device.branches_dual(Bias::from_terminals(drain, gate_v, source, s.body_v).dual()).terminals();
+            s.device.branches_dual(Bias::from_terminals(drain, gate_v, source, body_v).dual()).terminals();
         let (d, q) = (t[Terminal::Drain as usize], t[Terminal::Source as usize]);
         let (dd, dq) = (per_terminal(d.d), per_terminal(q.d));
         // header: drain rises with the span, source falls with the loss; footer: both the other way, and so do the currents
@@ -118,7 +151,7 @@ impl<'a> Gated<'a> {
             real_a: -sign * q.val(),
             per_span: -dd[Terminal::Drain as usize],
             per_loss: dd[Terminal::Source as usize],
-            per_gate: sign * dd[Terminal::Gate as usize],
+            per_gate: sign * (dd[Terminal::Gate as usize] + body_per_gate * dd[Terminal::Body as usize]),
             real_per: [dq[Terminal::Drain as usize], -dq[Terminal::Source as usize]],
         }
     }
@@ -128,10 +161,37 @@ impl<'a> Gated<'a> {
     /// # Errors
     /// No rest point.
     pub fn rest_span_v(&self) -> Result<f64, TransitionError> {
-        let s = Some(self.switch.clone());
-        let (header, footer) = if self.rail == Collapsing::Supply { (s, None) } else { (None, s) };
+        let own = self.settled_span_v(self.scheme, self.switch.clone())?;
+        match self.held_span_v() {
+            Some(held) if held < own => Err(TransitionError::Range {
+                what: "level at which a second supply holds the rail (V left to the block)".into(),
+                value: held,
+                wanted: format!("want more than the {own:.6} V at which the rail rests by itself"),
+            }),
+            Some(held) => Ok(held),
+            None => Ok(own),
+        }
+    }
+
+    /// Where the rail settles with the switch on and the block idle: the span, V.
+    ///
+    /// # Errors
+    /// No balance.
+    pub fn awake_span_v(&self) -> Result<f64, TransitionError> {
+        self.settled_span_v(self.scheme, self.switch.awakened())
+    }
+
+    /// Where switch, clamp and block settle by themselves: the span, V.
+    fn settled_span_v(&self, scheme: &Scheme, switch: Switch) -> Result<f64, TransitionError> {
+        let free = Scheme { held_supply_v: None, held_ground_v: None, ..scheme.clone() };
+        let (clamp, switch) = (self.clamp.cloned(), Some(switch));
+        let (header, footer, clamps) = if self.rail == Collapsing::Supply {
+            (switch, None, Clamps { header: clamp, footer: None })
+        } else {
+            (None, switch, Clamps { header: None, footer: clamp })
+        };
         let stop = AtomicBool::new(false);
-        let (supply, ground) = rest_rails(self.scheme, self.curve, self.vdd_v, header, footer, &stop)?;
+        let (supply, ground) = rest_rails(&free, self.curve, self.vdd_v, header, footer, clamps, &stop)?;
         Ok(supply - ground)
     }
 
@@ -147,27 +207,37 @@ impl<'a> Gated<'a> {
         let s = self.switch;
         let v = self.rail_v(span_v);
         let t = s.branches(v).terminals();
-        let ends = t[Terminal::Gate as usize] * s.gate_v + t[Terminal::Body as usize] * s.body_v;
+        let (gate, body) = (t[Terminal::Gate as usize] * s.gate_v, t[Terminal::Body as usize] * s.body_v);
+        let ends = gate + body + self.clamp.map_or(0.0, |c| c.ends_w(v));
         let (supply, ground) = self.rail.rails(self.vdd_v, span_v);
         let levels = self.scheme.levels(self.vdd_v, supply, ground);
         let inside = |b: Book| self.scheme.on_rail(self.rail).contains(&b);
         let book = |b: Book| self.curve.book(b, span_v).value;
         let well = |b: Book, v: f64| if inside(b) { 0.0 } else { book(b) * v };
-        let wells = well(Book::Nwell, levels.nwell_v) + well(Book::Pwell, levels.pwell_v);
+        let wells = [well(Book::Nwell, levels.nwell_v), well(Book::Pwell, levels.pwell_v)];
+        // what the pump loses on the levels it makes
+        let made =
+            [(s.gate_v, gate), (s.body_v, body), (levels.nwell_v, wells[0]), (levels.pwell_v, wells[1])];
+        let made: f64 =
+            made.iter().filter(|(v, _)| *v > self.vdd_v || *v < 0.0).map(|(_, w)| w.max(0.0)).sum();
+        let lost = self.scheme.pump_efficiency.map_or(0.0, |e| made * (1.0 / e - 1.0));
         let rail = match self.rail {
             // what enters the switch at the real rail and does not come out at the virtual one
             Collapsing::Supply => {
                 let lost = t[Terminal::Source as usize] + t[Terminal::Drain as usize];
-                self.vdd_v * (self.block(span_v).value + lost)
+                let clamp = self.clamp_gives(span_v, 0.0);
+                self.vdd_v * (self.block(span_v).value + lost + clamp.real_a - clamp.rail_a)
             }
             Collapsing::Ground => self.vdd_v * book(Book::Supply),
         };
-        rail + wells + ends + self.scheme.overhead_a * self.vdd_v
+        let islands = self.vdd_v * total(&self.curve.points().real[0]);
+        rail + wells[0] + wells[1] + ends + lost + islands + self.scheme.overhead_a * self.vdd_v
     }
 
-    /// Current that the sleeping switch gives with a span left, A.
+    /// Current that the sleeping switch and the clamp give with a span left, A.
     pub fn off_a(&self, span_v: f64) -> f64 {
         self.switch.fingers * self.finger(self.switch.gate_v, span_v, 0.0).rail_a
+            + self.clamp_gives(span_v, 0.0).rail_a
     }
 
     /// Remarks that go with every transition of this domain.

@@ -35,6 +35,8 @@ pub struct Ladder {
     pub wake: Wake,
 }
 
+/// How near its plateau a rail is waited for, over the supply: seven time constants; beyond, it creeps.
+const NEAR: f64 = 1e-3;
 /// Tries with a smaller target when the package's ringing adds to the current.
 const TRIES: usize = 6;
 
@@ -83,6 +85,13 @@ fn once(g: &Gated<'_>, spec: &WakeSpec, want: &LadderSpec, target: f64) -> Resul
         let off = g.finger(g.switch.gate_v, span, 0.0).rail_a;
         devices * (n * on + (all - n) * off)
     };
+    // where the rail stops with so many fingers on
+    let plateau = |n: f64| {
+        increasing::<TransitionError>(from, g.vdd_v, 1e-12 * g.vdd_v, 1e-9, 200, |x| {
+            let (gives, draws) = (current(n, x), g.block(x).value);
+            Ok(if gives > 0.0 && draws > 0.0 { (draws / gives).ln() } else { draws - gives })
+        })
+    };
     let (one, none) = (current(1.0, from), current(0.0, from));
     let refuse = |least_a: f64, why: &str| TransitionError::NoLadder {
         limit_a: want.peak_a,
@@ -101,12 +110,28 @@ fn once(g: &Gated<'_>, spec: &WakeSpec, want: &LadderSpec, target: f64) -> Resul
         if want.segments == 1 {
             return Err(refuse(current(all, from), "the whole switch in one segment"));
         }
-        let ratio = (all / most).powf(1.0 / (want.segments - 1) as f64);
-        for k in 1..want.segments {
-            let n = if k + 1 == want.segments { all } else { (most * ratio.powf(k as f64)).floor() };
-            if n > sums[sums.len() - 1] {
-                sums.push(n);
+        // geometric steps, each small enough that the rail reaches it against the block
+        while sums[sums.len() - 1] < all {
+            let on = sums[sums.len() - 1];
+            let left = want.segments - sums.len();
+            let stops = plateau(on)?;
+            let short = || TransitionError::ShortLadder {
+                segments: want.segments,
+                stops_v: stops,
+                share: on / all,
+                limit_a: want.peak_a,
+            };
+            if left == 0 {
+                return Err(short());
             }
+            let wished = if left == 1 { all } else { (on * (all / on).powf(1.0 / left as f64)).floor() };
+            let reached = (stops - NEAR * g.vdd_v).max(from);
+            let (one, none) = (current(1.0, reached), current(0.0, reached));
+            let n = wished.min(((target - none) / (one - none)).floor());
+            if n <= on && wished > on {
+                return Err(short());
+            }
+            sums.push(n.max(on + 1.0).min(all));
         }
     }
     let mut shares = vec![0.0];

@@ -6,6 +6,7 @@ use super::capacitance::GateCapacitance;
 use super::error::{TransitionError, not_negative, positive};
 use super::gated::Gated;
 use super::sleep::Fall;
+use crate::device::Polarity;
 use crate::read::deck::Note;
 
 /// What a round trip needs to know; energies that are left out count as zero and are said to.
@@ -15,9 +16,9 @@ pub struct CycleCosts {
     /// The switch's gate.
     #[serde(default)]
     pub gate: GateCapacitance,
-    /// Efficiency of what makes levels beyond the rails (overdrive, boost, well bias); must be given when there are any.
+    /// Capacitance of the switch's body to everything else, F; must be given when its bias awake is another than asleep.
     #[serde(default)]
-    pub pump_efficiency: Option<f64>,
+    pub switch_well_f: Option<f64>,
     /// Capacitance of the block's n-wells, F; must be given when they are biased.
     #[serde(default)]
     pub nwell_f: Option<f64>,
@@ -63,8 +64,8 @@ pub struct RoundTrip {
 /// Costs of a sleep of a length.
 ///
 /// The gate's energy is that of one charge and discharge over the swing, taken through the pump as a whole where there is
-/// overdrive or boost (reference sheet A25). A well that moves by its bias costs what its pump takes less what flows back into
-/// the rail: `Q·((Vdd + bias)/efficiency − Vdd)` for n-wells, `Q·bias/efficiency` for p-wells, `Q = C·bias` (derived).
+/// overdrive or boost (reference sheet A25); the efficiency is the scheme's. Moving a well between its bias awake and asleep
+/// costs the charge once: see [`Well`].
 ///
 /// # Errors
 /// A missing capacitance or efficiency, or numbers that cannot be.
@@ -84,41 +85,49 @@ pub(super) fn fixed_costs(g: &Gated<'_>, costs: &CycleCosts) -> Result<RoundTrip
     };
     let swing = (g.switch.gate_v - g.on_v).abs();
     let pumped = spec.overdrive_v > 0.0 || g.boost_v > 0.0;
-    let biased = s.nwell_bias_v != 0.0 || s.pwell_bias_v != 0.0;
-    let efficiency = match costs.pump_efficiency {
-        Some(e) if e > 0.0 && e <= 1.0 => e,
-        None if !pumped && !biased => 1.0,
-        None => {
-            return Err(TransitionError::Missing {
-                what: "pump efficiency",
-                wanted: "levels beyond the rails (overdrive, boost, well bias) are made by something: want its efficiency",
-            });
-        }
-        Some(value) => {
-            return Err(TransitionError::Range {
-                what: "pump efficiency".into(),
-                value,
-                wanted: "want more than zero and not above one".into(),
-            });
-        }
-    };
+    let efficiency = s.pump_efficiency.unwrap_or(1.0);
+    let mut notes = g.notes();
+    let wells = [
+        (true, s.awake_nwell_bias_v, s.nwell_bias_v, costs.nwell_f, "the biased n-wells", "nwell_f"),
+        (false, s.awake_pwell_bias_v, s.pwell_bias_v, costs.pwell_f, "the biased p-wells", "pwell_f"),
+        (
+            g.switch.device.polarity() == Polarity::P,
+            spec.awake_well_bias_v(),
+            spec.well_bias_v,
+            costs.switch_well_f,
+            "the well of the switch, which moves",
+            "switch_well_f",
+        ),
+    ];
+    let moved = wells.iter().any(|w| w.1 != w.2);
+    if (pumped || moved) && s.pump_efficiency.is_none() {
+        notes.push(Note::new(
+            "pump-without-loss",
+            "levels beyond the rails count as made without loss: the scheme has no `pump_efficiency`",
+        ));
+    }
     let gate_f = costs.gate.farads(g.switch, spec.width_m, spec.length_m)?;
     let gate_j = gate_f * swing * swing / if pumped { efficiency } else { 1.0 };
     let mut wells_j = 0.0;
-    if s.nwell_bias_v != 0.0 {
-        let c = costs
-            .nwell_f
-            .ok_or(TransitionError::NoCapacitance { what: "the biased n-wells", key: "nwell_f" })?;
-        positive("n-well capacitance (F)", c)?;
-        let bias = s.nwell_bias_v;
-        wells_j += (c * bias).abs() * ((g.vdd_v + bias) / efficiency - g.vdd_v).abs();
+    for (n_well, awake_v, asleep_v, farads, what, key) in wells {
+        if awake_v == asleep_v {
+            continue;
+        }
+        let farads = farads.ok_or(TransitionError::NoCapacitance { what, key })?;
+        positive(&format!("{key} (F)"), farads)?;
+        wells_j += farads * Well { above: n_well, vdd_v: g.vdd_v, efficiency }.moved_j_f(awake_v, asleep_v);
     }
-    if s.pwell_bias_v != 0.0 {
-        let c = costs
-            .pwell_f
-            .ok_or(TransitionError::NoCapacitance { what: "the biased p-wells", key: "pwell_f" })?;
-        positive("p-well capacitance (F)", c)?;
-        wells_j += c * s.pwell_bias_v * s.pwell_bias_v / efficiency;
+    if spec.body_to_gate {
+        match costs.switch_well_f {
+            Some(f) => {
+                positive("switch_well_f (F)", f)?;
+                wells_j += f * swing * swing / if pumped { efficiency } else { 1.0 };
+            }
+            None => notes.push(Note::new(
+                "body-charge-left-out",
+                "the body of the switch moves with its gate and its charge is not counted: give `switch_well_f`",
+            )),
+        }
     }
     let mut left_out = Vec::new();
     let mut energy = |what: &'static str, e: Option<f64>| {
@@ -131,7 +140,6 @@ pub(super) fn fixed_costs(g: &Gated<'_>, costs: &CycleCosts) -> Result<RoundTrip
     let retention_j = energy("retention_save_j", costs.retention_save_j)?
         + energy("retention_restore_j", costs.retention_restore_j)?;
     let control_j = energy("control_j", costs.control_j)?;
-    let mut notes = g.notes();
     if !left_out.is_empty() {
         notes.push(Note::new(
             "costs-left-out",
@@ -150,4 +158,31 @@ pub(super) fn fixed_costs(g: &Gated<'_>, costs: &CycleCosts) -> Result<RoundTrip
         fixed_j: gate_j + wells_j + retention_j + control_j,
         notes,
     })
+}
+
+/// What it takes to move a well out and back.
+///
+/// Charge comes from where the well goes and leaves to where it came from. A level that a rail is gives its charge back to the
+/// rail; a level within the rails (forward bias) is taken as made from the rail by a linear source, which gives nothing back;
+/// levels beyond are made by the pump. For n-wells, above their rail by the bias, one volt moved out and back therefore costs
+/// `(Vdd + high)/efficiency` (or Vdd, when `high` is not above the rail) less Vdd when `low` is the rail; for p-wells, below
+/// ground by the bias, `high/efficiency` for the way down and Vdd for a way up to a level above ground (derived).
+struct Well {
+    above: bool,
+    vdd_v: f64,
+    efficiency: f64,
+}
+
+impl Well {
+    /// Energy for each farad, J/F, between two biases, reverse positive.
+    fn moved_j_f(&self, one_v: f64, other_v: f64) -> f64 {
+        let (high, low) = (one_v.max(other_v), one_v.min(other_v));
+        let per_charge = if self.above {
+            let taken = if high > 0.0 { (self.vdd_v + high) / self.efficiency } else { self.vdd_v };
+            taken - if low == 0.0 { self.vdd_v } else { 0.0 }
+        } else {
+            high.max(0.0) / self.efficiency + if low < 0.0 { self.vdd_v } else { 0.0 }
+        };
+        (high - low) * per_charge
+    }
 }

@@ -11,7 +11,6 @@ use super::gated::Gated;
 use super::ode::{Motion, Tolerance, Trace, integrate};
 use super::quadrature::gauss;
 use crate::read::deck::Note;
-use crate::standby::{Switch, rest_rails};
 
 /// How a domain is put to sleep.
 #[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize)]
@@ -96,11 +95,13 @@ impl Falling<'_> {
 impl Motion<1> for Falling<'_> {
     fn rate(&self, t: f64, y: &[f64; 1]) -> [f64; 1] {
         let i = self.g.switch.fingers * self.g.finger(self.gate(t), y[0], 0.0).rail_a;
-        [(i - self.g.block(y[0]).value) / self.g.rail_f]
+        let clamp = self.g.clamp_gives(y[0], 0.0).rail_a;
+        [(i + clamp - self.g.block(y[0]).value) / self.g.rail_f]
     }
     fn jacobian(&self, t: f64, y: &[f64; 1]) -> [[f64; 1]; 1] {
         let per = self.g.switch.fingers * self.g.finger(self.gate(t), y[0], 0.0).per_span;
-        [[(per - self.g.block(y[0]).per_v) / self.g.rail_f]]
+        let clamp = self.g.clamp_gives(y[0], 0.0).rail_per[0];
+        [[(per + clamp - self.g.block(y[0]).per_v) / self.g.rail_f]]
     }
 }
 
@@ -130,7 +131,8 @@ pub fn fall_asleep<'a>(
         None => g.awake_span_v()?,
     };
     let rest = g.rest_span_v()?;
-    let near = rest + SETTLED * g.vdd_v;
+    // a held rail is met on the way down, one that settles by itself only in the limit
+    let near = if g.held_span_v().is_some() { rest } else { rest + SETTLED * g.vdd_v };
     if !(near < from - SETTLED * g.vdd_v) {
         return Err(TransitionError::NoCollapse { rest_v: rest, vdd_v: g.vdd_v });
     }
@@ -173,24 +175,11 @@ pub fn fall_asleep<'a>(
     Ok(fall)
 }
 
-impl Gated<'_> {
-    /// Where the rail settles with the switch on and the block idle: the span, V.
-    ///
-    /// # Errors
-    /// No balance.
-    pub fn awake_span_v(&self) -> Result<f64, TransitionError> {
-        let on = Some(Switch { gate_v: self.on_v, ..self.switch.clone() });
-        let (header, footer) = if self.scheme.header.is_some() { (on, None) } else { (None, on) };
-        let stop = std::sync::atomic::AtomicBool::new(false);
-        let (supply, ground) = rest_rails(self.scheme, self.curve, self.vdd_v, header, footer, &stop)?;
-        Ok(supply - ground)
-    }
-}
-
 impl Fall<'_> {
     fn switch_a(&self, t: f64, span: f64) -> f64 {
         let motion = Falling { g: self.gated, slew: self.slew_s, moving: t < self.slew_s };
         self.gated.switch.fingers * self.gated.finger(motion.gate(t), span, 0.0).rail_a
+            + self.gated.clamp_gives(span, 0.0).rail_a
     }
 
     /// Power saved at a moment: block ledger, supply ledger without the recharge.
@@ -239,10 +228,12 @@ impl Fall<'_> {
         self.ledgers_j(t)[0]
     }
 
-    /// Power at rest, W: what the supplies deliver there.
+    /// Power at rest, W: what the supplies deliver there, a second supply that holds the rail at its own level.
     pub fn rest_power_w(&self) -> f64 {
         let (g, rest) = (self.gated, self.rest_span_v);
-        g.held_power_w(rest) + g.vdd_v * (g.off_a(rest) - g.block(rest).value)
+        let missing = g.block(rest).value - g.off_a(rest);
+        let below = if g.held_span_v().is_some() { g.vdd_v - rest } else { g.vdd_v };
+        g.held_power_w(rest) - below * missing
     }
 
     /// When the rail has done a share of its way to rest, s.

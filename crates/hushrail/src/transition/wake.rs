@@ -95,7 +95,7 @@ pub struct Wake {
     pub span_v: Vec<f64>,
     /// Loss at the real rail, V; all zero without a package.
     pub loss_v: Vec<f64>,
-    /// Current of the switch into the block's rail, A.
+    /// Current of the switch (and clamp) into the block's rail, A.
     pub switch_a: Vec<f64>,
     /// Current of the block, A.
     pub block_a: Vec<f64>,
@@ -212,6 +212,14 @@ impl Waking<'_> {
                 *to += n * x;
             }
             by_gates += n * f.per_gate * rate;
+        }
+        let clamp = self.g.clamp_gives(span, loss);
+        all.rail_a += clamp.rail_a;
+        all.real_a += clamp.real_a;
+        all.per_span += clamp.rail_per[0];
+        all.per_loss += clamp.rail_per[1];
+        for (to, x) in all.real_per.iter_mut().zip(clamp.real_per) {
+            *to += x;
         }
         Flow { all, by_gates, block: self.g.block(span) }
     }
@@ -330,7 +338,8 @@ pub fn wake_up(g: &Gated<'_>, spec: &WakeSpec) -> Result<Wake, TransitionError> 
             positive("package inductance (H)", p.inductance_h)?;
             not_negative("package resistance (ohm)", p.resistance_ohm)?;
             positive("decoupling (F)", p.decoupling_f)?;
-            let i = g.switch.fingers * g.finger(g.switch.gate_v, from, 0.0).real_a;
+            let i = g.switch.fingers * g.finger(g.switch.gate_v, from, 0.0).real_a
+                + g.clamp_gives(from, 0.0).real_a;
             run::<3>(g, spec, groups, [from, p.resistance_ohm * i, i])
         }
     }
@@ -393,13 +402,15 @@ where
             break;
         }
         if t >= give_up {
+            let clamp = g.clamp_gives(y[0], 0.0).rail_a;
             let gives_a: f64 = groups
                 .iter()
                 .map(|x| {
                     x.fingers
                         * g.finger(if x.start <= t { g.on_v } else { g.switch.gate_v }, y[0], 0.0).rail_a
                 })
-                .sum();
+                .sum::<f64>()
+                + clamp;
             let draws_a = g.block(y[0]).value;
             return Err(TransitionError::NotReady {
                 at_v: y[0],
