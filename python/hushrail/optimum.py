@@ -379,7 +379,7 @@ def choose(
     spec = {
         "at": {"domain": domain, "scheme": scheme, "corners": list(corners)},
         "rail": None if rail is None else asdict(rail),
-        "choice": {
+        "among": {
             "knobs": [{"knob": k, "values": [float(x) for x in v]} for k, v in knobs.items()],
             "candidates": None if candidates is None else [[float(x) for x in c] for c in candidates],
             "limits": asdict(limits or Limits()),

@@ -280,7 +280,7 @@ fn spec(points: [usize; 3]) -> ChooseSpec {
 
 fn chosen(loaded: &Loaded, choice_spec: ChooseSpec, rail_f: Option<f64>) -> Choice {
     let rail = rail_f.map(hushrail::transition::RailCapacitance::of);
-    let spec = ChoiceSpec { at: at("footer"), rail, choice: choice_spec };
+    let spec = ChoiceSpec { at: at("footer"), rail, among: choice_spec };
     choice(loaded, &spec, &SolveOptions::default(), &mut go()).unwrap_or_else(|e| panic!("{e}"))
 }
 
@@ -352,7 +352,7 @@ fn requests_that_cannot_be_are_refused() {
     let wrong = |change: &dyn Fn(&mut ChooseSpec)| {
         let mut s = spec([2, 2, 1]);
         change(&mut s);
-        let spec = ChoiceSpec { at: at("footer"), rail: None, choice: s };
+        let spec = ChoiceSpec { at: at("footer"), rail: None, among: s };
         choice(full(), &spec, &SolveOptions::default(), &mut go()).expect_err("refused").to_string()
     };
     for (text, change) in [
@@ -401,7 +401,7 @@ fn the_same_bits_for_any_number_of_threads_and_a_stop() {
         })
     };
     assert_eq!(with(1), with(3));
-    let spec = ChoiceSpec { at: at("footer"), rail: None, choice: spec([30, 20, 2]) };
+    let spec = ChoiceSpec { at: at("footer"), rail: None, among: spec([30, 20, 2]) };
     let e = choice(&small, &spec, &SolveOptions::default(), &mut |_, _| ControlFlow::Break(()));
     assert!(matches!(e, Err(OptimumFailure::Optimum(hushrail::optimum::OptimumError::Stopped))), "{e:?}");
 }

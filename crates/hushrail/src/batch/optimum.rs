@@ -62,7 +62,7 @@ pub struct ChoiceSpec {
     #[serde(default)]
     pub rail: Option<RailCapacitance>,
     /// The choice; its `rail_f` comes from `rail`.
-    pub choice: ChooseSpec,
+    pub among: ChooseSpec,
 }
 
 /// The optimum of a knob over the corners of a study.
@@ -306,7 +306,7 @@ pub fn choice(
 ) -> Result<Choice, OptimumFailure> {
     let bound = BoundCorners::new(loaded, &spec.at, options)?;
     let sites = bound.sites();
-    let mut asked = spec.choice.clone();
+    let mut asked = spec.among.clone();
     if let Some(rail) = &spec.rail {
         let farads = rail.farads(bound.domain.summary.instances);
         asked.rail_f = Some(farads.map_err(|e| OptimumFailure::Request(e.to_string()))?);
