@@ -10,8 +10,8 @@ use std::sync::atomic::AtomicBool;
 
 use common::{CELLS, process};
 use hushrail::awake::AwakeError;
-use hushrail::awake::clamp::{leaks_at, make_clamp, settle_clamped};
 use hushrail::awake::keep::{Collapse, CollapseSide, Mismatch, Need, Population, hold, loops, retention};
+use hushrail::awake::leaks::leaks_at;
 use hushrail::awake::margin::{AtRails, margins};
 use hushrail::block::{BoundBlock, build_block};
 use hushrail::cell::{BoundCell, CellReader, DeviceShelf, Levels, RailNames};
@@ -21,9 +21,7 @@ use hushrail::physics::Kelvin;
 use hushrail::read::counts::read_counts_csv;
 use hushrail::read::spice::read_deck;
 use hushrail::read::{DeckOptions, Source};
-use hushrail::standby::ClampSpec;
-use hushrail::standby::switch::Side;
-use hushrail::standby::{SwitchSpec, WellTie};
+use hushrail::standby::{ClampSpec, Scheme, SwitchSpec, WellTie, settle};
 use indexmap::IndexMap;
 
 const HEADER: Collapse =
@@ -106,7 +104,7 @@ fn nand_is_worst_over_its_side_inputs() {
 }
 
 #[test]
-fn clamp_settles_between_switch_and_block_or_says_that_it_never_conducts() {
+fn a_wider_clamp_leaves_more_and_leaks_what_its_level_says() {
     let deck = read_deck(&[Source::from_text("cells.sp", CELLS)], &DeckOptions::default()).expect("netlist");
     let (p, rails) = (process(), rails());
     let is_device = |n: &str| p.defines(n);
@@ -121,37 +119,28 @@ fn clamp_settles_between_switch_and_block_or_says_that_it_never_conducts() {
     let spec = |width_m| SwitchSpec::new("px", width_m, 60e-9);
     let stop = AtomicBool::new(false);
     let origin = Arc::from("test");
-    let clamp = |w, gate_v| {
-        let s = ClampSpec { device: spec(w), gate_v };
-        make_clamp(&s, Side::Header, &p, t, 1.0, &mut DeviceShelf::default(), &origin)
-    };
     let real = Collapse { nwell: WellTie::Real, ..HEADER };
-    let at = |w| settle_clamped(&clamp(w, None).expect("clamp"), None, &b, &real, &stop).expect("settles");
+    let at = |w| {
+        let scheme = Scheme {
+            header: Some(spec(1e-7)),
+            header_clamp: Some(ClampSpec { device: spec(w), gate_v: None }),
+            ..Scheme::default()
+        };
+        let rest =
+            settle(&scheme, &b, &p, t, 1.0, &mut DeviceShelf::default(), &origin, &stop).expect("settles");
+        assert!(rest.residual < 1e-6);
+        // the current found there is the one that a clamp level is charged with
+        let (leak, _) = leaks_at(&b, &real, 1.0, rest.virtual_supply_v, &stop).expect("solved");
+        let drawn: f64 = rest.block.supply.iter().sum();
+        assert!((leak / drawn - 1.0).abs() < 1e-9);
+        rest.virtual_supply_v
+    };
     let (narrow, wide) = (at(2e-6), at(2e-5));
-    for c in [&narrow, &wide] {
-        assert!((c.clamp_a / c.block_a - 1.0).abs() < 1e-6, "{c:?}");
-        let (leak, _) = leaks_at(&b, &real, 1.0, c.span_v, &stop).expect("solved");
-        assert!((leak / c.block_a - 1.0).abs() < 1e-9);
-    }
     // a wider diode gives the rail more: about a swing per decade of width (reference sheet A19)
-    assert!(wide.span_v > narrow.span_v + 0.03 && wide.span_v < narrow.span_v + 0.3, "{narrow:?} {wide:?}");
-    // a gate at its rail never turns a p-channel clamp on
-    let shut = clamp(1e-7, Some(1.0)).expect("clamp");
-    let asleep = hushrail::standby::switch::Switch::new(
-        &spec(1e-3),
-        Side::Header,
-        &p,
-        t,
-        1.0,
-        &mut DeviceShelf::default(),
-        &origin,
-    )
-    .expect("switch");
-    let e = settle_clamped(&shut, Some(&asleep), &b, &real, &stop).expect_err("idle").to_string();
-    assert!(e.contains("the clamp never conducts") && e.contains("widen it"), "{e}");
+    assert!(wide > narrow + 0.03 && wide < narrow + 0.3, "{narrow} {wide}");
     let boosted = ClampSpec { device: SwitchSpec { boost_v: 0.1, ..spec(1e-6) }, gate_v: None };
-    assert!(make_clamp(&boosted, Side::Header, &p, t, 1.0, &mut DeviceShelf::default(), &origin).is_err());
-    assert!(clamp(1e-6, Some(9.0)).is_err());
+    assert!(boosted.check("clamp").is_err());
+    assert!(ClampSpec { device: spec(1e-6), gate_v: Some(9.0) }.check("clamp").is_err());
 }
 
 fn sky130() -> Option<(Process, PathBuf)> {

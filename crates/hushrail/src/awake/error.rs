@@ -93,17 +93,6 @@ pub enum AwakeError {
         /// Why.
         reason: String,
     },
-    /// The clamp never takes over from the switch.
-    #[error(
-        "the clamp never conducts: with the rail fully collapsed it gives {clamp_a:.3e} A, less than the {other_a:.3e} A that come \
-         through the switch asleep; widen it, or take one with a lower threshold"
-    )]
-    ClampIdle {
-        /// What the clamp gives, A.
-        clamp_a: f64,
-        /// What the switch asleep gives, A.
-        other_a: f64,
-    },
     /// The answer would rest on numbers that the user has not asked for.
     #[error(
         "the switch {when} leaves the points of its table: {reason}; add points, or set `extrapolate = true` and read the result as a guess"

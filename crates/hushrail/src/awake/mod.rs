@@ -6,14 +6,14 @@
 //! - [`curve`], [`square`], [`margin`]: transfer curves, the butterfly and its largest squares, static noise margins.
 //! - [`delay`]: delay penalty from solved on-currents.
 //! - [`network`]: many switches along a rail with resistance.
-//! - [`keep`], [`clamp`]: hold margin, data-retention voltage, the level a clamp must hold and what leaks there.
+//! - [`keep`], [`leaks`]: hold margin, data-retention voltage, the level a clamp must hold and what leaks there.
 
-pub mod clamp;
 pub mod curve;
 pub mod delay;
 pub mod droop;
 mod error;
 pub mod keep;
+pub mod leaks;
 pub mod margin;
 pub mod network;
 pub mod normal;
