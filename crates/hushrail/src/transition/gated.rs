@@ -89,6 +89,11 @@ impl<'a> Gated<'a> {
         Ok(Self { scheme, curve, switch, vdd_v, rail_f, boost_v, on_v, rail })
     }
 
+    /// How many books of the block hang on the rail; which they are is fixed by the rail.
+    pub(super) fn books(&self) -> usize {
+        self.scheme.on_rail(self.rail).len()
+    }
+
     /// Current that the block takes from its rail with a span left, A.
     pub fn block(&self, span_v: f64) -> Sloped {
         let sign = if self.rail == Collapsing::Supply { 1.0 } else { -1.0 };
