@@ -93,13 +93,12 @@ fn choice(c: &mut Criterion) {
     };
     let mut group = c.benchmark_group("choice");
     group.sample_size(10).measurement_time(Duration::from_secs(20));
-    for (name, rail_f, every) in
-        [("10,000 candidates x 25 corners", None, 1), ("500 x 25 with wake-up", Some(20e-12), 20)]
-    {
-        let mut spec = ChooseSpec { rail_f, ..spec.clone() };
-        if every > 1 {
-            spec.knobs[1].values = line(2, 20e-6, 200e-6);
-        }
+    let waking = ChooseLimits { wake_s: Some(2e-9), in_rush_a: Some(40e-3), ..spec.limits };
+    for (name, rail_f, limits) in [
+        ("10,000 candidates x 25 corners", None, spec.limits),
+        ("10,000 x 25 with limits of wake-up and in-rush", Some(20e-12), waking),
+    ] {
+        let spec = ChooseSpec { rail_f, limits, ..spec.clone() };
         group.throughput(Throughput::Elements(spec.size() as u64 * 25));
         group.bench_function(name, |b| {
             b.iter(|| {
