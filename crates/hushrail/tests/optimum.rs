@@ -368,7 +368,9 @@ fn woken(loaded: &Loaded, scheme: &str, spec: &ChooseSpec, values: &[f64], rail_
     let mut wake = spec.wake.clone();
     if let Some(all) = &mut wake.segments {
         let sum: f64 = all.iter().map(|g| g.width_m).sum();
-        all.iter_mut().for_each(|g| g.width_m *= x.width_m / sum);
+        for g in all.iter_mut() {
+            g.width_m *= x.width_m / sum;
+        }
     }
     let stop = AtomicBool::new(false);
     bound

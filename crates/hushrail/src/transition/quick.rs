@@ -3,7 +3,7 @@
 //! With an ideal supply and gates that jump, the motion between two starts of segments is one-dimensional and does not depend
 //! on time: `C·dx/dt = n·i(x) + m·j(x) − I_block(x)` with n fingers on and m still off (Kirchhoff's current law, as in
 //! [`wake`](super::wake)). Separated, the time from one span to another is the integral `∫ C·dx/(n·i + m·j − I_block)`: Gauss and
-//! Legendre's rule on panels between the knots of the curves, halved where the net current changes by more than [`EVEN`]. The
+//! Legendre's rule on panels between the knots of the curves, halved where the net current changes to less than 0.4 of itself. The
 //! current of one finger is a cubic with the device's own slopes at its knots, refined to [`MISS`]; it depends on neither width
 //! nor overdrive (that of a finger which is on) nor capacitance, so that domains share it.
 //!
@@ -439,9 +439,9 @@ impl Way<'_> {
             let p = self.fresh(m, a, x);
             let t = c * (x - a) * weights().iter().zip(p.net).map(|(w, n)| w / n).sum::<f64>();
             if t < after {
-                lo = x
+                lo = x;
             } else {
-                hi = x
+                hi = x;
             }
             let next = x + (after - t) * p.end.1 / c;
             let next = if next > lo && next < hi { next } else { 0.5 * (lo + hi) };
