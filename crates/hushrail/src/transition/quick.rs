@@ -412,7 +412,7 @@ impl Way<'_> {
             };
             reach *= 2.0;
             if t + dt > until {
-                let at = self.when(m, x, b, until - t);
+                let at = self.when(m, x, b, (until - t, dt));
                 peak.0 = peak.0.max(self.at(m, at).0);
                 return Ended::Time(at);
             }
@@ -431,10 +431,11 @@ impl Way<'_> {
         Ended::Goal(t)
     }
 
-    /// The span that is reached from `a` after a time, below `b`: Newton on the integral, whose slope is the integrand.
-    fn when(&self, m: Mix, a: f64, b: f64, after: f64) -> f64 {
+    /// The span that is reached from `a` after a time, where `b` takes the whole: Newton on the integral, whose slope is the
+    /// integrand.
+    fn when(&self, m: Mix, a: f64, b: f64, (after, whole): (f64, f64)) -> f64 {
         let c = self.g.rail_f;
-        let (mut lo, mut hi, mut x) = (a, b, 0.5 * (a + b));
+        let (mut lo, mut hi, mut x) = (a, b, a + (b - a) * (after / whole).clamp(0.01, 0.99));
         for _ in 0..60 {
             let p = self.fresh(m, a, x);
             let t = c * (x - a) * weights().iter().zip(p.net).map(|(w, n)| w / n).sum::<f64>();
@@ -444,11 +445,12 @@ impl Way<'_> {
                 hi = x;
             }
             let next = x + (after - t) * p.end.1 / c;
-            let next = if next > lo && next < hi { next } else { 0.5 * (lo + hi) };
-            if (next - x).abs() <= 1e-14 * self.g.vdd_v {
-                return next;
+            // Newton's next step would be of the second order of this one
+            if (next - x).abs() <= 1e-8 * self.g.vdd_v {
+                return next.clamp(a, b);
             }
-            x = next;
+            let inside = next > lo && next < hi;
+            x = if inside { next } else { 0.5 * (lo + hi) };
         }
         x
     }
