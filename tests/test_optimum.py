@@ -11,7 +11,7 @@ import small_process
 from hushrail import plot
 from hushrail.awake import Load
 from hushrail.optimum import Candidate, Choice, Density, Knob, Limits, Optimum, choose, optimum
-from hushrail.transition import Rail
+from hushrail.transition import Rail, WakeSpec
 
 mpl.use("Agg")
 
@@ -80,6 +80,43 @@ def test_limits_nobody_meets(study: Path, scheme: str) -> None:
     assert "oxide is broken at corner" in c.chosen.infeasible.reason
     with pytest.raises(hushrail.RangeError, match="oxide is broken"):
         plot.pareto_front(c)
+
+
+def test_wake_up_and_stress_on_the_way(study: Path, scheme: str) -> None:
+    limits = Limits(wake_s=1e-6, in_rush_a=1.0, drain_bulk_v=0.5)
+    rail = Rail(total_f=1e-13)
+    quick = choose(study, KNOBS, scheme=scheme, limits=limits, rail=rail).chosen
+    count = {c.limit: c for c in quick.limits}
+    assert count["drain_bulk"].broken_by == quick.candidates - quick.failed
+    assert [c.untested for c in quick.limits] == [0, 0, 0]
+    assert count["in_rush"].best is not None
+    assert count["in_rush"].best.value > 0.0
+    # with a slew the wake-up is integrated where the other limits hold
+    slew = WakeSpec(gate_slew_s=1e-11)
+    slow = choose(study, KNOBS, scheme=scheme, limits=Limits(wake_s=1e-6), rail=rail, wake=slew).chosen
+    assert len(slow.feasible) == slow.candidates - slow.failed
+    tight = Limits(wake_s=1e-6, standby_w=sorted(c.power_w for c in slow.feasible)[3])
+    some = choose(study, KNOBS, scheme=scheme, limits=tight, rail=rail, wake=slew).chosen
+    assert len(some.feasible) == 4
+    assert {c.limit: c.untested for c in some.limits}["wake"] == len(slow.feasible) - 4
+    assert all(c.wake_s is not None for c in some.feasible)
+
+
+def test_retention_of_every_corner(study: Path, scheme: str) -> None:
+    limits = Limits(retention_margin_v=0.01)
+    corners = [c.name for c in choose(study, KNOBS, scheme=scheme).corners]
+    table = dict.fromkeys(corners, 0.02)
+    c = choose(study, KNOBS, scheme=scheme, limits=limits, retention_v=table)
+    count = c.chosen.limits[0]
+    assert count.limit == "retention"
+    assert count.best is not None
+    assert count.best.allowed == pytest.approx(0.03)
+    assert c.kept == ()
+    del table[corners[0]]
+    with pytest.raises(hushrail.RangeError, match="not given; want one for every corner"):
+        choose(study, KNOBS, scheme=scheme, limits=limits, retention_v=table)
+    with pytest.raises(hushrail.RangeError, match="given without a margin"):
+        choose(study, KNOBS, scheme=scheme, retention_v=table)
 
 
 def test_refusals(study: Path, scheme: str) -> None:

@@ -8,7 +8,7 @@ from typing import TypeVar
 from hushrail.asked import Choices, Optima
 from hushrail.awake import Kept, Report, SizePoint, SwitchAwake
 from hushrail.awake import Point as AwakePoint
-from hushrail.optimum import Binding, Choice, Optimum
+from hushrail.optimum import Binding, Choice, LimitCount, Optimum
 from hushrail.report import BROKEN, NONE, listed, of_failures, of_notes
 from hushrail.results import Failure, Note
 from hushrail.table import Column, render
@@ -272,6 +272,8 @@ LIMIT_UNITS = {
     "field": "V/m",
     "area": "m²",
     "span": "V",
+    "retention": "V",
+    "drain_bulk": "V",
     "standby": "W",
 }
 
@@ -317,9 +319,14 @@ def _choice(each: Choice, width: int) -> str:
             lines.append([*settings, engineering(p.power_w, "W"), p.corner, area, wake, *_binding(p.binding)])
         parts.append(render(*_filled(columns, lines), width))
     if c.limits:
-        broken = [f"{each.limit.replace('_', ' ')}: {each.broken_by:,} break it" for each in c.limits]
+        broken = [_counted(each) for each in c.limits]
         parts += listed("Limits", broken, width)
     return "\n\n".join(parts)
+
+
+def _counted(each: LimitCount) -> str:
+    untested = f", {each.untested:,} not tested" if each.untested else ""
+    return f"{each.limit.replace('_', ' ')}: {each.broken_by:,} break it{untested}"
 
 
 def _binding(b: Binding | None) -> list[str]:

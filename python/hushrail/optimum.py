@@ -35,6 +35,7 @@ __all__ = [
     "Density",
     "FrontPoint",
     "Infeasible",
+    "Kept",
     "Knob",
     "LimitCount",
     "Limits",
@@ -72,7 +73,9 @@ class Limits:
     """Limits of a choice; those left out do not bind. V, s, A, V/m, m², W.
 
     ``span_v`` is the smallest span left to the block asleep: what its cells need to keep state, with the
-    margin wanted. All others are upper limits.
+    margin wanted. ``retention_margin_v`` is the same above each corner's own retention voltage, zero or more.
+    All others are upper limits. ``oxide_v`` and ``field_v_m`` (gate to drain or source) and ``drain_bulk_v``
+    are those of the switches asleep, awake and, where the ``rail`` is given, on the way up.
     """
 
     droop_v: float | None = None
@@ -80,8 +83,10 @@ class Limits:
     in_rush_a: float | None = None
     oxide_v: float | None = None
     field_v_m: float | None = None
+    drain_bulk_v: float | None = None
     area_m2: float | None = None
     span_v: float | None = None
+    retention_margin_v: float | None = None
     standby_w: float | None = None
 
 
@@ -205,7 +210,10 @@ class Binding:
 
 @dataclass(frozen=True)
 class Candidate:
-    """Settings, power (W), area (m²), wake-up time (s), the corner that decides and the binding limit."""
+    """Settings, power (W), area (m²), wake-up time (s), the corner that decides and the binding limit.
+
+    ``wake_s`` is None without a ``rail``, and for candidates whose wake-up was not integrated.
+    """
 
     values: tuple[float, ...]
     power_w: float
@@ -226,11 +234,16 @@ class FrontPoint:
 
 @dataclass(frozen=True)
 class LimitCount:
-    """How many candidates break a limit, and where the one that meets it best stands."""
+    """How many candidates break a limit, and where the one that meets it best stands.
+
+    Of ``untested`` candidates it is not known: they break another limit, and their wake-up (with a gate that
+    slews or a package) was not integrated. ``best`` is the best of the others.
+    """
 
     limit: str
     broken_by: int
     best: Binding | None
+    untested: int = 0
 
 
 @dataclass(frozen=True)
@@ -258,14 +271,24 @@ class Chosen:
 
 
 @dataclass(frozen=True)
+class Kept:
+    """Lowest span between the rails that keeps every cell's state, V, and the cell that needs it."""
+
+    corner: str
+    cell: str
+    retention_v: float
+
+
+@dataclass(frozen=True)
 class Choice:
-    """A choice over the corners of a study."""
+    """A choice over the corners of a study; ``kept`` where retention voltages were computed."""
 
     domain: str
     scheme: str
     corners: tuple[Corner, ...]
     chosen: Chosen
     notes: tuple[Note, ...]
+    kept: tuple[Kept, ...] = ()
 
 
 def optimum(
@@ -331,6 +354,9 @@ def choose(
     density: Density | None = None,
     rail: Rail | None = None,
     wake: WakeSpec | None = None,
+    retention_v: Mapping[str, float] | None = None,
+    keep_margin_v: float = 0.0,
+    keep_inputs: Mapping[str, bool] | None = None,
     domain: str | None = None,
     scheme: str | None = None,
     corners: Sequence[str] = (),
@@ -361,7 +387,16 @@ def choose(
     rail : Rail, optional
         Capacitance of the virtual rail; needed for limits of wake-up and in-rush.
     wake : WakeSpec, optional
-        The wake-up; widths of its segments are scaled to each candidate's switch.
+        The wake-up; widths of its segments are scaled to each candidate's switch. With gates that jump and
+        no package it is cheap and every candidate has one; otherwise it is integrated in time for the
+        candidates that hold every other limit.
+    retention_v : mapping of str to float, optional
+        Retention voltage at every corner, V, for a limit of ``retention_margin_v``. Computed from the
+        domain's cells that store, under the scheme's rails and wells, when left out.
+    keep_margin_v : float
+        Side of the square that must be left in the hold butterfly of those cells, V.
+    keep_inputs : mapping of str to bool, optional
+        Inputs that are known asleep, such as a clock that stands low; all vectors are tried for the others.
     domain, scheme, corners, goal, weights, progress
         As for :func:`optimum`; progress counts candidates times corners.
     tolerance : float
@@ -379,6 +414,7 @@ def choose(
     spec = {
         "at": {"domain": domain, "scheme": scheme, "corners": list(corners)},
         "rail": None if rail is None else asdict(rail),
+        "keep": {"need": {"margin_v": keep_margin_v}, "inputs": dict(keep_inputs or {})},
         "among": {
             "knobs": [{"knob": k, "values": [float(x) for x in v]} for k, v in knobs.items()],
             "candidates": None if candidates is None else [[float(x) for x in c] for c in candidates],
@@ -387,6 +423,7 @@ def choose(
             "load": None if load is None else dict(load.form),
             "density": None if density is None else asdict(density),
             "wake": wake_request(wake or WakeSpec()),
+            "retention_v": None if retention_v is None else {c: float(v) for c, v in retention_v.items()},
             "tolerance": tolerance,
         },
     }

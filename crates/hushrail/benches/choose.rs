@@ -23,6 +23,7 @@ use hushrail::read::counts::read_counts_csv;
 use hushrail::read::{DeckOptions, Source, read_deck};
 use hushrail::standby::Scheme;
 use hushrail::standby::scheme::SwitchSpec;
+use hushrail::transition::{Segment, Start, WakeSpec};
 use indexmap::IndexMap;
 
 fn line(n: usize, lo: f64, hi: f64) -> Vec<f64> {
@@ -85,13 +86,17 @@ fn choice(c: &mut Criterion) {
     };
     let mut group = c.benchmark_group("choice");
     group.sample_size(10).measurement_time(Duration::from_secs(20));
-    for (name, rail_f, every) in
-        [("10,000 candidates x 25 corners", None, 1), ("500 x 25 with wake-up", Some(20e-12), 20)]
-    {
-        let mut spec = ChooseSpec { rail_f, ..spec.clone() };
-        if every > 1 {
-            spec.knobs[1].values = line(2, 20e-6, 200e-6);
-        }
+    let waking = ChooseLimits { wake_s: Some(2e-9), in_rush_a: Some(40e-3), ..spec.limits };
+    let part = |width_m: f64, start| Segment { width_m, start };
+    let segments =
+        vec![part(5e-6, Start::AtS(0.0)), part(15e-6, Start::AtShare(0.6)), part(20e-6, Start::AtS(2e-9))];
+    let parts = WakeSpec { segments: Some(segments), ..WakeSpec::default() };
+    for (name, rail_f, limits, wake) in [
+        ("10,000 candidates x 25 corners", None, spec.limits, WakeSpec::default()),
+        ("10,000 x 25 with limits of wake-up and in-rush", Some(20e-12), waking, WakeSpec::default()),
+        ("10,000 x 25 with segments", Some(20e-12), waking, parts),
+    ] {
+        let spec = ChooseSpec { rail_f, limits, wake, ..spec.clone() };
         group.throughput(Throughput::Elements(spec.size() as u64 * 25));
         group.bench_function(name, |b| {
             b.iter(|| {

@@ -13,10 +13,11 @@ use common::{CARDS, CELLS};
 use hushrail::awake::Load;
 use hushrail::awake::size::LayoutDensity;
 use hushrail::batch::optimum::{
-    BoundCorners, Choice, ChoiceSpec, Optimum, OptimumFailure, OptimumSpec, Where,
+    BoundCorners, Choice, ChoiceSpec, KeepSpec, Optimum, OptimumFailure, OptimumSpec, Where,
 };
 use hushrail::batch::study::read_study;
 use hushrail::batch::{Loaded, choice, load_study, optimum};
+use hushrail::block::Parts;
 use hushrail::cell::DeviceShelf;
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::optimum::choose::FreeKnob;
@@ -25,7 +26,9 @@ use hushrail::optimum::limits::{ChooseLimits, Limit};
 use hushrail::optimum::search::{stationary, valley};
 use hushrail::optimum::{ChooseSpec, Goal, Knob, KnobRange, Standing, corner_optimum};
 use hushrail::read::Source;
-use hushrail::standby::{Scheme, settle};
+use hushrail::standby::switch::Side;
+use hushrail::standby::{Scheme, Switch, settle};
+use hushrail::transition::{Gated, RailCapacitance, Segment, Start, WakeSpec, WakeSummary, wake_up};
 
 const SCHEMES: &str = r#"
 [[scheme]]
@@ -40,6 +43,10 @@ header = { model = "px", width_m = 40e-6, length_m = 60e-9, finger_width_m = 1e-
 
 /// A process for each shift of the thresholds: 5 supplies and temperatures of each make 25 corners.
 fn load(cards: &str, schemes: &str, temps: &str) -> Loaded {
+    load_block(cards, "inv,3000\nnand2,2000\n", schemes, temps)
+}
+
+fn load_block(cards: &str, counts: &str, schemes: &str, temps: &str) -> Loaded {
     let dir = std::env::temp_dir().join(format!(
         "hushrail-optimum-{}-{:?}",
         std::process::id(),
@@ -47,7 +54,7 @@ fn load(cards: &str, schemes: &str, temps: &str) -> Loaded {
     ));
     std::fs::create_dir_all(&dir).expect("folder");
     std::fs::write(dir.join("cells.sp"), CELLS).expect("file");
-    std::fs::write(dir.join("n.csv"), "cell,count\ninv,3000\nnand2,2000\n").expect("file");
+    std::fs::write(dir.join("n.csv"), format!("cell,count\n{counts}")).expect("file");
     let mut text = String::new();
     for (name, dv) in [("ss", 0.04), ("sf", 0.02), ("tt", 0.0), ("fs", -0.02), ("ff", -0.04)] {
         let shifted = cards.replace(".param dv = 0.0", &format!(".param dv = {dv}"));
@@ -279,9 +286,26 @@ fn spec(points: [usize; 3]) -> ChooseSpec {
 }
 
 fn chosen(loaded: &Loaded, choice_spec: ChooseSpec, rail_f: Option<f64>) -> Choice {
-    let rail = rail_f.map(hushrail::transition::RailCapacitance::of);
-    let spec = ChoiceSpec { at: at("footer"), rail, among: choice_spec };
-    choice(loaded, &spec, &SolveOptions::default(), &mut go()).unwrap_or_else(|e| panic!("{e}"))
+    asked("footer", loaded, choice_spec, rail_f.map(RailCapacitance::of)).unwrap_or_else(|e| panic!("{e}"))
+}
+
+fn asked(
+    scheme: &str,
+    loaded: &Loaded,
+    choice_spec: ChooseSpec,
+    rail: Option<RailCapacitance>,
+) -> Result<Choice, OptimumFailure> {
+    asked_at(at(scheme), loaded, choice_spec, rail)
+}
+
+fn asked_at(
+    at: Where,
+    loaded: &Loaded,
+    choice_spec: ChooseSpec,
+    rail: Option<RailCapacitance>,
+) -> Result<Choice, OptimumFailure> {
+    let spec = ChoiceSpec { at, rail, keep: KeepSpec::default(), among: choice_spec };
+    choice(loaded, &spec, &SolveOptions::default(), &mut go())
 }
 
 fn judge(c: &Choice) {
@@ -330,6 +354,228 @@ fn wake_up_is_the_third_objective() {
     judge(&c);
 }
 
+/// Wake-ups of a setting, integrated in time, at every corner; segments are shares of the switch.
+fn woken(loaded: &Loaded, scheme: &str, spec: &ChooseSpec, values: &[f64], rail_f: f64) -> Vec<WakeSummary> {
+    let bound = BoundCorners::new(loaded, &at(scheme), &SolveOptions::default()).expect("bound");
+    let mut s = bound.scheme.clone();
+    for (k, v) in spec.knobs.iter().zip(values) {
+        k.knob.put(&mut s, *v).expect("scheme");
+    }
+    let (x, side) = match (&s.header, &s.footer) {
+        (Some(x), _) => (x, Side::Header),
+        (None, x) => (x.as_ref().expect("a switch"), Side::Footer),
+    };
+    let mut wake = spec.wake.clone();
+    if let Some(all) = &mut wake.segments {
+        let sum: f64 = all.iter().map(|g| g.width_m).sum();
+        for g in all.iter_mut() {
+            g.width_m *= x.width_m / sum;
+        }
+    }
+    let stop = AtomicBool::new(false);
+    bound
+        .sites()
+        .iter()
+        .map(|site| {
+            let parts = Parts::new(site.block, &s.parked, s.zigzag, site.vdd_v).expect("parts");
+            let curve = s.curve(&parts, site.vdd_v, spec.tolerance, &stop).expect("curve");
+            let shelf = &mut DeviceShelf::default();
+            let switch = Switch::new(x, side, site.process, site.temp, site.vdd_v, shelf, site.origin)
+                .expect("switch");
+            let g = Gated::new(&s, &curve, &switch, rail_f).expect("domain");
+            WakeSummary::of(&wake_up(&g, &wake).expect("awake"), &g)
+        })
+        .collect()
+}
+
+#[test]
+fn wake_ups_of_a_choice_are_those_integrated_in_time() {
+    let small = load(CARDS, SCHEMES, "[125]");
+    let parts = |starts: [Start; 3]| {
+        let widths = [1.0, 3.0, 4.0];
+        let all = widths.iter().zip(starts).map(|(w, start)| Segment { width_m: *w, start }).collect();
+        WakeSpec { segments: Some(all), ..WakeSpec::default() }
+    };
+    for wake in [
+        WakeSpec::default(),
+        parts([Start::AtS(0.0), Start::AtShare(0.6), Start::AtShare(0.9)]),
+        parts([Start::AtS(0.0), Start::AtS(0.5e-9), Start::AtS(1e-9)]),
+        WakeSpec { gate_slew_s: 0.2e-9, ..WakeSpec::default() },
+    ] {
+        let mut s = spec([2, 2, 1]);
+        s.limits = ChooseLimits { wake_s: Some(1e-6), in_rush_a: Some(1.0), ..ChooseLimits::default() };
+        s.wake = wake;
+        let c = chosen(&small, s.clone(), Some(20e-12));
+        assert_eq!((c.chosen.failed, c.chosen.feasible.len()), (0, 4));
+        let mut least = f64::INFINITY;
+        for x in &c.chosen.feasible {
+            let want = woken(&small, "footer", &s, &x.values, 20e-12);
+            let slowest = want.iter().map(|w| w.ready_s).fold(0.0, f64::max);
+            least = least.min(want.iter().map(|w| w.peak_a).fold(0.0, f64::max));
+            let got = x.wake_s.expect("computed");
+            assert!((got / slowest - 1.0).abs() < 1e-6, "{:?} {:?}: {got} for {slowest}", s.wake, x.values);
+        }
+        // the peak of the one that meets the limit best
+        let best = c.chosen.limits.iter().find(|l| l.limit == Limit::InRush).expect("limit");
+        let best = best.best.as_ref().expect("all known");
+        assert!((best.value / least - 1.0).abs() < 1e-6, "{:?}: {} for {least}", s.wake, best.value);
+    }
+}
+
+#[test]
+fn stress_on_the_way_counts() {
+    // the gate of an n-channel header jumps past the supply while its rail is still low
+    let schemes = format!(
+        "{SCHEMES}[[scheme]]\nname = \"up\"\nheader = {{ model = \"nx\", width_m = 40e-6, length_m = 60e-9, \
+         finger_width_m = 1e-6, boost_v = 0.8 }}\n"
+    );
+    let small = load(CARDS, &schemes, "[25]");
+    let mut s = ChooseSpec {
+        knobs: vec![FreeKnob { knob: Knob::HeaderBoost, values: vec![0.8, 0.9] }],
+        limits: ChooseLimits { oxide_v: Some(1.4), drain_bulk_v: Some(1.05), ..ChooseLimits::default() },
+        ..ChooseSpec::default()
+    };
+    let rest = asked("up", &small, s.clone(), None).expect("chosen");
+    assert_eq!(rest.chosen.feasible.len(), 2, "at rest and awake no oxide has more than 1 V");
+    let c = asked("up", &small, s.clone(), Some(RailCapacitance::of(20e-12))).expect("chosen");
+    let count = c.chosen.limits.iter().find(|l| l.limit == Limit::Oxide).expect("limit");
+    assert_eq!((count.broken_by, count.untested, c.chosen.feasible.len()), (2, 0, 0));
+    let worst = woken(&small, "up", &s, &[0.8], 20e-12).iter().map(|w| w.oxide_v).fold(0.0, f64::max);
+    let best = count.best.as_ref().expect("known");
+    assert!((best.value - worst).abs() < 1e-6 && worst > 1.4, "{} for {worst}", best.value);
+    // and with a gate that slews, where the rail has moved on before the gate arrives
+    s.wake.gate_slew_s = 1e-10;
+    let slow = asked("up", &small, s.clone(), Some(RailCapacitance::of(20e-12))).expect("chosen");
+    let slow = slow.chosen.limits.iter().find(|l| l.limit == Limit::Oxide).and_then(|l| l.best.clone());
+    let worst = woken(&small, "up", &s, &[0.8], 20e-12).iter().map(|w| w.oxide_v).fold(0.0, f64::max);
+    assert!((slow.expect("known").value - worst.max(1.0)).abs() < 1e-9);
+}
+
+#[test]
+fn integrations_are_left_out_where_another_limit_is_broken() {
+    let small = load(CARDS, SCHEMES, "[25]");
+    let mut s = spec([3, 4, 1]);
+    s.wake.gate_slew_s = 0.2e-9;
+    s.limits = ChooseLimits { wake_s: Some(1e-6), ..ChooseLimits::default() };
+    let all = chosen(&small, s.clone(), Some(20e-12)).chosen;
+    assert_eq!((all.feasible.len(), all.limits[0].untested), (12, 0));
+    s.limits.droop_v = Some(0.03);
+    let some = chosen(&small, s.clone(), Some(20e-12)).chosen;
+    let of = |c: &hushrail::optimum::Chosen, l: Limit| {
+        let count = c.limits.iter().find(|x| x.limit == l).expect("limit");
+        (count.broken_by, count.untested)
+    };
+    let (broken, untested) = of(&some, Limit::Droop);
+    assert!(broken > 0 && broken < 12 && untested == 0, "{broken} {untested}");
+    assert_eq!(of(&some, Limit::Wake), (0, broken));
+    assert_eq!(some.feasible.len(), 12 - broken);
+    assert!(some.notes.iter().any(|n| n.code == "wake-untested"));
+    for x in &some.feasible {
+        let same = all.feasible.iter().find(|y| y.values == x.values).expect("there");
+        assert_eq!(x.wake_s, same.wake_s);
+    }
+    // none fits: the nearest is that of a choice with everything tested
+    s.limits = ChooseLimits { wake_s: Some(0.5e-9), droop_v: Some(0.01), ..s.limits };
+    let none = chosen(&small, s.clone(), Some(20e-12)).chosen;
+    let near = none.infeasible.expect("none fits").nearest;
+    let worst = |x: &Candidate| {
+        let b = x.binding.as_ref().expect("limits");
+        let wake = 1.0 - x.wake_s.expect("tested") / 0.5e-9;
+        (b.margin, wake)
+    };
+    let (margin, wake) = worst(&near);
+    assert!(margin <= wake && margin < 0.0);
+    s.limits.droop_v = None;
+    let by_wake = chosen(&small, s.clone(), Some(20e-12)).chosen;
+    s.limits = ChooseLimits { droop_v: Some(0.01), ..ChooseLimits::default() };
+    for (i, values) in [0.0, 0.2, 0.4]
+        .iter()
+        .flat_map(|o| [20e-6, 80e-6, 140e-6, 200e-6].map(|w| vec![*o, w, 0.0]))
+        .enumerate()
+    {
+        let one = |mut s: ChooseSpec, rail| {
+            s.candidates = Some(vec![values.clone()]);
+            let c = chosen(&small, s, rail).chosen;
+            let c = c.infeasible.map(|e| e.nearest).or_else(|| c.feasible.first().cloned()).expect("one");
+            c.binding.expect("limit").margin
+        };
+        let droop = one(s.clone(), None);
+        let mut w = s.clone();
+        w.limits = ChooseLimits { wake_s: Some(0.5e-9), ..ChooseLimits::default() };
+        let wake = one(w, Some(20e-12));
+        assert!(margin >= droop.min(wake) - 1e-12, "{i}: {margin} below {droop} and {wake}");
+    }
+    assert!(by_wake.limits[0].untested == 0);
+}
+
+#[test]
+fn retention_is_asked_of_every_corner() {
+    let small = load_block(CARDS, "inv,300\nlatch,100\n", SCHEMES, "[25]");
+    let two = || Where { corners: ["fs", "ff"].map(|p| format!("{p} 1.00 V 25 °C")).into(), ..at("footer") };
+    let mut s = spec([1, 6, 1]);
+    s.knobs[1].values = vec![1e-6, 2e-6, 4e-6, 8e-6, 40e-6, 400e-6];
+    s.limits = ChooseLimits { retention_margin_v: Some(0.0), ..ChooseLimits::default() };
+    let c = asked_at(two(), &small, s.clone(), None).expect("chosen");
+    assert_eq!(c.kept.len(), 2);
+    assert!(
+        c.kept.iter().all(|k| k.cell == "latch" && k.retention_v > 0.05 && k.retention_v < 0.5),
+        "{:?}",
+        c.kept
+    );
+    // the same voltages as a table give the same
+    let table = |c: &Choice| c.kept.iter().map(|k| (k.corner.clone(), k.retention_v)).collect();
+    s.retention_v = Some(table(&c));
+    let given = asked_at(two(), &small, s.clone(), None).expect("chosen");
+    assert_eq!(given.chosen, c.chosen);
+    // what a candidate leaves against each corner's own
+    let bound = BoundCorners::new(&small, &two(), &SolveOptions::default()).expect("bound");
+    let stop = AtomicBool::new(false);
+    for x in c.chosen.feasible.iter().chain(c.chosen.infeasible.iter().map(|e| &e.nearest)) {
+        let b = x.binding.as_ref().expect("limit");
+        assert_eq!(b.limit, Limit::Retention);
+        let mut scheme = bound.scheme.clone();
+        for (k, v) in c.chosen.knobs.iter().zip(&x.values) {
+            k.put(&mut scheme, *v).expect("scheme");
+        }
+        let mut least = (f64::INFINITY, String::new());
+        for (site, kept) in bound.sites().iter().zip(&c.kept) {
+            let shelf = &mut DeviceShelf::default();
+            let rest = settle(&scheme, site.block, site.process, site.temp, 1.0, shelf, site.origin, &stop);
+            let rest = rest.expect("rest");
+            let left = (rest.virtual_supply_v - rest.virtual_ground_v) / kept.retention_v - 1.0;
+            if left < least.0 {
+                least = (left, kept.corner.clone());
+            }
+        }
+        assert_eq!(b.corner, least.1);
+        assert!((b.margin - least.0).abs() < 1e-3 * (1.0 + least.0.abs()), "{} for {}", b.margin, least.0);
+    }
+    let refused = |s: ChooseSpec| asked_at(two(), &small, s, None).expect_err("refused").to_string();
+    let mut t = s.clone();
+    t.limits.retention_margin_v = None;
+    assert!(refused(t).contains("given without a margin"));
+    let mut t = s.clone();
+    if let Some(table) = &mut t.retention_v {
+        let v = table.shift_remove("ff 1.00 V 25 °C").expect("there");
+        table.insert("FF 1.00 V 25 °C".into(), v);
+    }
+    let words = refused(t);
+    for part in ["corner `ff 1.00 V 25 °C` is not given", "the nearest name given is `FF 1.00 V 25 °C`"] {
+        assert!(words.contains(part), "{words}");
+    }
+    let mut t = s.clone();
+    t.limits.retention_margin_v = Some(-0.1);
+    assert!(refused(t).contains("zero or more"));
+    let mut t = s.clone();
+    t.retention_v = None;
+    t.knobs[2] = FreeKnob { knob: Knob::PwellBias, values: vec![0.0] };
+    assert!(refused(t).contains("moves the wells"));
+    let mut t = s;
+    t.retention_v = None;
+    let none = asked("footer", full(), t, None).expect_err("stores nothing").to_string();
+    assert!(none.contains("stores anything"), "{none}");
+}
+
 #[test]
 fn limits_that_nobody_meets_say_which_and_by_how_much() {
     let mut s = spec([4, 4, 1]);
@@ -352,7 +598,7 @@ fn requests_that_cannot_be_are_refused() {
     let wrong = |change: &dyn Fn(&mut ChooseSpec)| {
         let mut s = spec([2, 2, 1]);
         change(&mut s);
-        let spec = ChoiceSpec { at: at("footer"), rail: None, among: s };
+        let spec = ChoiceSpec { at: at("footer"), rail: None, keep: KeepSpec::default(), among: s };
         choice(full(), &spec, &SolveOptions::default(), &mut go()).expect_err("refused").to_string()
     };
     for (text, change) in [
@@ -393,15 +639,26 @@ fn the_same_bits_for_any_number_of_threads_and_a_stop() {
             let (sites, done, stop) = (bound.sites(), AtomicUsize::new(0), AtomicBool::new(false));
             let c = hushrail::optimum::choose(&sites, bound.scheme, &spec([5, 5, 2]), &done, &stop)
                 .expect("chosen");
+            let waking = |slew: f64| {
+                let mut s = ChooseSpec { rail_f: Some(20e-12), ..spec([3, 3, 2]) };
+                (s.limits.wake_s, s.limits.in_rush_a) = (Some(2e-9), Some(60e-3));
+                s.wake.gate_slew_s = slew;
+                let (d, sites) = (AtomicUsize::new(0), &sites[..3]);
+                let w = hushrail::optimum::choose(sites, bound.scheme, &s, &d, &stop).expect("chosen");
+                assert_eq!(d.load(std::sync::atomic::Ordering::Relaxed), 18 * 3);
+                w
+            };
+            let w = (waking(0.0), waking(1e-10));
             let r = KnobRange { knob: Knob::FooterOverdrive, low: 0.0, high: 0.6 };
             let o = hushrail::optimum::compromise(&sites, bound.scheme, &r, &Goal::Worst, &done, &stop)
                 .expect("found");
             assert_eq!(done.load(std::sync::atomic::Ordering::Relaxed), 50 * 10 + 10);
-            format!("{c:?}{o:?}")
+            format!("{c:?}{o:?}{w:?}")
         })
     };
     assert_eq!(with(1), with(3));
-    let spec = ChoiceSpec { at: at("footer"), rail: None, among: spec([30, 20, 2]) };
+    let spec =
+        ChoiceSpec { at: at("footer"), rail: None, keep: KeepSpec::default(), among: spec([30, 20, 2]) };
     let e = choice(&small, &spec, &SolveOptions::default(), &mut |_, _| ControlFlow::Break(()));
     assert!(matches!(e, Err(OptimumFailure::Optimum(hushrail::optimum::OptimumError::Stopped))), "{e:?}");
 }

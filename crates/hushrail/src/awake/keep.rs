@@ -361,9 +361,27 @@ pub fn retention(
     options: &SolveOptions,
     stop: &(dyn Fn() -> bool + Sync),
 ) -> Result<Retention, AwakeError> {
+    retention_along(cell, corner, vdd_v, &|span_v| collapse.levels(vdd_v, span_v), given, need, options, stop)
+}
+
+/// The same with the levels of a domain of one's own over the span, such as one whose wells are biased.
+///
+/// # Errors
+/// As [`retention`].
+#[expect(clippy::too_many_arguments, reason = "one question: cell, corner, rails, inputs, need")]
+pub fn retention_along(
+    cell: &BoundCell,
+    corner: &str,
+    vdd_v: f64,
+    levels: &(dyn Fn(f64) -> Levels + Sync),
+    given: &[(String, bool)],
+    need: &Need,
+    options: &SolveOptions,
+    stop: &(dyn Fn() -> bool + Sync),
+) -> Result<Retention, AwakeError> {
     need.check()?;
     positive("supply", vdd_v, "V")?;
-    let full = collapse.levels(vdd_v, vdd_v);
+    let full = levels(vdd_v);
     let all = loops(cell, &full, given, options)?;
     let sigma = need.population.as_ref().map(|p| sigmas(cell, &p.mismatch)).transpose()?;
     // the loop that is furthest from what is needed
@@ -371,7 +389,7 @@ pub fn retention(
         if stop() {
             return Err(AwakeError::Stopped);
         }
-        let levels = collapse.levels(vdd_v, span);
+        let levels = levels(span);
         let mut held = all
             .par_iter()
             .map(|l| hold(cell, l, &levels, sigma.as_deref(), options))

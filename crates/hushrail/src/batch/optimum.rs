@@ -2,14 +2,19 @@
 
 use std::path::Path;
 
+use std::sync::atomic::{AtomicBool, Ordering};
+
+use indexmap::IndexMap;
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
 use super::load::{Loaded, LoadedDomain, load_study};
 use super::study::{Study, asked, read_study};
 use super::watch::{Progress, Watch, watched};
+use crate::awake::AwakeError;
+use crate::awake::keep::{Need, Retention, retention_along};
 use crate::block::BoundBlock;
-use crate::cell::DeviceShelf;
+use crate::cell::{BoundCell, DeviceShelf, Role};
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
 use crate::device::process::Process;
@@ -18,7 +23,7 @@ use crate::optimum::{
 };
 use crate::physics::Kelvin;
 use crate::read::deck::Note;
-use crate::read::source::{ReadError, Source};
+use crate::read::source::{ReadError, Source, nearest};
 use crate::standby::Scheme;
 use crate::transition::RailCapacitance;
 
@@ -61,8 +66,34 @@ pub struct ChoiceSpec {
     /// The virtual rail's capacitance; wake-up is not computed without it.
     #[serde(default)]
     pub rail: Option<RailCapacitance>,
-    /// The choice; its `rail_f` comes from `rail`.
+    /// What the cells of the domain that store must keep, for the limit `retention_margin_v`.
+    #[serde(default)]
+    pub keep: KeepSpec,
+    /// The choice; its `rail_f` comes from `rail`, its `retention_v` from the cells of the domain when it is left out.
     pub among: ChooseSpec,
+}
+
+/// What cells must keep asleep.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct KeepSpec {
+    /// The margin of the cell itself, and how many may fail.
+    #[serde(default)]
+    pub need: Need,
+    /// Inputs that are known asleep, such as a clock that stands low; all vectors are tried for the others.
+    #[serde(default)]
+    pub inputs: IndexMap<String, bool>,
+}
+
+/// The retention voltage of a domain at a corner.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Kept {
+    /// The corner.
+    pub corner: String,
+    /// The cell that needs most.
+    pub cell: String,
+    /// The lowest span that keeps every cell, V.
+    pub retention_v: f64,
 }
 
 /// The optimum of a knob over the corners of a study.
@@ -89,6 +120,9 @@ pub struct Choice {
     pub scheme: String,
     /// Corners in order.
     pub corners: Vec<Corner>,
+    /// Retention voltages by corner, where they were computed.
+    #[serde(default)]
+    pub kept: Vec<Kept>,
     /// What was found.
     pub chosen: Chosen,
     /// Remarks, each once.
@@ -192,6 +226,88 @@ impl<'a> BoundCorners<'a> {
                 origin: &self.loaded.origin,
             })
             .collect()
+    }
+
+    /// The lowest span at each corner that keeps what the cells of the domain store, with the rails and wells of the scheme; cells
+    /// on the real rails are left out. In the order of the corners.
+    ///
+    /// # Errors
+    /// Two virtual rails, no cell that stores, an input that no such cell has, or a cell that does not hold at full rails.
+    pub fn kept(
+        &self,
+        keep: &KeepSpec,
+        options: &SolveOptions,
+        stop: &AtomicBool,
+    ) -> Result<Vec<Kept>, OptimumFailure> {
+        let scheme = self.scheme;
+        let request = |words: String| Err(OptimumFailure::Request(words));
+        let Some(rail) = scheme.collapsing() else {
+            return request(format!(
+                "retention: scheme `{}` has not exactly one virtual rail; give `retention_v` for every corner",
+                scheme.name
+            ));
+        };
+        let block = self.loaded.block_under(self.domain, scheme).map_err(OptimumError::Scheme)?;
+        let cells: Vec<_> = block.cells.iter().filter(|c| !c.powered).map(|c| &c.cell).collect();
+        let inputs = |c: &crate::cell::Cell| -> Vec<String> {
+            c.ports_of(Role::Input).map(|i| c.ports[i].to_string()).collect()
+        };
+        let known: Vec<String> = cells.iter().flat_map(|c| inputs(c)).collect();
+        for name in keep.inputs.keys() {
+            if !known.iter().any(|k| k.eq_ignore_ascii_case(name)) {
+                let near = nearest(name, known.iter().map(String::as_str));
+                let hint = near.map_or_else(String::new, |n| format!("; the nearest is `{n}`"));
+                return request(format!("retention: no cell of the domain has an input `{name}`{hint}"));
+            }
+        }
+        let plan: Vec<(usize, usize)> =
+            (0..self.corners.len()).flat_map(|k| (0..cells.len()).map(move |c| (k, c))).collect();
+        let found: Vec<Result<Retention, AwakeError>> = plan
+            .par_iter()
+            .map(|(k, c)| {
+                let ((process, temp, _), cell) = (&self.blocks[*k], cells[*c]);
+                let vdd_v = self.corners[*k].vdd_v;
+                let names = inputs(cell);
+                let given: Vec<(String, bool)> = keep
+                    .inputs
+                    .iter()
+                    .filter(|(n, _)| names.iter().any(|m| m.eq_ignore_ascii_case(n)))
+                    .map(|(n, b)| (n.clone(), *b))
+                    .collect();
+                let bound = BoundCell::new(cell, process, *temp, 0.0, &mut DeviceShelf::default())?;
+                let levels = |span_v: f64| {
+                    let (supply_v, ground_v) = rail.rails(vdd_v, span_v);
+                    scheme.levels(vdd_v, supply_v, ground_v)
+                };
+                let stopped = || stop.load(Ordering::Relaxed);
+                let corner = &self.corners[*k].name;
+                retention_along(&bound, corner, vdd_v, &levels, &given, &keep.need, options, &stopped)
+            })
+            .collect();
+        let mut kept: Vec<Option<Kept>> = vec![None; self.corners.len()];
+        for ((k, _), r) in plan.into_iter().zip(found) {
+            let corner = &self.corners[k].name;
+            match r {
+                Ok(r) if kept[k].as_ref().is_none_or(|x| r.retention_v > x.retention_v) => {
+                    let (cell, retention_v) = (r.cell, r.retention_v);
+                    kept[k] = Some(Kept { corner: corner.clone(), cell, retention_v });
+                }
+                Ok(_) | Err(AwakeError::StoresNothing { .. }) => {}
+                Err(AwakeError::Stopped) => return Err(OptimumError::Stopped.into()),
+                Err(e) => {
+                    return Err(OptimumError::Awake { corner: corner.clone(), reason: Box::new(e) }.into());
+                }
+            }
+        }
+        kept.into_iter().collect::<Option<Vec<_>>>().map_or_else(
+            || {
+                request(format!(
+                    "retention: no cell of domain `{}` that falls asleep stores anything; leave `retention_margin_v` out",
+                    self.domain.name
+                ))
+            },
+            Ok,
+        )
     }
 
     fn owned(&self) -> Vec<Corner> {
@@ -311,9 +427,22 @@ pub fn choice(
         let farads = rail.farads(bound.domain.summary.instances);
         asked.rail_f = Some(farads.map_err(|e| OptimumFailure::Request(e.to_string()))?);
     }
+    let computes = asked.limits.retention_margin_v.is_some() && asked.retention_v.is_none();
+    if let Some(k) = asked.knobs.iter().find(|k| computes && k.knob.moves_block()) {
+        return Err(OptimumFailure::Request(format!(
+            "retention: knob `{}` moves the wells of the cells that store; give `retention_v` for every corner, good for all of its settings",
+            k.knob.name()
+        )));
+    }
     let total = sites.len() * asked.size();
-    let chosen =
-        watched(total, progress, |w: &Watch| choose(&sites, bound.scheme, &asked, &w.done, &w.stop))?;
+    let (chosen, kept) = watched(total, progress, |w: &Watch| {
+        let kept = if computes { bound.kept(&spec.keep, options, &w.stop)? } else { Vec::new() };
+        if computes {
+            asked.retention_v = Some(kept.iter().map(|k| (k.corner.clone(), k.retention_v)).collect());
+        }
+        let chosen = choose(&sites, bound.scheme, &asked, &w.done, &w.stop)?;
+        Ok::<_, OptimumFailure>((chosen, kept))
+    })?;
     let mut notes = loaded.notes.clone();
     for n in &chosen.notes {
         n.clone().add_once(&mut notes);
@@ -322,6 +451,7 @@ pub fn choice(
         domain: bound.domain.name.clone(),
         scheme: bound.scheme.name.clone(),
         corners: bound.owned(),
+        kept,
         chosen,
         notes,
     })

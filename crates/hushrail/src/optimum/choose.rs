@@ -1,5 +1,18 @@
 //! The choice: candidates at all corners, held against limits, and the front of those that nothing beats in power, area and
 //! wake-up time at once.
+//!
+//! Limits are tested in two rounds. What rests and what is awake comes first, and with it the wake-up where it is an integral
+//! ([`quick`](crate::transition::quick): ideal supply, gates that jump). Where a gate slews or a package rings, a wake-up is an
+//! integration in time of milliseconds: it is done for the candidates that hold every limit of the first round, and where
+//! none fits, for as many more as it takes to know the nearest, 256 at most (the nearest is then that of those tested). What a limit was not tested on is counted in
+//! [`LimitCount::untested`].
+//!
+//! Stress on the way up. With an ideal supply source and body stand, and the drain moves one way. A gate-drain voltage is then
+//! linear in gate and drain, each of which runs from one end to the other: its extremes are at ends of both. For a p-channel header
+//! (gate from V + o to −b, drain from x to V, with overdrive o, boost b, span at rest x) the four are V + o − x, o, −b − x and
+//! −b − V; the largest is one of the first, asleep, and the last, awake, and a footer of n-channels is its mirror. An n-channel
+//! header has its largest, V + b − x, when its gate jumps while its rail is still low: so ends of pieces are always looked at. With
+//! a package the rows of the integration are.
 
 use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
 
@@ -10,7 +23,7 @@ use serde::{Deserialize, Serialize};
 
 use super::compromise::Goal;
 use super::error::{OptimumError, range};
-use super::front::{Candidate, Infeasible, LimitCount, front, nearest};
+use super::front::{Candidate, Infeasible, LimitCount, front, infeasible, margin};
 use super::knob::Knob;
 use super::limits::{Binding, ChooseLimits, Limit};
 use super::site::{Made, Site};
@@ -20,10 +33,13 @@ use crate::awake::size::LayoutDensity;
 use crate::block::{BlockCurve, Parts};
 use crate::cell::DeviceShelf;
 use crate::read::deck::Note;
+use crate::read::source::nearest;
 use crate::standby::Scheme;
 use crate::standby::rest::settle_clamped;
-use crate::standby::switch::Switch;
-use crate::transition::{Gated, Segment, TransitionError, WakeSpec, wake_up};
+use crate::standby::stress::Pair;
+use crate::standby::switch::{Side, Switch};
+use crate::transition::quick::is_quick;
+use crate::transition::{Gated, Segment, TransitionError, WakeShelf, WakeSpec, WakeSummary, wake_up};
 
 /// A knob and the settings to try.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -63,6 +79,9 @@ pub struct ChooseSpec {
     /// How a domain is woken; segments are shares of the switch: their widths are scaled to each candidate's.
     #[serde(default)]
     pub wake: WakeSpec,
+    /// Retention voltage at each corner, V; needed for a margin of retention.
+    #[serde(default)]
+    pub retention_v: Option<IndexMap<String, f64>>,
     /// Relative accuracy of the block's curves.
     #[serde(default = "tolerance")]
     pub tolerance: f64,
@@ -83,6 +102,7 @@ impl Default for ChooseSpec {
             density: None,
             rail_f: None,
             wake: WakeSpec::default(),
+            retention_v: None,
             tolerance: tolerance(),
         }
     }
@@ -139,12 +159,18 @@ const MOST: usize = 1_000_000;
 /// Candidates that one task works at one corner; droops are shared within it, so that it is not small.
 const CHUNK: usize = 1024;
 
+/// Candidates that are integrated at once in search of the nearest where none fits, and how often: no wake-up is worth more.
+const BATCH: usize = 16;
+const BATCHES: usize = 16;
+
 /// One candidate at one corner.
 #[derive(Debug, Clone, Copy)]
 struct Found {
     power_w: f64,
+    /// Over the switches, with the thickness of the oxide of each in the field.
     oxide_v: f64,
     field_v_m: f64,
+    drain_bulk_v: f64,
     span_v: f64,
     droop_v: Option<f64>,
     wake_s: Option<f64>,
@@ -159,10 +185,18 @@ impl Found {
             Limit::InRush => self.peak_a,
             Limit::Oxide => Some(self.oxide_v),
             Limit::Field => Some(self.field_v_m),
-            Limit::Span => Some(self.span_v),
+            Limit::DrainBulk => Some(self.drain_bulk_v),
+            Limit::Span | Limit::Retention => Some(self.span_v),
             Limit::Standby => Some(self.power_w),
             Limit::Area => None,
         }
+    }
+
+    fn woken(&mut self, w: &WakeSummary, oxide_m: f64) {
+        (self.wake_s, self.peak_a) = (Some(w.ready_s), Some(w.peak_a));
+        self.oxide_v = self.oxide_v.max(w.oxide_v);
+        self.field_v_m = self.field_v_m.max(w.oxide_v / oxide_m);
+        self.drain_bulk_v = self.drain_bulk_v.max(w.drain_bulk_v);
     }
 }
 
@@ -208,9 +242,10 @@ fn settings(spec: &ChooseSpec) -> Result<Vec<Vec<f64>>, OptimumError> {
         .collect())
 }
 
-fn check(spec: &ChooseSpec, sites: usize) -> Result<(), OptimumError> {
+/// Checks a request; gives the retention voltages in the order of the corners, where they bind.
+fn check(spec: &ChooseSpec, sites: &[Site<'_>]) -> Result<Vec<f64>, OptimumError> {
     spec.limits.check()?;
-    if sites == 0 {
+    if sites.is_empty() {
         return range("number of corners", "0".into(), "want one or more");
     }
     if spec.goal == Goal::Loss {
@@ -228,7 +263,31 @@ fn check(spec: &ChooseSpec, sites: usize) -> Result<(), OptimumError> {
     if (spec.limits.wake_s.is_some() || spec.limits.in_rush_a.is_some()) && spec.rail_f.is_none() {
         return needs("wake or in_rush", "rail_f");
     }
-    Ok(())
+    match (&spec.retention_v, spec.limits.retention_margin_v) {
+        (None, None) => Ok(Vec::new()),
+        (None, Some(_)) => needs("retention", "retention_v"),
+        (Some(_), None) => {
+            range("retention_v", "given without a margin".into(), "want the limit retention_margin_v with it")
+        }
+        (Some(table), Some(_)) => sites
+            .iter()
+            .map(|s| match table.get(s.corner) {
+                Some(v) if *v > 0.0 && v.is_finite() => Ok(*v),
+                Some(v) => range(
+                    &format!("retention voltage at corner `{}`", s.corner),
+                    format!("{v} V"),
+                    "want a finite number above zero",
+                ),
+                None => {
+                    let near = nearest(s.corner, table.keys().map(String::as_str));
+                    let hint =
+                        near.map_or_else(String::new, |n| format!("; the nearest name given is `{n}`"));
+                    let what = format!("retention voltage at corner `{}`", s.corner);
+                    range(&what, "not given".into(), &format!("want one for every corner{hint}"))
+                }
+            })
+            .collect(),
+    }
 }
 
 /// What of a scheme the block sees, so that candidates share its curve.
@@ -254,7 +313,7 @@ pub fn choose(
     done: &AtomicUsize,
     stop: &AtomicBool,
 ) -> Result<Chosen, OptimumError> {
-    check(spec, sites.len())?;
+    let retention = check(spec, sites)?;
     let weights = spec.goal.weights(sites.len())?;
     let rows = settings(spec)?;
     let mut schemes = Vec::with_capacity(rows.len());
@@ -287,8 +346,11 @@ pub fn choose(
         .collect::<Vec<Result<Drawn, OptimumError>>>()
         .into_iter()
         .collect::<Result<Vec<_>, _>>()?;
-    let block_of =
-        |site: usize, s: &Scheme| keys.get_index_of(&block_key(s)).map(|k| &drawn[site * keys.len() + k]);
+    let block_of = |site: usize, s: &Scheme| {
+        keys.get_index_of(&block_key(s)).map(|k| (k, &drawn[site * keys.len() + k]))
+    };
+    // the second round, where there is one
+    let slow = spec.rail_f.is_some() && !is_quick(&spec.wake);
     let chunks: Vec<(usize, usize)> = (0..schemes.len())
         .step_by(CHUNK)
         .flat_map(|start| (0..sites.len()).map(move |site| (start, site)))
@@ -296,66 +358,124 @@ pub fn choose(
     let parts = chunks
         .par_iter()
         .map(|(start, site)| {
-            let mut one = Corner {
-                site: &sites[*site],
-                spec,
-                shelf: DeviceShelf::default(),
-                droops: FxHashMap::default(),
-                stop,
-            };
+            let mut one = Corner::new(&sites[*site], spec, stop);
             let mut out = Vec::with_capacity(CHUNK);
             for s in schemes.iter().skip(*start).take(CHUNK) {
                 if stop.load(Ordering::Relaxed) {
                     return Err(OptimumError::Stopped);
                 }
                 out.push(match block_of(*site, s) {
-                    Some(d) => one.work(s, d),
+                    Some((k, d)) => one.work(s, k, d, slow),
                     None => Err(OptimumError::Stopped),
                 });
-                done.fetch_add(1, Ordering::Relaxed);
+                if !slow {
+                    done.fetch_add(1, Ordering::Relaxed);
+                }
             }
             Ok(out)
         })
         .collect::<Vec<Result<Vec<Result<Found, OptimumError>>, OptimumError>>>()
         .into_iter()
         .collect::<Result<Vec<_>, _>>()?;
+    let mut table = Table { parts, sites: sites.len() };
+    let rules = Rules { sites, spec, weights: &weights, retention: &retention, rows: &rows, areas: &areas };
+    let mut tested = vec![!slow; rows.len()];
+    if slow {
+        let wake = |table: &mut Table, which: &[usize], counted: usize| {
+            let pairs: Vec<(usize, usize)> =
+                which.iter().flat_map(|i| (0..sites.len()).map(move |site| (*i, site))).collect();
+            let woken: Vec<Result<(WakeSummary, f64), OptimumError>> = pairs
+                .par_iter()
+                .map(|(i, site)| {
+                    let s = &schemes[*i];
+                    let (false, Some((_, d))) = (stop.load(Ordering::Relaxed), block_of(*site, s)) else {
+                        return Err(OptimumError::Stopped);
+                    };
+                    let found = Corner::new(&sites[*site], spec, stop).integrate(s, d);
+                    done.fetch_add(counted, Ordering::Relaxed);
+                    found
+                })
+                .collect();
+            for ((i, site), w) in pairs.into_iter().zip(woken) {
+                let cell = table.cell(i, site);
+                match (w, cell.as_mut()) {
+                    (Ok((w, oxide_m)), Ok(f)) => f.woken(&w, oxide_m),
+                    (Err(e), _) => *cell = Err(e),
+                    _ => {}
+                }
+            }
+        };
+        // what is left to each candidate by the limits of the first round
+        let left: Vec<Option<f64>> = (0..rows.len())
+            .map(|i| Some(margin(&rules.candidate(i, &table.row(i).ok()?, false, &mut []))))
+            .collect();
+        let second: Vec<usize> = (0..rows.len()).filter(|i| left[*i].is_some_and(|m| m >= 0.0)).collect();
+        let others = rows.len() - second.len();
+        done.fetch_add(others * sites.len(), Ordering::Relaxed);
+        wake(&mut table, &second, 1);
+        let mut near = f64::NEG_INFINITY;
+        for i in second {
+            tested[i] = true;
+            if let Ok(found) = table.row(i) {
+                near = near.max(margin(&rules.candidate(i, &found, true, &mut [])));
+            }
+        }
+        // a wake-up only takes from what is left: the nearest is known when no other has as much left before it
+        let mut order: Vec<(f64, usize)> =
+            left.iter().enumerate().filter_map(|(i, m)| m.filter(|m| *m < 0.0).map(|m| (m, i))).collect();
+        order.sort_by(|a, b| b.0.total_cmp(&a.0).then(a.1.cmp(&b.1)));
+        for some in order.chunks(BATCH).take(BATCHES) {
+            if near >= 0.0 || near > some[0].0 || stop.load(Ordering::Relaxed) {
+                break;
+            }
+            let some: Vec<usize> = some.iter().map(|(_, i)| *i).collect();
+            wake(&mut table, &some, 0);
+            for i in some {
+                tested[i] = true;
+                if let Ok(found) = table.row(i) {
+                    near = near.max(margin(&rules.candidate(i, &found, true, &mut [])));
+                }
+            }
+        }
+    }
     if stop.load(Ordering::Relaxed) {
         return Err(OptimumError::Stopped);
     }
-    let at =
-        |candidate: usize, site: usize| &parts[(candidate / CHUNK) * sites.len() + site][candidate % CHUNK];
     let mut notes = Vec::new();
     let mut failed = 0;
     let mut all: Vec<(usize, Candidate)> = Vec::new();
     let mut counts: Vec<LimitCount> = Limit::ALL
         .iter()
         .filter(|l| spec.limits.allowed(**l).is_some())
-        .map(|l| LimitCount { limit: *l, broken_by: 0, best: None })
+        .map(|l| LimitCount { limit: *l, broken_by: 0, untested: 0, best: None })
         .collect();
-    for (i, row) in rows.iter().enumerate() {
-        let mut found = Vec::with_capacity(sites.len());
-        for site in 0..sites.len() {
-            match at(i, site) {
-                Ok(f) => found.push(*f),
-                Err(e) => {
-                    if failed == 0 {
-                        notes.push(Note::new(
-                            "candidate-failed",
-                            format!("the first candidate without an answer: {e}"),
-                        ));
-                    }
-                    failed += 1;
-                    break;
+    for (i, whole) in tested.iter().enumerate() {
+        match table.row(i) {
+            Ok(found) => all.push((i, rules.candidate(i, &found, *whole, &mut counts))),
+            Err(e) => {
+                if failed == 0 {
+                    let words = format!("the first candidate without an answer: {e}");
+                    notes.push(Note::new("candidate-failed", words));
                 }
+                failed += 1;
             }
         }
-        if found.len() == sites.len() {
-            all.push((i, candidate(sites, spec, &weights, row, areas[i], &found, &mut counts)));
+    }
+    let without = tested.iter().filter(|t| !**t).count();
+    if without > 0 {
+        notes.push(Note::new(
+            "wake-untested",
+            format!("{without} candidates break another limit: their wake-up was not integrated"),
+        ));
+    }
+    let feasible: Vec<usize> = (0..all.len()).filter(|k| margin(&all[*k].1) >= 0.0).collect();
+    let mut nearest: Option<&Candidate> = None;
+    for (_, c) in all.iter().filter(|(i, _)| feasible.is_empty() && tested[*i]) {
+        if nearest.is_none_or(|b| margin(c) > margin(b)) {
+            nearest = Some(c);
         }
     }
-    let fits = |c: &Candidate| c.binding.as_ref().is_none_or(|b| b.margin >= 0.0);
-    let feasible: Vec<usize> = (0..all.len()).filter(|k| fits(&all[*k].1)).collect();
-    let infeasible = if feasible.is_empty() { nearest(&all, &counts) } else { None };
+    let infeasible = nearest.map(|c| infeasible(c, all.len(), &counts));
     let chosen = front(&feasible.iter().map(|k| &all[*k].1).collect::<Vec<_>>());
     let points = chosen
         .par_iter()
@@ -363,12 +483,12 @@ pub fn choose(
             let (i, c) = &all[feasible[*k]];
             let site = sites.iter().position(|s| s.corner == c.corner).unwrap_or(0);
             let s = &schemes[*i];
-            let Some(d) = block_of(site, s) else { return Err(OptimumError::Stopped) };
+            let Some((_, d)) = block_of(site, s) else { return Err(OptimumError::Stopped) };
             let made = sites[site].made(s, &mut DeviceShelf::default())?;
             let direct =
                 settle_clamped(s, &d.parts, sites[site].vdd_v, made.header, made.footer, made.clamps, stop)
                     .map_err(|e| OptimumError::rest(sites[site].corner, e))?;
-            let quick = at(*i, site).as_ref().map_or(f64::NAN, |f| f.power_w);
+            let quick = table.get(*i, site).as_ref().map_or(f64::NAN, |f| f.power_w);
             Ok(FrontPoint {
                 candidate: c.clone(),
                 checked_w: direct.power_w,
@@ -416,46 +536,137 @@ fn area(s: &Scheme, spec: &ChooseSpec) -> Result<Option<f64>, OptimumError> {
     Ok(Some(sum))
 }
 
-/// One corner under one task: devices and droops are known once.
+/// What was found, chunk by chunk.
+struct Table {
+    parts: Vec<Vec<Result<Found, OptimumError>>>,
+    sites: usize,
+}
+
+impl Table {
+    fn get(&self, candidate: usize, site: usize) -> &Result<Found, OptimumError> {
+        &self.parts[(candidate / CHUNK) * self.sites + site][candidate % CHUNK]
+    }
+    fn cell(&mut self, candidate: usize, site: usize) -> &mut Result<Found, OptimumError> {
+        &mut self.parts[(candidate / CHUNK) * self.sites + site][candidate % CHUNK]
+    }
+    /// A candidate at every corner, or why it has no answer at the first that has none.
+    fn row(&self, candidate: usize) -> Result<Vec<Found>, &OptimumError> {
+        (0..self.sites).map(|site| self.get(candidate, site).as_ref().copied()).collect()
+    }
+}
+
+/// One corner under one task: devices, droops and currents of fingers are known once.
 struct Corner<'a> {
     site: &'a Site<'a>,
     spec: &'a ChooseSpec,
     shelf: DeviceShelf,
     droops: FxHashMap<Vec<u64>, f64>,
+    wakes: FxHashMap<usize, WakeShelf<'a>>,
     stop: &'a AtomicBool,
 }
 
-impl Corner<'_> {
-    fn work(&mut self, s: &Scheme, d: &Drawn) -> Result<Found, OptimumError> {
+impl<'a> Corner<'a> {
+    fn new(site: &'a Site<'a>, spec: &'a ChooseSpec, stop: &'a AtomicBool) -> Self {
+        Self {
+            site,
+            spec,
+            shelf: DeviceShelf::default(),
+            droops: FxHashMap::default(),
+            wakes: FxHashMap::default(),
+            stop,
+        }
+    }
+
+    /// Everything of a candidate but what takes an integration in time; `block` tells its block from the others.
+    fn work(&mut self, s: &Scheme, block: usize, d: &'a Drawn, slow: bool) -> Result<Found, OptimumError> {
         let made = self.site.made(s, &mut self.shelf)?;
         let droop_v = self.droop(s, &made)?;
         let v = self.site.vdd_v;
-        // awake, gate and source are a supply and the boost apart
-        let awake = [&made.header, &made.footer]
-            .into_iter()
-            .flatten()
-            .map(|x| ((x.awake_gate_v - x.rail_v).abs(), x.device.oxide_m()));
-        let (mut oxide_v, mut field_v_m) = (0.0f64, 0.0f64);
-        for (x, thick) in awake {
-            oxide_v = oxide_v.max(x);
-            field_v_m = field_v_m.max(x / thick);
+        let (mut oxide_v, mut field_v_m, mut drain_bulk_v) = (0.0f64, 0.0f64, 0.0f64);
+        for x in [&made.header, &made.footer].into_iter().flatten() {
+            // awake with the whole supply on the block: gate and source are a supply and the boost apart
+            let m = x.awake(x.awake_gate_v, x.rail_v);
+            let over = m.of(Pair::GateSource).abs().max(m.of(Pair::GateDrain).abs());
+            oxide_v = oxide_v.max(over);
+            field_v_m = field_v_m.max(over / x.device.oxide_m());
+            drain_bulk_v = drain_bulk_v.max((m.drain_v - x.awake_body_v).abs());
         }
-        let (wake_s, peak_a) = self.wake(s, d, made.switch())?;
+        let switches: Vec<Switch> = [&made.header, &made.footer].into_iter().flatten().cloned().collect();
         let Made { header, footer, clamps } = made;
+        let beside = clamps.clone();
         let rest = match &d.curve {
             Some(c) => settle_clamped(s, c, v, header, footer, clamps, self.stop),
             None => settle_clamped(s, &d.parts, v, header, footer, clamps, self.stop),
         }
         .map_err(|e| OptimumError::rest(self.site.corner, e))?;
-        Ok(Found {
+        for x in &switches {
+            let rail_v = if x.side == Side::Header { rest.virtual_supply_v } else { rest.virtual_ground_v };
+            drain_bulk_v = drain_bulk_v.max(x.asleep(rail_v).of(Pair::DrainBulk).abs());
+        }
+        let span_v = rest.virtual_supply_v - rest.virtual_ground_v;
+        let mut found = Found {
             power_w: rest.power_w,
             oxide_v: oxide_v.max(rest.oxide_v),
             field_v_m: field_v_m.max(rest.oxide_field_v_m),
-            span_v: rest.virtual_supply_v - rest.virtual_ground_v,
+            drain_bulk_v,
+            span_v,
             droop_v,
-            wake_s,
-            peak_a,
-        })
+            wake_s: None,
+            peak_a: None,
+        };
+        if let (Some(rail_f), false) = (self.spec.rail_f, slow) {
+            let (curve, switch) = self.one_rail(s, d, switches.first())?;
+            let wrong = |e| self.wrong(e);
+            let g = Gated::new(s, curve, switch, rail_f);
+            let g = g
+                .and_then(|g| g.clamped(beside.header.as_ref().or(beside.footer.as_ref())))
+                .map_err(wrong)?;
+            let scaled = self.scaled(s);
+            let shelf = self.wakes.entry(block).or_insert_with(|| WakeShelf::new(curve));
+            let woken = shelf.wake(&g, scaled.as_ref().unwrap_or(&self.spec.wake), Some(span_v));
+            let woken = woken.map_err(|e| self.wrong(e))?;
+            found.woken(&woken, switch.device.oxide_m());
+        }
+        Ok(found)
+    }
+
+    fn wrong(&self, e: TransitionError) -> OptimumError {
+        OptimumError::Transition { corner: self.site.corner.into(), reason: Box::new(e) }
+    }
+
+    fn one_rail<'s>(
+        &self,
+        s: &Scheme,
+        d: &'a Drawn,
+        switch: Option<&'s Switch>,
+    ) -> Result<(&'a BlockCurve, &'s Switch), OptimumError> {
+        let found = "not one switch over one virtual rail";
+        d.curve
+            .as_ref()
+            .zip(switch)
+            .ok_or_else(|| self.wrong(TransitionError::Switches { scheme: s.name.clone(), found }))
+    }
+
+    /// The wake-up with its segments scaled to the switch, where it has segments.
+    fn scaled(&self, s: &Scheme) -> Option<WakeSpec> {
+        let (segments, x) = (self.spec.wake.segments.as_ref()?, s.header.as_ref().or(s.footer.as_ref())?);
+        let sum: f64 = segments.iter().map(|g| g.width_m).sum();
+        let scaled =
+            segments.iter().map(|g| Segment { width_m: g.width_m * x.width_m / sum, ..*g }).collect();
+        Some(WakeSpec { segments: Some(scaled), ..self.spec.wake.clone() })
+    }
+
+    /// The wake-up integrated in time, and the thickness of the switch's oxide.
+    fn integrate(&mut self, s: &Scheme, d: &'a Drawn) -> Result<(WakeSummary, f64), OptimumError> {
+        let made = self.site.made(s, &mut self.shelf)?;
+        let (curve, switch) = self.one_rail(s, d, made.switch())?;
+        let rail_f = self.spec.rail_f.unwrap_or_default();
+        let clamp = made.clamps.header.as_ref().or(made.clamps.footer.as_ref());
+        let g =
+            Gated::new(s, curve, switch, rail_f).and_then(|g| g.clamped(clamp)).map_err(|e| self.wrong(e))?;
+        let scaled = self.scaled(s);
+        let wake = wake_up(&g, scaled.as_ref().unwrap_or(&self.spec.wake)).map_err(|e| self.wrong(e))?;
+        Ok((WakeSummary::of(&wake, &g), switch.device.oxide_m()))
     }
 
     /// Droop; the whole supply where the switch cannot carry the load. What the gate does asleep does not move it.
@@ -465,7 +676,7 @@ impl Corner<'_> {
             .into_iter()
             .flatten()
             .flat_map(|x| {
-                let body = if x.body_to_gate { x.boost_v } else { x.well_bias_v };
+                let body = if x.body_to_gate { x.boost_v } else { x.awake_well_bias_v() };
                 [x.width_m, x.length_m, x.finger_width_m.unwrap_or(x.width_m), x.boost_v, body]
                     .map(f64::to_bits)
             })
@@ -483,103 +694,93 @@ impl Corner<'_> {
         self.droops.insert(key, v);
         Ok(Some(v))
     }
-
-    /// Time to ready and largest current, where the rail's capacitance is given.
-    fn wake(
-        &self,
-        s: &Scheme,
-        d: &Drawn,
-        switch: Option<&Switch>,
-    ) -> Result<(Option<f64>, Option<f64>), OptimumError> {
-        let Some(rail_f) = self.spec.rail_f else { return Ok((None, None)) };
-        let wrong = |e: TransitionError| OptimumError::Transition {
-            corner: self.site.corner.into(),
-            reason: Box::new(e),
-        };
-        let (Some(curve), Some(switch)) = (&d.curve, switch) else {
-            return Err(wrong(TransitionError::Switches {
-                scheme: s.name.clone(),
-                found: "not one switch over one virtual rail",
-            }));
-        };
-        let spec = match (&self.spec.wake.segments, s.header.as_ref().or(s.footer.as_ref())) {
-            (Some(segments), Some(x)) => {
-                let sum: f64 = segments.iter().map(|g| g.width_m).sum();
-                let scaled =
-                    segments.iter().map(|g| Segment { width_m: g.width_m * x.width_m / sum, ..*g }).collect();
-                &WakeSpec { segments: Some(scaled), ..self.spec.wake.clone() }
-            }
-            _ => &self.spec.wake,
-        };
-        let g = Gated::new(s, curve, switch, rail_f).map_err(wrong)?;
-        let wake = wake_up(&g, spec).map_err(wrong)?;
-        Ok((Some(wake.ready_s), Some(wake.peak_a)))
-    }
 }
 
-/// Joins a candidate over the corners and holds it against the limits.
-fn candidate(
-    sites: &[Site<'_>],
-    spec: &ChooseSpec,
-    weights: &[f64],
-    row: &[f64],
-    area_m2: Option<f64>,
-    found: &[Found],
-    counts: &mut [LimitCount],
-) -> Candidate {
-    let mut worst = 0;
-    for (k, f) in found.iter().enumerate() {
-        if f.power_w > found[worst].power_w {
-            worst = k;
-        }
-    }
-    let power_w = if weights.is_empty() {
-        found[worst].power_w
-    } else {
-        found.iter().zip(weights).map(|(f, w)| f.power_w * w).sum()
-    };
-    let mut binding: Option<Binding> = None;
-    for count in counts {
-        let limit = count.limit;
-        let Some(allowed) = spec.limits.allowed(limit) else { continue };
-        let mut least: Option<Binding> = None;
-        let mut hold = |corner: &str, value: f64| {
-            let margin = limit.margin(value, allowed);
-            if least.as_ref().is_none_or(|b| margin < b.margin) {
-                least = Some(Binding { limit, corner: corner.to_owned(), value, allowed, margin });
-            }
+/// What candidates are held against.
+struct Rules<'a> {
+    sites: &'a [Site<'a>],
+    spec: &'a ChooseSpec,
+    weights: &'a [f64],
+    /// Retention voltages of the corners, V; empty without a margin.
+    retention: &'a [f64],
+    rows: &'a [Vec<f64>],
+    areas: &'a [Option<f64>],
+}
+
+impl Rules<'_> {
+    /// A limit where it is nearest.
+    fn least(&self, limit: Limit, area_m2: Option<f64>, found: &[Found]) -> Option<Binding> {
+        let allowed = self.spec.limits.allowed(limit)?;
+        let of = |corner: &str, value: f64, allowed: f64| Binding {
+            limit,
+            corner: corner.to_owned(),
+            value,
+            allowed,
+            margin: limit.margin(value, allowed),
         };
         if limit == Limit::Area {
-            if let Some(a) = area_m2 {
-                hold("every", a);
+            return Some(of("every", area_m2?, allowed));
+        }
+        let mut least: Option<(f64, usize, f64, f64)> = None;
+        for (k, f) in found.iter().enumerate() {
+            let above = if limit == Limit::Retention { self.retention[k] } else { 0.0 };
+            let Some(value) = f.of(limit) else { continue };
+            let left = limit.margin(value, above + allowed);
+            if least.is_none_or(|l| left < l.0) {
+                least = Some((left, k, value, above + allowed));
             }
+        }
+        least.map(|(_, k, value, allowed)| of(self.sites[k].corner, value, allowed))
+    }
+
+    /// Joins a candidate over the corners and holds it against the limits; `whole` says whether its wake-up is known or not
+    /// asked for.
+    fn candidate(&self, i: usize, found: &[Found], whole: bool, counts: &mut [LimitCount]) -> Candidate {
+        let area_m2 = self.areas[i];
+        let mut worst = 0;
+        for (k, f) in found.iter().enumerate() {
+            if f.power_w > found[worst].power_w {
+                worst = k;
+            }
+        }
+        let power_w = if self.weights.is_empty() {
+            found[worst].power_w
         } else {
-            for (site, f) in sites.iter().zip(found) {
-                if let Some(v) = f.of(limit) {
-                    hold(site.corner, v);
+            found.iter().zip(self.weights).map(|(f, w)| f.power_w * w).sum()
+        };
+        let mut binding: Option<Binding> = None;
+        for limit in Limit::ALL {
+            if self.spec.limits.allowed(limit).is_none() {
+                continue;
+            }
+            let least = self.least(limit, area_m2, found);
+            let broken = least.as_ref().is_some_and(|b| b.margin < 0.0);
+            let known = whole || !(limit.is_of_waking() || limit.is_of_stress());
+            if let Some(count) = counts.iter_mut().find(|c| c.limit == limit) {
+                count.broken_by += usize::from(broken);
+                count.untested += usize::from(!known && !broken);
+                if let Some(b) = least.as_ref().filter(|_| known)
+                    && count.best.as_ref().is_none_or(|x| b.margin > x.margin)
+                {
+                    count.best = Some(b.clone());
                 }
             }
+            if let Some(least) = least
+                && binding.as_ref().is_none_or(|b| least.margin < b.margin)
+            {
+                binding = Some(least);
+            }
         }
-        let Some(least) = least else { continue };
-        if least.margin < 0.0 {
-            count.broken_by += 1;
+        Candidate {
+            values: self.rows[i].clone(),
+            power_w,
+            area_m2,
+            wake_s: found
+                .iter()
+                .filter_map(|f| f.wake_s)
+                .fold(None, |m: Option<f64>, x| Some(m.map_or(x, |m| m.max(x)))),
+            corner: self.sites[worst].corner.to_owned(),
+            binding,
         }
-        if count.best.as_ref().is_none_or(|b| least.margin > b.margin) {
-            count.best = Some(least.clone());
-        }
-        if binding.as_ref().is_none_or(|b| least.margin < b.margin) {
-            binding = Some(least);
-        }
-    }
-    Candidate {
-        values: row.to_vec(),
-        power_w,
-        area_m2,
-        wake_s: found
-            .iter()
-            .filter_map(|f| f.wake_s)
-            .fold(None, |m: Option<f64>, x| Some(m.map_or(x, |m| m.max(x)))),
-        corner: sites[worst].corner.to_owned(),
-        binding,
     }
 }

@@ -13,7 +13,8 @@ pub struct Candidate {
     pub power_w: f64,
     /// Area of the switches, m², where a density is given.
     pub area_m2: Option<f64>,
-    /// Time to ready at the slowest corner, s, where the rail's capacitance is given.
+    /// Time to ready at the slowest corner, s, where the rail's capacitance is given. A candidate that breaks another limit has
+    /// none where its wake-up takes an integration in time.
     pub wake_s: Option<f64>,
     /// The corner with the highest power.
     pub corner: String,
@@ -26,9 +27,13 @@ pub struct Candidate {
 pub struct LimitCount {
     /// The limit.
     pub limit: Limit,
-    /// Candidates that break it.
+    /// Candidates that break it; with those of `untested`, at most that many more.
     pub broken_by: usize,
-    /// Where it stands with the candidate that meets it best.
+    /// Candidates of which it is not known: they break another limit, and their wake-up takes an integration in time that was
+    /// left out. Zero for limits without wake-up; a stress that is too high without the way up is counted as broken.
+    #[serde(default)]
+    pub untested: usize,
+    /// Where it stands with the candidate that meets it best, of those of which it is known.
     pub best: Option<Binding>,
 }
 
@@ -41,25 +46,26 @@ pub struct Infeasible {
     pub reason: String,
 }
 
-/// The candidate whose worst limit is least broken.
-pub(super) fn nearest(all: &[(usize, Candidate)], counts: &[LimitCount]) -> Option<Infeasible> {
-    let margin = |c: &Candidate| c.binding.as_ref().map_or(0.0, |b| b.margin);
-    let mut best: Option<&Candidate> = None;
-    for (_, c) in all {
-        if best.is_none_or(|b| margin(c) > margin(b)) {
-            best = Some(c);
-        }
-    }
-    let nearest = best?;
+/// What is left to the limit that is nearest; nothing binds a candidate without limits.
+pub(super) fn margin(c: &Candidate) -> f64 {
+    c.binding.as_ref().map_or(0.0, |b| b.margin)
+}
+
+/// In words why no candidate of `all` fits, when this is the nearest.
+pub(super) fn infeasible(nearest: &Candidate, all: usize, counts: &[LimitCount]) -> Infeasible {
     let mut reason = format!(
-        "no candidate of {} meets every limit; the nearest: {}",
-        all.len(),
+        "no candidate of {all} meets every limit; the nearest: {}",
         nearest.binding.as_ref().map_or_else(String::new, Binding::words)
     );
-    for c in counts.iter().filter(|c| c.broken_by == all.len()) {
+    for c in counts.iter().filter(|c| c.broken_by > 0 && c.broken_by + c.untested == all) {
         if let Some(b) = &c.best {
+            let which = if c.untested == 0 {
+                String::new()
+            } else {
+                format!(" of the {} it was tested on", c.broken_by)
+            };
             let more = format!(
-                "; {} is broken by every candidate, at best {:.4e} {} at corner `{}`",
+                "; {} is broken by every candidate{which}, at best {:.4e} {} at corner `{}`",
                 c.limit.name(),
                 b.value,
                 c.limit.unit(),
@@ -68,7 +74,7 @@ pub(super) fn nearest(all: &[(usize, Candidate)], counts: &[LimitCount]) -> Opti
             reason.push_str(&more);
         }
     }
-    Some(Infeasible { nearest: nearest.clone(), reason })
+    Infeasible { nearest: nearest.clone(), reason }
 }
 
 /// Whether one is nowhere worse and somewhere better.

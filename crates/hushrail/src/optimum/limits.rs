@@ -14,28 +14,34 @@ pub enum Limit {
     Wake,
     /// Largest current while waking, A.
     InRush,
-    /// Oxide voltage of a switch, asleep and awake, V.
+    /// Oxide voltage of a switch, gate to drain or source, V: asleep, awake, and on the way where a wake-up is computed.
     Oxide,
     /// Field it means over the electrical thickness, V/m.
     Field,
+    /// Voltage between drain and bulk of a switch, V; when, as for the oxide.
+    DrainBulk,
     /// Area of the switches, m².
     Area,
     /// Span left to the block asleep, V: what keeps stored values, margin included. At least this.
     Span,
+    /// The same against the corner's own retention voltage and a margin, V.
+    Retention,
     /// Power asleep, W.
     Standby,
 }
 
 impl Limit {
     /// All, in report order.
-    pub const ALL: [Self; 8] = [
+    pub const ALL: [Self; 10] = [
         Self::Droop,
         Self::Wake,
         Self::InRush,
         Self::Oxide,
         Self::Field,
+        Self::DrainBulk,
         Self::Area,
         Self::Span,
+        Self::Retention,
         Self::Standby,
     ];
 
@@ -47,8 +53,10 @@ impl Limit {
             Self::InRush => "in_rush",
             Self::Oxide => "oxide",
             Self::Field => "field",
+            Self::DrainBulk => "drain_bulk",
             Self::Area => "area",
             Self::Span => "span",
+            Self::Retention => "retention",
             Self::Standby => "standby",
         }
     }
@@ -56,7 +64,7 @@ impl Limit {
     /// Unit of its value.
     pub fn unit(self) -> &'static str {
         match self {
-            Self::Droop | Self::Oxide | Self::Span => "V",
+            Self::Droop | Self::Oxide | Self::DrainBulk | Self::Span | Self::Retention => "V",
             Self::Wake => "s",
             Self::InRush => "A",
             Self::Field => "V/m",
@@ -67,7 +75,22 @@ impl Limit {
 
     /// What is left to the limit, relative to it; below zero when it is broken.
     pub fn margin(self, value: f64, allowed: f64) -> f64 {
-        if self == Self::Span { value / allowed - 1.0 } else { 1.0 - value / allowed }
+        if self.is_least() { value / allowed - 1.0 } else { 1.0 - value / allowed }
+    }
+
+    /// Whether it is a lower limit.
+    pub fn is_least(self) -> bool {
+        matches!(self, Self::Span | Self::Retention)
+    }
+
+    /// Whether it is one of the wake-up alone.
+    pub fn is_of_waking(self) -> bool {
+        matches!(self, Self::Wake | Self::InRush)
+    }
+
+    /// Whether the way up may add to it.
+    pub fn is_of_stress(self) -> bool {
+        matches!(self, Self::Oxide | Self::Field | Self::DrainBulk)
     }
 }
 
@@ -90,19 +113,25 @@ pub struct ChooseLimits {
     /// Largest oxide field, V/m.
     #[serde(default)]
     pub field_v_m: Option<f64>,
+    /// Largest voltage between drain and bulk, V.
+    #[serde(default)]
+    pub drain_bulk_v: Option<f64>,
     /// Largest area, m².
     #[serde(default)]
     pub area_m2: Option<f64>,
     /// Smallest span left asleep, V.
     #[serde(default)]
     pub span_v: Option<f64>,
+    /// Smallest span left asleep above each corner's retention voltage, V; zero or more. The voltages stand beside the limits.
+    #[serde(default)]
+    pub retention_margin_v: Option<f64>,
     /// Largest power asleep, W.
     #[serde(default)]
     pub standby_w: Option<f64>,
 }
 
 impl ChooseLimits {
-    /// The value allowed.
+    /// The value allowed; of retention the margin alone.
     pub fn allowed(&self, limit: Limit) -> Option<f64> {
         match limit {
             Limit::Droop => self.droop_v,
@@ -110,8 +139,10 @@ impl ChooseLimits {
             Limit::InRush => self.in_rush_a,
             Limit::Oxide => self.oxide_v,
             Limit::Field => self.field_v_m,
+            Limit::DrainBulk => self.drain_bulk_v,
             Limit::Area => self.area_m2,
             Limit::Span => self.span_v,
+            Limit::Retention => self.retention_margin_v,
             Limit::Standby => self.standby_w,
         }
     }
@@ -119,14 +150,17 @@ impl ChooseLimits {
     /// Checks every number.
     ///
     /// # Errors
-    /// A limit that is not a finite number above zero.
+    /// A limit that is not a finite number above zero; a margin may be zero.
     pub fn check(&self) -> Result<(), OptimumError> {
         for l in Limit::ALL {
-            if let Some(v) = self.allowed(l)
-                && !(v > 0.0 && v.is_finite())
-            {
-                let found = format!("{v} {}", l.unit());
-                return range(&format!("limit of {}", l.name()), found, "want a finite number above zero");
+            let Some(v) = self.allowed(l) else { continue };
+            let (fits, wanted) = if l == Limit::Retention {
+                (v >= 0.0, "want a finite number, zero or more")
+            } else {
+                (v > 0.0, "want a finite number above zero")
+            };
+            if !(fits && v.is_finite()) {
+                return range(&format!("limit of {}", l.name()), format!("{v} {}", l.unit()), wanted);
             }
         }
         Ok(())
@@ -153,7 +187,7 @@ impl Binding {
     pub fn words(&self) -> String {
         let Self { limit, corner, value, allowed, margin } = self;
         let (name, unit) = (limit.name(), limit.unit());
-        let sense = if *limit == Limit::Span { "at least" } else { "at most" };
+        let sense = if limit.is_least() { "at least" } else { "at most" };
         let state = if *margin < 0.0 { "is broken" } else { "holds" };
         let by = 100.0 * margin.abs();
         format!(

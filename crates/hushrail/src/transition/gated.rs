@@ -107,6 +107,11 @@ impl<'a> Gated<'a> {
         Ok(Self { clamp, ..self })
     }
 
+    /// Whether a clamp stands beside the switch.
+    pub fn is_clamped(&self) -> bool {
+        self.clamp.is_some()
+    }
+
     /// Span at which a second supply holds the rail asleep, V.
     pub fn held_span_v(&self) -> Option<f64> {
         match self.rail {
@@ -119,6 +124,11 @@ impl<'a> Gated<'a> {
     pub fn clamp_gives(&self, span_v: f64, loss_v: f64) -> ClampCurrent {
         let none = ClampCurrent { rail_a: 0.0, real_a: 0.0, rail_per: [0.0; 2], real_per: [0.0; 2] };
         self.clamp.map_or(none, |c| c.gives(span_v, loss_v))
+    }
+
+    /// How many books of the block hang on the rail; which they are is fixed by the rail.
+    pub(super) fn books(&self) -> usize {
+        self.scheme.on_rail(self.rail).len()
     }
 
     /// Current that the block takes from its rail with a span left, A.

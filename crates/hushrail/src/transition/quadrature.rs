@@ -9,6 +9,19 @@ const POINTS: [(f64, f64); 5] = [
     (0.953_089_922_969_332, 0.118_463_442_528_094_54),
 ];
 
+/// Points of the rule.
+pub(super) const ORDER: usize = POINTS.len();
+
+/// Where the rule looks between `a` and `b`.
+pub(super) fn places(a: f64, b: f64) -> [f64; ORDER] {
+    POINTS.map(|(x, _)| a + x * (b - a))
+}
+
+/// Weights of the points, for a width of one.
+pub(super) fn weights() -> [f64; ORDER] {
+    POINTS.map(|(_, w)| w)
+}
+
 /// Integral of several functions at once from `a` to `b`.
 pub(super) fn gauss<const K: usize>(a: f64, b: f64, mut f: impl FnMut(f64) -> [f64; K]) -> [f64; K] {
     let mut sum = [0.0; K];

@@ -145,10 +145,10 @@ impl Wake {
 
 /// Fingers that start together.
 #[derive(Debug, Clone, Copy)]
-struct Group {
-    fingers: f64,
+pub(super) struct Group {
+    pub(super) fingers: f64,
     /// Infinite until it is known.
-    start: f64,
+    pub(super) start: f64,
 }
 
 /// The equations of one piece: which groups have started is fixed at its beginning.
@@ -259,7 +259,7 @@ impl Motion<3> for Waking<'_> {
 }
 
 /// Checks the segments and makes groups of them.
-fn groups(g: &Gated<'_>, spec: &WakeSpec) -> Result<Vec<Group>, TransitionError> {
+pub(super) fn groups(g: &Gated<'_>, spec: &WakeSpec) -> Result<Vec<Group>, TransitionError> {
     let Some(segments) = &spec.segments else {
         return Ok(vec![Group { fingers: g.switch.fingers, start: 0.0 }]);
     };
@@ -304,11 +304,12 @@ impl Gated<'_> {
     }
 }
 
-/// Wakes a domain.
-///
-/// # Errors
-/// Numbers that cannot be, segments that do not make the switch, a rail that never becomes ready.
-pub fn wake_up(g: &Gated<'_>, spec: &WakeSpec) -> Result<Wake, TransitionError> {
+/// Checks a request's numbers and gives the span at the start; `rest_span_v` is where the rail rests, where it is known.
+pub(super) fn start_span(
+    g: &Gated<'_>,
+    spec: &WakeSpec,
+    rest_span_v: Option<f64>,
+) -> Result<f64, TransitionError> {
     not_negative("gate slew (s)", spec.gate_slew_s)?;
     if !(spec.ready_within > 0.0 && spec.ready_within < 1.0) {
         return Err(TransitionError::Range {
@@ -317,21 +318,28 @@ pub fn wake_up(g: &Gated<'_>, spec: &WakeSpec) -> Result<Wake, TransitionError> 
             wanted: "want more than zero and less than one".into(),
         });
     }
-    let groups = groups(g, spec)?;
-    let from = match spec.from_span_v {
-        Some(v) if v >= 0.0 && v < g.vdd_v => v,
-        Some(value) => {
-            return Err(TransitionError::Range {
-                what: "span at the start (V)".into(),
-                value,
-                wanted: format!("want zero or more and less than the supply ({} V)", g.vdd_v),
-            });
-        }
-        None => g.rest_span_v()?,
-    };
     if let Some(t) = spec.give_up_s {
         positive("give_up_s (s)", t)?;
     }
+    match (spec.from_span_v, rest_span_v) {
+        (Some(v), _) if v >= 0.0 && v < g.vdd_v => Ok(v),
+        (Some(value), _) => Err(TransitionError::Range {
+            what: "span at the start (V)".into(),
+            value,
+            wanted: format!("want zero or more and less than the supply ({} V)", g.vdd_v),
+        }),
+        (None, Some(v)) => Ok(v),
+        (None, None) => g.rest_span_v(),
+    }
+}
+
+/// Wakes a domain.
+///
+/// # Errors
+/// Numbers that cannot be, segments that do not make the switch, a rail that never becomes ready.
+pub fn wake_up(g: &Gated<'_>, spec: &WakeSpec) -> Result<Wake, TransitionError> {
+    let from = start_span(g, spec, None)?;
+    let groups = groups(g, spec)?;
     match spec.package {
         None => run::<1>(g, spec, groups, [from]),
         Some(p) => {
@@ -571,7 +579,7 @@ fn loss_of<const N: usize>(y: &[f64; N]) -> f64 {
 }
 
 /// The largest value of a function with one summit between two points, by golden section (Kiefer 1953).
-fn summit(mut a: f64, mut b: f64, f: impl Fn(f64) -> f64) -> (f64, f64) {
+pub(super) fn summit(mut a: f64, mut b: f64, f: impl Fn(f64) -> f64) -> (f64, f64) {
     let g = 0.5 * (5f64.sqrt() - 1.0);
     let (mut x, mut y) = (b - g * (b - a), a + g * (b - a));
     let (mut fx, mut fy) = (f(x), f(y));
