@@ -75,6 +75,25 @@ def test_commands_show_tables_and_write_files(study: Path, run: Run, name: str) 
     assert (silent.returncode, silent.stdout) == (0, "")
 
 
+@pytest.mark.parametrize("name", ["awake", "transitions", "optimum", "choose"])
+def test_any_number_of_threads_gives_the_same_bytes(study: Path, run: Run, name: str) -> None:
+    outs = [run(name, study, "--json", "-", env={"RAYON_NUM_THREADS": n}).stdout for n in ("1", "3")]
+    assert outs[0] == outs[1]
+    assert len(outs[0]) > 100
+
+
+def test_header_and_footer_share_the_budget(study: Path) -> None:
+    """The pair of least width keeps the budget, and no other share of it does with less."""
+    found = asked.awake(study)
+    own = [s for s in found.sizes if s.scheme == "both"]
+    assert [s.side for s in own] == ["header", "footer"]
+    for h, f in zip(own[0].size.corners, own[1].size.corners, strict=True):
+        assert 0.6 * 0.05 < h.droop_v + f.droop_v <= 0.05 * (1 + 1e-9)
+    single = {s.scheme: s.size.width_m for s in found.sizes}
+    assert own[0].size.width_m >= single["header"]
+    assert own[1].size.width_m >= single["footer"]
+
+
 def test_a_table_that_is_not_there_is_asked_for(small: Path, run: Run) -> None:
     for name, table in (
         ("awake", "[awake]"),

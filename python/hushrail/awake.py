@@ -22,7 +22,7 @@ from numpy.typing import ArrayLike
 
 from hushrail import _core, records
 from hushrail.errors import RangeError
-from hushrail.results import Corner, Failure
+from hushrail.results import Corner, Failure, Note
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -231,6 +231,8 @@ class SizePoint:
 
     domain: str
     scheme: str
+    side: str
+    """``header`` or ``footer``."""
     size: Sized
 
 
@@ -243,6 +245,7 @@ class Report:
     points: tuple[Point, ...]
     sizes: tuple[SizePoint, ...]
     failures: tuple[Failure, ...]
+    notes: tuple[Note, ...]
     stopped: bool
 
     def __iter__(self) -> Iterator[Point]:

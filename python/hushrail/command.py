@@ -182,6 +182,7 @@ def _awake(args: argparse.Namespace) -> int:
         args,
         result.to_json,
         result.flat(),
+        notes=result.notes,
         to_text=lambda width: costs.of_awake(result, width, failures=False),
     )
     return _listed_failures(result.failures)

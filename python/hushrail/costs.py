@@ -52,14 +52,14 @@ def of_awake(result: Report, width: int = 100, *, failures: bool = True) -> str:
             columns = [Column("cell at its worst point", "left"), Column("point", "left")]
             parts.append(render(*_filled(columns + [Column(t) for t in titles], cells), width))
     parts += _failed(result.failures, width, failures)
-    return "\n\n".join(parts)
+    return "\n\n".join([*parts, *filter(None, [of_notes(result.notes, width)])])
 
 
 def _awake_line(points: Sequence[AwakePoint], sizes: Iterable[SizePoint]) -> list[str]:
     worst = max(points, key=lambda p: p.droop.droop_v)
     switches = [s for s in (worst.header, worst.footer) if s is not None]
     vdd_v = worst.virtual_supply_v - worst.virtual_ground_v + worst.droop.droop_v
-    size = next((s.size for s in sizes if (s.domain, s.scheme) == (worst.domain, worst.scheme)), None)
+    own = [s.size for s in sizes if (s.domain, s.scheme) == (worst.domain, worst.scheme)]
 
     def each(of: Callable[[SwitchAwake], float], unit: str) -> str:
         return " + ".join(engineering(of(s), unit) for s in switches)
@@ -73,8 +73,8 @@ def _awake_line(points: Sequence[AwakePoint], sizes: Iterable[SizePoint]) -> lis
         each(lambda s: s.on.chord_ohm, "Ω"),
         each(lambda s: s.off_a, "A"),
         each(lambda s: s.merit_v, "V"),
-        NONE if size is None else engineering(size.width_m, "m"),
-        NONE if size is None else size.corner,
+        " + ".join(engineering(s.width_m, "m") for s in own) or NONE,
+        " + ".join(dict.fromkeys(s.corner for s in own)) or NONE,
         NONE if worst.neighbour is None else engineering(worst.neighbour.noise_v, "V"),
     ]
 

@@ -1,15 +1,16 @@
-//! The smallest switch for a droop budget at the worst of many corners, and the area it takes.
+//! The smallest switch, or pair of switches, for a droop budget at the worst of many corners, and the area it takes.
 
 use std::sync::Arc;
 
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
-use super::droop::{Load, settle_droop};
+use super::droop::{Load, settle_droop, settle_switches};
 use super::error::{AwakeError, positive, range};
 use super::resistance::inside;
 use crate::cell::DeviceShelf;
 use crate::device::process::Process;
+use crate::device::root::summit;
 use crate::physics::Kelvin;
 use crate::standby::SwitchSpec;
 use crate::standby::switch::{Side, Switch};
@@ -168,4 +169,109 @@ pub fn smallest_switch(
         area_m2: area.map(|a| a.0),
         rows: area.map(|a| a.1),
     })
+}
+
+/// Smallest header and footer in series that keep the droop over both within `budget_v` at every corner.
+///
+/// The budget is shared between them, the same share at every corner, so that the widths (areas, where a density is given)
+/// add up to least: for two resistors that is each width as the root of its resistance for a metre (derived). Given a share,
+/// each is sized as [`smallest_switch`] does, for the load at the full budget.
+///
+/// # Errors
+/// As [`smallest_switch`].
+pub fn smallest_pair(
+    header: &SwitchSpec,
+    footer: &SwitchSpec,
+    load: &Load,
+    budget_v: f64,
+    corners: &[SizeCorner<'_>],
+    density: Option<&LayoutDensity>,
+    origin: &Arc<str>,
+) -> Result<[Sized; 2], AwakeError> {
+    if corners.is_empty() {
+        return range("the list of corners", "empty".into(), "want at least one");
+    }
+    let finger = |s: &SwitchSpec| s.finger_width_m.unwrap_or(s.width_m);
+    let mut made = Vec::with_capacity(corners.len());
+    for c in corners {
+        if !(budget_v > 0.0 && budget_v < c.vdd_v) {
+            let wanted = format!("want above 0 V and below the supply, {} V", c.vdd_v);
+            return range("droop budget", format!("{budget_v} V"), &wanted);
+        }
+        load.check(c.vdd_v)?;
+        let one = |spec: &SwitchSpec, side| -> Result<Switch, AwakeError> {
+            spec.check("switch").map_err(|(what, value, wanted)| AwakeError::Range {
+                what,
+                value,
+                wanted,
+            })?;
+            let one = SwitchSpec { width_m: finger(spec), finger_width_m: None, ..spec.clone() };
+            let s = Switch::new(&one, side, c.process, c.temp, c.vdd_v, &mut DeviceShelf::default(), origin)?;
+            inside(s.device.outside(s.awake_bias(budget_v)), "awake")?;
+            Ok(s)
+        };
+        let drawn = load.at(c.vdd_v - budget_v, c.vdd_v);
+        made.push((one(header, Side::Header)?, one(footer, Side::Footer)?, drawn));
+    }
+    // fingers that each corner needs of one switch at a droop, and the most of them
+    let needs = |which: usize, droop_v: f64| -> Vec<f64> {
+        let need = |(h, f, drawn): &(Switch, Switch, f64)| {
+            let given = [h, f][which].awake_current(droop_v).0;
+            if given > 0.0 { drawn / given } else { f64::INFINITY }
+        };
+        made.iter().map(need).collect()
+    };
+    let most = |all: &[f64]| all.iter().fold(0.0f64, |m, n| m.max(*n));
+    let total = |share: f64| {
+        let h = most(&needs(0, share * budget_v)) * finger(header);
+        h + most(&needs(1, (1.0 - share) * budget_v)) * finger(footer)
+    };
+    // one valley: each need falls with its droop, faster the smaller the droop
+    let (share, _) = summit(1e-3, 1.0 - 1e-3, |share| -total(share));
+    let mut out = Vec::with_capacity(2);
+    for (which, (spec, droop_v)) in
+        [(header, share * budget_v), (footer, (1.0 - share) * budget_v)].into_iter().enumerate()
+    {
+        let needed = needs(which, droop_v);
+        let fingers = most(&needed).ceil().max(1.0);
+        let worst = needed.iter().position(|n| *n == most(&needed)).unwrap_or(0);
+        let width_m = fingers * finger(spec);
+        if width_m > spec.width_m * (1.0 + 1e-12) {
+            return Err(AwakeError::NoWidth {
+                corner: corners[worst].name.to_owned(),
+                budget_v,
+                max_width_m: spec.width_m,
+                why: format!(
+                    "of header and footer the {} needs {fingers} fingers ({width_m:.3e} m)",
+                    ["header", "footer"][which]
+                ),
+            });
+        }
+        let area = density.map(|d| d.area_m2(width_m)).transpose()?;
+        out.push(Sized {
+            width_m,
+            fingers,
+            corner: corners[worst].name.to_owned(),
+            corners: corners
+                .iter()
+                .zip(&needed)
+                .map(|(c, n)| CornerNeed { corner: c.name.to_owned(), fingers: n.ceil().max(1.0), droop_v })
+                .collect(),
+            area_m2: area.map(|a| a.0),
+            rows: area.map(|a| a.1),
+        });
+    }
+    // what the pair loses at each corner with the widths found
+    let fingers = [out[0].fingers, out[1].fingers];
+    for (k, (h, f, _)) in made.iter().enumerate() {
+        let own = [h, f].map(Clone::clone);
+        let [mut h, mut f] = own;
+        (h.fingers, f.fingers) = (h.fingers * fingers[0], f.fingers * fingers[1]);
+        let (_, over_h, over_f) = settle_switches(load, Some(&h), Some(&f))?;
+        (out[0].corners[k].droop_v, out[1].corners[k].droop_v) = (over_h, over_f);
+    }
+    match <[Sized; 2]>::try_from(out) {
+        Ok(pair) => Ok(pair),
+        Err(_) => range("number of switches", "not two".into(), "want header and footer"),
+    }
 }

@@ -17,12 +17,14 @@ use crate::awake::delay::{DelayPenalty, Swing, delay_penalty};
 use crate::awake::droop::{CoupledNoise, Droop, Load, in_series, neighbour_step, settle_switches};
 use crate::awake::margin::{AtRails, Margins, margins};
 use crate::awake::resistance::{OnPoint, on_point};
-use crate::awake::size::{LayoutDensity, SizeCorner, Sized, smallest_switch};
+use crate::awake::size::{LayoutDensity, SizeCorner, Sized, smallest_pair, smallest_switch};
 use crate::cell::{BoundCell, Cell, DeviceShelf, Levels};
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
 use crate::device::process::Process;
+use crate::read::deck::Note;
 use crate::read::source::{Place, ReadError, Source, nearest};
+use crate::standby::stress::caution;
 use crate::standby::switch::{Side, Switch};
 use crate::standby::{Scheme, SwitchSpec};
 
@@ -122,6 +124,8 @@ pub struct SizePoint {
     pub domain: String,
     /// Scheme.
     pub scheme: String,
+    /// Which of its switches.
+    pub side: Side,
     /// The answer.
     pub size: Sized,
 }
@@ -143,6 +147,9 @@ pub struct AwakeReport {
     pub sizes: Vec<SizePoint>,
     /// What could not be computed.
     pub failures: Vec<Failure>,
+    /// Remarks, each once.
+    #[serde(default)]
+    pub notes: Vec<Note>,
     /// Whether the run was stopped before its end.
     pub stopped: bool,
 }
@@ -207,7 +214,7 @@ pub fn awake_study(
         }
     }
     let (points, sizes, stopped) = watched(plan.len(), progress, |watch| {
-        let points: Vec<Result<AwakePoint, Failure>> = plan
+        let points: Vec<Result<(AwakePoint, Vec<Note>), Failure>> = plan
             .par_iter()
             .map(|(d, load, s, c)| {
                 let r = point(&loaded, d, load, s, c, request, &cells, options, watch);
@@ -231,11 +238,17 @@ pub fn awake_study(
         points: Vec::new(),
         sizes: Vec::new(),
         failures: Vec::new(),
+        notes: loaded.notes.clone(),
         stopped,
     };
     for p in points {
         match p {
-            Ok(p) => report.points.push(p),
+            Ok((p, notes)) => {
+                for n in notes {
+                    n.add_once(&mut report.notes);
+                }
+                report.points.push(p);
+            }
             Err(f) if stopped && f.reason == AwakeError::Stopped.to_string() => {}
             Err(f) => report.failures.push(f),
         }
@@ -254,39 +267,57 @@ fn sizes(loaded: &Loaded, request: &AwakeRequest, budget_v: f64) -> Vec<Result<S
     for d in &loaded.domains {
         let Some(load) = request.loads.get(&d.name) else { continue };
         for s in loaded.schemes.iter().filter(|s| s.applies_to(&d.name)) {
-            let (spec, side) = match (&s.header, &s.footer) {
-                (Some(h), None) => (h, Side::Header),
-                (None, Some(f)) => (f, Side::Footer),
-                // of two switches in series neither has a smallest width of its own
-                _ => continue,
-            };
-            let finger_width_m = Some(spec.finger_width_m.unwrap_or(spec.width_m));
-            let largest =
-                SwitchSpec { width_m: spec.width_m * request.widest, finger_width_m, ..spec.clone() };
-            let sized = loaded
-                .corners
-                .iter()
-                .map(|c| {
-                    let (process, temp) = (process(&loaded.processes, c)?, temperature(c)?);
-                    Ok(SizeCorner { name: &c.name, process, temp, vdd_v: c.vdd_v })
-                })
-                .collect::<Result<Vec<_>, AwakeError>>()
-                .and_then(|corners| {
-                    let density = request.density.as_ref();
-                    smallest_switch(&largest, side, load, budget_v, &corners, density, &loaded.origin)
-                });
-            out.push(match sized {
-                Ok(size) => Ok(SizePoint { domain: d.name.clone(), scheme: s.name.clone(), size }),
-                Err(e) => Err(Failure {
+            let found = sizes_of(loaded, request, load, s, budget_v);
+            match found {
+                Ok(list) => out.extend(list.into_iter().map(|(side, size)| {
+                    Ok(SizePoint { domain: d.name.clone(), scheme: s.name.clone(), side, size })
+                })),
+                Err(e) => out.push(Err(Failure {
                     domain: d.name.clone(),
                     scheme: s.name.clone(),
                     corner: String::new(),
                     reason: e.to_string(),
-                }),
-            });
+                })),
+            }
         }
     }
     out
+}
+
+/// The smallest switches of one scheme.
+fn sizes_of(
+    loaded: &Loaded,
+    request: &AwakeRequest,
+    load: &Load,
+    s: &Scheme,
+    budget_v: f64,
+) -> Result<Vec<(Side, Sized)>, AwakeError> {
+    let largest = |spec: &SwitchSpec| {
+        let finger_width_m = Some(spec.finger_width_m.unwrap_or(spec.width_m));
+        SwitchSpec { width_m: spec.width_m * request.widest, finger_width_m, ..spec.clone() }
+    };
+    let corners = loaded
+        .corners
+        .iter()
+        .map(|c| {
+            let (process, temp) = (process(&loaded.processes, c)?, temperature(c)?);
+            Ok(SizeCorner { name: &c.name, process, temp, vdd_v: c.vdd_v })
+        })
+        .collect::<Result<Vec<_>, AwakeError>>()?;
+    let (density, origin) = (request.density.as_ref(), &loaded.origin);
+    let one = |spec, side| {
+        smallest_switch(&largest(spec), side, load, budget_v, &corners, density, origin)
+            .map(|size| vec![(side, size)])
+    };
+    match (&s.header, &s.footer) {
+        (None, None) => Ok(Vec::new()),
+        (Some(h), None) => one(h, Side::Header),
+        (None, Some(f)) => one(f, Side::Footer),
+        (Some(h), Some(f)) => {
+            smallest_pair(&largest(h), &largest(f), load, budget_v, &corners, density, origin)
+                .map(|[h, f]| vec![(Side::Header, h), (Side::Footer, f)])
+        }
+    }
 }
 
 #[expect(clippy::too_many_arguments, reason = "one point of the plan: everything that defines it")]
@@ -300,7 +331,7 @@ fn point(
     cells: &[Arc<Cell>],
     options: &SolveOptions,
     watch: &Watch,
-) -> Result<AwakePoint, AwakeError> {
+) -> Result<(AwakePoint, Vec<Note>), AwakeError> {
     let stopped = || watch.stop.load(Ordering::Relaxed);
     if stopped() {
         return Err(AwakeError::Stopped);
@@ -364,7 +395,15 @@ fn point(
             delays: delay_penalty(&bound, &full, &drooped, request.swing, options)?,
         });
     }
-    Ok(AwakePoint {
+    let mut notes = std::mem::take(&mut shelf.notes);
+    for (switch, over_v) in [(&header, over_header), (&footer, over_footer)] {
+        let Some(s) = switch else { continue };
+        notes.extend(s.device.outside(s.awake_bias(over_v)).map(|o| o.note()));
+        if (s.awake_gate_v - s.rail_v).abs() > vdd {
+            notes.push(caution());
+        }
+    }
+    let point = AwakePoint {
         domain: domain.to_owned(),
         scheme: scheme.name.clone(),
         corner: corner.name.clone(),
@@ -375,5 +414,6 @@ fn point(
         virtual_ground_v: ground_v,
         neighbour,
         cells: list,
-    })
+    };
+    Ok((point, notes))
 }

@@ -55,6 +55,25 @@ pub fn increasing<E>(
     Ok(if fa.abs() < fb.abs() { a } else { b })
 }
 
+/// The largest value of a function with one summit between two points, by golden section (Kiefer 1953).
+pub fn summit(mut a: f64, mut b: f64, f: impl Fn(f64) -> f64) -> (f64, f64) {
+    let g = 0.5 * (5f64.sqrt() - 1.0);
+    let (mut x, mut y) = (b - g * (b - a), a + g * (b - a));
+    let (mut fx, mut fy) = (f(x), f(y));
+    for _ in 0..40 {
+        if fx > fy {
+            (b, y, fy) = (y, x, fx);
+            x = b - g * (b - a);
+            fx = f(x);
+        } else {
+            (a, x, fx) = (x, y, fy);
+            y = a + g * (b - a);
+            fy = f(y);
+        }
+    }
+    if fx > fy { (x, fx) } else { (y, fy) }
+}
+
 #[cfg(test)]
 mod tests {
     use super::increasing;

@@ -116,7 +116,7 @@ pub struct Asleep {
     pub switch_mechanisms: [f64; 5],
     /// By path.
     pub paths: Vec<PathShare>,
-    /// Largest oxide voltage of a switch, V; zero without switch.
+    /// Largest oxide voltage of a switch, asleep or awake, V; zero without switch.
     pub oxide_v: f64,
     /// Field it means over the electrical thickness, V/m.
     pub oxide_field_v_m: f64,

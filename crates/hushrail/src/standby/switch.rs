@@ -2,6 +2,8 @@
 
 use std::sync::Arc;
 
+use serde::{Deserialize, Serialize};
+
 use super::scheme::SwitchSpec;
 use crate::cell::DeviceShelf;
 use crate::device::in_series::InSeries;
@@ -12,7 +14,8 @@ use crate::physics::Kelvin;
 use crate::read::source::{Place, ReadError};
 
 /// Which rail a switch stands on.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
 pub enum Side {
     /// Between supply and virtual supply.
     Header,
@@ -152,8 +155,9 @@ impl Switch {
         self.device.outside(self.bias(v))
     }
 
-    /// Largest gate-to-drain or gate-to-source voltage with the virtual rail at `v`, V.
+    /// Largest gate-to-drain or gate-to-source voltage asleep with the virtual rail at `v`, and awake, V.
     pub fn oxide_v(&self, v: f64) -> f64 {
-        (self.gate_v - v).abs().max((self.gate_v - self.rail_v).abs())
+        let awake = (self.awake_gate_v - self.rail_v).abs();
+        (self.gate_v - v).abs().max((self.gate_v - self.rail_v).abs()).max(awake)
     }
 }

@@ -18,8 +18,9 @@ use rustc_hash::FxHashMap;
 use super::error::TransitionError;
 use super::gated::Gated;
 use super::quadrature::{ORDER, places, weights};
-use super::wake::{Group, Start, Wake, WakeSpec, groups, start_span, summit, wake_up};
+use super::wake::{Group, Start, Wake, WakeSpec, groups, start_span, wake_up};
 use crate::block::BlockCurve;
+use crate::device::root::summit;
 use crate::standby::stress::{Moment, Pair};
 use crate::standby::switch::Side;
 

@@ -10,6 +10,7 @@ use super::error::{TransitionError, not_negative, positive};
 use super::gated::{FingerCurrent, Gated};
 use super::ode::{Motion, Tolerance, Trace, integrate};
 use super::quadrature::gauss;
+use crate::device::root::summit;
 use crate::read::deck::Note;
 use crate::standby::stress::Moment;
 
@@ -576,23 +577,4 @@ fn record<const N: usize>(g: &Gated<'_>, spec: &WakeSpec, pieces: &[Piece<N>], w
 
 fn loss_of<const N: usize>(y: &[f64; N]) -> f64 {
     if N == 3 { y[1] } else { 0.0 }
-}
-
-/// The largest value of a function with one summit between two points, by golden section (Kiefer 1953).
-pub(super) fn summit(mut a: f64, mut b: f64, f: impl Fn(f64) -> f64) -> (f64, f64) {
-    let g = 0.5 * (5f64.sqrt() - 1.0);
-    let (mut x, mut y) = (b - g * (b - a), a + g * (b - a));
-    let (mut fx, mut fy) = (f(x), f(y));
-    for _ in 0..40 {
-        if fx > fy {
-            (b, y, fy) = (y, x, fx);
-            x = b - g * (b - a);
-            fx = f(x);
-        } else {
-            (a, x, fx) = (x, y, fy);
-            y = a + g * (b - a);
-            fy = f(y);
-        }
-    }
-    if fx > fy { (x, fx) } else { (y, fy) }
 }
