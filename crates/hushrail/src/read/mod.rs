@@ -8,7 +8,8 @@ pub mod number;
 pub mod source;
 pub mod spice;
 pub mod verilog;
+mod window;
 
 pub use deck::{Deck, Note};
-pub use source::{Place, ReadError, Source};
+pub use source::{Input, Place, ReadError, Source};
 pub use spice::{DeckOptions, read_deck};

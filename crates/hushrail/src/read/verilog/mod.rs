@@ -42,6 +42,7 @@ mod elaborate;
 mod files;
 mod keyword;
 mod lex;
+mod marks;
 mod parse;
 mod range;
 #[cfg(test)]
@@ -50,7 +51,8 @@ mod tests;
 use indexmap::{IndexMap, IndexSet};
 use rustc_hash::{FxBuildHasher, FxHashMap};
 
-use super::source::{Place, ReadError, Source};
+use super::source::{Input, Place, ReadError, Source};
+use super::window::PIECE;
 
 /// The modules of one or more Verilog files and what each holds.
 #[derive(Debug, Clone)]
@@ -109,16 +111,35 @@ fn too_many(at: Place, name: &str) -> ReadError {
 /// modules of one instance name; an instance array has an end that is not a whole number, or too many members;
 /// a macro is not defined; an included file cannot be read; there is no module.
 pub fn read_verilog(sources: &[Source]) -> Result<Netlist, ReadError> {
-    let mut files = files::Files::new(sources);
-    let mut net = parse::parse(&mut files, None)?;
-    if let Some(bodies) = parse::missing_names(&net) {
-        net = parse::parse(&mut files, Some(&bodies))?;
+    let mut inputs: Vec<Input> = sources.iter().cloned().map(Input::from).collect();
+    read_verilog_from(&mut inputs)
+}
+
+/// Reads structural Verilog piece by piece from files or streams that belong together, in order.
+///
+/// Memory does not grow with the files, but for the files that they include. A stream can be read once only:
+/// when one of its modules comes before a module that it instantiates, counts are the same, but paths through
+/// such instances are not known.
+///
+/// # Errors
+/// As for [`read_verilog`], and an input cannot be read.
+///
+/// # Example
+/// ```
+/// use hushrail::read::{Input, verilog::read_verilog_from};
+/// let text = "module top; inv_1 u1 (), u2 (); endmodule";
+/// let net = read_verilog_from(&mut [Input::stream("-", text.as_bytes())])?;
+/// assert_eq!(net.counts(None)?.total(), 2);
+/// # Ok::<(), hushrail::read::ReadError>(())
+/// ```
+pub fn read_verilog_from(inputs: &mut [Input]) -> Result<Netlist, ReadError> {
+    read_in_pieces(inputs, PIECE)
+}
+
+fn read_in_pieces(inputs: &mut [Input], piece: usize) -> Result<Netlist, ReadError> {
+    let net = parse::parse(inputs, None, piece)?;
+    match parse::missing_names(&net) {
+        Some(bodies) if inputs.iter().all(Input::is_lasting) => parse::parse(inputs, Some(&bodies), piece),
+        _ => Ok(net),
     }
-    if net.modules.is_empty() {
-        let wanted = "Verilog module";
-        return Err(sources
-            .first()
-            .map_or_else(|| Source::from_text("", "").nothing(wanted), |s| s.nothing(wanted)));
-    }
-    Ok(net)
 }

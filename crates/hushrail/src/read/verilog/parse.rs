@@ -7,22 +7,36 @@ use super::files::{Files, Spot};
 use super::keyword::{Keyword, keyword};
 use super::lex::{Kind, Lexer, Token};
 use super::{Child, Module, Netlist};
-use crate::read::source::ReadError;
+use crate::read::source::{Input, ReadError, Source};
 
-/// Reads the given files in order, as one text.
+/// Reads the inputs in order, as one text, in pieces of about `piece` bytes.
 ///
 /// Instance names are kept for masters that `bodies` marks as modules with a body; without it, for those whose
 /// module came before.
-pub(super) fn parse(files: &mut Files, bodies: Option<&[bool]>) -> Result<Netlist, ReadError> {
-    let given = files.given();
+pub(super) fn parse(
+    inputs: &mut [Input],
+    bodies: Option<&[bool]>,
+    piece: usize,
+) -> Result<Netlist, ReadError> {
+    let mut files = Files::new(piece);
     let mut parser = Parser {
-        lex: Lexer::new(files),
+        lex: Lexer::new(&mut files),
         bodies,
         net: Netlist { names: IndexSet::default(), modules: Vec::new(), defined: FxHashMap::default() },
+        heads: FxHashMap::default(),
     };
-    for file in 0..given {
-        parser.lex.open(file);
+    for input in &mut *inputs {
+        parser.lex.open(input)?;
         parser.file()?;
+        parser.lex.close();
+    }
+    if parser.net.modules.is_empty() {
+        let wanted = "Verilog module";
+        return Err(if inputs.is_empty() {
+            Source::from_text("", "").nothing(wanted)
+        } else {
+            parser.lex.files.window(0).nothing(wanted)
+        });
     }
     Ok(parser.net)
 }
@@ -31,6 +45,17 @@ pub(super) struct Parser<'f> {
     pub(super) lex: Lexer<'f>,
     bodies: Option<&'f [bool]>,
     net: Netlist,
+    /// What the first words of common statements of this module are.
+    heads: FxHashMap<Box<str>, Head>,
+}
+
+/// What a common statement begins with.
+#[derive(Debug, Clone, Copy)]
+enum Head {
+    /// A master whose instances need no names: its position in the module's list.
+    Leaf(usize),
+    /// A declaration of nets or ports.
+    Declaration,
 }
 
 impl Parser<'_> {
@@ -91,6 +116,7 @@ impl Parser<'_> {
 
     /// Reads a module whose keyword, at `start`, has been read.
     fn module(&mut self, start: Spot) -> Result<(), ReadError> {
+        self.lex.module = Some(start);
         let token = self.lex.next()?;
         if !self.is_name(token) {
             return Err(self.misfit(token, start, "the name of the module"));
@@ -113,8 +139,13 @@ impl Parser<'_> {
             has_assigns: false,
         };
         self.header(start)?;
+        self.heads.clear();
         loop {
+            if self.common(&mut module)? {
+                continue;
+            }
             let token = self.lex.next()?;
+            self.lex.statement = Some(token.spot);
             match self.keyword(token) {
                 None if token.kind == Kind::End => {
                     let what = format!("module `{}`", self.net.names[name]);
@@ -124,6 +155,10 @@ impl Parser<'_> {
                 None if self.is_name(token) => self.instances(token, false, &mut module)?,
                 Some(Keyword::Gate) => self.instances(token, true, &mut module)?,
                 Some(Keyword::Declaration | Keyword::Supply) => {
+                    let word = self.lex.text(token);
+                    if !self.heads.contains_key(word) {
+                        self.heads.insert(word.into(), Head::Declaration);
+                    }
                     module.has_assigns |= self.declaration(token)?;
                 }
                 Some(Keyword::Assign) => {
@@ -140,9 +175,65 @@ impl Parser<'_> {
                 _ => return Err(self.misfit(token, token.spot, "an instance, a declaration or `endmodule`")),
             }
         }
+        self.lex.statement = None;
+        self.lex.module = None;
         self.net.defined.insert(name, self.net.modules.len());
         self.net.modules.push(module);
         Ok(())
+    }
+
+    /// Reads a statement of the two commonest forms, one instance with a name and one declaration of one net, or
+    /// nothing when anything about it is unusual.
+    ///
+    /// What is taken here is taken as the careful way would; `tests` hold the two against each other.
+    fn common(&mut self, module: &mut Module) -> Result<bool, ReadError> {
+        let frame = &self.lex.top;
+        let start = frame.pos;
+        let Some((head_start, head_end)) = frame.name_from(start) else { return Ok(false) };
+        let head = frame.text.get(head_start..head_end).unwrap_or_default();
+        let Some(&head_kind) = self.heads.get(head) else { return Ok(false) };
+        let Some((name_start, name_end)) = frame.name_from(head_end) else { return Ok(false) };
+        let name = frame.text.get(name_start..name_end).unwrap_or_default();
+        let Some(mark) = frame.solid_from(name_end) else { return Ok(false) };
+        let bytes = frame.text.as_bytes();
+        if name.len() == 1 && name.starts_with('\\') || name.starts_with('$') || keyword(name).is_some() {
+            return Ok(false);
+        }
+        match head_kind {
+            Head::Declaration if bytes.get(mark) == Some(&b';') => {
+                self.lex.top.pos = mark + 1;
+                Ok(true)
+            }
+            Head::Leaf(place) if bytes.get(mark) == Some(&b'(') => {
+                if matches!(bytes.get(mark + 1), None | Some(b'*')) {
+                    return Ok(false);
+                }
+                let spot = self.lex.spot(head_start);
+                self.lex.statement = Some(spot);
+                self.lex.top.pos = mark + 1;
+                self.lex.skip_list(1, spot)?;
+                let frame = &self.lex.top;
+                match frame.solid_from(frame.pos) {
+                    Some(end) if frame.text.as_bytes()[end] == b';' => {
+                        self.lex.top.pos = end + 1;
+                        if let Some(count) = module.cells.get_index_mut(place).map(|(_, n)| n)
+                            && let Some(more) = count.checked_add(1)
+                        {
+                            *count = more;
+                            return Ok(true);
+                        }
+                        Err(self.too_many("number of instances", spot))
+                    }
+                    _ => {
+                        let master = module.cells.get_index(place).map_or(0, |(&m, _)| m);
+                        self.add(module, master, None, spot)?;
+                        self.more_instances(master, spot, false, module)?;
+                        Ok(true)
+                    }
+                }
+            }
+            _ => Ok(false),
+        }
     }
 
     /// Parameter list, port list and the semicolon after them.
@@ -218,6 +309,8 @@ impl Parser<'_> {
     fn instances(&mut self, head: Token, gate: bool, module: &mut Module) -> Result<(), ReadError> {
         let master = self.intern(head);
         let keep = self.keeps_names(master);
+        let is_common = head.kind == Kind::Word && !gate && !keep;
+        let common = is_common.then(|| Box::<str>::from(self.lex.text(head)));
         let mut token = self.lex.next()?;
         if gate && token.is(b'(') {
             let inner = self.lex.next()?;
@@ -237,43 +330,72 @@ impl Parser<'_> {
             }
             token = self.lex.next()?;
         }
+        self.instance(token, master, head.spot, gate, module)?;
+        if let Some(name) = common
+            && let Some(place) = module.cells.get_index_of(&master)
+        {
+            self.heads.insert(name, Head::Leaf(place));
+        }
+        self.more_instances(master, head.spot, gate, module)
+    }
+
+    /// Reads on after the pins of an instance, to the semicolon.
+    fn more_instances(
+        &mut self,
+        master: usize,
+        statement: Spot,
+        gate: bool,
+        module: &mut Module,
+    ) -> Result<(), ReadError> {
         loop {
-            let mut range = None;
-            if self.is_name(token) {
-                let at = token.spot;
-                let name = keep.then(|| Box::<str>::from(self.lex.text(token)));
-                token = self.lex.next()?;
-                if token.is(b'[') {
-                    range = Some(self.range(head.spot)?);
-                    token = self.lex.next()?;
-                }
-                if !token.is(b'(') {
-                    return Err(self.misfit(token, head.spot, "`(` and the pins of the instance"));
-                }
-                if let Some(name) = name {
-                    if module.children.contains_key(&name) {
-                        let found = format!(
-                            "module `{}` has two instances named `{name}`",
-                            self.net.names[module.name]
-                        );
-                        return Err(self.lex.syntax(at, found, "want one name for each instance"));
-                    }
-                    module.children.insert(name, Child { master, range });
-                }
-            } else if !(gate && token.is(b'(')) {
-                return Err(self.misfit(token, head.spot, "the name of the instance"));
-            }
-            self.lex.skip_list(1, head.spot)?;
-            self.add(module, master, range, head.spot)?;
-            token = self.lex.next()?;
+            let token = self.lex.next()?;
             if token.is(b';') {
                 return Ok(());
             }
             if !token.is(b',') {
-                return Err(self.misfit(token, head.spot, "`,` or `;` after the pins of an instance"));
+                return Err(self.misfit(token, statement, "`,` or `;` after the pins of an instance"));
             }
-            token = self.lex.next()?;
+            let token = self.lex.next()?;
+            self.instance(token, master, statement, gate, module)?;
         }
+    }
+
+    /// Reads one instance, its name and pins, from its first token on.
+    fn instance(
+        &mut self,
+        mut token: Token,
+        master: usize,
+        statement: Spot,
+        gate: bool,
+        module: &mut Module,
+    ) -> Result<(), ReadError> {
+        let keep = self.keeps_names(master);
+        let mut range = None;
+        if self.is_name(token) {
+            let at = token.spot;
+            self.lex.part = Some(at);
+            let name = keep.then(|| Box::<str>::from(self.lex.text(token)));
+            token = self.lex.next()?;
+            if token.is(b'[') {
+                range = Some(self.range(statement)?);
+                token = self.lex.next()?;
+            }
+            if !token.is(b'(') {
+                return Err(self.misfit(token, statement, "`(` and the pins of the instance"));
+            }
+            if let Some(name) = name {
+                if module.children.contains_key(&name) {
+                    let found =
+                        format!("module `{}` has two instances named `{name}`", self.net.names[module.name]);
+                    return Err(self.lex.syntax(at, found, "want one name for each instance"));
+                }
+                module.children.insert(name, Child { master, range });
+            }
+        } else if !(gate && token.is(b'(')) {
+            return Err(self.misfit(token, statement, "the name of the instance"));
+        }
+        self.lex.skip_list(1, statement)?;
+        self.add(module, master, range, statement)
     }
 
     fn keeps_names(&self, master: usize) -> bool {

@@ -45,6 +45,7 @@ impl Parser<'_> {
 
     /// A decimal or based number, `12` or `8'hc`, that begins with `token`.
     fn whole_number(&mut self, token: Token, statement: Spot) -> Result<i64, ReadError> {
+        self.lex.part = Some(token.spot);
         let wanted = "a whole number; array ends must not be parameters";
         let mut digits = match token.kind {
             Kind::Number => self.lex.text(token).replace('_', ""),
