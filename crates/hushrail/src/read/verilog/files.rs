@@ -73,6 +73,16 @@ impl Files {
         self.list[spot.file].place(spot.offset)
     }
 
+    /// The names of all files by number.
+    pub(super) fn paths(&self) -> Vec<Arc<str>> {
+        self.list.iter().map(|w| Arc::clone(w.path())).collect()
+    }
+
+    /// Line and column like `next_place`.
+    pub(super) fn next_line_column(&mut self, spot: Spot) -> (usize, usize) {
+        self.list[spot.file].next_place(spot.offset)
+    }
+
     /// Like `place`, but counts on from the last place asked for: many places of one file cost one pass.
     pub(super) fn next_place(&mut self, spot: Spot) -> Place {
         let window = &mut self.list[spot.file];

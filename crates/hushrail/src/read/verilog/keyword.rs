@@ -22,9 +22,9 @@ pub(super) enum Keyword {
 /// Keywords of IEEE 1364-2005, annex B, less those of configurations, which have no meaning inside modules.
 pub(super) fn keyword(word: &str) -> Option<Keyword> {
     Some(match word {
-        "input" | "output" | "inout" | "wire" | "tri" | "tri0" | "tri1" | "triand" | "trior" | "trireg"
-        | "uwire" | "wand" | "wor" | "reg" | "integer" | "real" | "realtime" | "time" | "event"
-        | "genvar" | "parameter" | "localparam" | "specparam" | "defparam" => Keyword::Declaration,
+        "input" | "output" | "inout" | "wire" | "logic" | "tri" | "tri0" | "tri1" | "triand" | "trior"
+        | "trireg" | "uwire" | "wand" | "wor" | "reg" | "integer" | "real" | "realtime" | "time"
+        | "event" | "genvar" | "parameter" | "localparam" | "specparam" | "defparam" => Keyword::Declaration,
         "supply0" | "supply1" => Keyword::Supply,
         "assign" => Keyword::Assign,
         "and" | "nand" | "or" | "nor" | "xor" | "xnor" | "buf" | "not" | "bufif0" | "bufif1" | "notif0"

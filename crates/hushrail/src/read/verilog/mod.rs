@@ -37,6 +37,7 @@
 //! # Ok::<(), hushrail::read::ReadError>(())
 //! ```
 
+pub mod connect;
 mod directive;
 mod elaborate;
 mod files;
@@ -44,6 +45,7 @@ mod keyword;
 mod lex;
 mod marks;
 mod parse;
+mod phrase;
 mod range;
 #[cfg(test)]
 mod tests;

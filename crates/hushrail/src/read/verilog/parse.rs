@@ -62,48 +62,16 @@ impl Parser<'_> {
     fn file(&mut self) -> Result<(), ReadError> {
         loop {
             let token = self.lex.next()?;
-            match (token.kind, self.keyword(token)) {
+            match (token.kind, self.lex.keyword(token)) {
                 (Kind::End, _) => return Ok(()),
                 (_, Some(Keyword::Module)) => self.module(token.spot)?,
-                (_, Some(Keyword::Behaviour)) => return Err(self.behaviour(token)),
+                (_, Some(Keyword::Behaviour)) => return Err(self.lex.behaviour(token)),
                 _ => {
                     let found = format!("{} outside of a module", self.lex.shown(token));
                     return Err(self.lex.syntax(token.spot, found, "want `module` or the end of the file"));
                 }
             }
         }
-    }
-
-    fn keyword(&self, token: Token) -> Option<Keyword> {
-        if token.kind == Kind::Word { keyword(self.lex.text(token)) } else { None }
-    }
-
-    /// Whether the token is a name somebody chose.
-    fn is_name(&self, token: Token) -> bool {
-        match token.kind {
-            Kind::Word => {
-                let text = self.lex.text(token);
-                !text.starts_with('$') && keyword(text).is_none()
-            }
-            Kind::Escaped => true,
-            _ => false,
-        }
-    }
-
-    fn behaviour(&self, token: Token) -> ReadError {
-        let found = format!("{} is behaviour, not structure", self.lex.shown(token));
-        let wanted =
-            "only structural netlists (instances, nets, assigns) can be counted; synthesise it first";
-        self.lex.syntax(token.spot, found, wanted)
-    }
-
-    /// The error for a token that does not fit into the statement that begins at `statement`.
-    pub(super) fn misfit(&self, token: Token, statement: Spot, wanted: &str) -> ReadError {
-        if token.kind == Kind::End {
-            return self.lex.cut_off(statement, "statement", wanted);
-        }
-        let found = format!("{} does not fit here", self.lex.shown(token));
-        self.lex.syntax(token.spot, found, format!("want {wanted}"))
     }
 
     fn intern(&mut self, token: Token) -> usize {
@@ -118,8 +86,8 @@ impl Parser<'_> {
     fn module(&mut self, start: Spot) -> Result<(), ReadError> {
         self.lex.module = Some(start);
         let token = self.lex.next()?;
-        if !self.is_name(token) {
-            return Err(self.misfit(token, start, "the name of the module"));
+        if !self.lex.is_name(token) {
+            return Err(self.lex.misfit(token, start, "the name of the module"));
         }
         let name = self.intern(token);
         let at = self.lex.files.next_place(token.spot);
@@ -146,33 +114,39 @@ impl Parser<'_> {
             }
             let token = self.lex.next()?;
             self.lex.statement = Some(token.spot);
-            match self.keyword(token) {
+            match self.lex.keyword(token) {
                 None if token.kind == Kind::End => {
                     let what = format!("module `{}`", self.net.names[name]);
                     return Err(self.lex.cut_off(start, &what, "`endmodule`"));
                 }
                 None if token.is(b';') => {}
-                None if self.is_name(token) => self.instances(token, false, &mut module)?,
+                None if self.lex.is_name(token) => self.instances(token, false, &mut module)?,
                 Some(Keyword::Gate) => self.instances(token, true, &mut module)?,
                 Some(Keyword::Declaration | Keyword::Supply) => {
                     let word = self.lex.text(token);
                     if !self.heads.contains_key(word) {
                         self.heads.insert(word.into(), Head::Declaration);
                     }
-                    module.has_assigns |= self.declaration(token)?;
+                    module.has_assigns |= self.lex.declaration(token)?;
                 }
                 Some(Keyword::Assign) => {
-                    self.declaration(token)?;
+                    self.lex.declaration(token)?;
                     module.has_assigns = true;
                 }
                 Some(Keyword::EndModule) => break,
-                Some(Keyword::Behaviour) => return Err(self.behaviour(token)),
+                Some(Keyword::Behaviour) => return Err(self.lex.behaviour(token)),
                 Some(Keyword::Module) => {
                     let found = format!("a module inside module `{}`", self.net.names[name]);
                     return Err(self.lex.syntax(token.spot, found, "want `endmodule` first"));
                 }
-                None if token.kind == Kind::Word => return Err(self.behaviour(token)),
-                _ => return Err(self.misfit(token, token.spot, "an instance, a declaration or `endmodule`")),
+                None if token.kind == Kind::Word => return Err(self.lex.behaviour(token)),
+                _ => {
+                    return Err(self.lex.misfit(
+                        token,
+                        token.spot,
+                        "an instance, a declaration or `endmodule`",
+                    ));
+                }
             }
         }
         self.lex.statement = None;
@@ -222,7 +196,7 @@ impl Parser<'_> {
                             *count = more;
                             return Ok(true);
                         }
-                        Err(self.too_many("number of instances", spot))
+                        Err(self.lex.too_many("number of instances", spot))
                     }
                     _ => {
                         let master = module.cells.get_index(place).map_or(0, |(&m, _)| m);
@@ -242,7 +216,7 @@ impl Parser<'_> {
         if token.is(b'#') {
             token = self.lex.next()?;
             if !token.is(b'(') {
-                return Err(self.misfit(token, start, "`(` and the parameters"));
+                return Err(self.lex.misfit(token, start, "`(` and the parameters"));
             }
             self.lex.skip_list(1, start)?;
             token = self.lex.next()?;
@@ -251,57 +225,10 @@ impl Parser<'_> {
             self.lex.skip_list(1, start)?;
             token = self.lex.next()?;
         }
-        if token.is(b';') { Ok(()) } else { Err(self.misfit(token, start, "`;` after the module's ports")) }
-    }
-
-    /// Runs over a declaration or assignment; returns whether it holds an `=`.
-    ///
-    /// Two names side by side mean that a semicolon is missing, and an instance would be lost.
-    fn declaration(&mut self, head: Token) -> Result<bool, ReadError> {
-        let (mut depth, mut has_equals) = (0usize, false);
-        // whether the token before ends an operand, and the symbol it is
-        let (mut operand, mut symbol_before) = (false, None);
-        loop {
-            let token = self.lex.next()?;
-            let symbol = if let Kind::Symbol(symbol) = token.kind { Some(symbol) } else { None };
-            let before = std::mem::replace(&mut symbol_before, symbol);
-            match token.kind {
-                Kind::End => return Err(self.misfit(token, head.spot, "`;`")),
-                Kind::Word | Kind::Escaped | Kind::Number | Kind::Text => {
-                    if operand {
-                        return Err(self.misfit(token, head.spot, "`;` or an operator"));
-                    }
-                    match self.keyword(token) {
-                        Some(Keyword::Declaration | Keyword::Supply | Keyword::Strength | Keyword::Inner) => {
-                        }
-                        // the digits of `4'b 01` may stand apart from the base, and a name follows a delay
-                        None => {
-                            operand = match before {
-                                Some(b'\'') => !is_base(self.lex.text(token)),
-                                Some(b'#') => false,
-                                _ => true,
-                            }
-                        }
-                        Some(_) => return Err(self.misfit(token, head.spot, "`;` before it")),
-                    }
-                }
-                Kind::Symbol(symbol) => {
-                    operand = false;
-                    match symbol {
-                        b'(' | b'[' | b'{' => depth += 1,
-                        b')' | b']' | b'}' if depth > 0 => depth -= 1,
-                        b')' | b']' | b'}' => {
-                            return Err(self.misfit(token, head.spot, "its opening counterpart before it"));
-                        }
-                        b';' if depth == 0 => return Ok(has_equals),
-                        b';' => {
-                            return Err(self.misfit(token, head.spot, "all parentheses closed before it"));
-                        }
-                        b'=' => has_equals = true,
-                        _ => {}
-                    }
-                }
-            }
+        if token.is(b';') {
+            Ok(())
+        } else {
+            Err(self.lex.misfit(token, start, "`;` after the module's ports"))
         }
     }
 
@@ -312,24 +239,10 @@ impl Parser<'_> {
         let is_common = head.kind == Kind::Word && !gate && !keep;
         let common = is_common.then(|| Box::<str>::from(self.lex.text(head)));
         let mut token = self.lex.next()?;
-        if gate && token.is(b'(') {
-            let inner = self.lex.next()?;
-            if matches!(self.keyword(inner), Some(Keyword::Supply | Keyword::Strength)) {
-                self.lex.skip_list(1, head.spot)?;
-                token = self.lex.next()?;
-            } else {
-                self.lex.back(inner);
-            }
+        if gate {
+            token = self.lex.after_strength(token, head.spot)?;
         }
-        if token.is(b'#') {
-            let value = self.lex.next()?;
-            match value.kind {
-                Kind::Symbol(b'(') => self.lex.skip_list(1, head.spot)?,
-                Kind::Number | Kind::Word | Kind::Escaped => {}
-                _ => return Err(self.misfit(value, head.spot, "a delay or parameters after `#`")),
-            }
-            token = self.lex.next()?;
-        }
+        token = self.lex.after_hash(token, head.spot)?;
         self.instance(token, master, head.spot, gate, module)?;
         if let Some(name) = common
             && let Some(place) = module.cells.get_index_of(&master)
@@ -353,7 +266,7 @@ impl Parser<'_> {
                 return Ok(());
             }
             if !token.is(b',') {
-                return Err(self.misfit(token, statement, "`,` or `;` after the pins of an instance"));
+                return Err(self.lex.misfit(token, statement, "`,` or `;` after the pins of an instance"));
             }
             let token = self.lex.next()?;
             self.instance(token, master, statement, gate, module)?;
@@ -371,17 +284,17 @@ impl Parser<'_> {
     ) -> Result<(), ReadError> {
         let keep = self.keeps_names(master);
         let mut range = None;
-        if self.is_name(token) {
+        if self.lex.is_name(token) {
             let at = token.spot;
             self.lex.part = Some(at);
             let name = keep.then(|| Box::<str>::from(self.lex.text(token)));
             token = self.lex.next()?;
             if token.is(b'[') {
-                range = Some(self.range(statement)?);
+                range = Some(self.lex.range(statement)?);
                 token = self.lex.next()?;
             }
             if !token.is(b'(') {
-                return Err(self.misfit(token, statement, "`(` and the pins of the instance"));
+                return Err(self.lex.misfit(token, statement, "`(` and the pins of the instance"));
             }
             if let Some(name) = name {
                 if module.children.contains_key(&name) {
@@ -392,7 +305,7 @@ impl Parser<'_> {
                 module.children.insert(name, Child { master, range });
             }
         } else if !(gate && token.is(b'(')) {
-            return Err(self.misfit(token, statement, "the name of the instance"));
+            return Err(self.lex.misfit(token, statement, "the name of the instance"));
         }
         self.lex.skip_list(1, statement)?;
         self.add(module, master, range, statement)
@@ -414,18 +327,9 @@ impl Parser<'_> {
     ) -> Result<(), ReadError> {
         let count = module.cells.entry(master).or_insert(0);
         let sum = super::width(range).and_then(|n| count.checked_add(n));
-        *count = sum.ok_or_else(|| self.too_many(&self.net.names[master], at))?;
+        *count = sum.ok_or_else(|| self.lex.too_many(&self.net.names[master], at))?;
         Ok(())
     }
-
-    pub(super) fn too_many(&self, name: &str, at: Spot) -> ReadError {
-        super::too_many(self.lex.place(at), name)
-    }
-}
-
-/// Whether the text after the quote of a based number is the base alone.
-fn is_base(text: &str) -> bool {
-    text.strip_prefix(['s', 'S']).unwrap_or(text).len() == 1
 }
 
 /// Which masters are modules with a body, when some module lacks the names of such children.
