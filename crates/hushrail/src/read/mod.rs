@@ -2,7 +2,9 @@
 
 pub mod counts;
 pub mod deck;
+pub mod def;
 pub mod expression;
+pub mod instances;
 pub mod lines;
 pub mod number;
 pub mod source;

@@ -10,8 +10,8 @@ use std::sync::Arc;
 
 use super::source::{Input, Place, ReadError};
 
-/// Bytes asked for at a time: a window stays in the second cache.
-pub(crate) const PIECE: usize = 1 << 17;
+/// Bytes asked for at a time: few enough to stay in the second cache and not to be given back to the system.
+pub(crate) const PIECE: usize = 1 << 16;
 
 /// How far the lines of a file have been counted.
 #[derive(Debug, Clone, Copy)]
@@ -40,8 +40,10 @@ impl Mark {
 struct Feed {
     reader: Box<dyn Read + Send>,
     gzip: bool,
-    /// The first bytes of a character whose last are yet to come.
-    cut: Vec<u8>,
+    /// What was read last.
+    bytes: Vec<u8>,
+    /// How many of its first bytes begin a character whose last bytes are yet to come.
+    cut: usize,
     piece: usize,
 }
 
@@ -91,7 +93,7 @@ impl Window {
             let gzip = got == 2 && magic == [0x1f, 0x8b];
             let reader: Box<dyn Read + Send> =
                 if gzip { Box::new(flate2::read::MultiGzDecoder::new(whole)) } else { Box::new(whole) };
-            window.feed = Some(Feed { reader, gzip, cut: Vec::new(), piece: piece.max(4) });
+            window.feed = Some(Feed { reader, gzip, bytes: Vec::new(), cut: 0, piece: piece.max(4) });
             window.slide(0, &[])?;
         }
         Ok(window)
@@ -125,21 +127,26 @@ impl Window {
     pub(crate) fn slide(&mut self, keep: usize, needed: &[usize]) -> Result<bool, ReadError> {
         let Some(mut feed) = self.feed.take() else { return Ok(false) };
         let kept = self.text.get(keep..).unwrap_or_default();
-        let mut bytes = std::mem::take(&mut feed.cut);
         // a window that grows doubles, so growing costs no more than the reading did
-        let wanted = bytes.len() + feed.piece.max(kept.len());
-        let had = bytes.len();
-        let wanted_more = u64::try_from(wanted - had).unwrap_or(u64::MAX);
-        bytes.reserve(wanted - had);
-        (&mut feed.reader)
-            .take(wanted_more)
-            .read_to_end(&mut bytes)
-            .map_err(|e| self.unreadable(&e, feed.gzip))?;
-        if bytes.is_empty() {
+        let wanted = feed.piece.max(kept.len());
+        let cut = feed.cut;
+        if feed.bytes.len() < cut + wanted {
+            feed.bytes.resize(cut + wanted, 0);
+        }
+        let mut length = cut;
+        while length < cut + wanted {
+            match feed.reader.read(&mut feed.bytes[length..cut + wanted]) {
+                Ok(0) => break,
+                Ok(n) => length += n,
+                Err(e) if e.kind() == std::io::ErrorKind::Interrupted => {}
+                Err(e) => return Err(self.unreadable(&e, feed.gzip)),
+            }
+        }
+        if length == 0 {
             return Ok(false);
         }
-        let ended = bytes.len() == had;
-        let good = match std::str::from_utf8(&bytes) {
+        let (bytes, ended) = (&feed.bytes[..length], length == cut);
+        let good = match std::str::from_utf8(bytes) {
             Ok(text) => text,
             Err(e) => {
                 let good = e.valid_up_to();
@@ -149,12 +156,14 @@ impl Window {
                     let at = Place::new(&self.path, mark.line, mark.column);
                     return Err(ReadError::NotText { at, byte: bytes[good] });
                 }
-                feed.cut = bytes[good..].to_vec();
                 std::str::from_utf8(&bytes[..good]).unwrap_or_default()
             }
         };
         self.blank &= good.trim_start().is_empty();
+        let used = good.len();
         let joined: Arc<str> = if kept.is_empty() { good.into() } else { [kept, good].concat().into() };
+        feed.bytes.copy_within(used..length, 0);
+        feed.cut = length - used;
         let start = self.first.offset + keep;
         self.kept.retain(|(offset, _)| needed.contains(offset));
         for &offset in needed {

@@ -21,6 +21,12 @@ pub(super) enum Keyword {
 
 /// Keywords of IEEE 1364-2005, annex B, less those of configurations, which have no meaning inside modules.
 pub(super) fn keyword(word: &str) -> Option<Keyword> {
+    // most names show at their ends that they are none
+    let bytes = word.as_bytes();
+    match (bytes.first(), bytes.last()) {
+        (Some(b'a'..=b'z'), Some(b'a'..=b'z' | b'0' | b'1')) => {}
+        _ => return None,
+    }
     Some(match word {
         "input" | "output" | "inout" | "wire" | "logic" | "tri" | "tri0" | "tri1" | "triand" | "trior"
         | "trireg" | "uwire" | "wand" | "wor" | "reg" | "integer" | "real" | "realtime" | "time"

@@ -495,31 +495,36 @@ impl Frame {
         let mut start = self.pos;
         'jump: loop {
             for i in self.marks.from(start) {
-                let next = bytes.get(i + 1);
-                let end = match bytes.get(i) {
-                    _ if next.is_none() && self.has_more => return Stop::At(i, Thing::Cut),
-                    Some(b')') => {
-                        *depth -= 1;
-                        if *depth == 0 {
-                            self.pos = i + 1;
-                            return Stop::Closed;
-                        }
-                        continue;
+                let byte = bytes.get(i).copied().unwrap_or_default();
+                if byte == b')' {
+                    *depth -= 1;
+                    if *depth == 0 {
+                        self.pos = i + 1;
+                        return Stop::Closed;
                     }
-                    Some(b'(') if next == Some(&b'*') => attribute_end(bytes, i),
-                    Some(b'(') => {
+                    continue;
+                }
+                let next = bytes.get(i + 1);
+                if byte == b'(' && next.is_some_and(|&b| b != b'*') {
+                    *depth += 1;
+                    continue;
+                }
+                let end = match byte {
+                    _ if next.is_none() && self.has_more => return Stop::At(i, Thing::Cut),
+                    b'(' if next.is_some() => attribute_end(bytes, i),
+                    b'(' => {
                         *depth += 1;
                         continue;
                     }
-                    Some(b'\\') => Ok(escaped_end(bytes, i)),
-                    Some(b'/') => match comment_end(bytes, i) {
+                    b'\\' => Ok(escaped_end(bytes, i)),
+                    b'/' => match comment_end(bytes, i) {
                         Ok(None) => continue,
                         Ok(Some(end)) => Ok(end),
                         Err(open) => Err(open),
                     },
-                    Some(b'"') => string_end(bytes, i),
-                    Some(b'`') => return Stop::At(i, Thing::Directive),
-                    Some(b';') => return Stop::At(i, Thing::Semicolon),
+                    b'"' => string_end(bytes, i),
+                    b'`' => return Stop::At(i, Thing::Directive),
+                    b';' => return Stop::At(i, Thing::Semicolon),
                     _ => return Stop::End,
                 };
                 match end {

@@ -11,12 +11,17 @@
 //! * A module with an empty body, no instance and no assign, is a black box and counts as a leaf too.
 //! * A module that holds assigns only counts nothing: wires are no cells.
 //!
-//! Pin lists are run over byte by byte without cutting them into tokens. Nothing is kept of an instance but its
-//! count, so memory grows with masters; only instances of modules that have a body keep their names, for the
-//! paths of [`Netlist::counts_under`]. Whether a master has a body is known when its module comes first; when
-//! some module comes after its use the text is read a second time, which costs time and no memory.
+//! Text is read through a window that slides ([`read_verilog_from`]). Bit masks of the bytes that mean something in
+//! a pin list are made for a window at a time; the commonest statements, one named instance and one declared net,
+//! are taken from the masks without cutting them into tokens, and anything unusual falls back to the careful way.
+//! Nothing is kept of an instance but its count, so memory grows with masters; only instances of modules that have a
+//! body keep their names, for the paths of [`Netlist::counts_under`]. Whether a master has a body is known when its
+//! module comes first; when some module comes after its use the text is read a second time, which costs time and no
+//! memory.
 //!
-//! Two instances with one name are reported where names are kept, that is for modules with a body.
+//! What a count does not look at: the inside of pin and port lists, where only parentheses must balance, and whether
+//! names of nets are declared. Two instances with one name are reported where names are kept, that is for modules
+//! with a body. [`connect`] checks all of it.
 //!
 //! # Example
 //! ```

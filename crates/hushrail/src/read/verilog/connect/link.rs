@@ -14,7 +14,7 @@ use super::{ConnectOptions, UnknownCells};
 use crate::read::source::{Place, ReadError, nearest};
 use crate::read::verilog::keyword::{Keyword, keyword};
 
-/// Members of instances by master, and more than fits into the graph's numbers.
+/// The graph's numbers have room for this many of anything.
 const MAX_COUNT: u64 = 1 << 31;
 
 /// The bits of a constant without a width, made as wide as its port.
@@ -453,18 +453,19 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
                 add(&mut size.scopes, one.scopes);
                 add(&mut size.nets, one.nets);
             }
-            for (name, n) in [
-                ("number of instances", size.instances),
-                ("number of pins", size.pins),
-                ("number of module instances", size.scopes),
-                ("number of nets", size.nets),
+            let most = self.options.max_instances.min(MAX_COUNT);
+            for (name, n, limit) in [
+                ("number of instances", size.instances, most),
+                ("number of module instances", size.scopes, most),
+                ("number of pins", size.pins, MAX_COUNT),
+                ("number of nets", size.nets, MAX_COUNT),
             ] {
-                if n >= MAX_COUNT {
+                if n > limit {
                     return Err(ReadError::Range {
                         at: body.at.clone(),
                         name: name.into(),
                         value: format!("{n} in module `{}`", self.name(b)),
-                        wanted: format!("want fewer than {MAX_COUNT} to connect; a count has no such limit"),
+                        wanted: format!("want at most {limit} to connect; a count has no such limit"),
                     });
                 }
             }

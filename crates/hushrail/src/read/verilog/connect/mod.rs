@@ -65,17 +65,31 @@ pub enum UnknownCells {
 }
 
 /// How a netlist is connected.
-#[derive(Debug, Clone, Default)]
+#[derive(Debug, Clone)]
 #[non_exhaustive]
 pub struct ConnectOptions {
     /// Cells without known ports.
     pub unknown_cells: UnknownCells,
+    /// So many instances, of cells or of modules, are laid out at most: a slip in the ends of an array must not
+    /// fill the memory. A hundred millions by default.
+    pub max_instances: u64,
+}
+
+impl Default for ConnectOptions {
+    fn default() -> Self {
+        Self { unknown_cells: UnknownCells::default(), max_instances: 100_000_000 }
+    }
 }
 
 impl ConnectOptions {
     /// Says what to do with cells without known ports.
     pub fn unknown_cells(self, unknown_cells: UnknownCells) -> Self {
-        Self { unknown_cells }
+        Self { unknown_cells, ..self }
+    }
+
+    /// Says how many instances are laid out at most.
+    pub fn max_instances(self, max_instances: u64) -> Self {
+        Self { max_instances, ..self }
     }
 }
 
@@ -84,7 +98,8 @@ impl ConnectOptions {
 /// # Errors
 /// As for [`read_verilog`](super::read_verilog) and its counts; a port that a module or known cell lacks, too many
 /// pins, a pin connected twice, unequal widths, two instances with one name, a net declared twice, an index outside
-/// its range, logic in an `assign` or a pin, a cell nobody knows when those are refused, more than 2^31 of anything.
+/// its range, logic in an `assign` or a pin, a cell nobody knows when those are refused, more instances than
+/// asked for, more than 2^31 pins or nets.
 pub fn connect<C: CellPorts + ?Sized>(
     inputs: &mut [Input],
     top: Option<&str>,

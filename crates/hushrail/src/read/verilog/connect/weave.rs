@@ -46,6 +46,8 @@ pub(super) struct Weaver<'f> {
     pub(super) body: Body,
     /// Numbers of masters that are no reserved words.
     plain: Vec<bool>,
+    /// By master: the module and the first connection of its last instance, whose ports likely come again.
+    last: Vec<(u32, u32)>,
 }
 
 pub(super) fn weave(inputs: &mut [Input]) -> Result<Woven, ReadError> {
@@ -59,6 +61,7 @@ pub(super) fn weave(inputs: &mut [Input]) -> Result<Woven, ReadError> {
         module: 0,
         body: empty(0, Place::new(&"".into(), 1, 1)),
         plain: Vec::new(),
+        last: Vec::new(),
     };
     for input in &mut *inputs {
         weaver.lex.open(input)?;
@@ -575,7 +578,7 @@ impl Weaver<'_> {
         self.lex.part = Some(spot);
         self.begin(name, master, spot)?;
         self.lex.top.pos = mark + 1;
-        self.pins(head)?;
+        self.pins(master, head)?;
         self.more_instances(master, false, head)?;
         Ok(true)
     }
@@ -636,15 +639,23 @@ impl Weaver<'_> {
         } else {
             return Err(self.lex.misfit(token, start, "the name of the instance"));
         }
-        self.pins(start)
+        self.pins(master, start)
     }
 
     /// Reads pins up to the parenthesis that closes them.
-    fn pins(&mut self, start: Spot) -> Result<(), ReadError> {
+    fn pins(&mut self, master: u32, start: Spot) -> Result<(), ReadError> {
         let mut position = 0u32;
         let mut is_first = true;
+        let conns = short(self.body.conns.len());
+        if self.last.len() <= master as usize {
+            self.last.resize(self.names.len(), (0, 0));
+        }
+        let (module, before) = std::mem::replace(&mut self.last[master as usize], (self.module, conns));
+        let mut likely = if module == self.module { before } else { conns };
         loop {
-            if self.common_pin()? {
+            let guess = self.body.conns.get(likely as usize).filter(|_| likely < conns).map(|c| c.port);
+            likely += 1;
+            if self.common_pin(guess)? {
                 is_first = false;
                 let frame = &self.lex.top;
                 match frame.text.as_bytes().get(frame.pos) {
@@ -700,7 +711,7 @@ impl Weaver<'_> {
     }
 
     /// Reads `.port(net)` when it stands in the window in just this form.
-    fn common_pin(&mut self) -> Result<bool, ReadError> {
+    fn common_pin(&mut self, guess: Option<u32>) -> Result<bool, ReadError> {
         let frame = &self.lex.top;
         let bytes = frame.text.as_bytes();
         let Some(dot) = frame.solid_from(frame.pos).filter(|&i| bytes[i] == b'.') else { return Ok(false) };
@@ -713,10 +724,11 @@ impl Weaver<'_> {
         let is_name = |name: &str| {
             !name.starts_with('$') && name != "\\" && crate::read::verilog::keyword::keyword(name).is_none()
         };
-        if !is_name(port) || !is_name(net) {
+        let guess = guess.filter(|&id| id & (POSITION | UNSIZED) == 0 && self.names.get(id) == port);
+        if guess.is_none() && !is_name(port) || !is_name(net) {
             return Ok(false);
         }
-        let port = self.names.intern(port.strip_prefix('\\').unwrap_or(port));
+        let port = guess.or_else(|| self.names.intern(port.strip_prefix('\\').unwrap_or(port)));
         let net = self.names.intern(net.strip_prefix('\\').unwrap_or(net));
         let spot = self.lex.spot(net_start);
         let (Some(port), Some(net)) = (port, net) else { return Err(self.too_large(spot, "names")) };
