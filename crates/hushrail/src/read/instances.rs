@@ -45,8 +45,7 @@ pub fn count_instances(
 
 fn is_layout(name: &str) -> bool {
     let name = name.to_ascii_lowercase();
-    let name = name.strip_suffix(".gz").unwrap_or(&name);
-    name.ends_with(".def")
+    name.strip_suffix(".gz").unwrap_or(&name).strip_suffix(".def").is_some()
 }
 
 #[cfg(test)]
@@ -98,7 +97,7 @@ mod tests {
     fn gzip_is_undone_and_a_cut_is_found() {
         use std::io::Write as _;
         let mut gz = flate2::write::GzEncoder::new(Vec::new(), flate2::Compression::default());
-        let body: String = (0..20_000).map(|i| format!("inv u{i} (.A(n{i}), .Y(n{}));\n", i + 1)).collect();
+        let body = "inv u (.A(a), .Y(y));\n".repeat(20_000);
         gz.write_all(format!("module c; {body} endmodule").as_bytes()).unwrap();
         let bytes = gz.finish().unwrap();
         let read = |bytes: &[u8]| {

@@ -101,10 +101,8 @@ impl Window {
 
     fn unreadable(&self, e: &std::io::Error, gzip: bool) -> ReadError {
         let path = self.path.to_string();
-        match gzip {
-            true => ReadError::Gzip { path, reason: e.to_string() },
-            false => ReadError::Io { path, reason: e.to_string(), missing: false },
-        }
+        let reason = e.to_string();
+        if gzip { ReadError::Gzip { path, reason } } else { ReadError::Io { path, reason, missing: false } }
     }
 
     /// The text in the window.

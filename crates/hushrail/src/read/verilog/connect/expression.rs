@@ -175,20 +175,12 @@ impl Weaver<'_> {
             let found = format!("`{digits}` is no value in this base");
             return Err(self.lex.syntax(start, found, "want digits of the base, x or z"));
         };
-        match width {
-            Some(width) => {
-                let fill = if bits[0] >= UNKNOWN { bits[0] } else { 0 };
-                let skipped = bits.len().saturating_sub(width);
-                let missing = width.saturating_sub(bits.len());
-                self.body.bits.extend(std::iter::repeat_n(fill, missing));
-                self.body.bits.extend_from_slice(&bits[skipped..]);
-            }
-            None => {
-                let missing = 32usize.saturating_sub(bits.len());
-                self.body.bits.extend(std::iter::repeat_n(0, missing));
-                self.body.bits.extend_from_slice(&bits);
-            }
-        }
+        // a constant with a width is extended by its first digit when that is no level, one without by zeros
+        let wanted = width.unwrap_or(32);
+        let fill = if width.is_some() && bits[0] >= UNKNOWN { bits[0] } else { 0 };
+        let skipped = if width.is_some() { bits.len().saturating_sub(wanted) } else { 0 };
+        self.body.bits.extend(std::iter::repeat_n(fill, wanted.saturating_sub(bits.len())));
+        self.body.bits.extend_from_slice(&bits[skipped..]);
         Ok((self.lex.next()?, width.is_none()))
     }
 }

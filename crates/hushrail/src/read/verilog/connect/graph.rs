@@ -79,9 +79,7 @@ impl Shape {
         self.nets_by_name = (0..u32::try_from(self.decls.len()).unwrap_or(u32::MAX)).collect();
         let decls = &self.decls;
         self.nets_by_name.sort_unstable_by_key(|&d| decls[d as usize].name);
-        for list in [&mut self.by_name] {
-            list.shrink_to_fit();
-        }
+        self.by_name.shrink_to_fit();
         self.arrays.shrink_to_fit();
         self.leaves.shrink_to_fit();
         self.children.shrink_to_fit();
@@ -221,7 +219,9 @@ impl Connected {
         let (new, old) = flat.join.numbered();
         let to_net = |n: u32| if n == OPEN { OPEN } else { new[n as usize] };
         let mut wires = flat.wires;
-        wires.iter_mut().for_each(|w| *w = to_net(*w));
+        for wire in &mut wires {
+            *wire = to_net(*wire);
+        }
         wires.shrink_to_fit();
         let mut pins: Vec<NetId> = flat.pins.iter().map(|&n| NetId(to_net(n))).collect();
         pins.shrink_to_fit();
@@ -386,19 +386,9 @@ impl Connected {
         let at = shape.leaves.partition_point(|l| l.first <= local).saturating_sub(1);
         if let Some(leaf) = shape.leaves.get(at) {
             out.push_str(self.names.get(leaf.name));
-            self.push_member(&mut out, shape.range(short(at)), local - leaf.first);
+            push_member(&mut out, shape.range(short(at)), local - leaf.first);
         }
         out
-    }
-
-    fn push_member(&self, out: &mut String, range: Option<(i64, i64)>, member: u32) {
-        if let Some((first, last)) = range {
-            let n = i64::from(member);
-            let index = if first > last { first - n } else { first + n };
-            out.push('[');
-            out.push_str(&index.to_string());
-            out.push(']');
-        }
     }
 
     /// The path of a scope with a separator at its end; nothing for the top.
@@ -416,7 +406,7 @@ impl Connected {
             let entry = shape.children.partition_point(|c| c.child <= local).saturating_sub(1);
             if let Some(child) = shape.children.get(entry) {
                 out.push_str(self.names.get(child.name));
-                self.push_member(&mut out, shape.range(CHILD | short(entry)), local - child.child);
+                push_member(&mut out, shape.range(CHILD | short(entry)), local - child.child);
             }
             out.push('/');
         }
@@ -463,12 +453,11 @@ impl Connected {
         self.search(path, |scope, name| {
             let shape = &self.shapes[self.scopes[scope].module as usize];
             let whole = self.names.find(name).and_then(|id| shape.decl(id));
-            let local = match whole.filter(|d| d.width() == 1) {
-                Some(decl) => decl.base,
-                None => {
-                    let (vector, index) = indexed(name)?;
-                    shape.decl(self.names.find(vector)?)?.bit(index)?
-                }
+            let local = if let Some(decl) = whole.filter(|d| d.width() == 1) {
+                decl.base
+            } else {
+                let (vector, index) = indexed(name)?;
+                shape.decl(self.names.find(vector)?)?.bit(index)?
             };
             Some(NetId(self.wires[(self.scopes[scope].wire_start + local) as usize]))
         })
@@ -638,6 +627,16 @@ impl Connected {
     /// [`Connected::heap_bytes`] for each pin.
     pub fn bytes_per_pin(&self) -> f64 {
         self.heap_bytes() as f64 / self.pins.len().max(1) as f64
+    }
+}
+
+fn push_member(out: &mut String, range: Option<(i64, i64)>, member: u32) {
+    if let Some((first, last)) = range {
+        let n = i64::from(member);
+        let index = if first > last { first - n } else { first + n };
+        out.push('[');
+        out.push_str(&index.to_string());
+        out.push(']');
     }
 }
 

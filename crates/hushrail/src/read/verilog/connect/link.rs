@@ -84,7 +84,7 @@ pub(super) fn link<C: CellPorts + ?Sized>(
     }
     linker.lay_out();
     linker.check_size(&order)?;
-    linker.flatten(top, &order)
+    Ok(linker.flatten(top, &order))
 }
 
 fn face(body: &Body) -> Vec<MasterPort> {
@@ -256,12 +256,12 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
             for (k, c) in conns.enumerate() {
                 let Conn { port, .. } = self.bodies[body].conns[c];
                 if port & POSITION > 0 {
-                    has.1 = true
+                    has.1 = true;
                 } else {
-                    has.0 = true
+                    has.0 = true;
                 }
                 if has == (true, true) {
-                    let found = "pins by name and by position in one instance".to_owned();
+                    let found = "pins by name and by position in one instance";
                     return Err(self.at_inst(body, inst, found, "want one or the other"));
                 }
                 let number = self.port_number(body, inst, port, k, count)?;
@@ -270,7 +270,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
                 }
                 if std::mem::replace(&mut seen[number], stamp) == stamp {
                     let found = format!("pin `{}` is connected twice", self.names.get(port & PORT));
-                    return Err(self.at_inst(body, inst, found, "want each pin once"));
+                    return Err(self.at_inst(body, inst, &found, "want each pin once"));
                 }
                 self.bodies[body].conns[c].port = short(number) | port & UNSIZED;
                 self.check_width(body, inst, c, number, members, arrays)?;
@@ -295,7 +295,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
         }
     }
 
-    fn at_inst(&self, body: usize, inst: Inst, found: String, wanted: &str) -> ReadError {
+    fn at_inst(&self, body: usize, inst: Inst, found: &str, wanted: &str) -> ReadError {
         let name = self.names.get(inst.name);
         let found = format!(
             "{found}, at instance `{name}` of `{}` in module `{}`",
@@ -328,7 +328,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
                 return Err(self.at_inst(
                     body,
                     inst,
-                    found,
+                    &found,
                     "want as many pins as the module has ports, or fewer",
                 ));
             }
@@ -363,7 +363,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
         let wanted =
             near.map_or_else(|| "want one of its ports".to_owned(), |n| format!("did you mean `{n}`?"));
         let found = format!("`{}` has no port `{text}`", self.target_name(inst.master));
-        Err(self.at_inst(body, inst, found, &wanted))
+        Err(self.at_inst(body, inst, &found, &wanted))
     }
 
     /// Directions of the pins of a gate of the language with so many of them.
@@ -414,7 +414,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
         }
         let port = self.names.get(self.ports(inst.master)[number].name);
         let found = format!("port `{port}` has {width} bits and is tied to {bits}");
-        Err(self.at_inst(body, inst, found, "want as many bits on both sides"))
+        Err(self.at_inst(body, inst, &found, "want as many bits on both sides"))
     }
 
     fn lay_out(&mut self) {
@@ -474,7 +474,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
         Ok(())
     }
 
-    fn flatten(mut self, top: usize, order: &[usize]) -> Result<Connected, ReadError> {
+    fn flatten(mut self, top: usize, order: &[usize]) -> Connected {
         let mut shape_of = vec![u32::MAX; self.bodies.len()];
         let mut shapes = Vec::with_capacity(order.len());
         for &b in order {
@@ -506,7 +506,7 @@ impl<C: CellPorts + ?Sized> Linker<'_, &C> {
             })
             .collect();
         self.names.shrink();
-        Ok(Connected::new(self.names, self.masters, shapes, flat, &ports))
+        Connected::new(self.names, self.masters, shapes, flat, &ports)
     }
 
     /// What stays of a module: the names in it.

@@ -1,3 +1,5 @@
+use std::fmt::Write as _;
+
 use indexmap::IndexMap;
 use proptest::prelude::*;
 
@@ -220,12 +222,12 @@ fn bad_connections_are_placed() {
 fn what_cannot_be_numbered_is_refused_before_it_is_laid_out() {
     let mut text = "module m0; INV u (); endmodule\n".to_owned();
     for i in 1..6 {
-        text += &format!("module m{i}; m{} u [999:0] (); endmodule\n", i - 1);
+        let _ = writeln!(text, "module m{i}; m{} u [999:0] (); endmodule", i - 1);
     }
     assert!(message(&text).contains("want at most 100000000 to connect"), "{}", message(&text));
 }
 
-const GOOD: &str = r#"`define W 4
+const GOOD: &str = r"`define W 4
 module m #(parameter P = 1) (a, \b[0] , c); // ports
   input a; output [`W-1:0] \b[0] ; input c; wire x = 1'b0, \y.z/[1] ;
   assign \b[0] [1] = a;
@@ -236,7 +238,7 @@ module m #(parameter P = 1) (a, \b[0] , c); // ports
   sub s1 (), s2 [1:0] (.p(x)), s3 (\b[0] [3]); RAM r (.D({2{1'b0, a}}));
 endmodule
 module sub (p); inout p; NOR n1 (p); endmodule
-"#;
+";
 
 fn everything(text: &str) {
     let counted = read_verilog(&[Source::from_text("n.v", text)]);

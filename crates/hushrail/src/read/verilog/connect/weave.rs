@@ -534,7 +534,7 @@ impl Weaver<'_> {
     }
 
     fn begin(&mut self, name: u32, master: u32, spot: Spot) -> Result<(), ReadError> {
-        if self.names.get(name) != "" && std::mem::replace(&mut self.meaning(name).is_instance, true) {
+        if !self.names.get(name).is_empty() && std::mem::replace(&mut self.meaning(name).is_instance, true) {
             let found = format!(
                 "module `{}` has two instances named `{}`",
                 self.names.get(self.body.name),
