@@ -218,7 +218,8 @@ def test_count_from_standard_input_gzip_and_several_files(run: Run, tmp_path: Pa
 
 
 def test_count_of_a_layout(run: Run, tmp_path: Path) -> None:
-    text = "DESIGN top ;\nCOMPONENTS 2 ;\n- u1 inv ;\n- u2 inv + PLACED ( 0 0 ) N ;\nEND COMPONENTS\nEND DESIGN\n"
+    components = "COMPONENTS 2 ;\n- u1 inv ;\n- u2 inv + PLACED ( 0 0 ) N ;\nEND COMPONENTS\n"
+    text = f"DESIGN top ;\n{components}END DESIGN\n"
     (tmp_path / "n.def").write_text(text, encoding="utf-8")
     assert run("count", "n.def", "--csv", "-").stdout == "cell,count\ninv,2\n"
     assert hushrail.count(tmp_path / "n.def").top == "top"

@@ -175,8 +175,8 @@ def count(files: StrPath | Sequence[StrPath], *, top: str | None = None, path: s
     top : str, optional
         The top module, where more than one is possible.
     path : str
-        Instance path below the top to count under, such as ``u_core.u_dsp``; the whole top when empty. On standard
-        input, which can be read once, modules must come before their use for a path to be found.
+        Instance path below the top to count under, such as ``u_core.u_dsp``; the whole top when empty. On
+        standard input, which can be read once, modules must come before their use for a path to be found.
     """
     several = [files] if isinstance(files, str | os.PathLike) else list(files)
     if not several:
