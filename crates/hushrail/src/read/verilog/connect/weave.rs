@@ -14,6 +14,9 @@ use crate::read::window::PIECE;
 /// Vectors and concatenations of more bits than this are a slip.
 pub(super) const MAX_WIDTH: u64 = 1 << 24;
 
+/// Where a connection is to something other than one plain name.
+const NO_NAME: u32 = u32::MAX;
+
 /// Everything that was read.
 pub(super) struct Woven {
     pub(super) names: Names,
@@ -48,6 +51,8 @@ pub(super) struct Weaver<'f> {
     plain: Vec<bool>,
     /// By master: the module and the first connection of its last instance, whose ports likely come again.
     last: Vec<(u32, u32)>,
+    /// By connection of the module: the name of its net, or no name; supplies likely come again too.
+    tied: Vec<u32>,
 }
 
 pub(super) fn weave(inputs: &mut [Input]) -> Result<Woven, ReadError> {
@@ -62,6 +67,7 @@ pub(super) fn weave(inputs: &mut [Input]) -> Result<Woven, ReadError> {
         body: empty(0, Place::new(&"".into(), 1, 1)),
         plain: Vec::new(),
         last: Vec::new(),
+        tied: Vec::new(),
     };
     for input in &mut *inputs {
         weaver.lex.open(input)?;
@@ -176,6 +182,7 @@ impl Weaver<'_> {
         }
         self.module += 1;
         self.body = empty(name, at);
+        self.tied.clear();
         self.header(start)?;
         loop {
             if self.common_instance()? {
@@ -654,6 +661,7 @@ impl Weaver<'_> {
         let mut likely = if module == self.module { before } else { conns };
         loop {
             let guess = self.body.conns.get(likely as usize).filter(|_| likely < conns).map(|c| c.port);
+            let guess = guess.zip(self.tied.get(likely as usize).copied());
             likely += 1;
             if self.common_pin(guess)? {
                 is_first = false;
@@ -707,11 +715,14 @@ impl Weaver<'_> {
 
     fn connect_to(&mut self, port: u32) -> usize {
         self.body.conns.push(Conn { port, bits: short(self.body.bits.len()) });
+        self.tied.push(NO_NAME);
         self.body.conns.len() - 1
     }
 
     /// Reads `.port(net)` when it stands in the window in just this form.
-    fn common_pin(&mut self, guess: Option<u32>) -> Result<bool, ReadError> {
+    ///
+    /// The guess, names of a port and a net, only saves looking them up.
+    fn common_pin(&mut self, guess: Option<(u32, u32)>) -> Result<bool, ReadError> {
         let frame = &self.lex.top;
         let bytes = frame.text.as_bytes();
         let Some(dot) = frame.solid_from(frame.pos).filter(|&i| bytes[i] == b'.') else { return Ok(false) };
@@ -724,15 +735,22 @@ impl Weaver<'_> {
         let is_name = |name: &str| {
             !name.starts_with('$') && name != "\\" && crate::read::verilog::keyword::keyword(name).is_none()
         };
-        let guess = guess.filter(|&id| id & (POSITION | UNSIZED) == 0 && self.names.get(id) == port);
-        if guess.is_none() && !is_name(port) || !is_name(net) {
+        let likely_net = guess.map(|g| g.1).filter(|&id| id != NO_NAME && self.names.get(id) == net);
+        let likely_port =
+            guess.map(|g| g.0).filter(|&id| id & (POSITION | UNSIZED) == 0 && self.names.get(id) == port);
+        if !is_name(port) || likely_net.is_none() && !is_name(net) {
             return Ok(false);
         }
-        let port = guess.or_else(|| self.names.intern(port.strip_prefix('\\').unwrap_or(port)));
-        let net = self.names.intern(net.strip_prefix('\\').unwrap_or(net));
+        let port = likely_port.or_else(|| self.names.intern(port.strip_prefix('\\').unwrap_or(port)));
+        let is_plain = !net.starts_with('\\');
+        let net = likely_net.or_else(|| self.names.intern(net.strip_prefix('\\').unwrap_or(net)));
         let spot = self.lex.spot(net_start);
         let (Some(port), Some(net)) = (port, net) else { return Err(self.too_large(spot, "names")) };
-        self.connect_to(port);
+        let conn = self.connect_to(port);
+        // an escaped name may spell a reserved word, which a plain one must not
+        if is_plain {
+            self.tied[conn] = net;
+        }
         let decl = self.net(net, spot)?;
         let decl = self.body.decls[decl];
         self.body.bits.extend(decl.base..decl.base + decl.width());
