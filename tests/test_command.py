@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import gzip
 import json
 import os
 import subprocess
@@ -202,6 +203,30 @@ def test_count(run: Run, tmp_path: Path) -> None:
     assert done.stdout == "cell,count\nnand2,1\n"
     done = run("count", "n.v", "--top", "pair", "--csv", "-")
     assert done.stdout == "cell,count\nnand2,1\n"
+
+
+def test_count_from_standard_input_gzip_and_several_files(run: Run, tmp_path: Path) -> None:
+    top, pair = NETLIST.split("module pair")
+    (tmp_path / "top.v.gz").write_bytes(gzip.compress(top.encode()))
+    (tmp_path / "pair.v").write_text("module pair" + pair, encoding="utf-8")
+    wanted = "cell,count\ninv,2\nnand2,1\n"
+    assert run("count", "top.v.gz", "pair.v", "--csv", "-").stdout == wanted
+    command = [sys.executable, "-m", "hushrail", "count", "-", "--csv", "-"]
+    for text in (NETLIST.encode(), gzip.compress(NETLIST.encode())):
+        done = subprocess.run(command, input=text, capture_output=True, check=True, env=environment())
+        assert done.stdout.decode() == wanted
+
+
+def test_count_of_a_layout(run: Run, tmp_path: Path) -> None:
+    components = "COMPONENTS 2 ;\n- u1 inv ;\n- u2 inv + PLACED ( 0 0 ) N ;\nEND COMPONENTS\n"
+    text = f"DESIGN top ;\n{components}END DESIGN\n"
+    (tmp_path / "n.def").write_text(text, encoding="utf-8")
+    assert run("count", "n.def", "--csv", "-").stdout == "cell,count\ninv,2\n"
+    assert hushrail.count(tmp_path / "n.def").top == "top"
+    (tmp_path / "n.def").write_text(text.replace("COMPONENTS 2", "COMPONENTS 3"), encoding="utf-8")
+    with pytest.raises(hushrail.ReadError, match="number of components` is 3; the section holds 2") as caught:
+        hushrail.count(tmp_path / "n.def")
+    assert (caught.value.line, caught.value.column) == (2, 12)
 
 
 def test_counts_of_a_netlist_feed_a_study(run: Run, small: Path) -> None:

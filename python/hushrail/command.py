@@ -148,8 +148,9 @@ def _parser() -> argparse.ArgumentParser:
     )
     _floor(sub)
 
-    sub = command("count", _count, "instances of a structural Verilog netlist by master")
-    sub.add_argument("netlists", metavar="NETLIST.v", nargs="+", help="Verilog files, gzip or not")
+    sub = command("count", _count, "instances of a Verilog netlist or DEF layout by master")
+    text = "Verilog files or one .def, gzip or not; - for standard input"
+    sub.add_argument("netlists", metavar="NETLIST.v", nargs="+", help=text)
     sub.add_argument("--top", metavar="T", help="the top module, where more than one is possible")
     sub.add_argument("--path", metavar="P", default="", help="instance path below the top to count under")
     return parser

@@ -163,20 +163,24 @@ def compare(
 
 
 def count(files: StrPath | Sequence[StrPath], *, top: str | None = None, path: str = "") -> Counts:
-    """Count the instances of a structural Verilog netlist by master.
+    """Count the instances of a structural Verilog netlist, or of a DEF layout, by master.
+
+    Files are read piece by piece, so memory does not grow with them.
 
     Parameters
     ----------
     files : path or sequence of paths
-        The netlist; gzip is undone.
+        The netlist in one or more Verilog files, or one layout, told by a name that ends in ``.def`` or
+        ``.def.gz``. Gzip is undone; ``-`` is Verilog on standard input.
     top : str, optional
         The top module, where more than one is possible.
     path : str
-        Instance path below the top to count under, such as ``u_core.u_dsp``; the whole top when empty.
+        Instance path below the top to count under, such as ``u_core.u_dsp``; the whole top when empty. On
+        standard input, which can be read once, modules must come before their use for a path to be found.
     """
     several = [files] if isinstance(files, str | os.PathLike) else list(files)
     if not several:
-        raise RangeError("no netlist was named; want at least one Verilog file")
+        raise RangeError("no netlist was named; want at least one Verilog or DEF file")
     found, counts = _core.count([os.fspath(each) for each in several], top=top, path=path)
     return Counts(top=found, path=path, counts=dict(counts))
 

@@ -11,8 +11,8 @@ use hushrail::batch::{estimate as core_estimate, load_study};
 use hushrail::check::suspects::SuspectRules;
 use hushrail::circuit::newton::SolveOptions;
 use hushrail::physics::Kelvin;
-use hushrail::read::verilog::read_verilog;
-use hushrail::read::{ReadError, Source};
+use hushrail::read::instances::count_instances;
+use hushrail::read::{Input, ReadError, Source};
 use hushrail::standby::stress::{Area, LifetimeLaw, lifetime};
 use pyo3::prelude::*;
 
@@ -131,7 +131,7 @@ pub fn compare(
     text(&result.map_err(|e| error::read(&e))?)
 }
 
-/// Instance counts of structural Verilog: top module and (master, count) pairs in first-seen order.
+/// Instance counts of structural Verilog or a DEF layout, `-` being standard input: top module and (master, count) pairs in first-seen order.
 #[pyfunction]
 #[pyo3(signature = (files, *, top=None, path=""))]
 pub fn count(
@@ -141,8 +141,8 @@ pub fn count(
     path: &str,
 ) -> PyResult<(String, Vec<(String, u64)>)> {
     py.detach(|| {
-        let sources = files.iter().map(|f| Source::open(Path::new(f))).collect::<Result<Vec<_>, _>>()?;
-        let counts = read_verilog(&sources)?.counts_under(top, path)?;
+        let mut inputs: Vec<Input> = files.iter().map(|f| Input::named(f)).collect();
+        let counts = count_instances(&mut inputs, top, path)?;
         Ok((counts.top, counts.counts.into_iter().collect()))
     })
     .map_err(|e: ReadError| error::read(&e))

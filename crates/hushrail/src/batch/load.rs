@@ -14,11 +14,12 @@ use crate::cell::{Cell, CellReader, RailNames};
 use crate::corner::Corner;
 use crate::device::process::Process;
 use crate::device::spec::DeviceSpec;
+use crate::read::Input;
 use crate::read::counts::{InstanceCounts, read_counts_csv};
 use crate::read::deck::{Deck, Note};
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
-use crate::read::verilog::read_verilog;
+use crate::read::verilog::read_verilog_from;
 use crate::standby::Scheme;
 use crate::standby::scheme::SchemeError;
 
@@ -224,9 +225,8 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
             read_counts_csv(&Source::open(&folder.join(f))?)?
         } else {
             if !netlists.contains_key(d.verilog.as_slice()) {
-                let sources =
-                    d.verilog.iter().map(|f| Source::open(&folder.join(f))).collect::<Result<Vec<_>, _>>()?;
-                netlists.insert(&d.verilog, read_verilog(&sources)?);
+                let mut inputs: Vec<Input> = d.verilog.iter().map(|f| Input::file(&folder.join(f))).collect();
+                netlists.insert(&d.verilog, read_verilog_from(&mut inputs)?);
             }
             netlists[d.verilog.as_slice()].counts_under(d.top.as_deref(), &d.path)?
         };

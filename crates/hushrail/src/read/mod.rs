@@ -2,13 +2,16 @@
 
 pub mod counts;
 pub mod deck;
+pub mod def;
 pub mod expression;
+pub mod instances;
 pub mod lines;
 pub mod number;
 pub mod source;
 pub mod spice;
 pub mod verilog;
+mod window;
 
 pub use deck::{Deck, Note};
-pub use source::{Place, ReadError, Source};
+pub use source::{Input, Place, ReadError, Source};
 pub use spice::{DeckOptions, read_deck};

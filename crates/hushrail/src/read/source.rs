@@ -154,15 +154,7 @@ impl Source {
     /// The file cannot be opened, is not UTF-8, or is a damaged gzip stream.
     pub fn open(path: &Path) -> Result<Self, ReadError> {
         let name = path.display().to_string();
-        let bytes = std::fs::read(path).map_err(|e| ReadError::Io {
-            path: name.clone(),
-            reason: if e.kind() == std::io::ErrorKind::NotFound {
-                "no such file".into()
-            } else {
-                e.to_string()
-            },
-            missing: e.kind() == std::io::ErrorKind::NotFound,
-        })?;
+        let bytes = std::fs::read(path).map_err(|e| ReadError::of_io(&name, &e))?;
         let bytes = if bytes.starts_with(&[0x1f, 0x8b]) {
             let mut out = Vec::new();
             flate2::read::MultiGzDecoder::new(&bytes[..])
@@ -192,5 +184,106 @@ impl Source {
             wanted: wanted.to_owned(),
             empty: self.text.trim().is_empty(),
         }
+    }
+}
+
+/// Where a reader that works piece by piece takes its text from: never the whole file in memory.
+///
+/// Gzip is recognised by its first two bytes and undone on the way.
+pub struct Input {
+    /// The name used in messages.
+    pub path: Arc<str>,
+    /// The folder that relative includes start from.
+    pub folder: PathBuf,
+    origin: Origin,
+}
+
+enum Origin {
+    Text(Arc<str>),
+    File(PathBuf),
+    /// Text that is nevertheless given piece by piece.
+    #[cfg(test)]
+    Pieces(Arc<str>),
+    /// A stream, until it is opened.
+    Stream(Option<Box<dyn std::io::Read + Send>>),
+}
+
+impl fmt::Debug for Input {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.debug_struct("Input").field("path", &self.path).finish_non_exhaustive()
+    }
+}
+
+impl Input {
+    /// A file, opened when it is read.
+    pub fn file(path: &Path) -> Self {
+        Self {
+            path: path.display().to_string().into(),
+            folder: path.parent().map_or_else(PathBuf::new, Path::to_path_buf),
+            origin: Origin::File(path.to_owned()),
+        }
+    }
+
+    /// A stream that can be read once; `name` stands for it in messages.
+    pub fn stream(name: &str, reader: impl std::io::Read + Send + 'static) -> Self {
+        Self { path: name.into(), folder: PathBuf::new(), origin: Origin::Stream(Some(Box::new(reader))) }
+    }
+
+    /// Standard input, under the name `-`.
+    pub fn stdin() -> Self {
+        Self::stream("-", std::io::stdin())
+    }
+
+    /// Standard input for `-`, a file for any other name.
+    pub fn named(name: &str) -> Self {
+        if name == "-" { Self::stdin() } else { Self::file(Path::new(name)) }
+    }
+
+    #[cfg(test)]
+    pub(crate) fn in_pieces(name: &str, text: &str) -> Self {
+        Self { path: name.into(), folder: PathBuf::new(), origin: Origin::Pieces(text.into()) }
+    }
+
+    /// Whether the input can be read a second time.
+    pub(crate) fn is_lasting(&self) -> bool {
+        !matches!(self.origin, Origin::Stream(_))
+    }
+
+    /// The text, or an empty one and the reader that gives it.
+    pub(crate) fn take(&mut self) -> Result<(Arc<str>, Option<Box<dyn std::io::Read + Send>>), ReadError> {
+        match &mut self.origin {
+            Origin::Text(text) => Ok((Arc::clone(text), None)),
+            #[cfg(test)]
+            Origin::Pieces(text) => {
+                Ok(("".into(), Some(Box::new(std::io::Cursor::new(text.as_bytes().to_vec())))))
+            }
+            Origin::File(path) => match std::fs::File::open(&*path) {
+                Ok(file) => Ok(("".into(), Some(Box::new(file)))),
+                Err(e) => Err(ReadError::of_io(&path.display().to_string(), &e)),
+            },
+            Origin::Stream(reader) => match reader.take() {
+                Some(reader) => Ok(("".into(), Some(reader))),
+                None => Err(ReadError::Io {
+                    path: self.path.to_string(),
+                    reason: "a stream can be read once only; name it once, or save it as a file".into(),
+                    missing: false,
+                }),
+            },
+        }
+    }
+}
+
+impl From<Source> for Input {
+    fn from(source: Source) -> Self {
+        Self { path: source.path, folder: source.folder, origin: Origin::Text(source.text) }
+    }
+}
+
+impl ReadError {
+    /// The error for a file that the operating system would not open.
+    fn of_io(path: &str, e: &std::io::Error) -> Self {
+        let missing = e.kind() == std::io::ErrorKind::NotFound;
+        let reason = if missing { "no such file".into() } else { e.to_string() };
+        Self::Io { path: path.to_owned(), reason, missing }
     }
 }

@@ -19,7 +19,7 @@ pub(super) struct Macro {
 /// An open `` `ifdef `` or `` `ifndef ``.
 #[derive(Debug, Clone, Copy)]
 pub(super) struct Branch {
-    spot: Spot,
+    pub(super) spot: Spot,
     /// Whether one of its texts has been read.
     taken: bool,
     /// Whether `` `else `` has been seen.
@@ -28,7 +28,26 @@ pub(super) struct Branch {
 
 impl Lexer<'_> {
     /// Obeys the directive whose backtick is at the present position.
+    ///
+    /// Its line is read into the window first; what may take more lines, macros and their arguments, says that
+    /// it met the end of the window and is tried again with more text.
     pub(super) fn directive(&mut self) -> Result<(), ReadError> {
+        loop {
+            let start = self.top.pos;
+            if self.lacks_line_end(start) && self.read_on(start)? {
+                continue;
+            }
+            self.ran_out.set(false);
+            let result = self.obey();
+            if result.is_ok() || !self.ran_out.get() || !self.top.has_more {
+                return result;
+            }
+            self.top.pos = start;
+            self.read_on(start)?;
+        }
+    }
+
+    fn obey(&mut self) -> Result<(), ReadError> {
         let text = Arc::clone(&self.top.text);
         let start = self.top.pos;
         let end = word_end(text.as_bytes(), start + 1);
@@ -165,11 +184,32 @@ impl Lexer<'_> {
 
     /// Runs over text that a conditional leaves out, to the text that is read next.
     fn skip_branch(&mut self) -> Result<(), ReadError> {
-        let text = Arc::clone(&self.top.text);
-        let bytes = text.as_bytes();
         let mut depth = 0usize;
+        let mut text = Arc::clone(&self.top.text);
         let mut i = self.top.pos;
-        while let Some(&b) = bytes.get(i) {
+        loop {
+            let bytes = text.as_bytes();
+            let Some(&b) = bytes.get(i) else {
+                if self.read_on(i)? {
+                    (text, i) = (Arc::clone(&self.top.text), 0);
+                    continue;
+                }
+                return Err(self.open_branch());
+            };
+            // the line of a directive, and the whole of what hides one
+            let is_cut = match b {
+                b'\\' => self.top.has_more && escaped_end(bytes, i) >= bytes.len(),
+                b'"' | b'`' => self.lacks_line_end(i),
+                b'/' => {
+                    self.top.has_more
+                        && !matches!(comment_end(bytes, i), Ok(end) if end.unwrap_or(i + 1) < bytes.len())
+                }
+                _ => false,
+            };
+            if is_cut && self.read_on(i)? {
+                (text, i) = (Arc::clone(&self.top.text), 0);
+                continue;
+            }
             i = match b {
                 b'\\' => escaped_end(bytes, i),
                 // text left out may be anything, so an open string ends on its line
@@ -200,7 +240,6 @@ impl Lexer<'_> {
                 _ => i + 1,
             };
         }
-        Err(self.open_branch())
     }
 
     fn define(&mut self, spot: Spot) -> Result<(), ReadError> {
@@ -249,6 +288,9 @@ impl Lexer<'_> {
             body.push_str(if piece.starts_with("\\\n") || piece.starts_with("\\\r") { "\n" } else { piece });
             i = end;
         }
+        if i >= bytes.len() && self.top.has_more {
+            return Err(self.cut_off(spot, "macro", "the end of its line"));
+        }
         self.top.pos = i;
         self.macros.insert(name, Macro { arguments, body: body.into() });
         Ok(())
@@ -291,6 +333,7 @@ impl Lexer<'_> {
             i += 1;
         }
         if bytes.get(i) != Some(&b'(') {
+            self.ran_out.set(i >= bytes.len());
             let wanted = format!("want `{name}({}) as it is defined", names.join(", "));
             return Err(self.syntax(spot, format!("macro `{name}` without its arguments"), wanted));
         }

@@ -302,7 +302,7 @@ impl Netlist {
 }
 
 /// The names a path can begin with and the bytes each uses with its separator, shortest first.
-fn pieces(path: &str) -> Vec<(&str, usize)> {
+pub(super) fn pieces(path: &str) -> Vec<(&str, usize)> {
     if let Some(escaped) = path.strip_prefix('\\') {
         let end = escaped.find(char::is_whitespace).unwrap_or(escaped.len());
         let after = escaped[end..].trim_start();

@@ -5,7 +5,8 @@ use std::sync::Arc;
 
 use rustc_hash::FxHashMap;
 
-use crate::read::source::{Place, ReadError, Source};
+use crate::read::source::{Input, Place, ReadError, Source};
+use crate::read::window::Window;
 
 /// An offset in one of the files.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -14,45 +15,44 @@ pub(super) struct Spot {
     pub(super) offset: usize,
 }
 
-/// How far the lines of a file have been counted.
-#[derive(Debug, Clone, Copy)]
-struct Mark {
-    offset: usize,
-    line: usize,
-    column: usize,
-}
-
-const START: Mark = Mark { offset: 0, line: 1, column: 1 };
-
-/// The files given and the files they include, each read once.
+/// The files given, read piece by piece, and the files they include, each read once and kept.
 pub(super) struct Files {
-    list: Vec<(Source, Mark)>,
-    given: usize,
+    list: Vec<Window>,
+    /// Bytes that a window onto a given file takes at a time.
+    piece: usize,
     included: FxHashMap<PathBuf, usize>,
 }
 
 impl Files {
-    pub(super) fn new(sources: &[Source]) -> Self {
-        Self {
-            list: sources.iter().map(|s| (s.clone(), START)).collect(),
-            given: sources.len(),
-            included: FxHashMap::default(),
-        }
+    pub(super) fn new(piece: usize) -> Self {
+        Self { list: Vec::new(), piece, included: FxHashMap::default() }
     }
 
-    /// How many files were given.
-    pub(super) fn given(&self) -> usize {
-        self.given
+    /// Opens a given file; its number.
+    pub(super) fn open(&mut self, input: &mut Input) -> Result<usize, ReadError> {
+        self.list.push(Window::open(input, self.piece)?);
+        Ok(self.list.len() - 1)
     }
 
-    /// The text of a file.
-    pub(super) fn text(&self, file: usize) -> Arc<str> {
-        Arc::clone(&self.list[file].0.text)
+    /// Lets go of the text of a given file that has been read.
+    pub(super) fn close(&mut self, file: usize) {
+        self.list[file].close();
+    }
+
+    /// What is in memory of a file.
+    pub(super) fn window(&self, file: usize) -> &Window {
+        &self.list[file]
+    }
+
+    /// Reads on in a file; see [`Window::slide`].
+    pub(super) fn slide(&mut self, file: usize, keep: usize, needed: &[Spot]) -> Result<bool, ReadError> {
+        let needed: Vec<usize> = needed.iter().filter(|s| s.file == file).map(|s| s.offset).collect();
+        self.list[file].slide(keep, &needed)
     }
 
     /// The number of the file at `path` seen from the folder of file `from`, read now if it is new.
     pub(super) fn include(&mut self, from: usize, path: &str, at: Spot) -> Result<usize, ReadError> {
-        let path = self.list[from].0.folder.join(path);
+        let path = self.list[from].folder.join(path);
         if let Some(&file) = self.included.get(&path) {
             return Ok(file);
         }
@@ -64,34 +64,30 @@ impl Files {
             other => other,
         })?;
         let file = self.list.len();
-        self.list.push((source, START));
+        self.list.push(Window::open(&mut source.into(), 0)?);
         self.included.insert(path, file);
         Ok(file)
     }
 
     pub(super) fn place(&self, spot: Spot) -> Place {
-        let source = &self.list[spot.file].0;
-        Place::of_offset(&source.path, &source.text, spot.offset)
+        self.list[spot.file].place(spot.offset)
+    }
+
+    /// The names of all files by number.
+    pub(super) fn paths(&self) -> Vec<Arc<str>> {
+        self.list.iter().map(|w| Arc::clone(w.path())).collect()
+    }
+
+    /// Line and column like `next_place`.
+    pub(super) fn next_line_column(&mut self, spot: Spot) -> (usize, usize) {
+        self.list[spot.file].next_place(spot.offset)
     }
 
     /// Like `place`, but counts on from the last place asked for: many places of one file cost one pass.
     pub(super) fn next_place(&mut self, spot: Spot) -> Place {
-        let (source, mark) = &mut self.list[spot.file];
-        if spot.offset < mark.offset {
-            *mark = START;
-        }
-        let passed = &source.text.as_bytes()[mark.offset..spot.offset.min(source.text.len())];
-        let is_character = |b: u8| b & 0xc0 != 0x80;
-        mark.column = match passed.iter().rposition(|&b| b == b'\n') {
-            Some(i) => 1 + count(&passed[i + 1..], is_character),
-            None => mark.column + count(passed, is_character),
-        };
-        mark.line += count(passed, |b| b == b'\n');
-        mark.offset += passed.len();
-        Place::new(&source.path, mark.line, mark.column)
+        let window = &mut self.list[spot.file];
+        let (line, column) = window.next_place(spot.offset);
+        let path = Arc::clone(window.path());
+        Place::new(&path, line, column)
     }
-}
-
-fn count(bytes: &[u8], is: impl Fn(u8) -> bool) -> usize {
-    bytes.iter().filter(|&&b| is(b)).count()
 }

@@ -21,10 +21,16 @@ pub(super) enum Keyword {
 
 /// Keywords of IEEE 1364-2005, annex B, less those of configurations, which have no meaning inside modules.
 pub(super) fn keyword(word: &str) -> Option<Keyword> {
+    // most names show at their ends that they are none
+    let bytes = word.as_bytes();
+    match (bytes.first(), bytes.last()) {
+        (Some(b'a'..=b'z'), Some(b'a'..=b'z' | b'0' | b'1')) => {}
+        _ => return None,
+    }
     Some(match word {
-        "input" | "output" | "inout" | "wire" | "tri" | "tri0" | "tri1" | "triand" | "trior" | "trireg"
-        | "uwire" | "wand" | "wor" | "reg" | "integer" | "real" | "realtime" | "time" | "event"
-        | "genvar" | "parameter" | "localparam" | "specparam" | "defparam" => Keyword::Declaration,
+        "input" | "output" | "inout" | "wire" | "logic" | "tri" | "tri0" | "tri1" | "triand" | "trior"
+        | "trireg" | "uwire" | "wand" | "wor" | "reg" | "integer" | "real" | "realtime" | "time"
+        | "event" | "genvar" | "parameter" | "localparam" | "specparam" | "defparam" => Keyword::Declaration,
         "supply0" | "supply1" => Keyword::Supply,
         "assign" => Keyword::Assign,
         "and" | "nand" | "or" | "nor" | "xor" | "xnor" | "buf" | "not" | "bufif0" | "bufif1" | "notif0"

@@ -4,13 +4,15 @@
 //! up most of a netlist, are never cut into tokens: [`Lexer::skip_list`] runs over them byte by byte and stops
 //! only where a byte can change the depth of the parentheses or hide one that would.
 
+use std::cell::Cell;
 use std::sync::Arc;
 
 use rustc_hash::FxHashMap;
 
 use super::directive::{Branch, Macro};
 use super::files::{Files, Spot};
-use crate::read::source::{Place, ReadError};
+use super::marks::Marks;
+use crate::read::source::{Input, Place, ReadError};
 
 /// Includes and macros may nest this deep; a text that uses itself ends here.
 const MAX_DEPTH: usize = 64;
@@ -18,9 +20,8 @@ const MAX_DEPTH: usize = 64;
 const SPACE: u8 = 1;
 const WORD: u8 = 2;
 const DIGIT: u8 = 4;
-const LIST: u8 = 8;
 
-/// What each byte can be: white space, part of a word, a digit, a byte that matters inside a pin list.
+/// What each byte can be: white space, part of a word, a digit.
 static CLASS: [u8; 256] = classes();
 
 const fn classes() -> [u8; 256] {
@@ -31,7 +32,6 @@ const fn classes() -> [u8; 256] {
             b' ' | b'\t'..=b'\r' => SPACE,
             b'0'..=b'9' => WORD | DIGIT,
             b'a'..=b'z' | b'A'..=b'Z' | b'_' | b'$' => WORD,
-            b'(' | b')' | b';' | b'/' | b'"' | b'\\' | b'`' => LIST,
             _ => 0,
         };
         if byte == u8::MAX {
@@ -84,10 +84,10 @@ pub(super) fn comment_end(bytes: &[u8], i: usize) -> Result<Option<usize>, Unclo
     match bytes.get(i + 1) {
         Some(b'/') => {
             let rest = &bytes[i + 2..];
-            Ok(Some(i + 2 + rest.iter().position(|&b| b == b'\n').unwrap_or(rest.len())))
+            Ok(Some(i + 2 + memchr::memchr(b'\n', rest).unwrap_or(rest.len())))
         }
         Some(b'*') => {
-            let end = bytes[i + 2..].windows(2).position(|w| w == b"*/");
+            let end = memchr::memmem::find(&bytes[i + 2..], b"*/");
             end.map(|n| Some(i + n + 4)).ok_or(Unclosed { what: "comment", start: i })
         }
         _ => Ok(None),
@@ -153,10 +153,15 @@ impl Token {
     }
 }
 
-/// One text on the stack.
+/// One text on the stack; of a given file, what its window shows.
 pub(super) struct Frame {
     pub(super) text: Arc<str>,
     pub(super) pos: usize,
+    pub(super) marks: Marks,
+    /// Where in the file the text begins.
+    base: usize,
+    /// Whether text may follow in the file.
+    pub(super) has_more: bool,
     /// The file the text is, or in which the macro is used.
     pub(super) file: usize,
     /// Where the file uses the macro whose text this is; nothing for a file.
@@ -167,9 +172,11 @@ pub(super) struct Frame {
 
 impl Frame {
     fn of_file(files: &Files, file: usize, branches: usize) -> Self {
-        let text = files.text(file);
+        let window = files.window(file);
+        let text = Arc::clone(window.text());
         let pos = if text.starts_with('\u{feff}') { '\u{feff}'.len_utf8() } else { 0 };
-        Self { text, pos, file, used_at: None, branches }
+        let (base, has_more) = (window.base(), window.has_more());
+        Self { pos, marks: Marks::of(&text), text, base, has_more, file, used_at: None, branches }
     }
 }
 
@@ -181,28 +188,77 @@ pub(super) struct Lexer<'f> {
     pub(super) branches: Vec<Branch>,
     /// Bytes of macro text since a file last used one.
     pub(super) expanded: usize,
+    /// Where the module, the statement and a part of it begin, whose places must outlast the window.
+    pub(super) module: Option<Spot>,
+    pub(super) statement: Option<Spot>,
+    pub(super) part: Option<Spot>,
+    /// Whether the end of the text was met inside something since this was last cleared.
+    pub(super) ran_out: Cell<bool>,
 }
 
 impl<'f> Lexer<'f> {
     pub(super) fn new(files: &'f mut Files) -> Self {
         Self {
             files,
-            top: Frame { text: "".into(), pos: 0, file: 0, used_at: None, branches: 0 },
+            top: Frame {
+                text: "".into(),
+                pos: 0,
+                marks: Marks::default(),
+                base: 0,
+                has_more: false,
+                file: 0,
+                used_at: None,
+                branches: 0,
+            },
             below: Vec::new(),
             macros: FxHashMap::default(),
             branches: Vec::new(),
             expanded: 0,
+            module: None,
+            statement: None,
+            part: None,
+            ran_out: Cell::new(false),
         }
     }
 
     /// Goes on with a given file; macros stay defined.
-    pub(super) fn open(&mut self, file: usize) {
+    pub(super) fn open(&mut self, input: &mut Input) -> Result<(), ReadError> {
+        let file = self.files.open(input)?;
         self.top = Frame::of_file(self.files, file, self.branches.len());
+        Ok(())
+    }
+
+    /// Lets go of the given file that has been read.
+    pub(super) fn close(&mut self) {
+        self.files.close(self.top.file);
+    }
+
+    /// Reads on in the file on top, whose text from `keep` on is still needed; false when it has no more.
+    ///
+    /// The present position moves along. Offsets into the text do not.
+    #[cold]
+    pub(super) fn read_on(&mut self, keep: usize) -> Result<bool, ReadError> {
+        if !self.top.has_more {
+            return Ok(false);
+        }
+        let mut needed: Vec<Spot> = [self.module, self.statement, self.part].into_iter().flatten().collect();
+        needed.extend(self.branches.iter().map(|b| b.spot));
+        let file = self.top.file;
+        let moved = self.files.slide(file, keep, &needed)?;
+        let window = self.files.window(file);
+        self.top.has_more = window.has_more();
+        if moved {
+            self.top.text = Arc::clone(window.text());
+            self.top.base = window.base();
+            self.top.marks.set(self.top.text.as_bytes());
+            self.top.pos = self.top.pos.saturating_sub(keep);
+        }
+        Ok(moved)
     }
 
     /// The place of an offset in the top text; inside a macro, of its use in the file.
     pub(super) fn spot(&self, offset: usize) -> Spot {
-        self.top.used_at.unwrap_or(Spot { file: self.top.file, offset })
+        self.top.used_at.unwrap_or(Spot { file: self.top.file, offset: self.top.base + offset })
     }
 
     pub(super) fn place(&self, spot: Spot) -> Place {
@@ -215,12 +271,16 @@ impl<'f> Lexer<'f> {
 
     /// The error for a file that ends inside `what`, which begins at `at`.
     pub(super) fn cut_off(&self, at: Spot, what: &str, end: &str) -> ReadError {
+        self.ran_out.set(true);
         let found = format!("the file ends inside the {what} that begins here");
         self.syntax(at, found, format!("want {end} before the end; is the file cut off?"))
     }
 
     pub(super) fn unclosed(&self, open: Unclosed) -> ReadError {
         let at = self.spot(open.start);
+        if self.lacks_line_end(open.start) {
+            self.ran_out.set(true);
+        }
         match open.what {
             "string" => self.syntax(at, "this string does not end on its line", "close it with `\"`"),
             "comment" => self.cut_off(at, "comment", "`*/`"),
@@ -231,7 +291,16 @@ impl<'f> Lexer<'f> {
     /// Puts the text of a macro on the stack.
     pub(super) fn enter_macro(&mut self, text: Arc<str>, used_at: Spot) -> Result<(), ReadError> {
         let file = self.top.file;
-        let frame = Frame { text, pos: 0, file, used_at: Some(used_at), branches: self.branches.len() };
+        let frame = Frame {
+            pos: 0,
+            marks: Marks::of(&text),
+            text,
+            base: 0,
+            has_more: false,
+            file,
+            used_at: Some(used_at),
+            branches: self.branches.len(),
+        };
         self.enter(frame, used_at)
     }
 
@@ -292,7 +361,7 @@ impl<'f> Lexer<'f> {
             }
             let Some(&b) = bytes.get(i) else {
                 self.top.pos = i;
-                if self.leave()? {
+                if self.read_on(i)? || self.leave()? {
                     continue;
                 }
                 return Ok(self.token(Kind::End, i, i));
@@ -308,21 +377,34 @@ impl<'f> Lexer<'f> {
                 _ => Ok(None),
             };
             match skipped {
+                Ok(Some(end)) if self.may_go_on(end) => {
+                    self.top.pos = i;
+                    self.read_on(i)?;
+                    continue;
+                }
                 Ok(Some(end)) => {
                     self.top.pos = end;
                     continue;
                 }
                 Ok(None) => {}
+                Err(_) if self.read_on(i)? => {
+                    self.top.pos = 0;
+                    continue;
+                }
                 Err(open) => return Err(self.unclosed(open)),
             }
             let (kind, start, end) = match b {
                 b'"' => match string_end(bytes, i) {
                     Ok(end) => (Kind::Text, i, end),
+                    Err(_) if self.lacks_line_end(i) && self.read_on(i)? => {
+                        self.top.pos = 0;
+                        continue;
+                    }
                     Err(open) => return Err(self.unclosed(open)),
                 },
                 b'\\' => (Kind::Escaped, i + 1, escaped_end(bytes, i)),
                 _ if is_digit(b) => (Kind::Number, i, number_end(bytes, i)),
-                _ if is_word(b) => (Kind::Word, i, word_end(bytes, i)),
+                _ if is_word(b) => (Kind::Word, i, self.top.marks.word_end(i).min(bytes.len())),
                 _ if b.is_ascii_graphic() => (Kind::Symbol(b), i, i + 1),
                 _ => {
                     let c = self.top.text.get(i..).and_then(|t| t.chars().next()).unwrap_or_default();
@@ -330,6 +412,11 @@ impl<'f> Lexer<'f> {
                     return Err(self.syntax(self.spot(i), found, "want ASCII text outside of comments"));
                 }
             };
+            if self.may_go_on(end) {
+                self.top.pos = i;
+                self.read_on(i)?;
+                continue;
+            }
             if kind == Kind::Escaped && start == end {
                 let wanted = "want a name right after the backslash of an escaped identifier";
                 return Err(self.syntax(self.spot(i), "a backslash without a name", wanted));
@@ -344,55 +431,138 @@ impl<'f> Lexer<'f> {
         Token { kind, spot: self.spot(start - shift), start, end }
     }
 
+    /// Whether what ends at `end` might be longer, or mean something else, with the text that follows the window.
+    fn may_go_on(&self, end: usize) -> bool {
+        self.top.has_more && end + 1 >= self.top.text.len()
+    }
+
+    /// Whether the window ends on the line of `i`.
+    pub(super) fn lacks_line_end(&self, i: usize) -> bool {
+        self.top.has_more && memchr::memchr(b'\n', &self.top.text.as_bytes()[i..]).is_none()
+    }
+
     /// Runs to the parenthesis that closes `depth` open ones, of the statement that begins at `statement`.
     pub(super) fn skip_list(&mut self, mut depth: usize, statement: Spot) -> Result<(), ReadError> {
         loop {
-            let bytes = self.top.text.as_bytes();
-            let mut i = self.top.pos;
-            let directive = loop {
-                let Some(&b) = bytes.get(i) else { break false };
-                if CLASS[usize::from(b)] & LIST == 0 {
-                    i += 1;
-                    continue;
-                }
-                let end = match b {
-                    b')' => {
-                        depth -= 1;
-                        if depth == 0 {
-                            self.top.pos = i + 1;
-                            return Ok(());
-                        }
-                        Ok(i + 1)
-                    }
-                    b'(' if is_attribute(bytes, i) => attribute_end(bytes, i),
-                    b'(' => {
-                        depth += 1;
-                        Ok(i + 1)
-                    }
-                    b'/' => comment_end(bytes, i).map(|end| end.unwrap_or(i + 1)),
-                    b'"' => string_end(bytes, i),
-                    b'\\' => Ok(escaped_end(bytes, i)),
-                    b'`' => break true,
-                    _ => {
-                        let found = format!(
-                            "`;` inside the parentheses of the statement that begins at {}",
-                            self.place(statement)
-                        );
-                        return Err(self.syntax(self.spot(i), found, "close them with `)` before `;`"));
-                    }
-                };
-                i = match end {
-                    Ok(end) => end,
-                    Err(open) => return Err(self.unclosed(open)),
-                };
+            let (i, stop) = match self.top.run_list(&mut depth) {
+                Stop::Closed => return Ok(()),
+                Stop::End => (self.top.text.len(), None),
+                Stop::At(i, stop) => (i, Some(stop)),
             };
             self.top.pos = i;
-            if directive {
-                self.directive()?;
-            } else if !self.leave()? {
-                return Err(self.cut_off(statement, "statement", "`)` and `;`"));
+            match stop {
+                Some(Thing::Directive) => self.directive()?,
+                Some(Thing::Semicolon) => {
+                    let found = format!(
+                        "`;` inside the parentheses of the statement that begins at {}",
+                        self.place(statement)
+                    );
+                    return Err(self.syntax(self.spot(i), found, "close them with `)` before `;`"));
+                }
+                Some(Thing::Unclosed(_)) | None if self.read_on(i)? => {}
+                Some(Thing::Unclosed(open)) => return Err(self.unclosed(open)),
+                Some(Thing::Cut) => {
+                    self.read_on(i)?;
+                }
+                None if self.leave()? => {}
+                None => return Err(self.cut_off(statement, "statement", "`)` and `;`")),
             }
         }
+    }
+}
+
+/// Why a run over a pin list stops.
+enum Stop {
+    /// The last parenthesis is closed, and the position behind it.
+    Closed,
+    /// The text ends.
+    End,
+    At(usize, Thing),
+}
+
+enum Thing {
+    Directive,
+    Semicolon,
+    /// Something that the end of the window may have cut.
+    Cut,
+    Unclosed(Unclosed),
+}
+
+impl Frame {
+    /// Runs over a pin list from the present position on, as far as the text goes without help.
+    fn run_list(&mut self, depth: &mut usize) -> Stop {
+        let bytes = self.text.as_bytes();
+        let mut start = self.pos;
+        'jump: loop {
+            for i in self.marks.from(start) {
+                let byte = bytes.get(i).copied().unwrap_or_default();
+                if byte == b')' {
+                    *depth -= 1;
+                    if *depth == 0 {
+                        self.pos = i + 1;
+                        return Stop::Closed;
+                    }
+                    continue;
+                }
+                let next = bytes.get(i + 1);
+                if byte == b'(' && next.is_some_and(|&b| b != b'*') {
+                    *depth += 1;
+                    continue;
+                }
+                let end = match byte {
+                    _ if next.is_none() && self.has_more => return Stop::At(i, Thing::Cut),
+                    b'(' if next.is_some() => attribute_end(bytes, i),
+                    b'(' => {
+                        *depth += 1;
+                        continue;
+                    }
+                    b'\\' => Ok(escaped_end(bytes, i)),
+                    b'/' => match comment_end(bytes, i) {
+                        Ok(None) => continue,
+                        Ok(Some(end)) => Ok(end),
+                        Err(open) => Err(open),
+                    },
+                    b'"' => string_end(bytes, i),
+                    b'`' => return Stop::At(i, Thing::Directive),
+                    b';' => return Stop::At(i, Thing::Semicolon),
+                    _ => return Stop::End,
+                };
+                match end {
+                    Ok(end) if self.has_more && end + 1 >= bytes.len() => return Stop::At(i, Thing::Cut),
+                    Ok(end) => {
+                        start = end;
+                        continue 'jump;
+                    }
+                    Err(open) => return Stop::At(i, Thing::Unclosed(open)),
+                }
+            }
+            return Stop::End;
+        }
+    }
+
+    /// The plain or escaped name at or after `i`, its first byte and its end, when all of it and the byte
+    /// after it are in the text.
+    #[inline]
+    pub(super) fn name_from(&self, mut i: usize) -> Option<(usize, usize)> {
+        let bytes = self.text.as_bytes();
+        i = self.solid_from(i)?;
+        let first = *bytes.get(i)?;
+        let end = match first {
+            b'\\' => escaped_end(bytes, i),
+            _ if is_word(first) && !is_digit(first) => self.marks.word_end(i),
+            _ => return None,
+        };
+        (end + 1 < bytes.len()).then_some((i, end))
+    }
+
+    /// The first byte at or after `i` that is no white space.
+    #[inline]
+    pub(super) fn solid_from(&self, mut i: usize) -> Option<usize> {
+        let bytes = self.text.as_bytes();
+        while is_space(*bytes.get(i)?) {
+            i += 1;
+        }
+        Some(i)
     }
 }
 

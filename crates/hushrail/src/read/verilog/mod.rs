@@ -11,12 +11,17 @@
 //! * A module with an empty body, no instance and no assign, is a black box and counts as a leaf too.
 //! * A module that holds assigns only counts nothing: wires are no cells.
 //!
-//! Pin lists are run over byte by byte without cutting them into tokens. Nothing is kept of an instance but its
-//! count, so memory grows with masters; only instances of modules that have a body keep their names, for the
-//! paths of [`Netlist::counts_under`]. Whether a master has a body is known when its module comes first; when
-//! some module comes after its use the text is read a second time, which costs time and no memory.
+//! Text is read through a window that slides ([`read_verilog_from`]). Bit masks of the bytes that mean something in
+//! a pin list are made for a window at a time; the commonest statements, one named instance and one declared net,
+//! are taken from the masks without cutting them into tokens, and anything unusual falls back to the careful way.
+//! Nothing is kept of an instance but its count, so memory grows with masters; only instances of modules that have a
+//! body keep their names, for the paths of [`Netlist::counts_under`]. Whether a master has a body is known when its
+//! module comes first; when some module comes after its use the text is read a second time, which costs time and no
+//! memory.
 //!
-//! Two instances with one name are reported where names are kept, that is for modules with a body.
+//! What a count does not look at: the inside of pin and port lists, where only parentheses must balance, and whether
+//! names of nets are declared. Two instances with one name are reported where names are kept, that is for modules
+//! with a body. [`connect`] checks all of it.
 //!
 //! # Example
 //! ```
@@ -37,12 +42,15 @@
 //! # Ok::<(), hushrail::read::ReadError>(())
 //! ```
 
+pub mod connect;
 mod directive;
 mod elaborate;
 mod files;
 mod keyword;
 mod lex;
+mod marks;
 mod parse;
+mod phrase;
 mod range;
 #[cfg(test)]
 mod tests;
@@ -50,7 +58,8 @@ mod tests;
 use indexmap::{IndexMap, IndexSet};
 use rustc_hash::{FxBuildHasher, FxHashMap};
 
-use super::source::{Place, ReadError, Source};
+use super::source::{Input, Place, ReadError, Source};
+use super::window::PIECE;
 
 /// The modules of one or more Verilog files and what each holds.
 #[derive(Debug, Clone)]
@@ -109,16 +118,35 @@ fn too_many(at: Place, name: &str) -> ReadError {
 /// modules of one instance name; an instance array has an end that is not a whole number, or too many members;
 /// a macro is not defined; an included file cannot be read; there is no module.
 pub fn read_verilog(sources: &[Source]) -> Result<Netlist, ReadError> {
-    let mut files = files::Files::new(sources);
-    let mut net = parse::parse(&mut files, None)?;
-    if let Some(bodies) = parse::missing_names(&net) {
-        net = parse::parse(&mut files, Some(&bodies))?;
+    let mut inputs: Vec<Input> = sources.iter().cloned().map(Input::from).collect();
+    read_verilog_from(&mut inputs)
+}
+
+/// Reads structural Verilog piece by piece from files or streams that belong together, in order.
+///
+/// Memory does not grow with the files, but for the files that they include. A stream can be read once only:
+/// when one of its modules comes before a module that it instantiates, counts are the same, but paths through
+/// such instances are not known.
+///
+/// # Errors
+/// As for [`read_verilog`], and an input cannot be read.
+///
+/// # Example
+/// ```
+/// use hushrail::read::{Input, verilog::read_verilog_from};
+/// let text = "module top; inv_1 u1 (), u2 (); endmodule";
+/// let net = read_verilog_from(&mut [Input::stream("-", text.as_bytes())])?;
+/// assert_eq!(net.counts(None)?.total(), 2);
+/// # Ok::<(), hushrail::read::ReadError>(())
+/// ```
+pub fn read_verilog_from(inputs: &mut [Input]) -> Result<Netlist, ReadError> {
+    read_in_pieces(inputs, PIECE)
+}
+
+fn read_in_pieces(inputs: &mut [Input], piece: usize) -> Result<Netlist, ReadError> {
+    let net = parse::parse(inputs, None, piece)?;
+    match parse::missing_names(&net) {
+        Some(bodies) if inputs.iter().all(Input::is_lasting) => parse::parse(inputs, Some(&bodies), piece),
+        _ => Ok(net),
     }
-    if net.modules.is_empty() {
-        let wanted = "Verilog module";
-        return Err(sources
-            .first()
-            .map_or_else(|| Source::from_text("", "").nothing(wanted), |s| s.nothing(wanted)));
-    }
-    Ok(net)
 }

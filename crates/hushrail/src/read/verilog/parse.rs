@@ -7,22 +7,36 @@ use super::files::{Files, Spot};
 use super::keyword::{Keyword, keyword};
 use super::lex::{Kind, Lexer, Token};
 use super::{Child, Module, Netlist};
-use crate::read::source::ReadError;
+use crate::read::source::{Input, ReadError, Source};
 
-/// Reads the given files in order, as one text.
+/// Reads the inputs in order, as one text, in pieces of about `piece` bytes.
 ///
 /// Instance names are kept for masters that `bodies` marks as modules with a body; without it, for those whose
 /// module came before.
-pub(super) fn parse(files: &mut Files, bodies: Option<&[bool]>) -> Result<Netlist, ReadError> {
-    let given = files.given();
+pub(super) fn parse(
+    inputs: &mut [Input],
+    bodies: Option<&[bool]>,
+    piece: usize,
+) -> Result<Netlist, ReadError> {
+    let mut files = Files::new(piece);
     let mut parser = Parser {
-        lex: Lexer::new(files),
+        lex: Lexer::new(&mut files),
         bodies,
         net: Netlist { names: IndexSet::default(), modules: Vec::new(), defined: FxHashMap::default() },
+        heads: FxHashMap::default(),
     };
-    for file in 0..given {
-        parser.lex.open(file);
+    for input in &mut *inputs {
+        parser.lex.open(input)?;
         parser.file()?;
+        parser.lex.close();
+    }
+    if parser.net.modules.is_empty() {
+        let wanted = "Verilog module";
+        return Err(if inputs.is_empty() {
+            Source::from_text("", "").nothing(wanted)
+        } else {
+            parser.lex.files.window(0).nothing(wanted)
+        });
     }
     Ok(parser.net)
 }
@@ -31,54 +45,33 @@ pub(super) struct Parser<'f> {
     pub(super) lex: Lexer<'f>,
     bodies: Option<&'f [bool]>,
     net: Netlist,
+    /// What the first words of common statements of this module are.
+    heads: FxHashMap<Box<str>, Head>,
+}
+
+/// What a common statement begins with.
+#[derive(Debug, Clone, Copy)]
+enum Head {
+    /// A master whose instances need no names: its position in the module's list.
+    Leaf(usize),
+    /// A declaration of nets or ports.
+    Declaration,
 }
 
 impl Parser<'_> {
     fn file(&mut self) -> Result<(), ReadError> {
         loop {
             let token = self.lex.next()?;
-            match (token.kind, self.keyword(token)) {
+            match (token.kind, self.lex.keyword(token)) {
                 (Kind::End, _) => return Ok(()),
                 (_, Some(Keyword::Module)) => self.module(token.spot)?,
-                (_, Some(Keyword::Behaviour)) => return Err(self.behaviour(token)),
+                (_, Some(Keyword::Behaviour)) => return Err(self.lex.behaviour(token)),
                 _ => {
                     let found = format!("{} outside of a module", self.lex.shown(token));
                     return Err(self.lex.syntax(token.spot, found, "want `module` or the end of the file"));
                 }
             }
         }
-    }
-
-    fn keyword(&self, token: Token) -> Option<Keyword> {
-        if token.kind == Kind::Word { keyword(self.lex.text(token)) } else { None }
-    }
-
-    /// Whether the token is a name somebody chose.
-    fn is_name(&self, token: Token) -> bool {
-        match token.kind {
-            Kind::Word => {
-                let text = self.lex.text(token);
-                !text.starts_with('$') && keyword(text).is_none()
-            }
-            Kind::Escaped => true,
-            _ => false,
-        }
-    }
-
-    fn behaviour(&self, token: Token) -> ReadError {
-        let found = format!("{} is behaviour, not structure", self.lex.shown(token));
-        let wanted =
-            "only structural netlists (instances, nets, assigns) can be counted; synthesise it first";
-        self.lex.syntax(token.spot, found, wanted)
-    }
-
-    /// The error for a token that does not fit into the statement that begins at `statement`.
-    pub(super) fn misfit(&self, token: Token, statement: Spot, wanted: &str) -> ReadError {
-        if token.kind == Kind::End {
-            return self.lex.cut_off(statement, "statement", wanted);
-        }
-        let found = format!("{} does not fit here", self.lex.shown(token));
-        self.lex.syntax(token.spot, found, format!("want {wanted}"))
     }
 
     fn intern(&mut self, token: Token) -> usize {
@@ -91,9 +84,10 @@ impl Parser<'_> {
 
     /// Reads a module whose keyword, at `start`, has been read.
     fn module(&mut self, start: Spot) -> Result<(), ReadError> {
+        self.lex.module = Some(start);
         let token = self.lex.next()?;
-        if !self.is_name(token) {
-            return Err(self.misfit(token, start, "the name of the module"));
+        if !self.lex.is_name(token) {
+            return Err(self.lex.misfit(token, start, "the name of the module"));
         }
         let name = self.intern(token);
         let at = self.lex.files.next_place(token.spot);
@@ -113,36 +107,107 @@ impl Parser<'_> {
             has_assigns: false,
         };
         self.header(start)?;
+        self.heads.clear();
         loop {
+            if self.common(&mut module)? {
+                continue;
+            }
             let token = self.lex.next()?;
-            match self.keyword(token) {
+            self.lex.statement = Some(token.spot);
+            match self.lex.keyword(token) {
                 None if token.kind == Kind::End => {
                     let what = format!("module `{}`", self.net.names[name]);
                     return Err(self.lex.cut_off(start, &what, "`endmodule`"));
                 }
                 None if token.is(b';') => {}
-                None if self.is_name(token) => self.instances(token, false, &mut module)?,
+                None if self.lex.is_name(token) => self.instances(token, false, &mut module)?,
                 Some(Keyword::Gate) => self.instances(token, true, &mut module)?,
                 Some(Keyword::Declaration | Keyword::Supply) => {
-                    module.has_assigns |= self.declaration(token)?;
+                    let word = self.lex.text(token);
+                    if !self.heads.contains_key(word) {
+                        self.heads.insert(word.into(), Head::Declaration);
+                    }
+                    module.has_assigns |= self.lex.declaration(token)?;
                 }
                 Some(Keyword::Assign) => {
-                    self.declaration(token)?;
+                    self.lex.declaration(token)?;
                     module.has_assigns = true;
                 }
                 Some(Keyword::EndModule) => break,
-                Some(Keyword::Behaviour) => return Err(self.behaviour(token)),
+                Some(Keyword::Behaviour) => return Err(self.lex.behaviour(token)),
                 Some(Keyword::Module) => {
                     let found = format!("a module inside module `{}`", self.net.names[name]);
                     return Err(self.lex.syntax(token.spot, found, "want `endmodule` first"));
                 }
-                None if token.kind == Kind::Word => return Err(self.behaviour(token)),
-                _ => return Err(self.misfit(token, token.spot, "an instance, a declaration or `endmodule`")),
+                None if token.kind == Kind::Word => return Err(self.lex.behaviour(token)),
+                _ => {
+                    return Err(self.lex.misfit(
+                        token,
+                        token.spot,
+                        "an instance, a declaration or `endmodule`",
+                    ));
+                }
             }
         }
+        self.lex.statement = None;
+        self.lex.module = None;
         self.net.defined.insert(name, self.net.modules.len());
         self.net.modules.push(module);
         Ok(())
+    }
+
+    /// Reads a statement of the two commonest forms, one instance with a name and one declaration of one net, or
+    /// nothing when anything about it is unusual.
+    ///
+    /// What is taken here is taken as the careful way would; `tests` hold the two against each other.
+    fn common(&mut self, module: &mut Module) -> Result<bool, ReadError> {
+        let frame = &self.lex.top;
+        let start = frame.pos;
+        let Some((head_start, head_end)) = frame.name_from(start) else { return Ok(false) };
+        let head = frame.text.get(head_start..head_end).unwrap_or_default();
+        let Some(&head_kind) = self.heads.get(head) else { return Ok(false) };
+        let Some((name_start, name_end)) = frame.name_from(head_end) else { return Ok(false) };
+        let name = frame.text.get(name_start..name_end).unwrap_or_default();
+        let Some(mark) = frame.solid_from(name_end) else { return Ok(false) };
+        let bytes = frame.text.as_bytes();
+        if name.len() == 1 && name.starts_with('\\') || name.starts_with('$') || keyword(name).is_some() {
+            return Ok(false);
+        }
+        match head_kind {
+            Head::Declaration if bytes.get(mark) == Some(&b';') => {
+                self.lex.top.pos = mark + 1;
+                Ok(true)
+            }
+            Head::Leaf(place) if bytes.get(mark) == Some(&b'(') => {
+                if matches!(bytes.get(mark + 1), None | Some(b'*')) {
+                    return Ok(false);
+                }
+                let spot = self.lex.spot(head_start);
+                self.lex.statement = Some(spot);
+                self.lex.top.pos = mark + 1;
+                self.lex.skip_list(1, spot)?;
+                let frame = &self.lex.top;
+                match frame.solid_from(frame.pos) {
+                    Some(end) if frame.text.as_bytes()[end] == b';' => {
+                        self.lex.top.pos = end + 1;
+                        if let Some(count) = module.cells.get_index_mut(place).map(|(_, n)| n)
+                            && let Some(more) = count.checked_add(1)
+                        {
+                            *count = more;
+                            return Ok(true);
+                        }
+                        Err(self.lex.too_many("number of instances", spot))
+                    }
+                    _ => {
+                        let master = module.cells.get_index(place).map_or(0, |(&m, _)| m);
+                        self.add(module, master, None, spot)?;
+                        self.more_instances(master, spot, false, module)?;
+                        Ok(true)
+                    }
+                }
+            }
+            _ => Ok(false),
+        }
     }
 
     /// Parameter list, port list and the semicolon after them.
@@ -151,7 +216,7 @@ impl Parser<'_> {
         if token.is(b'#') {
             token = self.lex.next()?;
             if !token.is(b'(') {
-                return Err(self.misfit(token, start, "`(` and the parameters"));
+                return Err(self.lex.misfit(token, start, "`(` and the parameters"));
             }
             self.lex.skip_list(1, start)?;
             token = self.lex.next()?;
@@ -160,57 +225,10 @@ impl Parser<'_> {
             self.lex.skip_list(1, start)?;
             token = self.lex.next()?;
         }
-        if token.is(b';') { Ok(()) } else { Err(self.misfit(token, start, "`;` after the module's ports")) }
-    }
-
-    /// Runs over a declaration or assignment; returns whether it holds an `=`.
-    ///
-    /// Two names side by side mean that a semicolon is missing, and an instance would be lost.
-    fn declaration(&mut self, head: Token) -> Result<bool, ReadError> {
-        let (mut depth, mut has_equals) = (0usize, false);
-        // whether the token before ends an operand, and the symbol it is
-        let (mut operand, mut symbol_before) = (false, None);
-        loop {
-            let token = self.lex.next()?;
-            let symbol = if let Kind::Symbol(symbol) = token.kind { Some(symbol) } else { None };
-            let before = std::mem::replace(&mut symbol_before, symbol);
-            match token.kind {
-                Kind::End => return Err(self.misfit(token, head.spot, "`;`")),
-                Kind::Word | Kind::Escaped | Kind::Number | Kind::Text => {
-                    if operand {
-                        return Err(self.misfit(token, head.spot, "`;` or an operator"));
-                    }
-                    match self.keyword(token) {
-                        Some(Keyword::Declaration | Keyword::Supply | Keyword::Strength | Keyword::Inner) => {
-                        }
-                        // the digits of `4'b 01` may stand apart from the base, and a name follows a delay
-                        None => {
-                            operand = match before {
-                                Some(b'\'') => !is_base(self.lex.text(token)),
-                                Some(b'#') => false,
-                                _ => true,
-                            }
-                        }
-                        Some(_) => return Err(self.misfit(token, head.spot, "`;` before it")),
-                    }
-                }
-                Kind::Symbol(symbol) => {
-                    operand = false;
-                    match symbol {
-                        b'(' | b'[' | b'{' => depth += 1,
-                        b')' | b']' | b'}' if depth > 0 => depth -= 1,
-                        b')' | b']' | b'}' => {
-                            return Err(self.misfit(token, head.spot, "its opening counterpart before it"));
-                        }
-                        b';' if depth == 0 => return Ok(has_equals),
-                        b';' => {
-                            return Err(self.misfit(token, head.spot, "all parentheses closed before it"));
-                        }
-                        b'=' => has_equals = true,
-                        _ => {}
-                    }
-                }
-            }
+        if token.is(b';') {
+            Ok(())
+        } else {
+            Err(self.lex.misfit(token, start, "`;` after the module's ports"))
         }
     }
 
@@ -218,62 +236,79 @@ impl Parser<'_> {
     fn instances(&mut self, head: Token, gate: bool, module: &mut Module) -> Result<(), ReadError> {
         let master = self.intern(head);
         let keep = self.keeps_names(master);
+        let is_common = head.kind == Kind::Word && !gate && !keep;
+        let common = is_common.then(|| Box::<str>::from(self.lex.text(head)));
         let mut token = self.lex.next()?;
-        if gate && token.is(b'(') {
-            let inner = self.lex.next()?;
-            if matches!(self.keyword(inner), Some(Keyword::Supply | Keyword::Strength)) {
-                self.lex.skip_list(1, head.spot)?;
-                token = self.lex.next()?;
-            } else {
-                self.lex.back(inner);
-            }
+        if gate {
+            token = self.lex.after_strength(token, head.spot)?;
         }
-        if token.is(b'#') {
-            let value = self.lex.next()?;
-            match value.kind {
-                Kind::Symbol(b'(') => self.lex.skip_list(1, head.spot)?,
-                Kind::Number | Kind::Word | Kind::Escaped => {}
-                _ => return Err(self.misfit(value, head.spot, "a delay or parameters after `#`")),
-            }
-            token = self.lex.next()?;
+        token = self.lex.after_hash(token, head.spot)?;
+        self.instance(token, master, head.spot, gate, module)?;
+        if let Some(name) = common
+            && let Some(place) = module.cells.get_index_of(&master)
+        {
+            self.heads.insert(name, Head::Leaf(place));
         }
+        self.more_instances(master, head.spot, gate, module)
+    }
+
+    /// Reads on after the pins of an instance, to the semicolon.
+    fn more_instances(
+        &mut self,
+        master: usize,
+        statement: Spot,
+        gate: bool,
+        module: &mut Module,
+    ) -> Result<(), ReadError> {
         loop {
-            let mut range = None;
-            if self.is_name(token) {
-                let at = token.spot;
-                let name = keep.then(|| Box::<str>::from(self.lex.text(token)));
-                token = self.lex.next()?;
-                if token.is(b'[') {
-                    range = Some(self.range(head.spot)?);
-                    token = self.lex.next()?;
-                }
-                if !token.is(b'(') {
-                    return Err(self.misfit(token, head.spot, "`(` and the pins of the instance"));
-                }
-                if let Some(name) = name {
-                    if module.children.contains_key(&name) {
-                        let found = format!(
-                            "module `{}` has two instances named `{name}`",
-                            self.net.names[module.name]
-                        );
-                        return Err(self.lex.syntax(at, found, "want one name for each instance"));
-                    }
-                    module.children.insert(name, Child { master, range });
-                }
-            } else if !(gate && token.is(b'(')) {
-                return Err(self.misfit(token, head.spot, "the name of the instance"));
-            }
-            self.lex.skip_list(1, head.spot)?;
-            self.add(module, master, range, head.spot)?;
-            token = self.lex.next()?;
+            let token = self.lex.next()?;
             if token.is(b';') {
                 return Ok(());
             }
             if !token.is(b',') {
-                return Err(self.misfit(token, head.spot, "`,` or `;` after the pins of an instance"));
+                return Err(self.lex.misfit(token, statement, "`,` or `;` after the pins of an instance"));
             }
-            token = self.lex.next()?;
+            let token = self.lex.next()?;
+            self.instance(token, master, statement, gate, module)?;
         }
+    }
+
+    /// Reads one instance, its name and pins, from its first token on.
+    fn instance(
+        &mut self,
+        mut token: Token,
+        master: usize,
+        statement: Spot,
+        gate: bool,
+        module: &mut Module,
+    ) -> Result<(), ReadError> {
+        let keep = self.keeps_names(master);
+        let mut range = None;
+        if self.lex.is_name(token) {
+            let at = token.spot;
+            self.lex.part = Some(at);
+            let name = keep.then(|| Box::<str>::from(self.lex.text(token)));
+            token = self.lex.next()?;
+            if token.is(b'[') {
+                range = Some(self.lex.range(statement)?);
+                token = self.lex.next()?;
+            }
+            if !token.is(b'(') {
+                return Err(self.lex.misfit(token, statement, "`(` and the pins of the instance"));
+            }
+            if let Some(name) = name {
+                if module.children.contains_key(&name) {
+                    let found =
+                        format!("module `{}` has two instances named `{name}`", self.net.names[module.name]);
+                    return Err(self.lex.syntax(at, found, "want one name for each instance"));
+                }
+                module.children.insert(name, Child { master, range });
+            }
+        } else if !(gate && token.is(b'(')) {
+            return Err(self.lex.misfit(token, statement, "the name of the instance"));
+        }
+        self.lex.skip_list(1, statement)?;
+        self.add(module, master, range, statement)
     }
 
     fn keeps_names(&self, master: usize) -> bool {
@@ -292,18 +327,9 @@ impl Parser<'_> {
     ) -> Result<(), ReadError> {
         let count = module.cells.entry(master).or_insert(0);
         let sum = super::width(range).and_then(|n| count.checked_add(n));
-        *count = sum.ok_or_else(|| self.too_many(&self.net.names[master], at))?;
+        *count = sum.ok_or_else(|| self.lex.too_many(&self.net.names[master], at))?;
         Ok(())
     }
-
-    pub(super) fn too_many(&self, name: &str, at: Spot) -> ReadError {
-        super::too_many(self.lex.place(at), name)
-    }
-}
-
-/// Whether the text after the quote of a based number is the base alone.
-fn is_base(text: &str) -> bool {
-    text.strip_prefix(['s', 'S']).unwrap_or(text).len() == 1
 }
 
 /// Which masters are modules with a body, when some module lacks the names of such children.

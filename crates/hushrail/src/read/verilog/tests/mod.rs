@@ -8,7 +8,24 @@ use super::*;
 use crate::read::counts::InstanceCounts;
 
 fn read(text: &str) -> Result<Netlist, ReadError> {
-    read_verilog(&[Source::from_text("n.v", text)])
+    let whole = read_verilog(&[Source::from_text("n.v", text)]);
+    // a window that slides at every few bytes must not change anything
+    for piece in [4, 7, 61] {
+        let pieces = read_in_pieces(&mut [Input::in_pieces("n.v", text)], piece);
+        let shown =
+            |net: &Result<Netlist, ReadError>| net.as_ref().map(everything).map_err(ToString::to_string);
+        assert_eq!(shown(&pieces), shown(&whole), "in pieces of {piece} bytes: {text}");
+    }
+    whole
+}
+
+/// All that is known without a second reading.
+fn everything(net: &Netlist) -> String {
+    let modules = net.modules.iter().map(|m| {
+        let cells: Vec<String> = m.cells.iter().map(|(&k, n)| format!("{}={n}", net.names[k])).collect();
+        format!("{} {} {} {}", net.names[m.name], m.at, m.has_assigns, cells.join(" "))
+    });
+    modules.collect::<Vec<_>>().join("\n")
 }
 
 /// Counts under the only top, as `name=count` in order.
