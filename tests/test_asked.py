@@ -15,7 +15,7 @@ TABLES = """
 budget_v = 0.05
 cells = ["inv"]
 [awake.loads]
-core = { law = "constant", current_a = 2e-5 }
+core = { law = "constant", current_a = 2e-4 }
 
 [transition]
 schemes = ["footer"]
@@ -49,7 +49,7 @@ def study(small: Path) -> Path:
 
 def test_tables_answer_as_the_calls_do(study: Path) -> None:
     own = asked.awake(study)
-    assert own == awake.domains(study, {"core": awake.Load.constant(2e-5)}, budget_v=0.05, cells=["inv"])
+    assert own == awake.domains(study, {"core": awake.Load.constant(2e-4)}, budget_v=0.05, cells=["inv"])
     found = asked.transitions(study)
     assert found == transition.transitions(
         study,
