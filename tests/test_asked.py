@@ -87,8 +87,10 @@ def test_header_and_footer_share_the_budget(study: Path) -> None:
     found = asked.awake(study)
     own = [s for s in found.sizes if s.scheme == "both"]
     assert [s.side for s in own] == ["header", "footer"]
-    for h, f in zip(own[0].size.corners, own[1].size.corners, strict=True):
-        assert 0.6 * 0.05 < h.droop_v + f.droop_v <= 0.05 * (1 + 1e-9)
+    pairs = zip(own[0].size.corners, own[1].size.corners, strict=True)
+    lost = [h.droop_v + f.droop_v for h, f in pairs]
+    # a whole finger of a dozen is the most that rounding up may leave unused
+    assert 0.8 * 0.05 < max(lost) <= 0.05 * (1 + 1e-9)
     single = {s.scheme: s.size.width_m for s in found.sizes}
     assert own[0].size.width_m >= single["header"]
     assert own[1].size.width_m >= single["footer"]

@@ -12,8 +12,8 @@
 //! | stacked switch | `stacked` | off devices in series: the node between reverse-biases them | twice the resistance | where GIDL or gate current of the outer device rules |
 //! | overdrive asleep (super cut-off) | `overdrive_v` | channel current falls a decade a swing | pump, oxide stress | GIDL floor (Kawaguchi et al., 1998/2000) and the oxide rule |
 //! | boost awake | `boost_v` | on-resistance | pump while awake, stress over the whole channel | thick oxide needed (Inukai et al., CICC 2000) |
-//! | well bias of the switch | `well_bias_v` (negative: forward) | its threshold | generator, well charge | band-to-band tunnelling (Keshavarzi et al., 1999) |
-//! | well bias of the block | `nwell_bias_v`, `pwell_bias_v`, `nwell`, `pwell` | thresholds of the block | triple well, slow transitions | the same, sooner on newer processes; forward below 0.5 V (Narendra et al., JSSC 2003) |
+//! | well bias of the switch | `well_bias_v`, `awake_well_bias_v` (negative: forward) | its threshold | generator, well charge | band-to-band tunnelling (Keshavarzi et al., 1999) |
+//! | well bias of the block | `nwell_bias_v`, `pwell_bias_v`, `awake_nwell_bias_v`, `awake_pwell_bias_v`, `nwell`, `pwell` | thresholds of the block | triple well, slow transitions | the same, sooner on newer processes; forward below 0.5 V (Narendra et al., JSSC 2003) |
 //! | body tied to gate | `body_to_gate` | threshold follows the gate | a well of its own | supplies below about 0.6 V only (Assaderaghi et al., 1994) |
 //! | clamped rail, state kept | `header_clamp`, `footer_clamp` | the rail stops at a diode or follower | the clamp's width; the clamped block leaks | the clamp level follows the logarithm of the leakage (Kumagai et al., VLSI 1998) |
 //! | source bias, second supply | `held_supply_v`, `held_ground_v` | the rail rests at a level chosen | a supply, its losses | the retention voltage of what must be kept |
