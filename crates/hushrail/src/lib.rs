@@ -61,4 +61,5 @@ pub mod optimum;
 pub mod physics;
 pub mod read;
 pub mod standby;
+pub mod states;
 pub mod transition;

@@ -2,13 +2,14 @@
 
 use std::path::Path;
 
-const ROOMS: [&str; 14] = [
+const ROOMS: [&str; 15] = [
     "physics",
     "corner",
     "read",
     "device",
     "circuit",
     "cell",
+    "states",
     "block",
     "standby",
     "awake",

@@ -8,6 +8,7 @@ use serde::{Deserialize, Serialize};
 use crate::cell::{Cell, CellReader};
 use crate::read::counts::InstanceCounts;
 use crate::read::deck::Note;
+pub use crate::read::pattern::fits_pattern;
 use crate::read::source::{Place, ReadError, nearest};
 
 /// What to do with a master that has no transistor netlist.
@@ -32,6 +33,8 @@ pub enum StateWeights {
     Uniform,
     /// Conditions (products of pins, such as `A&!B`) and their weights; scaled to add up to one.
     Given(IndexMap<String, f64>),
+    /// A weight for every state, as [`BoundCell::states`](crate::cell::BoundCell::states) numbers them; scaled likewise.
+    ByState(Vec<f64>),
 }
 
 /// One kind of cell in a block.
@@ -78,27 +81,6 @@ impl Block {
     pub fn covered(&self) -> u64 {
         self.cells.iter().map(|c| c.count).sum()
     }
-}
-
-/// Whether `name` fits a pattern in which `*` stands for any run of characters.
-pub fn fits_pattern(pattern: &str, name: &str) -> bool {
-    let mut parts = pattern.split('*');
-    let Some(first) = parts.next() else { return name.is_empty() };
-    let Some(mut rest) = name.strip_prefix(first) else { return false };
-    let parts: Vec<&str> = parts.collect();
-    if parts.is_empty() {
-        return rest.is_empty();
-    }
-    for (i, p) in parts.iter().enumerate() {
-        if i + 1 == parts.len() {
-            return rest.ends_with(p);
-        }
-        match rest.find(p) {
-            Some(at) => rest = &rest[at + p.len()..],
-            None => return false,
-        }
-    }
-    true
 }
 
 /// Builds a block. `policies` maps patterns to policies, the first that fits counts; masters that fit none are an error
@@ -200,24 +182,4 @@ pub fn build_block(
         }
     }
     Ok(block)
-}
-
-#[cfg(test)]
-mod tests {
-    use super::fits_pattern;
-
-    #[test]
-    fn stars_stand_for_any_run() {
-        for (p, n, want) in [
-            ("fill*", "fill_2", true),
-            ("*decap*", "ef_decap_12", true),
-            ("inv_1", "inv_1", true),
-            ("inv_1", "inv_12", false),
-            ("*", "x", true),
-            ("a*b*c", "a1b2c", true),
-            ("a*b*c", "a1c", false),
-        ] {
-            assert_eq!(fits_pattern(p, n), want, "{p} {n}");
-        }
-    }
 }

@@ -321,9 +321,20 @@ pub(super) fn weigh(
     weights: &StateWeights,
 ) -> Result<Vec<(State, f64)>, BlockError> {
     let wrong = |reason: String| BlockError::Weights { master: master.to_owned(), reason };
-    let StateWeights::Given(given) = weights else {
-        let n = states.len() as f64;
-        return Ok(states.into_iter().map(|s| (s, 1.0 / n)).collect());
+    let given = match weights {
+        StateWeights::Uniform => {
+            let n = states.len() as f64;
+            return Ok(states.into_iter().map(|s| (s, 1.0 / n)).collect());
+        }
+        StateWeights::ByState(w) => {
+            let sum: f64 = w.iter().sum();
+            if w.len() != states.len() || !(sum > 0.0) || w.iter().any(|x| !(*x >= 0.0 && x.is_finite())) {
+                return Err(wrong(format!("{} weights for {} states", w.len(), states.len())));
+            }
+            let weighed = states.into_iter().zip(w).filter(|(_, x)| **x > 0.0);
+            return Ok(weighed.map(|(s, x)| (s, x / sum)).collect());
+        }
+        StateWeights::Given(given) => given,
     };
     let mut w = vec![0.0; states.len()];
     for (when, weight) in given {

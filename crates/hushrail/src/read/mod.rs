@@ -7,6 +7,7 @@ pub mod expression;
 pub mod instances;
 pub mod lines;
 pub mod number;
+pub mod pattern;
 pub mod source;
 pub mod spice;
 pub mod verilog;
