@@ -22,10 +22,12 @@ __all__ = [
     "choose",
     "compare",
     "count",
+    "domain_states",
     "estimate",
     "optima_asked",
     "optimum",
     "oxide_lifetime",
+    "park",
     "sensitivities",
     "transitions",
 ]
@@ -202,6 +204,8 @@ def sensitivities(
 def transitions(
     path: str, spec: str | None = None, *, progress: Callable[[int, int], Any] | None = None
 ) -> str: ...
+def park(path: str, json: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...
+def domain_states(path: str, domain: str | None = None) -> str: ...
 def oxide_lifetime(
     law: str, voltage_v: float, oxide_m: float, temp_c: float, *, area: str | None = None
 ) -> tuple[float, list[tuple[str, str]]]: ...

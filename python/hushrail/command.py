@@ -15,7 +15,7 @@ from pathlib import Path
 from typing import Any, NoReturn, TextIO, TypeVar
 
 from hushrail import __doc__ as hushrail_doc
-from hushrail import __version__, asked, costs, report, study
+from hushrail import __version__, asked, costs, parked, report, study
 from hushrail.errors import HushrailError
 from hushrail.leakage import Comparison
 from hushrail.results import Failure, Note
@@ -119,6 +119,16 @@ def _parser() -> argparse.ArgumentParser:
     ):
         sub = command(name, run, text)
         sub.add_argument("study", metavar="STUDY.toml", help="the study; paths in it start at its folder")
+
+    sub = command("park", _park, "values of a domain's inputs that make it leak least")
+    sub.add_argument("study", metavar="STUDY.toml", help="the study; its schemes are not needed")
+    sub.add_argument("--domain", metavar="D", help="the domain; the only one when left out")
+    sub.add_argument("--corner", metavar="C", help="the corner to judge at (the first)")
+    sub.add_argument(
+        "--seed", metavar="N", type=int, default=0, help="the same seed gives the same answer (0)"
+    )
+    sub.add_argument("--flips", metavar="N", type=int, default=2000, help="flips in each of 64 chains (2000)")
+    sub.add_argument("--registers", action="store_true", help="choose what registers keep, too")
 
     sub = command("cells", _cells, "leakage table of a study's cells at its corners")
     sub.add_argument("study", metavar="STUDY.toml", help="the study; its domains and schemes are not needed")
@@ -241,6 +251,32 @@ def _choose(args: argparse.Namespace) -> int:
         to_text=lambda width: costs.of_choices(result, width),
     )
     return LIMIT if any(each.chosen.infeasible is not None for each in result.answers) else OK
+
+
+def _park(args: argparse.Namespace) -> int:
+    _check_outputs(args, [args.study])
+    if args.flips < 0 or args.seed < 0:
+        raise _UsageError("--flips and --seed want numbers of zero or more")
+
+    def work(progress: Progress) -> parked.Parked:
+        return parked.search(
+            args.study,
+            args.domain,
+            corner=args.corner,
+            seed=args.seed,
+            flips=args.flips,
+            registers=args.registers,
+            progress=progress,
+        )
+
+    result = watched("steps", work, quiet=args.quiet)
+    rows = [
+        {"kind": kind, "name": name, "value": value}
+        for kind, own in (("net", result.nets), ("register", result.registers))
+        for name, value in own.items()
+    ]
+    _deliver(args, result.to_json, rows, to_text=lambda width: costs.of_parked(result, width))
+    return OK
 
 
 def _listed_failures(failures: Sequence[Failure]) -> int:

@@ -9,13 +9,14 @@ from hushrail.asked import Choices, Optima
 from hushrail.awake import Kept, Report, SizePoint, SwitchAwake
 from hushrail.awake import Point as AwakePoint
 from hushrail.optimum import Binding, Choice, LimitCount, Optimum
-from hushrail.report import BROKEN, NONE, listed, of_failures, of_notes
+from hushrail.parked import Parked
+from hushrail.report import BROKEN, NONE, listed, of_certainty, of_failures, of_notes
 from hushrail.results import Failure, Note
 from hushrail.table import Column, render
 from hushrail.transition import TransitionPoint, Transitions
 from hushrail.units import engineering, factor, percent, span
 
-__all__ = ["of_awake", "of_choices", "of_keep", "of_optima", "of_transitions"]
+__all__ = ["of_awake", "of_choices", "of_keep", "of_optima", "of_parked", "of_transitions"]
 
 P = TypeVar("P", AwakePoint, TransitionPoint)
 
@@ -340,6 +341,29 @@ def _binding(b: Binding | None) -> list[str]:
 
 def _area(m2: float) -> str:
     return f"{m2 * 1e12:,.0f} µm²"
+
+
+def of_parked(result: Parked, width: int = 100) -> str:
+    """Write a parked vector: what it draws against random ones and the bound, and its values.
+
+    Parameters
+    ----------
+    result : Parked
+        What :func:`hushrail.parked.search` found.
+    width : int
+        Columns of the terminal.
+    """
+    head = f"Parked vector of domain {result.domain} at {result.corner}"
+    rows = [
+        ["found", engineering(result.power_w, "W"), factor(result.power_w, result.random_mean_w)],
+        ["random, least of 64", engineering(result.random_least_w, "W"), NONE],
+        ["random, mean", engineering(result.random_mean_w, "W"), NONE],
+        ["every cell at its least", engineering(result.bound_w, "W"), NONE],
+    ]
+    columns = [Column("vector", "left"), Column("power"), Column("of the mean")]
+    table = render(*_filled(columns, rows), width)
+    gap = f"{percent(result.gap)} above what no vector can beat; states: {of_certainty(result.certainty)}"
+    return "\n\n".join([head, table, gap, result.to_toml().rstrip()])
 
 
 def _by(points: Iterable[P], key: Callable[[P], str]) -> dict[str, list[P]]:

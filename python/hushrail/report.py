@@ -8,7 +8,7 @@ import textwrap
 from collections.abc import Iterable, Sequence
 
 from hushrail.leakage import Comparison, Counts, LeakageRow, LeakageTable
-from hushrail.results import Corner, Domain, Estimate, Failure, LimitCheck, Note, Point, Uncovered
+from hushrail.results import Certainty, Corner, Domain, Estimate, Failure, LimitCheck, Note, Point, Uncovered
 from hushrail.table import Column, render
 from hushrail.units import engineering, factor, percent, span
 
@@ -16,6 +16,7 @@ __all__ = [
     "BROKEN",
     "NONE",
     "listed",
+    "of_certainty",
     "of_comparison",
     "of_counts",
     "of_estimate",
@@ -73,9 +74,16 @@ def _many(n: int, word: str) -> str:
 
 def _domain_line(domain: Domain) -> str:
     text = f"Domain {domain.name}: {_many(domain.instances, 'instance')}"
-    if domain.computed == domain.instances:
-        return f"{text}, all computed from transistors"
-    return f"{text}, {domain.computed:,} computed from transistors"
+    computed = "all" if domain.computed == domain.instances else f"{domain.computed:,}"
+    text = f"{text}, {computed} computed from transistors"
+    return text if domain.certainty is None else f"{text}\nStates: {of_certainty(domain.certainty)}"
+
+
+def of_certainty(c: Certainty) -> str:
+    """Write how many instances are in known, probable and assumed states."""
+    total = max(c.known + c.probable + c.assumed + c.opaque, 1)
+    parts = (("known", c.known), ("probable", c.probable), ("assumed", c.assumed), ("not told", c.opaque))
+    return ", ".join(f"{percent(n / total)} {word}" for word, n in parts if n or word != "not told")
 
 
 def _schemes(result: Estimate, points: Sequence[Point], corners: dict[str, Corner], width: int) -> str:

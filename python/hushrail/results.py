@@ -19,6 +19,7 @@ __all__ = [
     "Block",
     "ByMechanism",
     "CellShare",
+    "Certainty",
     "Corner",
     "Domain",
     "Estimate",
@@ -101,13 +102,30 @@ class Uncovered:
 
 
 @dataclass(frozen=True)
+class Certainty:
+    """Instances by what their state rests on.
+
+    Every pin known; some probable, from probabilities given; some assumed; and cells without a function.
+    """
+
+    known: int
+    probable: int
+    assumed: int
+    opaque: int
+
+
+@dataclass(frozen=True)
 class Domain:
-    """A domain: instances in all, those computed from transistors, and the rest."""
+    """A domain: instances in all, those computed from transistors, and the rest.
+
+    ``certainty`` tells how many are in known states, where the domain has a ``parked`` table.
+    """
 
     name: str
     instances: int
     computed: int
     uncovered: tuple[Uncovered, ...]
+    certainty: Certainty | None = None
 
 
 @dataclass(frozen=True)

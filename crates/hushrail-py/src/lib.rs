@@ -26,7 +26,9 @@ mod _core {
     #[pymodule_export]
     use crate::own::{CellTable, CompactModel, TableModel};
     #[pymodule_export]
-    use crate::study::{cell_table, compare, count, estimate, oxide_lifetime, sensitivities, transitions};
+    use crate::study::{
+        cell_table, compare, count, domain_states, estimate, oxide_lifetime, park, sensitivities, transitions,
+    };
 
     #[pymodule_init]
     fn init(m: &Bound<'_, PyModule>) -> PyResult<()> {

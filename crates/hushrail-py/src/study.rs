@@ -1,9 +1,10 @@
 //! Studies: everything crosses the border as JSON text in the core's own form.
 
-use std::path::Path;
+use std::path::{Path, PathBuf};
 
 use hushrail::batch::characterise::{TableRequest, table_of_study};
 use hushrail::batch::compare::{CompareRequest, compare_study};
+use hushrail::batch::parked::{park_study, states_of_study};
 use hushrail::batch::sensitivity::{SensitivityRequest, sensitivities_of_study};
 use hushrail::batch::study::read_study;
 use hushrail::batch::transition::{TransitionRequest, transitions_of_study};
@@ -84,6 +85,23 @@ pub fn transitions(
     let request = TransitionRequest { study: path.into(), spec };
     let result = run(py, progress.as_ref(), |p| transitions_of_study(&request, &SolveOptions::default(), p))?;
     text(&result.map_err(|e| error::read(&e))?)
+}
+
+/// The parked vector of a domain that leaks least; JSON in, JSON out.
+#[pyfunction]
+#[pyo3(signature = (path, json, *, progress=None))]
+pub fn park(py: Python<'_>, path: PathBuf, json: &str, progress: Option<Py<PyAny>>) -> PyResult<String> {
+    let request = serde_json::from_str(json).map_err(|e| error::range(format!("park: {e}")))?;
+    let found = run(py, progress.as_ref(), |p| park_study(&path, &request, &SolveOptions::default(), p))?;
+    text(&found.map_err(|e| error::read(&e))?)
+}
+
+/// States of a domain's instances; JSON.
+#[pyfunction]
+#[pyo3(signature = (path, domain=None))]
+pub fn domain_states(py: Python<'_>, path: PathBuf, domain: Option<&str>) -> PyResult<String> {
+    let found = py.detach(|| states_of_study(&path, domain));
+    text(&found.map_err(|e| error::read(&e))?)
 }
 
 /// Lifetime of an oxide under a law, s, and the caution that goes with it as (code, text).

@@ -83,20 +83,19 @@ fn functions_are_those_of_the_cells_names() {
 fn random_text(gates: &[(bool, usize, usize)], inputs: usize) -> String {
     let ports: Vec<String> = (0..inputs).map(|k| format!("i{k}")).collect();
     let net = |k: usize| if k < inputs { format!("i{k}") } else { format!("n{}", k - inputs) };
-    let mut text = format!("module top ({});\n input {};\n", ports.join(", "), ports.join(", "));
-    for k in 0..gates.len() {
-        text.push_str(&format!(" wire n{k};\n"));
-    }
+    let ports = ports.join(", ");
+    let wires = (0..gates.len()).map(|k| format!(" wire n{k};\n"));
     // in reverse, so that the order of the netlist is no help
-    for (k, (nand, a, b)) in gates.iter().enumerate().rev() {
+    let cells = gates.iter().enumerate().rev().map(|(k, (nand, a, b))| {
         let (a, b) = (net(a % (inputs + k)), net(b % (inputs + k)));
-        text.push_str(&if *nand {
+        if *nand {
             format!(" nand2 g{k} (.A({a}), .B({b}), .Y(n{k}));\n")
         } else {
             format!(" inv g{k} (.A({a}), .Y(n{k}));\n")
-        });
-    }
-    text + "endmodule\n"
+        }
+    });
+    let body: String = wires.chain(cells).collect();
+    format!("module top ({ports});\n input {ports};\n{body}endmodule\n")
 }
 
 /// All nets of all input vectors, by the definition of the gates.
@@ -169,7 +168,7 @@ proptest! {
         let leaks: Vec<Vec<f64>> = c
             .functions
             .iter()
-            .map(|f| (0..1 << f.vars()).map(|code| 1.0 + (code * 7 % 5) as f64 + f.vars() as f64).collect())
+            .map(|f| (0..1usize << f.vars()).map(|code| 1.0 + (code * 7 % 5) as f64 + f.vars() as f64).collect())
             .collect();
         let of = |vector: usize| -> f64 {
             let t = truth(&gates, inputs, vector);
@@ -213,9 +212,9 @@ fn probabilities_of_a_tree_are_products() {
     let c = circuit(&net, &f);
     let mut parking = Parking::default();
     for (name, p) in [("a", 0.2), ("b", 0.5), ("c", 0.9)] {
-        parking.nets.insert(name.into(), Held::Probability(p));
+        parking.nets.insert(name.into(), p);
     }
-    let p = probabilities(&net, &c, &parking).expect("known names");
+    let p = probabilities(&net, &c, "", &parking).expect("known names");
     let at = |name: &str| p.one[net.net(name).expect("net").0 as usize];
     assert!((at("m") - (1.0 - 0.2 * 0.5)).abs() < 1e-15);
     assert!((at("n") - (1.0 - 0.9 * 0.5)).abs() < 1e-15);
@@ -237,7 +236,9 @@ fn loops_stay_unknown_until_an_input_decides() {
     assert!(c.notes.iter().any(|n| n.code == "closed-loops"));
     let mut v = Values::new(&c);
     let n = |name: &str| net.net(name).expect("net").0;
-    (v.set(n("r"), Some(true)), v.set(n("s"), Some(true)));
+    for name in ["r", "s"] {
+        v.set(n(name), Some(true));
+    }
     v.propagate();
     assert_eq!((v.first(n("q")), v.first(n("z"))), (None, None));
     v.set(n("s"), Some(false));
@@ -270,12 +271,12 @@ fn kept_values_enter_as_registers() {
     let code = (0..1usize << vars).find(|c| table[*c] != table[c | 1 << vars]).expect("holds");
     let mut parking = Parking::default();
     for (k, p) in latch.inputs.iter().enumerate() {
-        parking.nets.insert(format!("i_{p}"), Held::Value(code >> k & 1 == 1));
+        parking.nets.insert(format!("i_{p}"), f64::from(u8::from(code >> k & 1 == 1)));
     }
-    let unknown = probabilities(&net, &c, &parking).expect("names");
+    let unknown = probabilities(&net, &c, "", &parking).expect("names");
     assert_eq!(shares(&net, &unknown).certainty.assumed, 2);
-    parking.registers.insert("*".into(), Held::Value(true));
-    let p = probabilities(&net, &c, &parking).expect("names");
+    parking.registers.insert("*".into(), 1.0);
+    let p = probabilities(&net, &c, "", &parking).expect("names");
     assert_eq!(p.one[net.net("y").expect("net").0 as usize], 0.0);
     assert_eq!(shares(&net, &p).certainty.known, 2);
 }
@@ -287,12 +288,12 @@ fn names_that_are_not_there_are_refused_with_a_neighbour() {
         netlist("module top (reset, y); input reset; output y; inv g (.A(reset), .Y(y)); endmodule", &f);
     let c = circuit(&net, &f);
     let mut parking = Parking::default();
-    parking.nets.insert("rest".into(), Held::Value(true));
-    let e = probabilities(&net, &c, &parking).expect_err("unknown");
+    parking.nets.insert("rest".into(), 1.0);
+    let e = probabilities(&net, &c, "", &parking).expect_err("unknown");
     assert!(matches!(&e, ParkingError::Unknown { near: Some(n), .. } if n == "reset"), "{e}");
     let mut parking = Parking::default();
-    parking.nets.insert("reset".into(), Held::Probability(1.5));
-    assert!(probabilities(&net, &c, &parking).expect_err("range").to_string().contains("want 0 to 1"));
+    parking.nets.insert("reset".into(), 1.5);
+    assert!(probabilities(&net, &c, "", &parking).expect_err("range").to_string().contains("want 0 to 1"));
     let e = Circuit::new(&net, "nowhere", &|n| f.get(n).cloned()).expect_err("path").to_string();
     assert!(e.contains("nowhere"), "{e}");
 }

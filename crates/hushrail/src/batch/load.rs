@@ -7,6 +7,7 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
+use super::parked::{self, ParkedDomain};
 use super::study::{Limits, ProcessSpec, Study};
 use crate::block::build::fits_pattern;
 use crate::block::{Block, Uncovered, build_block};
@@ -22,6 +23,7 @@ use crate::read::spice::{DeckOptions, read_deck};
 use crate::read::verilog::read_verilog_from;
 use crate::standby::Scheme;
 use crate::standby::scheme::SchemeError;
+use crate::states::Certainty;
 
 /// A domain with its block.
 #[derive(Debug, Clone)]
@@ -45,6 +47,9 @@ pub struct DomainSummary {
     pub computed: u64,
     /// Masters without transistors, and what was done.
     pub uncovered: Vec<Uncovered>,
+    /// Instances in known, probable and assumed states, where the domain has a `parked` table.
+    #[serde(default)]
+    pub certainty: Option<Certainty>,
 }
 
 /// Everything a run needs, in memory.
@@ -230,13 +235,22 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
             }
             netlists[d.verilog.as_slice()].counts_under(d.top.as_deref(), &d.path)?
         };
-        let block = library
-            .with_reader(|reader| build_block(&counts, reader, &d.policy, &d.weights(), &mut notes))?;
+        let (mut weights, mut certainty) = (IndexMap::new(), None);
+        if d.parked.is_some() {
+            let parked = ParkedDomain::read(d, &library, folder, &mut notes)?;
+            let shares = parked.shares(d, &Arc::from(origin))?;
+            weights = parked::weights(&shares);
+            certainty = Some(shares.certainty);
+        }
+        weights.extend(d.weights());
+        let block =
+            library.with_reader(|reader| build_block(&counts, reader, &d.policy, &weights, &mut notes))?;
         let summary = DomainSummary {
             name: d.name.clone(),
             instances: block.instances(),
             computed: block.covered(),
             uncovered: block.uncovered.clone(),
+            certainty,
         };
         domains.push(LoadedDomain { name: d.name.clone(), block, summary });
     }

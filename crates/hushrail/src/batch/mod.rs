@@ -6,6 +6,7 @@ pub mod compare;
 pub mod keep;
 pub mod load;
 pub mod optimum;
+pub mod parked;
 pub mod run;
 pub mod sensitivity;
 pub mod study;

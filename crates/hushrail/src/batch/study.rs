@@ -13,6 +13,7 @@ use crate::corner::Corner;
 use crate::device::spec::DeviceSpec;
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::standby::Scheme;
+use crate::states::Parking;
 
 /// One run: domains × schemes × corners. Paths are relative to the study file.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -131,9 +132,12 @@ pub struct DomainSpec {
     /// Masters without netlist: pattern → policy.
     #[serde(default)]
     pub policy: IndexMap<String, Policy>,
-    /// State weights: cell → condition → weight.
+    /// State weights: cell → condition → weight. They win over what `parked` gives.
     #[serde(default)]
     pub states: IndexMap<String, IndexMap<String, f64>>,
+    /// What inputs and registers hold while parked: the states of all instances follow from the connections.
+    #[serde(default)]
+    pub parked: Option<Parking>,
 }
 
 impl DomainSpec {
@@ -224,6 +228,12 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
         }
     }
     for d in &study.domain {
+        if d.parked.is_some() && d.verilog.is_empty() {
+            return empty(
+                &format!("domain `{}` has a `parked` table without connections", d.name),
+                "want `verilog` with it",
+            );
+        }
         if d.verilog.is_empty() == d.counts.is_none() {
             return empty(
                 &format!(

@@ -19,7 +19,7 @@ pub mod values;
 
 pub use circuit::{Circuit, CircuitError, Source};
 pub use function::CellFunction;
-pub use probability::{Held, Parking};
+pub use probability::{Held, Parking, ParkingError, carry, probabilities};
 pub use search::{Found, SearchSpec, search};
 pub use shares::{Certainty, StateShares, shares};
 pub use values::Values;

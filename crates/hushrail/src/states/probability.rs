@@ -15,8 +15,7 @@ use crate::read::source::nearest;
 use crate::read::verilog::connect::{Connected, NetId};
 
 /// What is known of a net or of what an instance keeps.
-#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
-#[serde(rename_all = "snake_case")]
+#[derive(Debug, Clone, Copy, PartialEq)]
 pub enum Held {
     /// It is at this value.
     Value(bool),
@@ -24,7 +23,15 @@ pub enum Held {
     Probability(f64),
 }
 
-/// What is known of a circuit that is parked, by path below its top; `*` stands for any run of characters.
+impl Held {
+    /// From the share of time at one; zero and one are values.
+    pub fn of(one: f64) -> Self {
+        if one == 0.0 || one == 1.0 { Self::Value(one == 1.0) } else { Self::Probability(one) }
+    }
+}
+
+/// What is known of a circuit that is parked: share of time at one by name; zero and one are values. Names are paths below the
+/// circuit's top or the design's; `*` stands for any run of characters.
 ///
 /// Later entries win over earlier ones. What nothing is said of counts as one half of the time at one, and is told as assumed.
 #[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
@@ -32,10 +39,10 @@ pub enum Held {
 pub struct Parking {
     /// Nets: inputs, clamped outputs of isolation, or any other.
     #[serde(default)]
-    pub nets: IndexMap<String, Held>,
+    pub nets: IndexMap<String, f64>,
     /// What registers keep: instance paths.
     #[serde(default)]
-    pub registers: IndexMap<String, Held>,
+    pub registers: IndexMap<String, f64>,
 }
 
 /// A parking that names what is not there, or says what cannot be.
@@ -92,71 +99,87 @@ fn fits(pattern: &str, name: &str) -> bool {
 }
 
 /// Carries what is known through a circuit: values where they follow, probabilities elsewhere, the variables of a gate taken
-/// as independent (Parker and McCluskey, *IEEE Trans. Comput.* C-24 (1975) 668, first order, from memory).
+/// as independent; names start at the instance path `under` or at the top (Parker and McCluskey, *IEEE Trans. Comput.* C-24 (1975) 668, first order, from memory).
 ///
 /// # Errors
 /// Names that nothing has, probabilities outside zero to one.
 pub fn probabilities<'a>(
     net: &Connected,
     circuit: &'a Circuit,
+    under: &str,
     parking: &Parking,
 ) -> Result<Probabilities<'a>, ParkingError> {
+    Ok(carry(circuit, &resolve(net, circuit, under, parking)?))
+}
+
+/// What is known, by net number.
+///
+/// # Errors
+/// As [`probabilities`].
+pub fn resolve(
+    net: &Connected,
+    circuit: &Circuit,
+    under: &str,
+    parking: &Parking,
+) -> Result<Vec<Option<Held>>, ParkingError> {
     let mut given: Vec<Option<Held>> = vec![None; circuit.net_count];
-    let check = |name: &str, h: &Held| match h {
-        Held::Probability(p) if !(0.0..=1.0).contains(p) => {
-            Err(ParkingError::Range { name: name.to_owned(), value: *p })
+    for (name, one) in parking.nets.iter().chain(&parking.registers) {
+        if !(0.0..=1.0).contains(one) {
+            return Err(ParkingError::Range { name: name.clone(), value: *one });
         }
-        _ => Ok(()),
-    };
+    }
+    let inside = if under.is_empty() { String::new() } else { format!("{under}/") };
     let wild = parking.nets.keys().any(|k| k.contains('*'));
     let paths: Vec<(String, u32)> = if wild {
         net.nets().filter(|n| !n.is_constant()).map(|n| (net.net_path(n), n.0)).collect()
     } else {
         Vec::new()
     };
-    for (name, h) in &parking.nets {
-        check(name, h)?;
+    let matches = |pattern: &str, path: &str| {
+        fits(pattern, path) || path.strip_prefix(&inside).is_some_and(|own| fits(pattern, own))
+    };
+    for (name, one) in &parking.nets {
         let mut found = false;
-        if let Some(n) = net.net(name).filter(|n| !n.is_constant()) {
-            given[n.0 as usize] = Some(*h);
+        let literal = net.net(&format!("{inside}{name}")).or_else(|| net.net(name));
+        if let Some(n) = literal.filter(|n| !n.is_constant()) {
+            given[n.0 as usize] = Some(Held::of(*one));
             found = true;
         } else if name.contains('*') {
-            for (path, n) in paths.iter().filter(|(p, _)| fits(name, p)) {
-                let _ = path;
-                given[*n as usize] = Some(*h);
+            for (_, n) in paths.iter().filter(|(p, _)| matches(name, p)) {
+                given[*n as usize] = Some(Held::of(*one));
                 found = true;
             }
         }
         if !found {
             let names: Vec<String> = circuit.source_names(net, false);
-            let near = nearest(name, names.iter().map(String::as_str));
+            let near = nearest(name, names.iter().map(|n| n.strip_prefix(&inside).unwrap_or(n)));
             return Err(ParkingError::Unknown { kind: "net", name: name.clone(), near });
         }
     }
-    if !parking.registers.is_empty() {
-        let kept: Vec<(String, u32)> = circuit
-            .sources
-            .iter()
-            .filter_map(|(s, n)| match s {
-                Source::Kept(i) => Some((net.instance_path(*i), *n)),
-                Source::Net(_) => None,
-            })
-            .collect();
-        for (name, h) in &parking.registers {
-            check(name, h)?;
-            let mut found = false;
-            for (_, n) in kept.iter().filter(|(p, _)| fits(name, p)) {
-                given[*n as usize] = Some(*h);
-                found = true;
-            }
-            // a pattern may find nothing in a block without registers
-            if !found && !name.contains('*') {
-                let near = nearest(name, kept.iter().map(|(p, _)| p.as_str()));
-                return Err(ParkingError::Unknown { kind: "register", name: name.clone(), near });
-            }
+    if parking.registers.is_empty() {
+        return Ok(given);
+    }
+    let kept: Vec<(String, u32)> = circuit
+        .sources
+        .iter()
+        .filter_map(|(s, n)| match s {
+            Source::Kept(i) => Some((net.instance_path(*i), *n)),
+            Source::Net(_) => None,
+        })
+        .collect();
+    for (name, one) in &parking.registers {
+        let mut found = false;
+        for (_, n) in kept.iter().filter(|(p, _)| matches(name, p)) {
+            given[*n as usize] = Some(Held::of(*one));
+            found = true;
+        }
+        // a pattern may find nothing in a block without registers
+        if !found && !name.contains('*') {
+            let near = nearest(name, kept.iter().map(|(p, _)| p.strip_prefix(&inside).unwrap_or(p)));
+            return Err(ParkingError::Unknown { kind: "register", name: name.clone(), near });
         }
     }
-    Ok(carry(circuit, &given))
+    Ok(given)
 }
 
 /// The same with what is known by net number.
@@ -164,10 +187,8 @@ pub fn carry<'a>(circuit: &'a Circuit, given: &[Option<Held>]) -> Probabilities<
     let held = |n: u32| given[n as usize].is_some();
     let mut values = Values::new(circuit);
     for (n, h) in given.iter().enumerate() {
-        match h {
-            Some(Held::Value(v)) => values.set(n as u32, Some(*v)),
-            Some(Held::Probability(p)) if *p == 0.0 || *p == 1.0 => values.set(n as u32, Some(*p == 1.0)),
-            _ => {}
+        if let Some(Held::Value(v)) = h {
+            values.set(n as u32, Some(*v));
         }
     }
     values.propagate_but(&held);
