@@ -9,6 +9,9 @@ use super::circuit::{Circuit, NONE};
 use super::cover::Cube;
 use crate::read::verilog::connect::NetId;
 
+/// Variables of a gate at most: inputs and what is kept, up to a power of two.
+const MOST: usize = 16;
+
 /// A literal: variable, and which of its words is asked.
 #[derive(Debug, Clone, Copy)]
 struct Literal {
@@ -39,14 +42,15 @@ impl Program {
         p
     }
 
-    /// Words of zero and one.
-    fn run(&self, variables: &[u32], rails: &[[u64; 2]]) -> [u64; 2] {
+    /// Words of zero and one, from those of the variables.
+    #[inline]
+    fn run(&self, variables: &[[u64; 2]; MOST]) -> [u64; 2] {
         let mut out = [0u64; 2];
         let mut at = 0;
         for (k, &end) in self.ends.iter().enumerate() {
             let mut word = !0u64;
             for l in &self.literals[at..end as usize] {
-                word &= rails[variables[l.var as usize] as usize][usize::from(l.one)];
+                word &= variables[l.var as usize % MOST][usize::from(l.one)];
             }
             out[usize::from(k >= self.zeros)] |= word;
             at = end as usize;
@@ -99,21 +103,33 @@ impl<'a> Values<'a> {
         }
     }
 
+    /// Words of a gate's variables.
+    #[inline]
+    fn gather(&self, variables: &[u32]) -> [[u64; 2]; MOST] {
+        let mut words = [[0; 2]; MOST];
+        for (to, n) in words.iter_mut().zip(variables) {
+            *to = self.rails[*n as usize];
+        }
+        words
+    }
+
     /// New words of an output of a gate.
     pub(super) fn output(&self, gate: usize, output: usize) -> [u64; 2] {
         let g = &self.circuit.gates[gate];
-        self.programs[g.function as usize][output].run(self.circuit.variables(g), &self.rails)
+        self.programs[g.function as usize][output].run(&self.gather(self.circuit.variables(g)))
     }
 
     /// Evaluates a gate; whether anything changed. Nets in `held` stay.
     fn gate(&mut self, k: usize, held: &dyn Fn(u32) -> bool) -> bool {
         let g = &self.circuit.gates[k];
         let mut changed = false;
-        for (o, &net) in self.circuit.outputs(g).iter().enumerate() {
+        let words = self.gather(self.circuit.variables(g));
+        let programs = &self.programs[g.function as usize];
+        for (program, &net) in programs.iter().zip(self.circuit.outputs(g)) {
             if net == NONE || held(net) {
                 continue;
             }
-            let new = self.programs[g.function as usize][o].run(self.circuit.variables(g), &self.rails);
+            let new = program.run(&words);
             let old = &mut self.rails[net as usize];
             changed |= *old != new;
             *old = new;

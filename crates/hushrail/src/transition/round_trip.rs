@@ -65,7 +65,7 @@ pub struct RoundTrip {
 ///
 /// The gate's energy is that of one charge and discharge over the swing, taken through the pump as a whole where there is
 /// overdrive or boost (reference sheet A25); the efficiency is the scheme's. Moving a well between its bias awake and asleep
-/// costs the charge once: see [`Well`].
+/// costs the charge once, see `Well` in the source.
 ///
 /// # Errors
 /// A missing capacitance or efficiency, or numbers that cannot be.
