@@ -8,12 +8,12 @@ use serde::{Deserialize, Serialize};
 
 use super::build::{Block, Policy, StateWeights};
 use crate::cell::sensitivity::{COLUMNS, LogSlopes, SensitivityError};
-use crate::cell::when::product_term;
 use crate::cell::{BoundCell, CellError, DeviceShelf, Levels, Role, State};
 use crate::circuit::newton::{Effort, SolveOptions, Workspace};
 use crate::device::process::Process;
 use crate::device::range::Outside;
 use crate::physics::Kelvin;
+use crate::read::Condition;
 use crate::read::deck::Note;
 use crate::read::source::ReadError;
 
@@ -330,20 +330,18 @@ pub(super) fn weigh(
         if !(*weight >= 0.0 && weight.is_finite()) {
             return Err(wrong(format!("weight {weight} of `{when}` is not zero or more")));
         }
-        let pins = product_term(when)
-            .ok_or_else(|| wrong(format!("`{when}` is not a product of pins such as A&!B")))?;
+        let condition = Condition::parse(when).map_err(|e| wrong(e.to_string()))?;
         let cell = &bound.cell;
-        if let Some(p) = pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
+        let port = |p: &str| cell.ports.iter().position(|q| **q == *p);
+        if let Some(p) = condition.pins().into_iter().find(|p| port(p).is_none()) {
             return Err(wrong(format!("`{when}`: the cell has no pin `{p}`")));
         }
         let fits: Vec<usize> = states
             .iter()
             .enumerate()
             .filter(|(_, s)| {
-                pins.iter().all(|(p, want)| {
-                    let port = cell.ports.iter().position(|q| **q == **p);
-                    port.and_then(|i| s.logic[cell.port_nodes[i]].bit()) == Some(*want)
-                })
+                condition.value(&mut |p| port(p).and_then(|i| s.logic[cell.port_nodes[i]].bit()))
+                    == Some(true)
             })
             .map(|(i, _)| i)
             .collect();
