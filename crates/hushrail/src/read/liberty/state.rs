@@ -1,6 +1,6 @@
 //! States of a cell by its pins and stored values, and the leakage a library has for each.
 
-use super::library::{Library, LibraryCell, PgPin, Storage};
+use super::library::{Library, LibraryCell, PgPin, Pin, Storage};
 use crate::read::condition::Condition;
 
 /// Inputs and stored values together that states are listed for.
@@ -163,6 +163,17 @@ impl Library {
         }
         let inputs = vars.len();
         vars.extend(kept.iter().map(|k| k.name.clone()));
+        // an output without function is free where conditions name it; what no condition has of it does not exist
+        let mut named: Vec<String> = Vec::new();
+        for g in &cell.leakage {
+            let condition = Condition::parse(&g.when).ok();
+            named.extend(condition.iter().flat_map(Condition::pins).map(str::to_owned));
+        }
+        let told = |p: &Pin| p.function.as_deref().is_some_and(|f| Condition::parse(f).is_ok());
+        let stored = vars.len();
+        let unknown = cell.pins.iter().filter(|(n, p)| !vars.contains(n) && !told(p) && named.contains(n));
+        let unknown: Vec<String> = unknown.map(|(n, _)| n.clone()).collect();
+        vars.extend(unknown);
         let free = vars.len();
         if free > MOST_BITS {
             return Err(StateError::Many { cell: name.to_owned(), bits: free });
@@ -189,6 +200,9 @@ impl Library {
                 continue;
             }
             let (power, over_v, basis) = self.power(cell, &supplies, &values, &index);
+            if free > stored && basis != Basis::State {
+                continue;
+            }
             let bits = vars[..free].iter().zip(&values).map(|(n, v)| (n.clone(), *v == Some(true))).collect();
             let outputs = vars[free..].iter().zip(&values[free..]).map(|(n, v)| (n.clone(), *v)).collect();
             out.push(CellState { bits, outputs, power, over_v, basis });
