@@ -6,10 +6,11 @@
 //!
 //! in which `b` is the threshold of the weakest path over its slope factor, negative, and `c` the lowering over the slope
 //! factor (Y. Taur, T. H. Ning, Fundamentals of Modern VLSI Devices, 2nd ed., Cambridge 2009, ch. 3; the T² is the vt² of the
-//! prefactor). Two terms add a current that hardly depends on temperature, `exp(d + e V)`: gate-induced drain leakage and gate
-//! tunnelling, whose logarithms are nearly straight over a volt (K. Roy, S. Mukhopadhyay, H. Mahmoodi-Meimand, Proc. IEEE 91
-//! (2003) 305). A form counts by how well it foretells each corner left out; priors as wide as textbooks allow keep what the
-//! corners do not determine where it belongs.
+//! prefactor). Two terms add a current that hardly depends on temperature, `exp(d - e / V)`: tunnelling, band to band
+//! under the gate or through the oxide, whose exponent goes as one over the field (K. Roy, S. Mukhopadhyay,
+//! H. Mahmoodi-Meimand, Proc. IEEE 91 (2003) 305). A form counts by the median of its misses at corners left out one by one;
+//! priors as wide as textbooks allow keep what the corners do not determine where it belongs. Rows that miss by far pull with a
+//! bounded force (P. J. Huber, Ann. Math. Statist. 35 (1964) 73): published tables hold such rows.
 
 use crate::physics::Kelvin;
 
@@ -33,11 +34,14 @@ const POINTS_FOR_TWO: usize = 8;
 /// Steps of the search for the form of two terms.
 const STEPS: usize = 60;
 
-/// Middle and width of what is taken for possible, by number: `a`, `b` in V, `c`, `d`, `e` in 1/V.
+/// Middle and width of what is taken for possible, by number: `a`, `b` in V, `c`, `d`, `e` in V.
 ///
-/// Thresholds from 0.1 to 0.9 V over slope factors of 1.2 to 1.6; barrier lowering up to 0.2 V/V; gate and drain tunnelling of a
-/// decade in 0.3 V to a decade in 3 V. Prefactors are open.
-const PRIOR: [(f64, f64); MOST] = [(0.0, 1e3), (-0.4, 0.2), (0.06, 0.08), (0.0, 1e3), (3.0, 2.5)];
+/// Thresholds from 0.1 to 0.9 V over slope factors of 1.2 to 1.6; barrier lowering up to 0.2 V/V; tunnelling exponents up to
+/// 20 V, about 3e9 V/m times three oxide thicknesses. Prefactors are open.
+const PRIOR: [(f64, f64); MOST] = [(0.0, 1e3), (-0.4, 0.2), (0.06, 0.08), (0.0, 1e3), (10.0, 10.0)];
+
+/// Miss in ln(current) from which the pull of a point grows no more.
+const FAR: f64 = 0.2;
 
 /// Share of the spread that a prior's width stands for: the scatter of tables in ln(current).
 const PRIOR_SCATTER: f64 = 0.1;
@@ -51,6 +55,8 @@ pub struct LeakageFit {
     pub numbers: [f64; MOST],
     /// Their covariance; rows of numbers a form does not have are zero.
     pub covariance: [[f64; MOST]; MOST],
+    /// Median of the misses of ln(current) at corners left out one by one.
+    pub median: f64,
     /// Scatter of ln(current) about the law, from corners left out one by one.
     pub scatter: f64,
     /// Largest of those misses, in ln(current).
@@ -66,11 +72,11 @@ fn form(terms: usize, n: &[f64; MOST], voltage_v: f64, temp: Kelvin) -> (f64, [f
     if terms == 1 {
         return (first, [slopes[0], slopes[1], slopes[2], 0.0, 0.0]);
     }
-    let second = n[3] + n[4] * voltage_v;
+    let second = n[3] - n[4] / voltage_v;
     let most = first.max(second);
     let (x, y) = ((first - most).exp(), (second - most).exp());
     let (w, v) = (x / (x + y), y / (x + y));
-    let g = [w * slopes[0], w * slopes[1], w * slopes[2], v, v * voltage_v];
+    let g = [w * slopes[0], w * slopes[1], w * slopes[2], v, -v / voltage_v];
     (most + (x + y).ln(), g)
 }
 
@@ -114,11 +120,12 @@ fn normal(terms: usize, x: &[f64; MOST], points: &[FitPoint]) -> (f64, [[f64; MO
     for p in points {
         let (ln, g) = form(terms, x, p.voltage_v, p.temp);
         let miss = p.current_a.ln() - ln;
-        sum += miss * miss;
+        let weight = (FAR / miss.abs().max(FAR)).min(1.0);
+        sum += if weight < 1.0 { FAR * (2.0 * miss.abs() - FAR) } else { miss * miss };
         for i in 0..n {
-            right[i] += g[i] * miss;
+            right[i] += weight * g[i] * miss;
             for j in 0..n {
-                m[i][j] += g[i] * g[j];
+                m[i][j] += weight * g[i] * g[j];
             }
         }
     }
@@ -164,7 +171,7 @@ fn search(terms: usize, start: [f64; MOST], points: &[FitPoint]) -> Option<[f64;
 
 fn fitted(terms: usize, points: &[FitPoint]) -> Option<[f64; MOST]> {
     let mean = points.iter().map(|p| p.current_a.ln()).sum::<f64>() / points.len() as f64;
-    let start = [mean + 15.0, PRIOR[1].0, PRIOR[2].0, mean - 5.0, PRIOR[4].0];
+    let start = [mean + 15.0, PRIOR[1].0, PRIOR[2].0, mean, PRIOR[4].0];
     let one = search(1, start, points)?;
     if terms == 1 {
         return Some(one);
@@ -173,7 +180,7 @@ fn fitted(terms: usize, points: &[FitPoint]) -> Option<[f64; MOST]> {
     let coldest = points.iter().map(|p| p.temp.get()).fold(f64::INFINITY, f64::min);
     let cold: Vec<&FitPoint> = points.iter().filter(|p| p.temp.get() < coldest + 1.0).collect();
     let level =
-        cold.iter().map(|p| p.current_a.ln() - PRIOR[4].0 * p.voltage_v).sum::<f64>() / cold.len() as f64;
+        cold.iter().map(|p| p.current_a.ln() + PRIOR[4].0 / p.voltage_v).sum::<f64>() / cold.len() as f64;
     let hot: Vec<FitPoint> = points.iter().filter(|p| p.temp.get() > coldest + 1.0).copied().collect();
     let first = if hot.is_empty() { one } else { search(1, start, &hot)? };
     search(2, [first[0], first[1], first[2], level - 0.7, PRIOR[4].0], points)
@@ -194,7 +201,7 @@ impl LeakageFit {
         if points.len() < 4 || spread(|p| p.voltage_v) < 0.01 || spread(|p| p.temp.get()) < 5.0 {
             return None;
         }
-        let mut best: Option<(usize, f64, f64)> = None;
+        let mut best: Option<(usize, f64, f64, f64)> = None;
         for terms in [1, 2] {
             if terms == 2 && points.len() < POINTS_FOR_TWO {
                 break;
@@ -212,11 +219,14 @@ impl LeakageFit {
             }
             let scatter = (misses.iter().map(|m| m * m).sum::<f64>() / misses.len() as f64).sqrt();
             let worst = misses.iter().fold(0.0, |w: f64, m| w.max(m.abs()));
-            if best.is_none_or(|(_, s, _)| scatter < s) {
-                best = Some((terms, scatter, worst));
+            let mut sizes: Vec<f64> = misses.iter().map(|m| m.abs()).collect();
+            sizes.sort_by(f64::total_cmp);
+            let median = sizes[sizes.len() / 2];
+            if best.is_none_or(|(_, least, ..)| median < least) {
+                best = Some((terms, median, scatter, worst));
             }
         }
-        let (terms, scatter, worst) = best?;
+        let (terms, median, scatter, worst) = best?;
         let numbers = fitted(terms, points)?;
         let (_, m, _) = normal(terms, &numbers, points);
         let mut covariance = inverse(m, if terms == 1 { 3 } else { MOST })?;
@@ -224,7 +234,7 @@ impl LeakageFit {
             *v *= scatter * scatter;
         }
         let lowest_v = points.iter().map(|p| p.voltage_v).fold(f64::INFINITY, f64::min);
-        Some(Self { terms, numbers, covariance, scatter, worst, lowest_v })
+        Some(Self { terms, numbers, covariance, median, scatter, worst, lowest_v })
     }
 
     /// ln(current / A) and how far it may be off, one sigma with the scatter of single corners.

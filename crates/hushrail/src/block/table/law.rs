@@ -88,9 +88,9 @@ impl TableLaw {
         let below = format!("below {:.3} V no table speaks, and the current is an interval", self.lowest_v);
         match &self.fit {
             Some(f) => format!(
-                "over the span a law of {} foretells corners left out within {:.1} % (worst {:.1} %); {below}",
+                "over the span a law of {} foretells corners left out within {:.1} % (median; worst {:.1} %); {below}",
                 if f.terms == 1 { "one term" } else { "two terms" },
-                100.0 * f.scatter.exp_m1(),
+                100.0 * f.median.exp_m1(),
                 100.0 * f.worst.exp_m1(),
             ),
             None => format!("too few corners for a law over the span; {below}"),
@@ -153,7 +153,7 @@ mod tests {
                 let temp = kelvin(temp_c);
                 let vt = temp.thermal_voltage();
                 let a = (temp.get() / 300.0).powi(2) * (-7.0 + (-0.3 + 0.05 * voltage_v) / vt).exp();
-                let b = (-22.0 + 4.0 * voltage_v).exp();
+                let b = (-8.0 - 10.0 / voltage_v).exp();
                 out.push(FitPoint { voltage_v, temp, current_a: a + b });
             }
         }
@@ -168,7 +168,7 @@ mod tests {
         let (ln, sigma) = f.ln_current(1.05, kelvin(60.0));
         let vt = kelvin(60.0).thermal_voltage();
         let a = (kelvin(60.0).get() / 300.0).powi(2) * (-7.0 + (-0.3 + 0.05 * 1.05) / vt).exp();
-        let miss = ln - (a + (-22.0f64 + 4.0 * 1.05).exp()).ln();
+        let miss = ln - (a + (-8.0f64 - 10.0 / 1.05).exp()).ln();
         assert!(miss.abs() < 0.02 && sigma < 0.05, "{miss} {sigma}");
         assert_eq!(LeakageFit::new(&points()[..4]), None);
     }
