@@ -51,8 +51,8 @@ class Nominal:
 class LeakageGroup:
     """One leakage value in the library's unit.
 
-    ``when`` is the condition as written, empty for every state that no other group has; ``supply`` is the supply
-    pin it is drawn from, when one is named; ``line`` is zero when the group comes from no file.
+    ``when`` is the condition as written, empty for every state that no other group has; ``supply`` is the
+    supply pin it is drawn from, when one is named; ``line`` is zero when the group comes from no file.
     """
 
     when: str

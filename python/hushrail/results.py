@@ -232,9 +232,9 @@ class LimitCheck:
 
 @dataclass(frozen=True)
 class Interval:
-    """Least and most that the tables of cells without transistors allow, all such cells at the same end; W, A.
+    """Least and most that the tables of cells without transistors allow; W, A.
 
-    Each is a pair, least first.
+    Each is a pair, least first; all such cells are at the same end.
     """
 
     power_w: tuple[float, ...]
@@ -246,8 +246,8 @@ class Interval:
 class Point:
     """A domain under a scheme at a corner.
 
-    ``saving`` is the share of the ungated power that the scheme saves. ``interval`` is there where cells without
-    transistors took their leakage from Liberty libraries: what their tables leave open.
+    ``saving`` is the share of the ungated power that the scheme saves. ``interval`` is there where cells
+    without transistors took their leakage from Liberty libraries: what their tables leave open.
     """
 
     domain: str
