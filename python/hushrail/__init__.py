@@ -5,9 +5,9 @@ sleep schemes and corners. :func:`cells` gives the leakage table behind it, :fun
 published one, :func:`count` counts the instances of a netlist, :func:`read_liberty` and :func:`write_liberty`
 take leakage from Liberty libraries and to them. :class:`Process` and :class:`Device` give the currents of
 single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without cards, and
-``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its domain works and
-the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width and the choice
-under limits. Plots are in ``hushrail.plot``, the demonstration in ``hushrail.demo``.
+``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its domain works
+and the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width and the
+choice under limits. Plots are in ``hushrail.plot``, the demonstration in ``hushrail.demo``.
 """
 
 from hushrail._core import __version__

@@ -55,7 +55,7 @@ pub struct LeakageTable {
 impl LeakageTable {
     /// The rows of one corner as a Liberty library in nW; `name` is the library's.
     ///
-    /// Conditions name inputs, and outputs where the inputs do not tell the state. Where two states have the same pins all the
+    /// Conditions name inputs, and for cells that keep state the outputs too. Where two states have the same pins all the
     /// same, the larger counts and a note says so.
     pub fn library(&self, name: &str, corner: &Corner) -> liberty::Library {
         let mut out = liberty::Library { name: name.to_owned(), ..liberty::Library::default() };
@@ -97,9 +97,10 @@ fn library_cell(name: &str, rows: &[&LeakageRow], notes: &mut Vec<Note>) -> libe
     for r in rows {
         *seen.entry(pins_of(r, true)).or_default() += 1;
     }
+    // a cell that keeps state is told by all its pins, in every state: a condition on inputs alone would hold for others too
+    let keeps = seen.values().any(|n| *n > 1);
     for r in rows {
-        let inputs = pins_of(r, true);
-        let when = if seen.get(&inputs) == Some(&1) { inputs } else { pins_of(r, false) };
+        let when = pins_of(r, !keeps);
         let value = r.power_w / 1e-9;
         if let Some(g) = cell.leakage.iter_mut().find(|g| g.when == when) {
             let text = format!("cell `{name}`: two states have the pins `{when}`; the larger counts");

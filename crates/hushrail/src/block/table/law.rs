@@ -5,6 +5,9 @@
 //! ohmic near it): the law continued, the current held at its lowest known value, and a straight line to zero. What is drawn lies
 //! between the smaller of the first and the last, and the second: a current does not rise as the span falls. The middle of the
 //! interval, in the logarithm, is the answer; the interval is its uncertainty and mostly the larger part of it.
+//!
+//! Tables are made with wells on the rails of the cell. Where wells stay on the real rails while the block's collapse, they are
+//! biased in reverse and less may be drawn than the interval says: no table tells how much.
 
 use super::fit::{FitPoint, LeakageFit};
 use crate::physics::Kelvin;
@@ -85,7 +88,10 @@ impl TableLaw {
 
     /// What the law rests on.
     pub fn in_words(&self) -> String {
-        let below = format!("below {:.3} V no table speaks, and the current is an interval", self.lowest_v);
+        let below = format!(
+            "below {:.3} V no table speaks, and the current is an interval (wells on the rails of the cells)",
+            self.lowest_v
+        );
         match &self.fit {
             Some(f) => format!(
                 "over the span a law of {} foretells corners left out within {:.1} % (median; worst {:.1} %); {below}",

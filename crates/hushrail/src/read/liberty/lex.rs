@@ -44,6 +44,15 @@ impl<'a> Lexer<'a> {
     /// The place of a byte.
     pub(super) fn place(&mut self, offset: usize) -> Place {
         let offset = offset.min(self.text.len());
+        let line = self.line(offset) as usize;
+        let start = self.last.2;
+        let along = String::from_utf8_lossy(&self.text.as_bytes()[start..offset]).chars().count();
+        Place::new(&self.source.path, line, along + 1)
+    }
+
+    /// The line of a byte.
+    pub(super) fn line(&mut self, offset: usize) -> u32 {
+        let offset = offset.min(self.text.len());
         if offset < self.last.0 {
             self.last = (0, 1, 0);
         }
@@ -54,8 +63,7 @@ impl<'a> Lexer<'a> {
             }
         }
         self.last = (offset, line, start);
-        let along = String::from_utf8_lossy(&self.text.as_bytes()[start..offset]).chars().count();
-        Place::new(&self.source.path, line, along + 1)
+        u32::try_from(line).unwrap_or(u32::MAX)
     }
 
     pub(super) fn wrong(

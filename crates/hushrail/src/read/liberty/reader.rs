@@ -298,7 +298,7 @@ impl Reader<'_> {
     }
 
     fn cell(&mut self, h: &Head<'_>) -> Result<(), ReadError> {
-        let place = self.p.lexer.place(h.at);
+        let line = self.p.lexer.line(h.at);
         let name = h.arg().to_owned();
         if name.is_empty() || h.args.len() != 1 {
             let found = format!("a cell named `{}`", h.joined());
@@ -311,7 +311,7 @@ impl Reader<'_> {
             });
             return self.p.skip();
         }
-        let mut cell = LibraryCell { line: place.line, ..LibraryCell::default() };
+        let mut cell = LibraryCell { line, ..LibraryCell::default() };
         loop {
             match self.p.step()? {
                 Some(Event::Open(g)) => match g.name {
@@ -365,7 +365,7 @@ impl Reader<'_> {
     }
 
     fn leakage(&mut self, cell: &str, h: &Head<'_>) -> Result<Option<LeakageGroup>, ReadError> {
-        let line = self.p.lexer.place(h.at).line;
+        let line = self.p.lexer.line(h.at);
         let mut group = LeakageGroup { line, ..LeakageGroup::default() };
         let mut value = None;
         loop {
