@@ -9,6 +9,9 @@ use crate::read::condition::Condition;
 /// Values that agree to this share are the same: tables are printed with six digits.
 const SAME: f64 = 1e-5;
 
+/// The same for an average against states with fewer digits.
+const COARSE: f64 = 1e-3;
+
 /// Pairs of conditions that are compared in one cell before the search for overlaps gives up.
 const MOST_PAIRS: usize = 2_000_000;
 
@@ -52,7 +55,8 @@ pub(super) fn cell(path: &str, name: &str, cell: &LibraryCell, notes: &mut Notes
         if let [(_, groups)] = supplies.iter().collect::<Vec<_>>()[..] {
             let least = groups.iter().map(|g| g.value).fold(f64::INFINITY, f64::min);
             let most = groups.iter().map(|g| g.value).fold(0.0, f64::max);
-            if x < least && differ(x, least) || x > most && differ(x, most) {
+            // states are printed with as few as four digits
+            if x < least * (1.0 - COARSE) || x > most * (1.0 + COARSE) {
                 notes.add("contradiction", || {
                     format!(
                         "{}: `cell_leakage_power` is {x}, its states lie from {least} to {most}",

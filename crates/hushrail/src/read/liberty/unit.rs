@@ -26,7 +26,7 @@ pub fn unit(text: &str, symbol: char) -> Option<f64> {
     (value > 0.0 && value.is_finite()).then_some(value)
 }
 
-/// The unit in words that [`unit`] reads back.
+/// The unit in words that [`unit()`] reads back.
 pub fn unit_text(value: f64, symbol: char) -> String {
     for (prefix, over) in [("", 1.0), ("m", 1e3), ("u", 1e6), ("n", 1e9), ("p", 1e12), ("f", 1e15)] {
         for size in [1.0, 10.0, 100.0] {
