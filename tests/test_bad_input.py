@@ -125,7 +125,7 @@ MISTAKES = {
         "cell,count\ninw,3\n",
         None,
         "3 instances have no transistor netlist: `inw` ×3 (nearest netlist: `inv`)",
-        "state a policy for them: zero, alias, or current_a",
+        "state a policy for them: zero, alias, current_a, or liberty",
     ),
     "count that is no number": Mistake(
         "counts.csv", "cell,count\ninv,a\n", (2, 5), "the count is `a`", "want a whole number"

@@ -2,12 +2,12 @@
 
 The main job is one call: :func:`estimate` runs a study, a TOML file that names cards, cell netlists, domains,
 sleep schemes and corners. :func:`cells` gives the leakage table behind it, :func:`compare` holds it against a
-published one, :func:`count` counts the instances of a netlist. :class:`Process` and :class:`Device` give the
-currents of single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without
-cards, and ``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its
-domain works and the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width
-and the choice under limits. Plots are in ``hushrail.plot``, the demonstration in
-``hushrail.demo``.
+published one, :func:`count` counts the instances of a netlist, :func:`read_liberty` and :func:`write_liberty`
+take leakage from Liberty libraries and to them. :class:`Process` and :class:`Device` give the currents of
+single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without cards, and
+``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its domain works
+and the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width and the
+choice under limits. Plots are in ``hushrail.plot``, the demonstration in ``hushrail.demo``.
 """
 
 from hushrail._core import __version__
@@ -24,6 +24,7 @@ from hushrail.leakage import (
     Suspect,
     Unmatched,
 )
+from hushrail.liberty import Library, read_liberty, write_liberty
 from hushrail.results import (
     MECHANISMS,
     Block,
@@ -33,6 +34,7 @@ from hushrail.results import (
     Domain,
     Estimate,
     Failure,
+    Interval,
     LimitCheck,
     Note,
     Outside,
@@ -66,8 +68,10 @@ __all__ = [
     "Estimate",
     "Failure",
     "HushrailError",
+    "Interval",
     "LeakageRow",
     "LeakageTable",
+    "Library",
     "LimitCheck",
     "LogSlopes",
     "Note",
@@ -91,5 +95,7 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "read_liberty",
     "sensitivities",
+    "write_liberty",
 ]

@@ -24,10 +24,13 @@ __all__ = [
     "count",
     "domain_states",
     "estimate",
+    "liberty_of_table",
+    "liberty_text",
     "optima_asked",
     "optimum",
     "oxide_lifetime",
     "park",
+    "read_liberty",
     "sensitivities",
     "transitions",
 ]
@@ -189,6 +192,15 @@ def cell_table(
     cells: Sequence[str] = ...,
     floor_s: float = 0.0,
     progress: Callable[[int, int], Any] | None = None,
+) -> str: ...
+def liberty_of_table(table: str, corner: str, name: str) -> str: ...
+def liberty_text(library: str) -> str: ...
+def read_liberty(
+    path: str,
+    *,
+    leakage_unit_w: float | None = None,
+    vdd_v: float | None = None,
+    temp_c: float | None = None,
 ) -> str: ...
 def choose(path: str, spec: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...
 def choices_asked(path: str, *, progress: Callable[[int, int], Any] | None = None) -> str: ...

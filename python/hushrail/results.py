@@ -24,6 +24,7 @@ __all__ = [
     "Domain",
     "Estimate",
     "Failure",
+    "Interval",
     "LimitCheck",
     "Note",
     "PathShare",
@@ -93,7 +94,7 @@ class Corner:
 class Uncovered:
     """A master without transistor netlist, and what the study says about it.
 
-    ``policy`` is ``"zero"``, or a mapping with one of the keys ``alias`` and ``current_a``.
+    ``policy`` is ``"zero"`` or ``"liberty"``, or a mapping with one of the keys ``alias`` and ``current_a``.
     """
 
     master: str
@@ -248,10 +249,23 @@ class LimitCheck:
 
 
 @dataclass(frozen=True)
+class Interval:
+    """Least and most that the tables of cells without transistors allow; W, A.
+
+    Each is a pair, least first; all such cells are at the same end.
+    """
+
+    power_w: tuple[float, ...]
+    current_a: tuple[float, ...]
+    ungated_power_w: tuple[float, ...]
+
+
+@dataclass(frozen=True)
 class Point:
     """A domain under a scheme at a corner.
 
-    ``saving`` is the share of the ungated power that the scheme saves.
+    ``saving`` is the share of the ungated power that the scheme saves. ``interval`` is there where cells
+    without transistors took their leakage from Liberty libraries: what their tables leave open.
     """
 
     domain: str
@@ -262,6 +276,7 @@ class Point:
     ungated_current_a: float
     saving: float
     limits: tuple[LimitCheck, ...]
+    interval: Interval | None = None
 
     @property
     def power_w(self) -> float:

@@ -124,7 +124,7 @@ fn rest_on_curve(c: &mut Criterion) {
         weights: StateWeights::Uniform,
         powered: false,
     });
-    let block = Block { cells: cells.to_vec(), uncovered: Vec::new() };
+    let block = Block { cells: cells.to_vec(), ..Block::default() };
     let mut shelf = DeviceShelf::default();
     let bound = BoundBlock::new(&block, &p, temp, 1.0, &mut shelf, &SolveOptions::default()).expect("block");
     let stop = AtomicBool::new(false);

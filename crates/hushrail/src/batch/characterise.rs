@@ -17,6 +17,7 @@ use crate::circuit::newton::{SolveOptions, Workspace};
 use crate::corner::Corner;
 use crate::device::process::Process;
 use crate::read::deck::Note;
+use crate::read::liberty;
 use crate::read::source::{Place, ReadError, Source};
 
 /// One state of one cell at one corner.
@@ -49,6 +50,69 @@ pub struct LeakageTable {
     pub notes: Vec<Note>,
     /// Whether the run was stopped before its end.
     pub stopped: bool,
+}
+
+impl LeakageTable {
+    /// The rows of one corner as a Liberty library in nW; `name` is the library's.
+    ///
+    /// Conditions name inputs, and for cells that keep state the outputs too. Where two states have the same pins all the
+    /// same, the larger counts and a note says so.
+    pub fn library(&self, name: &str, corner: &Corner) -> liberty::Library {
+        let mut out = liberty::Library { name: name.to_owned(), ..liberty::Library::default() };
+        out.units = liberty::Units { leakage_w: Some(1e-9), voltage_v: Some(1.0) };
+        out.nominal =
+            liberty::Nominal { process: None, voltage_v: Some(corner.vdd_v), temp_c: Some(corner.temp_c) };
+        let mut rows: IndexMap<&str, Vec<&LeakageRow>> = IndexMap::new();
+        for r in self.rows.iter().filter(|r| r.corner == corner.name) {
+            rows.entry(&r.cell).or_default().push(r);
+        }
+        for (cell, rows) in rows {
+            out.cells.insert(cell.to_owned(), library_cell(cell, &rows, &mut out.notes));
+        }
+        out
+    }
+}
+
+fn library_cell(name: &str, rows: &[&LeakageRow], notes: &mut Vec<Note>) -> liberty::LibraryCell {
+    let mut cell = liberty::LibraryCell::default();
+    let pins_of = |r: &LeakageRow, inputs_only: bool| -> String {
+        let words = r.state.split_whitespace().filter_map(|w| w.split_once('='));
+        let known = words.filter(|(p, v)| *v != "z" && !(inputs_only && !r.ports.contains_key(*p)));
+        let signed: Vec<String> =
+            known.map(|(p, v)| format!("{}{p}", if v == "1" { "" } else { "!" })).collect();
+        signed.join("&")
+    };
+    for r in rows {
+        for (pin, _) in r.state.split_whitespace().filter_map(|w| w.split_once('=')) {
+            let direction = if r.ports.contains_key(pin) { "input" } else { "output" };
+            let new = || liberty::Pin { direction: direction.to_owned(), ..liberty::Pin::default() };
+            cell.pins.entry(pin.to_owned()).or_insert_with(new);
+        }
+        if !r.stable {
+            let text = format!("cell `{name}`: the state `{}` is not one it stays in", r.state);
+            Note::new("liberty-states", text).add_once(notes);
+        }
+    }
+    let mut seen: IndexMap<String, usize> = IndexMap::new();
+    for r in rows {
+        *seen.entry(pins_of(r, true)).or_default() += 1;
+    }
+    // a cell that keeps state is told by all its pins, in every state: a condition on inputs alone would hold for others too
+    let keeps = seen.values().any(|n| *n > 1);
+    for r in rows {
+        let when = pins_of(r, !keeps);
+        let value = r.power_w / 1e-9;
+        if let Some(g) = cell.leakage.iter_mut().find(|g| g.when == when) {
+            let text = format!("cell `{name}`: two states have the pins `{when}`; the larger counts");
+            Note::new("liberty-states", text).add_once(notes);
+            g.value = g.value.max(value);
+        } else {
+            cell.leakage.push(liberty::LeakageGroup { when, value, ..liberty::LeakageGroup::default() });
+        }
+    }
+    let n = cell.leakage.len() as f64;
+    cell.cell_leakage_power = Some(cell.leakage.iter().map(|g| g.value).sum::<f64>() / n);
+    cell
 }
 
 /// Solves every state of every cell at every corner with the rails at full supply.

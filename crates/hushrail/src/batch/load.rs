@@ -5,12 +5,13 @@ use std::path::Path;
 use std::sync::Arc;
 
 use indexmap::IndexMap;
+use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
 use super::parked::{self, ParkedDomain};
-use super::study::{Limits, ProcessSpec, Study};
+use super::study::{LibertySpec, Limits, ProcessSpec, Study};
 use crate::block::build::fits_pattern;
-use crate::block::{Block, Uncovered, build_block};
+use crate::block::{Block, StateWeights, TableSet, Uncovered, build_block};
 use crate::cell::{Cell, CellReader, RailNames};
 use crate::corner::Corner;
 use crate::device::process::Process;
@@ -18,6 +19,7 @@ use crate::device::spec::DeviceSpec;
 use crate::read::Input;
 use crate::read::counts::{InstanceCounts, read_counts_csv};
 use crate::read::deck::{Deck, Note};
+use crate::read::liberty::{LibertyOptions, read_liberty};
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
 use crate::read::verilog::read_verilog_from;
@@ -117,11 +119,8 @@ pub fn load_process(
     options.skip_includes.clone_from(&spec.skip_includes);
     let own: Vec<_> =
         devices.iter().filter(|(n, _)| !spec.device.contains_key(*n)).chain(&spec.device).collect();
-    let mut p = if sources.is_empty() && !own.is_empty() {
-        Process::empty(name)
-    } else {
-        Process::read(name, &sources, &options)?
-    };
+    let mut p =
+        if sources.is_empty() { Process::empty(name) } else { Process::read(name, &sources, &options)? };
     for (device, d) in own {
         let at = Place::new(&Arc::from(format!("device `{device}` of process `{name}`")), 1, 1);
         p = p.device(device, d.load(folder, &at)?);
@@ -130,6 +129,36 @@ pub fn load_process(
         p = p.alias(a, b);
     }
     Ok(p)
+}
+
+/// Reads the Liberty libraries of a study, side by side.
+///
+/// # Errors
+/// The first file that cannot be read or understood.
+pub fn load_tables(
+    specs: &[LibertySpec],
+    folder: &Path,
+    notes: &mut Vec<Note>,
+) -> Result<TableSet, ReadError> {
+    let files: Vec<(&LibertySpec, &String)> =
+        specs.iter().flat_map(|s| s.files.iter().map(move |f| (s, f))).collect();
+    let read: Vec<_> = files
+        .par_iter()
+        .map(|(s, f)| {
+            let options =
+                LibertyOptions { leakage_unit_w: s.leakage_unit_w, voltage_v: s.vdd_v, temp_c: s.temp_c };
+            Source::open(&folder.join(f)).and_then(|source| read_liberty(&source, &options))
+        })
+        .collect();
+    let mut tables = TableSet::default();
+    for ((spec, _), library) in files.iter().zip(read) {
+        let mut library = library?;
+        for n in std::mem::take(&mut library.notes) {
+            n.add_once(notes);
+        }
+        tables.libraries.push((spec.process.clone(), Arc::new(library)));
+    }
+    Ok(tables)
 }
 
 /// Cards, cell netlists and corners: what is needed before any domain.
@@ -223,6 +252,7 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
     }
     let library = Library::load(study, folder)?;
     let mut notes = library.notes.clone();
+    let tables = load_tables(&study.liberty, folder, &mut notes)?;
     let mut netlists: IndexMap<&[String], crate::read::verilog::Netlist> = IndexMap::new();
     let mut domains = Vec::new();
     for d in &study.domain {
@@ -243,8 +273,14 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
             certainty = Some(shares.certainty);
         }
         weights.extend(d.weights());
-        let block =
+        let mut block =
             library.with_reader(|reader| build_block(&counts, reader, &d.policy, &weights, &mut notes))?;
+        let weight = |m: &str| weights.get(m).cloned().unwrap_or_else(StateWeights::default);
+        block.take_tables(&tables, weight, &mut notes).map_err(|e| ReadError::Syntax {
+            at: Place::new(&Arc::from(origin), 1, 1),
+            found: format!("domain `{}`: {e}", d.name),
+            wanted: "want a [[liberty]] table with libraries that tell it, or another policy".into(),
+        })?;
         let summary = DomainSummary {
             name: d.name.clone(),
             instances: block.instances(),

@@ -7,7 +7,7 @@ use serde::{Deserialize, Serialize};
 
 use super::load::{DomainSummary, Loaded, LoadedDomain};
 use super::watch::{Progress, Watch, watched};
-use crate::block::BoundBlock;
+use crate::block::{Bound, BoundBlock};
 use crate::cell::DeviceShelf;
 use crate::circuit::newton::SolveOptions;
 use crate::corner::Corner;
@@ -44,8 +44,22 @@ pub struct PointResult {
     pub ungated_current_a: f64,
     /// Share of the ungated power saved.
     pub saving: f64,
+    /// What the tables of cells without transistors leave open; absent where no such cell is in the domain.
+    #[serde(default)]
+    pub interval: Option<Interval>,
     /// Limits.
     pub limits: Vec<LimitCheck>,
+}
+
+/// Least and most that tables allow, all cells at the same end.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct Interval {
+    /// Standby power, W.
+    pub power_w: (f64, f64),
+    /// Standby current, A.
+    pub current_a: (f64, f64),
+    /// Power with nothing switched, W.
+    pub ungated_power_w: (f64, f64),
 }
 
 /// A point that could not be computed.
@@ -172,22 +186,45 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
             return part;
         }
     };
-    let mut one = |scheme: &Scheme| -> Result<Asleep, RestError> {
+    let has_tables = bound.has_tables();
+    let ends = has_tables.then(|| [Bound::Low, Bound::High].map(|end| bound.at_bound(end)));
+    let mut one = |scheme: &Scheme, end: Bound| -> Result<Asleep, RestError> {
         if !scheme.changes_block() {
-            return settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop);
+            let bound = match (&ends, end) {
+                (Some([low, _]), Bound::Low) => low,
+                (Some([_, high]), Bound::High) => high,
+                _ => &bound,
+            };
+            return settle(scheme, bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop);
         }
         let block = loaded.block_under(d, scheme)?;
-        let bound = BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options)?;
+        let bound = BoundBlock::new(&block, process, temp, c.vdd_v, &mut shelf, options)?.at_bound(end);
         settle(scheme, &bound, process, temp, c.vdd_v, &mut shelf, &loaded.origin, &watch.stop)
     };
-    let reference = one(&Scheme::ungated("ungated"));
+    let ungated = Scheme::ungated("ungated");
+    let reference = one(&ungated, Bound::Middle);
+    let reference_ends = has_tables.then(|| (one(&ungated, Bound::Low), one(&ungated, Bound::High)));
     for scheme in &loaded.schemes {
         if !scheme.applies_to(&d.name) {
             part.points.push(None);
             continue;
         }
+        let asleep = if scheme.is_ungated() && scheme.overhead_a == 0.0 {
+            reference.clone()
+        } else {
+            one(scheme, Bound::Middle)
+        };
+        let ends = has_tables.then(|| (one(scheme, Bound::Low), one(scheme, Bound::High)));
+        let interval = match (&reference_ends, &ends) {
+            (Some((Ok(a), Ok(b))), Some((Ok(c), Ok(d)))) => Some(Interval {
+                power_w: (c.power_w, d.power_w),
+                current_a: (c.current_a, d.current_a),
+                ungated_power_w: (a.power_w, b.power_w),
+            }),
+            _ => None,
+        };
         let asleep =
-            if scheme.is_ungated() && scheme.overhead_a == 0.0 { reference.clone() } else { one(scheme) };
+            ends.into_iter().flat_map(|(a, b)| [a.err(), b.err()]).flatten().next().map_or(asleep, Err);
         match (&reference, asleep) {
             (Ok(r), Ok(a)) => {
                 let mut limits = Vec::new();
@@ -211,6 +248,7 @@ fn pair(loaded: &Loaded, d: &LoadedDomain, c: &Corner, options: &SolveOptions, w
                     ungated_power_w: r.power_w,
                     ungated_current_a: r.current_a,
                     asleep: a,
+                    interval,
                     limits,
                 }));
             }

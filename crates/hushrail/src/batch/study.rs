@@ -31,7 +31,11 @@ pub struct Study {
     #[serde(default)]
     pub device: IndexMap<String, DeviceSpec>,
     /// Transistor netlists of the cells.
+    #[serde(default)]
     pub cells: CellsSpec,
+    /// Liberty libraries, for masters whose policy is `liberty`.
+    #[serde(default)]
+    pub liberty: Vec<LibertySpec>,
     /// Corners one by one.
     #[serde(default)]
     pub corner: Vec<Corner>,
@@ -89,7 +93,8 @@ pub struct ProcessSpec {
 #[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct CellsSpec {
-    /// SPICE or CDL files.
+    /// SPICE or CDL files; may be left out where every master is known by tables.
+    #[serde(default)]
     pub netlists: Vec<String>,
     /// Metres per unit of length, when the files have no `.option scale`.
     #[serde(default)]
@@ -97,6 +102,26 @@ pub struct CellsSpec {
     /// Names of rails and wells.
     #[serde(default)]
     pub rails: RailNames,
+}
+
+/// Liberty libraries of some processes.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct LibertySpec {
+    /// Files, plain or gzip; each a library of one corner.
+    pub files: Vec<String>,
+    /// Processes they speak for; every one when left out.
+    #[serde(default)]
+    pub process: Vec<String>,
+    /// W per unit of leakage, for files that do not say.
+    #[serde(default)]
+    pub leakage_unit_w: Option<f64>,
+    /// Supply, V, for files that do not say.
+    #[serde(default)]
+    pub vdd_v: Option<f64>,
+    /// Temperature, degrees Celsius, for files that do not say.
+    #[serde(default)]
+    pub temp_c: Option<f64>,
 }
 
 /// All combinations of these.
@@ -216,6 +241,26 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
             value: e.value,
             wanted: e.wanted,
         })?;
+    }
+    for l in &study.liberty {
+        if let Some(name) = l.process.iter().find(|n| !study.process.contains_key(*n)) {
+            return Err(ReadError::Unknown {
+                at: at(),
+                kind: "process",
+                name: name.clone(),
+                nearest: nearest(name, study.process.keys().map(String::as_str)),
+            });
+        }
+        for (what, x) in [("leakage_unit_w", l.leakage_unit_w), ("vdd_v", l.vdd_v)] {
+            if let Some(x) = x.filter(|x| !(*x > 0.0 && x.is_finite())) {
+                return Err(ReadError::Range {
+                    at: at(),
+                    name: format!("{what} of [[liberty]]"),
+                    value: x.to_string(),
+                    wanted: "want more than zero".into(),
+                });
+            }
+        }
     }
     for s in &study.scheme {
         if let Some(name) = s.domains.iter().find(|n| !study.domain.iter().any(|d| d.name == **n)) {

@@ -5,6 +5,7 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
+use super::table::TableCell;
 use crate::cell::{Cell, CellReader};
 use crate::read::counts::InstanceCounts;
 use crate::read::deck::Note;
@@ -23,6 +24,8 @@ pub enum Policy {
     Alias(String),
     /// A given supply current at full supply, A; taken as proportional to the voltage between the rails.
     CurrentA(f64),
+    /// Take its leakage from the Liberty libraries of the study.
+    Liberty,
 }
 
 /// Weights of the states of one cell.
@@ -70,6 +73,8 @@ pub struct Block {
     pub cells: Vec<BlockCell>,
     /// Masters without, counted.
     pub uncovered: Vec<Uncovered>,
+    /// Masters without, known by tables; they stand among the uncovered too.
+    pub tables: Vec<TableCell>,
 }
 
 impl Block {
@@ -161,7 +166,7 @@ pub fn build_block(
         return Err(ReadError::Syntax {
             at: at(),
             found: format!("{total} instances have no transistor netlist: {}{more}{near}", list.join(", ")),
-            wanted: "state a policy for them: zero, alias, or current_a".into(),
+            wanted: "state a policy for them: zero, alias, current_a, or liberty".into(),
         });
     }
     if block.cells.is_empty() && block.uncovered.is_empty() {

@@ -76,7 +76,8 @@ impl Block {
                 );
             }
         }
-        let mut out = Self { cells: Vec::new(), uncovered: self.uncovered.clone() };
+        let mut out =
+            Self { cells: Vec::new(), uncovered: self.uncovered.clone(), tables: self.tables.clone() };
         for c in &self.cells {
             let powered = c.powered || powered.iter().any(|p| fits_pattern(p, &c.master));
             let change = changes.iter().find(|x| x.cells.iter().any(|p| fits_pattern(p, &c.master)));

@@ -7,13 +7,15 @@ use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
 use super::build::{Block, Policy, StateWeights};
+use super::table::TableMember;
+use super::table::law::Bound;
 use crate::cell::sensitivity::{COLUMNS, LogSlopes, SensitivityError};
-use crate::cell::when::product_term;
 use crate::cell::{BoundCell, CellError, DeviceShelf, Levels, Role, State};
 use crate::circuit::newton::{Effort, SolveOptions, Workspace};
 use crate::device::process::Process;
 use crate::device::range::Outside;
 use crate::physics::Kelvin;
+use crate::read::Condition;
 use crate::read::deck::Note;
 use crate::read::source::ReadError;
 
@@ -38,6 +40,14 @@ pub enum BlockError {
         given_v: f64,
         /// Of the curve, V.
         curve_v: f64,
+    },
+    /// A cell whose tables do not tell enough.
+    #[error("leakage of `{master}` from tables: {reason}")]
+    Table {
+        /// The cell.
+        master: String,
+        /// Why.
+        reason: String,
     },
     /// State weights that fit no state or do not add up.
     #[error("state weights of `{master}`: {reason}")]
@@ -64,6 +74,10 @@ pub(super) struct Member {
 #[derive(Debug)]
 pub struct BoundBlock {
     pub(super) members: Vec<Member>,
+    /// Cells known by tables.
+    pub(super) tables: Vec<TableMember>,
+    /// Which end of what their tables allow.
+    pub(super) bound: Bound,
     /// Current of masters given by value, A at full supply.
     pub(super) given_a: f64,
     /// Full supply the given currents refer to, V.
@@ -207,6 +221,16 @@ impl BoundBlock {
             let (master, bound) = (c.master.clone(), Arc::new(bound));
             members.push(Member { master, count: c.count, bound, states, powered: c.powered });
         }
+        let mut tables = Vec::new();
+        for t in &block.tables {
+            tables.push(t.bind(&process.name, temp, vdd_v, &mut shelf.notes)?);
+        }
+        let is_known = |m: &str| block.tables.iter().any(|t| t.master == m);
+        if let Some(u) = block.uncovered.iter().find(|u| u.policy == Policy::Liberty && !is_known(&u.master))
+        {
+            let reason = "no libraries were given".to_owned();
+            return Err(BlockError::Table { master: u.master.clone(), reason }.into());
+        }
         let given_a = block
             .uncovered
             .iter()
@@ -215,7 +239,26 @@ impl BoundBlock {
                 _ => 0.0,
             })
             .sum();
-        Ok(Self { members, given_a, vdd_v, options: options.clone(), has_gidl })
+        Ok(Self { members, tables, bound: Bound::Middle, given_a, vdd_v, options: options.clone(), has_gidl })
+    }
+
+    /// Whether cells known by tables are in it, whose current over a collapsing rail is an interval.
+    pub fn has_tables(&self) -> bool {
+        !self.tables.is_empty()
+    }
+
+    /// The block at one end of what its tables allow.
+    #[must_use]
+    pub fn at_bound(&self, bound: Bound) -> Self {
+        Self {
+            members: self.members.clone(),
+            tables: self.tables.clone(),
+            bound,
+            given_a: self.given_a,
+            vdd_v: self.vdd_v,
+            options: self.options.clone(),
+            has_gidl: self.has_gidl,
+        }
     }
 
     /// The currents at given levels. Work is shared over threads by cell and summed in order, so the bits do not depend on
@@ -232,6 +275,13 @@ impl BoundBlock {
         let mut sum = BlockCurrents::zero();
         for p in parts {
             sum.join(p?);
+        }
+        for t in &self.tables {
+            let i = t.current_a(levels, self.bound);
+            sum.supply[0] += i;
+            sum.ground[0] -= i;
+            sum.power_w[0] += i * (levels.supply_v - levels.ground_v);
+            sum.cells.push(CellShare { master: t.master.clone(), count: t.count, current_a: i });
         }
         if self.given_a != 0.0 {
             let i = self.given_a * (levels.supply_v - levels.ground_v) / self.vdd_v;
@@ -284,7 +334,8 @@ impl BoundBlock {
                 Ok(sum)
             })
             .collect();
-        let mut current_a = self.given_a;
+        let known = self.tables.iter().map(|t| t.current_a(levels, self.bound));
+        let mut current_a = self.given_a + known.sum::<f64>();
         let mut slopes = [0.0; COLUMNS];
         for p in parts {
             let (i, d) = p?;
@@ -341,20 +392,18 @@ pub(super) fn weigh(
         if !(*weight >= 0.0 && weight.is_finite()) {
             return Err(wrong(format!("weight {weight} of `{when}` is not zero or more")));
         }
-        let pins = product_term(when)
-            .ok_or_else(|| wrong(format!("`{when}` is not a product of pins such as A&!B")))?;
+        let condition = Condition::parse(when).map_err(|e| wrong(e.to_string()))?;
         let cell = &bound.cell;
-        if let Some(p) = pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
+        let port = |p: &str| cell.ports.iter().position(|q| **q == *p);
+        if let Some(p) = condition.pins().into_iter().find(|p| port(p).is_none()) {
             return Err(wrong(format!("`{when}`: the cell has no pin `{p}`")));
         }
         let fits: Vec<usize> = states
             .iter()
             .enumerate()
             .filter(|(_, s)| {
-                pins.iter().all(|(p, want)| {
-                    let port = cell.ports.iter().position(|q| **q == **p);
-                    port.and_then(|i| s.logic[cell.port_nodes[i]].bit()) == Some(*want)
-                })
+                condition.value(&mut |p| port(p).and_then(|i| s.logic[cell.port_nodes[i]].bit()))
+                    == Some(true)
             })
             .map(|(i, _)| i)
             .collect();

@@ -5,9 +5,12 @@ pub mod change;
 pub mod current;
 pub mod curve;
 pub mod parts;
+pub mod table;
 
 pub use build::{Block, BlockCell, Policy, StateWeights, Uncovered, build_block};
 pub use change::{CellChange, ChangeError, Parked};
 pub use current::{BlockCurrents, BlockError, BlockSensitivity, BoundBlock};
 pub use curve::{BlockCurve, Book, Collapsing, CurveError, Draw};
 pub use parts::Parts;
+pub use table::law::Bound;
+pub use table::{TableCell, TableSet};

@@ -10,15 +10,25 @@ use super::curve::Draw;
 use crate::cell::{Levels, Role};
 
 impl BoundBlock {
-    fn with_members(&self, members: Vec<Member>, given_a: f64) -> Self {
-        Self { members, given_a, vdd_v: self.vdd_v, options: self.options.clone(), has_gidl: self.has_gidl }
+    /// Some of the members; what is known by value and by tables goes with one part only.
+    fn with_members(&self, members: Vec<Member>, given: bool) -> Self {
+        let (given_a, tables) = if given { (self.given_a, self.tables.clone()) } else { (0.0, Vec::new()) };
+        Self {
+            members,
+            tables,
+            bound: self.bound,
+            given_a,
+            vdd_v: self.vdd_v,
+            options: self.options.clone(),
+            has_gidl: self.has_gidl,
+        }
     }
 
     /// What is switched, and what stays on the real rails when there is any.
     pub fn parted(&self) -> (Self, Option<Self>) {
         let (powered, switched): (Vec<_>, Vec<_>) = self.members.iter().cloned().partition(|m| m.powered);
-        let island = (!powered.is_empty()).then(|| self.with_members(powered, 0.0));
-        (self.with_members(switched, self.given_a), island)
+        let island = (!powered.is_empty()).then(|| self.with_members(powered, false));
+        (self.with_members(switched, true), island)
     }
 
     /// The block with cells parked in given states.
@@ -45,7 +55,7 @@ impl BoundBlock {
             let reason = "no cell of the block fits the pattern".to_owned();
             return Err(BlockError::Weights { master: pattern.to_owned(), reason });
         }
-        Ok(self.with_members(members, self.given_a))
+        Ok(self.with_members(members, true))
     }
 
     /// States whose first output is one, and the others: a cell without output counts among the others.
@@ -64,7 +74,7 @@ impl BoundBlock {
             }
         }
         let [up, down] = parts;
-        (self.with_members(up, 0.0), self.with_members(down, self.given_a))
+        (self.with_members(up, false), self.with_members(down, true))
     }
 }
 

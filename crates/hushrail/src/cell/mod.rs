@@ -7,6 +7,5 @@ pub mod edit;
 pub mod logic;
 pub mod posed;
 pub mod sensitivity;
-pub mod when;
 pub use bound::{BoundCell, CellError, DeviceShelf, Levels, State, StateCurrents, supply_power};
 pub use cell::{Cell, CellReader, RailNames, Role};

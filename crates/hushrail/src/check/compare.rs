@@ -7,11 +7,11 @@ use indexmap::IndexMap;
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
-use crate::cell::when::product_term;
 use crate::cell::{BoundCell, Cell, CellError, DeviceShelf, Levels, State, supply_power};
 use crate::circuit::newton::{SolveOptions, Workspace};
 use crate::device::process::Process;
 use crate::physics::Kelvin;
+use crate::read::Condition;
 use crate::read::deck::Note;
 use crate::read::source::{Place, ReadError, Source, nearest};
 
@@ -368,17 +368,16 @@ impl Comparison<'_> {
         for r in rows {
             let mut sum = 0.0;
             let mut n = 0;
-            let reason = match product_term(&r.when) {
-                None => format!("condition `{}` is not a product of pins", r.when),
-                Some(pins) => {
-                    if let Some(p) = pins.keys().find(|p| !cell.ports.iter().any(|q| **q == ***p)) {
+            let reason = match Condition::parse(&r.when) {
+                Err(e) => format!("condition: {e}"),
+                Ok(condition) => {
+                    let port = |p: &str| cell.ports.iter().position(|q| **q == *p);
+                    if let Some(p) = condition.pins().into_iter().find(|p| port(p).is_none()) {
                         format!("the cell has no pin `{p}`")
                     } else {
                         for (_, bits, power) in &solved {
-                            let fits = pins.iter().all(|(p, want)| {
-                                cell.ports.iter().zip(bits).any(|(q, b)| **q == **p && b == want)
-                            });
-                            if fits {
+                            let mut bit = |p: &str| port(p).and_then(|i| bits.get(i).copied());
+                            if condition.value(&mut bit) == Some(true) {
                                 sum += power;
                                 n += 1;
                             }
