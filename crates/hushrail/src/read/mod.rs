@@ -5,10 +5,12 @@ pub mod deck;
 pub mod def;
 pub mod expression;
 pub mod instances;
+pub mod intent;
 pub mod lines;
 pub mod number;
 pub mod source;
 pub mod spice;
+pub mod tcl;
 pub mod verilog;
 mod window;
 

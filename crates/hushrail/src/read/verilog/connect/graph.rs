@@ -480,6 +480,15 @@ impl Connected {
         Some(out)
     }
 
+    /// The paths of all module instances below the top, level by level.
+    pub fn module_instances(&self) -> impl Iterator<Item = String> {
+        (1..self.scopes.len()).map(|scope| {
+            let mut path = self.scope_path(scope);
+            path.pop();
+            path
+        })
+    }
+
     /// Number and member of what a name stands for among the instances of a scope.
     fn entry(&self, scope: usize, name: &str) -> Option<(u32, u32)> {
         let shape = &self.shapes[self.scopes[scope].module as usize];
