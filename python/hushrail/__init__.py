@@ -2,8 +2,9 @@
 
 The main job is one call: :func:`estimate` runs a study, a TOML file that names cards, cell netlists, domains,
 sleep schemes and corners. :func:`cells` gives the leakage table behind it, :func:`compare` holds it against a
-published one, :func:`count` counts the instances of a netlist. :class:`Process` and :class:`Device` give the
-currents of single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without
+published one, :func:`count` counts the instances of a netlist, :func:`read_intent` and :func:`map_intent`
+read power intent and map it onto a netlist. :class:`Process` and :class:`Device` give the currents
+of single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without
 cards, and ``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its
 domain works and the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width
 and the choice under limits. Plots are in ``hushrail.plot``, the demonstration in
@@ -13,6 +14,7 @@ and the choice under limits. Plots are in ``hushrail.plot``, the demonstration i
 from hushrail._core import __version__
 from hushrail.device import TERMINALS, CompactModel, Device, Parameter, Process, TableModel
 from hushrail.errors import HushrailError, RangeError, ReadError, SolveError
+from hushrail.intent import map_intent, read_intent
 from hushrail.leakage import (
     Compared,
     ComparedRow,
@@ -91,5 +93,7 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "map_intent",
+    "read_intent",
     "sensitivities",
 ]

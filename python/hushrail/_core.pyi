@@ -23,9 +23,11 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "map_intent",
     "optima_asked",
     "optimum",
     "oxide_lifetime",
+    "read_intent",
     "sensitivities",
     "transitions",
 ]
@@ -218,3 +220,18 @@ def compare(
 def count(
     files: Sequence[str], *, top: str | None = None, path: str = ""
 ) -> tuple[str, list[tuple[str, int]]]: ...
+
+def read_intent(
+    files: Sequence[str],
+    env: Mapping[str, str],
+    *,
+    verilog: Sequence[str] = ...,
+    top: str | None = None,
+) -> str: ...
+def map_intent(
+    files: Sequence[str],
+    env: Mapping[str, str],
+    verilog: Sequence[str],
+    *,
+    top: str | None = None,
+) -> str: ...

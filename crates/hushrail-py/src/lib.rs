@@ -5,6 +5,7 @@
 mod awake;
 mod device;
 mod error;
+mod intent;
 mod optimum;
 mod own;
 mod run;
@@ -21,6 +22,8 @@ mod _core {
     use crate::awake::{awake_domains, awake_droop, awake_figure, awake_keep, awake_margins, awake_rail};
     #[pymodule_export]
     use crate::device::{Device, Process};
+    #[pymodule_export]
+    use crate::intent::{map_intent, read_intent};
     #[pymodule_export]
     use crate::optimum::{choices_asked, choose, optima_asked, optimum};
     #[pymodule_export]

@@ -7,6 +7,7 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 use serde::{Deserialize, Serialize};
 
+use super::intent::Designs;
 use super::study::{Limits, ProcessSpec, Study};
 use crate::block::build::fits_pattern;
 use crate::block::{Block, Uncovered, build_block};
@@ -17,6 +18,7 @@ use crate::device::spec::DeviceSpec;
 use crate::read::Input;
 use crate::read::counts::{InstanceCounts, read_counts_csv};
 use crate::read::deck::{Deck, Note};
+use crate::read::intent::MappedDomain;
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
 use crate::read::verilog::read_verilog_from;
@@ -32,6 +34,8 @@ pub struct LoadedDomain {
     pub block: Block,
     /// What the counts say.
     pub summary: DomainSummary,
+    /// What the power intent says, for a domain taken from it.
+    pub intent: Option<MappedDomain>,
 }
 
 /// Numbers of a domain for reports.
@@ -219,9 +223,13 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
     let library = Library::load(study, folder)?;
     let mut notes = library.notes.clone();
     let mut netlists: IndexMap<&[String], crate::read::verilog::Netlist> = IndexMap::new();
+    let mut designs = Designs::default();
     let mut domains = Vec::new();
     for d in &study.domain {
-        let counts: InstanceCounts = if let Some(f) = &d.counts {
+        let mapped = designs.domain(study, d, origin, folder, &mut notes)?;
+        let counts: InstanceCounts = if let Some(mapped) = &mapped {
+            mapped.counts.clone()
+        } else if let Some(f) = &d.counts {
             read_counts_csv(&Source::open(&folder.join(f))?)?
         } else {
             if !netlists.contains_key(d.verilog.as_slice()) {
@@ -238,7 +246,7 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
             computed: block.covered(),
             uncovered: block.uncovered.clone(),
         };
-        domains.push(LoadedDomain { name: d.name.clone(), block, summary });
+        domains.push(LoadedDomain { name: d.name.clone(), block, summary, intent: mapped });
     }
     let mut added = IndexMap::new();
     for name in study.scheme.iter().flat_map(|s| s.added.keys()) {

@@ -147,7 +147,8 @@ struct Parser<'a> {
     parts: usize,
 }
 
-const LEVELS: [&[&str]; 6] = [&["||"], &["&&"], &["|"], &["^", "~^", "^~"], &["&"], &["===", "!==", "==", "!="]];
+const LEVELS: [&[&str]; 6] =
+    [&["||"], &["&&"], &["|"], &["^", "~^", "^~"], &["&"], &["===", "!==", "==", "!="]];
 
 impl Parser<'_> {
     fn rest(&self) -> &str {
@@ -229,7 +230,8 @@ impl Parser<'_> {
                 let Some(end) = self.rest().find('}') else { return Err(self.wrong("want `}`")) };
                 let inside = self.rest()[1..end].to_owned();
                 let outer = self.pos;
-                let value = Self::nested(&inside, self.depth).map_err(|e| ConditionError { byte: outer + 1 + e.byte, ..e })?;
+                let value = Self::nested(&inside, self.depth)
+                    .map_err(|e| ConditionError { byte: outer + 1 + e.byte, ..e })?;
                 self.pos += end + 1;
                 Ok(value)
             }

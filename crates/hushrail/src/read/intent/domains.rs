@@ -151,12 +151,20 @@ impl Reader<'_> {
             return Err(tcl.wrong(args.at, found, "give the netlist with the intent"));
         };
         if args.has("regexp") {
-            return Err(tcl.wrong(args.spot("regexp"), "`-regexp` is not offered", "want a pattern with `*`"));
+            return Err(tcl.wrong(
+                args.spot("regexp"),
+                "`-regexp` is not offered",
+                "want a pattern with `*`",
+            ));
         }
         let kind = args.word("object_type").map_or("inst", |w| w.text());
         if !matches!(kind, "inst" | "cell" | "model") || kind == "model" {
             let at = args.spot("object_type");
-            return Err(tcl.wrong(at, format!("objects of type `{}` are not offered", cut(kind)), "want `inst`"));
+            return Err(tcl.wrong(
+                at,
+                format!("objects of type `{}` are not offered", cut(kind)),
+                "want `inst`",
+            ));
         }
         let pattern = args.word("pattern").map_or("*", |w| w.text());
         let scope = self.enter(tcl, &args.words[0].value)?;

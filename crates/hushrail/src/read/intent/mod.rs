@@ -56,8 +56,9 @@ use std::collections::BTreeMap;
 
 pub use condition::{Condition, ConditionError};
 pub use model::{
-    Connection, Domain, Intent, Isolation, LevelShifter, Named, PowerState, PowerSwitch, Retention, StateTable,
-    SupplyNet, SupplyPort, SupplySet, SupplyState, SwitchControl, SwitchState, SwitchSupply, TableRow, Trigger,
+    Connection, Domain, Intent, Isolation, LevelShifter, Named, PowerState, PowerSwitch, Retention,
+    StateTable, SupplyNet, SupplyPort, SupplySet, SupplyState, SwitchControl, SwitchState, SwitchSupply,
+    TableRow, Trigger,
 };
 pub use resolve::{Control, DomainMap, MappedDomain, MappedSwitch, resolve};
 
@@ -102,8 +103,13 @@ impl<'a> IntentOptions<'a> {
 /// The first thing that is wrong, with the place of the word: in the script, in a command, in a name.
 pub fn read_intent(sources: &[Source], options: &IntentOptions<'_>) -> Result<Intent, ReadError> {
     let mut tcl = Interpreter::new(&options.env, options.limits);
-    let mut reader =
-        Reader { intent: Intent::default(), scope: String::new(), version: None, design: options.design, commands: 0 };
+    let mut reader = Reader {
+        intent: Intent::default(),
+        scope: String::new(),
+        version: None,
+        design: options.design,
+        commands: 0,
+    };
     for source in sources {
         reader.scope.clear();
         tcl.run(&mut reader, source)?;
@@ -115,7 +121,9 @@ pub fn read_intent(sources: &[Source], options: &IntentOptions<'_>) -> Result<In
     if reader.commands == 0 {
         return Err(match sources.first() {
             Some(source) => source.nothing("command of power intent"),
-            None => ReadError::Nothing { path: "-".into(), wanted: "file of power intent".into(), empty: true },
+            None => {
+                ReadError::Nothing { path: "-".into(), wanted: "file of power intent".into(), empty: true }
+            }
         });
     }
     let mut intent = reader.intent;
@@ -227,7 +235,14 @@ impl Reader<'_> {
         names.into_iter().filter_map(inside).collect()
     }
 
-    fn twice(&self, tcl: &Interpreter, at: Spot, what: &str, word: &Word, first: &super::source::Place) -> Stop {
+    fn twice(
+        &self,
+        tcl: &Interpreter,
+        at: Spot,
+        what: &str,
+        word: &Word,
+        first: &super::source::Place,
+    ) -> Stop {
         tcl.wrong(
             at,
             format!("{what} `{}` is defined twice; first in {first}", cut(word.text())),

@@ -158,8 +158,10 @@ pub fn resolve(intent: &Intent, net: &Connected) -> Result<DomainMap, ReadError>
                 }
             }
         }
-        let isolations: Vec<Isolation> = intent.isolations.iter().filter(|i| i.domain == d.name).cloned().collect();
-        let retentions: Vec<Retention> = intent.retentions.iter().filter(|r| r.domain == d.name).cloned().collect();
+        let isolations: Vec<Isolation> =
+            intent.isolations.iter().filter(|i| i.domain == d.name).cloned().collect();
+        let retentions: Vec<Retention> =
+            intent.retentions.iter().filter(|r| r.domain == d.name).cloned().collect();
         let mut isolation_nets = Vec::new();
         for isolation in &isolations {
             for signal in &isolation.signals {
@@ -252,7 +254,10 @@ fn assign(intent: &Intent, net: &Connected) -> Result<Assigned, ReadError> {
                     let (a, b) = (&intent.domains[other], d);
                     return Err(ReadError::Syntax {
                         at: at.clone(),
-                        found: format!("`{shown}` is in two power domains: `{}` ({}) and `{}`", a.name, a.at, b.name),
+                        found: format!(
+                            "`{shown}` is in two power domains: `{}` ({}) and `{}`",
+                            a.name, a.at, b.name
+                        ),
                         wanted: "want each instance listed in one".into(),
                     });
                 }
@@ -378,14 +383,23 @@ impl Supplies {
     }
 
     /// The primary supply of a domain: the net given, or the function of its primary set.
-    fn primary(&mut self, d: &Domain, function: &str, given: Option<&str>) -> Result<Option<String>, ReadError> {
+    fn primary(
+        &mut self,
+        d: &Domain,
+        function: &str,
+        given: Option<&str>,
+    ) -> Result<Option<String>, ReadError> {
         let own = format!("{}.primary.{function}", d.name);
         let from_set = self.ids.contains_key(&own);
         let Some(net) = given else { return Ok(from_set.then(|| self.plain(&own))) };
         if from_set && !self.joined(&own, net) {
             return Err(ReadError::Syntax {
                 at: d.at.clone(),
-                found: format!("two primary {function} nets for power domain `{}`: `{net}` and `{}`", d.name, self.plain(&own)),
+                found: format!(
+                    "two primary {function} nets for power domain `{}`: `{net}` and `{}`",
+                    d.name,
+                    self.plain(&own)
+                ),
                 wanted: "want one".into(),
             });
         }

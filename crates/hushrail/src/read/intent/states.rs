@@ -1,9 +1,9 @@
 //! States of supplies, tables of them, power states.
 
 use super::super::tcl::{Interpreter, Stop, Value};
+use super::Reader;
 use super::model::{PowerState, StateTable, SupplyState, TableRow};
 use super::table::{Args, cut};
-use super::Reader;
 
 impl Reader<'_> {
     pub(super) fn add_supply_states(&mut self, tcl: &mut Interpreter, args: &Args) -> Result<(), Stop> {
@@ -11,7 +11,11 @@ impl Reader<'_> {
         for word in args.each("state") {
             let parts = tcl.list(&word.value)?;
             let (Some(name), values) = (parts.first(), parts.get(1..).unwrap_or_default()) else {
-                return Err(tcl.wrong(word.at, "a state without a name", "want `{name 0.8}` or `{name off}`"));
+                return Err(tcl.wrong(
+                    word.at,
+                    "a state without a name",
+                    "want `{name 0.8}` or `{name off}`",
+                ));
             };
             let off = matches!(values, [one] if one.text() == "off");
             let mut volts = Vec::new();
@@ -26,11 +30,17 @@ impl Reader<'_> {
             }
             if (volts.is_empty() && !off) || volts.len() > 3 || !volts.is_sorted() {
                 let found = format!("`{}` is no state of a supply", cut(word.text()));
-                return Err(tcl.wrong(word.at, found, "want one voltage, least and most, all three in order, or `off`"));
+                return Err(tcl.wrong(
+                    word.at,
+                    found,
+                    "want one voltage, least and most, all three in order, or `off`",
+                ));
             }
-            let twice = self.intent.supply_states.iter().find(|s| s.supply == supply && s.name == name.text());
+            let twice =
+                self.intent.supply_states.iter().find(|s| s.supply == supply && s.name == name.text());
             if let Some(first) = twice {
-                let found = format!("state `{}` of `{supply}` is defined twice; first in {}", name.text(), first.at);
+                let found =
+                    format!("state `{}` of `{supply}` is defined twice; first in {}", name.text(), first.at);
                 return Err(tcl.wrong(name.spot(), found, "want another name"));
             }
             let at = tcl.place(name.spot());
@@ -56,7 +66,12 @@ impl Reader<'_> {
                 supplies.push(self.supply(tcl, &value)?);
             }
         }
-        self.intent.state_tables.push(StateTable { name, supplies, rows: Vec::new(), at: tcl.place(word.at) });
+        self.intent.state_tables.push(StateTable {
+            name,
+            supplies,
+            rows: Vec::new(),
+            at: tcl.place(word.at),
+        });
         Ok(())
     }
 
@@ -98,10 +113,15 @@ impl Reader<'_> {
                 parts.extend(tcl.list(&word.value)?);
             }
             let Some((name, options)) = parts.split_first() else {
-                return Err(tcl.wrong(words[0].at, "a state without a name", "want `{name -logic_expr {…}}`"));
+                return Err(tcl.wrong(
+                    words[0].at,
+                    "a state without a name",
+                    "want `{name -logic_expr {…}}`",
+                ));
             };
             let at = tcl.place(name.spot());
-            let old = self.intent.power_states.iter().position(|s| s.object == object && s.name == name.text());
+            let old =
+                self.intent.power_states.iter().position(|s| s.object == object && s.name == name.text());
             let mut state = match (old, args.has("update")) {
                 (Some(i), true) => self.intent.power_states[i].clone(),
                 (Some(i), false) => {

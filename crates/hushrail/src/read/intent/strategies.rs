@@ -1,9 +1,9 @@
 //! Isolation, retention and level shifters.
 
 use super::super::tcl::{Interpreter, Stop, Word};
+use super::Reader;
 use super::model::{Isolation, LevelShifter, Named, Retention, Trigger};
 use super::table::{Args, cut};
-use super::Reader;
 
 /// Checks a word against those that may stand there.
 fn among(tcl: &Interpreter, word: &Word, kind: &'static str, known: &[&str]) -> Result<String, Stop> {
@@ -57,7 +57,12 @@ impl Reader<'_> {
         }
     }
 
-    fn supplies_of(&self, tcl: &mut Interpreter, args: &Args, options: [&str; 2]) -> Result<Vec<String>, Stop> {
+    fn supplies_of(
+        &self,
+        tcl: &mut Interpreter,
+        args: &Args,
+        options: [&str; 2],
+    ) -> Result<Vec<String>, Stop> {
         let mut out = Vec::new();
         for option in options {
             if let Some(word) = args.word(option) {
@@ -78,7 +83,10 @@ impl Reader<'_> {
             // a control command names what is there already
             let name = args.words[0].text();
             let domain = args.word("domain").map(|w| self.whole(w));
-            self.intent.isolations.iter().any(|i| i.name == name && Some(&i.domain) == domain.as_ref() && i.signals.is_empty())
+            self.intent
+                .isolations
+                .iter()
+                .any(|i| i.name == name && Some(&i.domain) == domain.as_ref() && i.signals.is_empty())
         };
         let old: Vec<_> =
             self.intent.isolations.iter().map(|i| (i.name.as_str(), i.domain.as_str(), &i.at)).collect();
@@ -156,7 +164,11 @@ impl Reader<'_> {
         let parts = tcl.list(&word.value)?;
         let [net, edge] = parts.as_slice() else {
             let found = format!("`{}` is no signal with its level", cut(word.text()));
-            return Err(tcl.wrong(word.at, found, "want `{net high}`, `{net low}`, `{net posedge}` or `{net negedge}`"));
+            return Err(tcl.wrong(
+                word.at,
+                found,
+                "want `{net high}`, `{net low}`, `{net posedge}` or `{net negedge}`",
+            ));
         };
         let edge = among(tcl, &Word { at: edge.spot(), value: edge.clone() }, "level of a signal", &EDGES)?;
         Ok(Some(Trigger { net: self.whole_text(net.text()), edge, at: tcl.place(net.spot()) }))
@@ -166,7 +178,10 @@ impl Reader<'_> {
         let control = args.has("save_signal") && !args.has("update") && {
             let name = args.words[0].text();
             let domain = args.word("domain").map(|w| self.whole(w));
-            self.intent.retentions.iter().any(|r| r.name == name && Some(&r.domain) == domain.as_ref() && r.save.is_none())
+            self.intent
+                .retentions
+                .iter()
+                .any(|r| r.name == name && Some(&r.domain) == domain.as_ref() && r.save.is_none())
         };
         let old: Vec<_> =
             self.intent.retentions.iter().map(|i| (i.name.as_str(), i.domain.as_str(), &i.at)).collect();
@@ -193,7 +208,10 @@ impl Reader<'_> {
         put(&mut made.save, self.trigger(tcl, args.word("save_signal"))?);
         put(&mut made.restore, self.trigger(tcl, args.word("restore_signal"))?);
         put(&mut made.condition, args.word("retention_condition").map(|w| w.text().to_owned()));
-        put(&mut made.supply, self.supplies_of(tcl, args, ["retention_supply_set", "retention_supply"])?.pop());
+        put(
+            &mut made.supply,
+            self.supplies_of(tcl, args, ["retention_supply_set", "retention_supply"])?.pop(),
+        );
         put(&mut made.power_net, self.net_of(tcl, args, "retention_power_net")?);
         put(&mut made.ground_net, self.net_of(tcl, args, "retention_ground_net")?);
         made.none |= args.has("no_retention");

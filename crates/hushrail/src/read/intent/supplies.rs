@@ -98,9 +98,9 @@ impl Reader<'_> {
 
     pub(super) fn is_switch_port(&self, name: &str) -> bool {
         name.rsplit_once('/').is_some_and(|(switch, port)| {
-            self.intent.switch(switch).is_some_and(|s| {
-                s.output.port == port || s.inputs.iter().any(|i| i.port == port)
-            })
+            self.intent
+                .switch(switch)
+                .is_some_and(|s| s.output.port == port || s.inputs.iter().any(|i| i.port == port))
         })
     }
 
@@ -140,7 +140,8 @@ impl Reader<'_> {
             let set = &mut self.intent.supply_sets[index];
             match set.functions.get(&kind) {
                 Some(old) if *old != net => {
-                    let found = format!("two nets for `{kind}` of supply set `{}`: `{old}` and `{net}`", set.name);
+                    let found =
+                        format!("two nets for `{kind}` of supply set `{}`: `{old}` and `{net}`", set.name);
                     return Err(tcl.wrong(at, found, "want one"));
                 }
                 _ => set.functions.insert(kind, net),
@@ -153,7 +154,9 @@ impl Reader<'_> {
         let net = self.supply(tcl, &args.words[0].value)?;
         self.scope_of_domain(tcl, args)?;
         let ports = self.names_in(tcl, args.word("ports"))?;
-        self.intent.connections.extend(ports.into_iter().map(|p| Connection { net: net.clone(), port: p.path }));
+        self.intent
+            .connections
+            .extend(ports.into_iter().map(|p| Connection { net: net.clone(), port: p.path }));
         Ok(())
     }
 
@@ -169,7 +172,10 @@ impl Reader<'_> {
         let domain = &mut self.intent.domains[domain];
         match domain.supplies.get(handle) {
             Some(old) if *old != set => {
-                let found = format!("two supply sets for `{handle}` of power domain `{}`: `{old}` and `{set}`", domain.name);
+                let found = format!(
+                    "two supply sets for `{handle}` of power domain `{}`: `{old}` and `{set}`",
+                    domain.name
+                );
                 Err(tcl.wrong(at, found, "want one"))
             }
             _ => {

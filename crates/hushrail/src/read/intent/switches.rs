@@ -99,7 +99,9 @@ impl Reader<'_> {
         let parts = tcl.list(&word.value)?;
         match parts.as_slice() {
             [port] => Ok(SwitchSupply { port: port.text().to_owned(), net: None }),
-            [port, net] => Ok(SwitchSupply { port: port.text().to_owned(), net: Some(self.supply(tcl, net)?) }),
+            [port, net] => {
+                Ok(SwitchSupply { port: port.text().to_owned(), net: Some(self.supply(tcl, net)?) })
+            }
             _ => Err(tcl.wrong(
                 word.at,
                 format!("`{}` is no supply port of a switch", cut(word.text())),
@@ -134,18 +136,28 @@ impl Reader<'_> {
 
 /// The condition a value is.
 pub(super) fn condition_of(tcl: &Interpreter, value: &Value) -> Result<Condition, Stop> {
-    Condition::read(value.text())
-        .map_err(|e| tcl.wrong(tcl.spot_in(value, e.byte), format!("in the condition: {}", e.found), e.wanted))
+    Condition::read(value.text()).map_err(|e| {
+        tcl.wrong(tcl.spot_in(value, e.byte), format!("in the condition: {}", e.found), e.wanted)
+    })
 }
 
-fn switch_state(tcl: &mut Interpreter, switch: &PowerSwitch, word: &Word, on: bool) -> Result<SwitchState, Stop> {
+fn switch_state(
+    tcl: &mut Interpreter,
+    switch: &PowerSwitch,
+    word: &Word,
+    on: bool,
+) -> Result<SwitchState, Stop> {
     let parts = tcl.list(&word.value)?;
     let (name, input, condition) = match (parts.as_slice(), on) {
         ([name, input, condition], true) => (name, Some(input), condition),
         ([name, condition], false) => (name, None, condition),
         _ => {
             let wanted = if on { "want `{name input {condition}}`" } else { "want `{name {condition}}`" };
-            return Err(tcl.wrong(word.at, format!("`{}` is no state of a switch", cut(word.text())), wanted));
+            return Err(tcl.wrong(
+                word.at,
+                format!("`{}` is no state of a switch", cut(word.text())),
+                wanted,
+            ));
         }
     };
     if let Some(input) = input

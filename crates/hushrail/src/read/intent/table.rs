@@ -138,19 +138,43 @@ pub(super) const COMMANDS: &[Command] = &[
         "domain= elements= exclude_elements= applies_to= repeater_supply= repeater_supply_set= source= sink= \
          use_equivalence=? name_prefix= name_suffix= instance=* update applies_to_boundary=",
     ),
-    noted("set_retention_elements", (1, 1), "elements= exclude_elements= applies_to= retention_purpose= transitive=? expand=? update"),
+    noted(
+        "set_retention_elements",
+        (1, 1),
+        "elements= exclude_elements= applies_to= retention_purpose= transitive=? expand=? update",
+    ),
     noted("set_correlated", (0, 0), "nets= sets="),
     noted("set_variation", (0, 0), "supply= range="),
     noted("set_partial_on_translation", (1, 1), "full_on_tools= off_tools="),
-    noted("set_power_switch", (1, 1), "output_supply_port= input_supply_port=* control_port=* on_state=* off_state=*"),
+    noted(
+        "set_power_switch",
+        (1, 1),
+        "output_supply_port= input_supply_port=* control_port=* on_state=* off_state=*",
+    ),
     noted("map_power_switch", (1, 1), "domain= lib_cells= port_map="),
-    noted("map_isolation_cell", (1, 1), "domain= elements= lib_cells= lib_cell_type= lib_model_name= port=* port_map="),
+    noted(
+        "map_isolation_cell",
+        (1, 1),
+        "domain= elements= lib_cells= lib_cell_type= lib_model_name= port=* port_map=",
+    ),
     noted("map_level_shifter_cell", (1, 1), "domain= elements= lib_cells="),
-    noted("map_retention_cell", (1, 1), "domain= elements= exclude_elements= lib_cells= lib_cell_type= lib_model_name= port_map= port=*"),
+    noted(
+        "map_retention_cell",
+        (1, 1),
+        "domain= elements= exclude_elements= lib_cells= lib_cell_type= lib_model_name= port_map= port=*",
+    ),
     noted("map_retention_clamp_cell", (1, 1), "domain= elements= exclude_elements= lib_cells="),
     noted("map_repeater_cell", (1, 1), "domain= elements= exclude_elements= lib_cells="),
-    noted("use_interface_cell", (1, 1), "strategy= domain= lib_cells= port_map= elements= exclude_elements= applies_to_clamp= update_any= force_function inverter_supply_set="),
-    noted("add_state_transition", (1, 2), "transition=* from= to= paired= legal illegal update complete supply domain group model instance"),
+    noted(
+        "use_interface_cell",
+        (1, 1),
+        "strategy= domain= lib_cells= port_map= elements= exclude_elements= applies_to_clamp= update_any= force_function inverter_supply_set=",
+    ),
+    noted(
+        "add_state_transition",
+        (1, 2),
+        "transition=* from= to= paired= legal illegal update complete supply domain group model instance",
+    ),
     noted("describe_state_transition", (1, 1), "object= from= to= paired= legal illegal"),
     noted("create_power_state_group", (1, 1), ""),
     noted("add_parameter", (1, 2), "type= default= description= buildtime runtime rtpg"),
@@ -163,13 +187,29 @@ pub(super) const COMMANDS: &[Command] = &[
     noted("create_upf2hdl_vct", (1, 1), "hdl_type= table="),
     noted("create_upf_library", (1, 1), "contents="),
     noted("use_upf_library", (1, 1), "library="),
-    noted("create_assertion_control", (1, 1), "elements= exclude_elements= domain= control_expr= type= transitive=?"),
+    noted(
+        "create_assertion_control",
+        (1, 1),
+        "elements= exclude_elements= domain= control_expr= type= transitive=?",
+    ),
     noted("create_abstract_power_source", (1, 1), "output_supply_port= input_supply_port=* control_port=*"),
     noted("create_upf_bind", (1, ANY), ""),
-    noted("sim_assertion_control", (0, 1), "elements= exclude_elements= domain= model= transitive=? controlling_domain= type="),
+    noted(
+        "sim_assertion_control",
+        (0, 1),
+        "elements= exclude_elements= domain= model= transitive=? controlling_domain= type=",
+    ),
     noted("sim_corruption_control", (0, 1), "elements= exclude_elements= domain= model= transitive=? type="),
-    noted("sim_replay_control", (0, 1), "elements= exclude_elements= domain= model= transitive=? controlling_domain="),
-    noted("name_format", (0, 0), "isolation_prefix= isolation_suffix= level_shift_prefix= level_shift_suffix= implicit_supply_suffix= implicit_logic_prefix= implicit_logic_suffix="),
+    noted(
+        "sim_replay_control",
+        (0, 1),
+        "elements= exclude_elements= domain= model= transitive=? controlling_domain=",
+    ),
+    noted(
+        "name_format",
+        (0, 0),
+        "isolation_prefix= isolation_suffix= level_shift_prefix= level_shift_suffix= implicit_supply_suffix= implicit_logic_prefix= implicit_logic_suffix=",
+    ),
     noted("save_upf", (1, 1), "scope= version="),
     noted("upf_query_object_properties", (1, 1), "property="),
     noted("set_operating_conditions", (0, ANY), "object_list= analysis_type= library="),
@@ -261,7 +301,8 @@ impl Args {
 }
 
 fn is_option(text: &str) -> bool {
-    text.strip_prefix('-').is_some_and(|t| t.starts_with(|c: char| c.is_ascii_alphabetic() || c == '_'))
+    let name = text.strip_prefix('-').filter(|t| !t.contains(char::is_whitespace));
+    name.is_some_and(|t| t.starts_with(|c: char| c.is_ascii_alphabetic() || c == '_'))
 }
 
 /// Takes a command apart by its options.
@@ -293,7 +334,7 @@ pub(super) fn take_apart(
         }
         let name = &word.text()[1..];
         let Some(option) = known.iter().find(|o| o.name == name) else {
-            return Err(unknown_option(tcl, word, command, &known));
+            return Err(unknown_option(tcl, word, &known));
         };
         if !option.repeats && args.has(name) {
             let found = format!("`-{name}` stands twice in `{}`", command.name);
@@ -304,14 +345,19 @@ pub(super) fn take_apart(
             tcl.note("option-of-later-version", word.at, &text);
         }
         if !option.used && command.usage == Use::Taken {
-            tcl.note("option-without-use", word.at, &format!("`-{name}` of `{}` is read and has no use here", command.name));
+            tcl.note(
+                "option-without-use",
+                word.at,
+                &format!("`-{name}` of `{}` is read and has no use here", command.name),
+            );
         }
         let follows = |w: &&Word| !known.iter().any(|o| w.text().strip_prefix('-') == Some(o.name));
         let mut values = Vec::new();
         match option.values {
             Values::None => {}
             Values::Maybe => {
-                let flag = |w: &&Word| ["true", "false", "0", "1"].contains(&w.text().to_ascii_lowercase().as_str());
+                let flag =
+                    |w: &&Word| ["true", "false", "0", "1"].contains(&w.text().to_ascii_lowercase().as_str());
                 values.extend(rest.next_if(flag).cloned());
             }
             Values::One | Values::OneOrTwo => {
@@ -338,16 +384,35 @@ pub(super) fn take_apart(
     Ok(args)
 }
 
-fn unknown_option(tcl: &Interpreter, word: &Word, command: &Command, known: &[Opt]) -> Stop {
+fn unknown_option(tcl: &Interpreter, word: &Word, known: &[Opt]) -> Stop {
     let names: Vec<String> = known.iter().map(|o| format!("-{}", o.name)).collect();
     let near = nearest(word.text(), names.iter().map(String::as_str))
         .or_else(|| names.iter().find(|n| n.starts_with(word.text())).cloned())
         .or_else(|| (!names.is_empty()).then(|| names.join("`, `")));
-    let _ = command;
-    ReadError::Unknown { at: tcl.place(word.at), kind: "option", name: cut(word.text()), nearest: near }.into()
+    ReadError::Unknown { at: tcl.place(word.at), kind: "option", name: cut(word.text()), nearest: near }
+        .into()
 }
 
 /// A text cut for a message.
 pub(super) fn cut(text: &str) -> String {
-    if text.chars().count() <= 60 { text.to_owned() } else { text.chars().take(57).collect::<String>() + "…" }
+    if text.chars().count() <= 60 {
+        text.to_owned()
+    } else {
+        text.chars().take(57).collect::<String>() + "…"
+    }
+}
+
+#[cfg(test)]
+pub(super) fn check(command: &Command) {
+    let all: Vec<Opt> = options(command).collect();
+    for o in &all {
+        assert!(
+            o.name.bytes().all(|b| b.is_ascii_alphanumeric() || b == b'_'),
+            "{}: {}",
+            command.name,
+            o.name
+        );
+        assert_eq!(all.iter().filter(|p| p.name == o.name).count(), 1, "{}: {}", command.name, o.name);
+        assert!((1.0..=3.1).contains(&o.since));
+    }
 }

@@ -11,17 +11,50 @@ use super::{Host, Interpreter, Outcome, short};
 
 /// The commands that are offered.
 pub(super) const NAMES: [&str; 38] = [
-    "append", "array", "break", "catch", "concat", "continue", "error", "eval", "expr", "file", "for", "foreach",
-    "format", "global", "if", "incr", "info", "join", "lappend", "lindex", "linsert", "list", "llength", "lrange",
-    "lreverse", "lsearch", "lsort", "package", "proc", "puts", "return", "set", "source", "split", "string", "switch",
-    "unset", "while",
+    "append", "array", "break", "catch", "concat", "continue", "error", "eval", "expr", "file", "for",
+    "foreach", "format", "global", "if", "incr", "info", "join", "lappend", "lindex", "linsert", "list",
+    "llength", "lrange", "lreverse", "lsearch", "lsort", "package", "proc", "puts", "return", "set",
+    "source", "split", "string", "switch", "unset", "while",
 ];
 
 /// Commands of the language that are not.
 pub(super) const REFUSED: [&str; 36] = [
-    "after", "apply", "binary", "cd", "chan", "clock", "close", "coroutine", "dict", "encoding", "eof", "exec",
-    "exit", "fileevent", "flush", "gets", "glob", "interp", "load", "lmap", "lset", "namespace", "open", "pid",
-    "pwd", "read", "regexp", "regsub", "rename", "scan", "socket", "subst", "trace", "uplevel", "upvar", "variable",
+    "after",
+    "apply",
+    "binary",
+    "cd",
+    "chan",
+    "clock",
+    "close",
+    "coroutine",
+    "dict",
+    "encoding",
+    "eof",
+    "exec",
+    "exit",
+    "fileevent",
+    "flush",
+    "gets",
+    "glob",
+    "interp",
+    "load",
+    "lmap",
+    "lset",
+    "namespace",
+    "open",
+    "pid",
+    "pwd",
+    "read",
+    "regexp",
+    "regsub",
+    "rename",
+    "scan",
+    "socket",
+    "subst",
+    "trace",
+    "uplevel",
+    "upvar",
+    "variable",
 ];
 
 /// Runs a command of the language; nothing when there is none of that name.
@@ -62,7 +95,9 @@ pub(super) fn call(
         "file" => file(tcl, words),
         "list" => Ok(listed(words[1..].iter().map(|w| &w.value), words[0].at)),
         "concat" => concat(tcl, words),
-        "llength" | "lindex" | "lrange" | "lsearch" | "lsort" | "lreverse" | "linsert" => lists(tcl, name, words),
+        "llength" | "lindex" | "lrange" | "lsearch" | "lsort" | "lreverse" | "linsert" => {
+            lists(tcl, name, words)
+        }
         "join" | "split" | "string" | "format" => strings::call(tcl, name, words),
         _ => return None,
     })
@@ -86,7 +121,9 @@ fn source(tcl: &mut Interpreter, host: &mut dyn Host, words: &[Word]) -> Outcome
     match words {
         [_, name] => tcl.run_file(host, name),
         [_, flag, _, name] if flag.text() == "-encoding" => tcl.run_file(host, name),
-        [_, flag, name] if matches!(flag.text(), "-e" | "-v" | "-echo" | "-verbose") => tcl.run_file(host, name),
+        [_, flag, name] if matches!(flag.text(), "-e" | "-v" | "-echo" | "-verbose") => {
+            tcl.run_file(host, name)
+        }
         _ => Err(wants(tcl, words, "source file")),
     }
 }
@@ -210,7 +247,16 @@ fn lists(tcl: &mut Interpreter, name: &str, words: &[Word]) -> Outcome {
         ("lsort", [options @ .., of]) => {
             let mut all = tcl.list(&of.value)?;
             let has = |o: &str| options.iter().any(|w| w.text() == o);
-            let known = ["-ascii", "-decreasing", "-dictionary", "-increasing", "-integer", "-nocase", "-real", "-unique"];
+            let known = [
+                "-ascii",
+                "-decreasing",
+                "-dictionary",
+                "-increasing",
+                "-integer",
+                "-nocase",
+                "-real",
+                "-unique",
+            ];
             if let Some(bad) = options.iter().find(|w| !known.contains(&w.text())) {
                 return Err(tcl.unknown(bad.at, "option of lsort", bad.text(), known));
             }
@@ -221,7 +267,8 @@ fn lists(tcl: &mut Interpreter, name: &str, words: &[Word]) -> Outcome {
                         return Err(tcl.wrong(value.spot(), found, "want numbers to sort"));
                     }
                 }
-                let key = |v: &Value| super::number::number(v.text()).map_or(0.0, super::number::Number::real);
+                let key =
+                    |v: &Value| super::number::number(v.text()).map_or(0.0, super::number::Number::real);
                 all.sort_by(|a, b| key(a).total_cmp(&key(b)));
             } else if has("-nocase") {
                 all.sort_by_key(|v| v.text().to_lowercase());
@@ -244,8 +291,11 @@ fn lists(tcl: &mut Interpreter, name: &str, words: &[Word]) -> Outcome {
             }
             let has = |o: &str| options.iter().any(|w| w.text() == o);
             let hit = |v: &Value| {
-                let equal =
-                    if has("-exact") { v.text() == pattern.text() } else { list::fits(pattern.text(), v.text()) };
+                let equal = if has("-exact") {
+                    v.text() == pattern.text()
+                } else {
+                    list::fits(pattern.text(), v.text())
+                };
                 equal != has("-not")
             };
             let found: Vec<usize> = (0..all.len()).filter(|i| hit(&all[*i])).collect();

@@ -32,7 +32,11 @@ pub(super) fn if_(tcl: &mut Interpreter, host: &mut dyn Host, words: &[Word]) ->
             Some("else") => {
                 let body = words.get(i + 1).ok_or_else(|| wants(tcl, words, FORM))?;
                 if let Some(extra) = words.get(i + 2) {
-                    return Err(tcl.wrong(extra.at, "text behind the last body of `if`", "want nothing more"));
+                    return Err(tcl.wrong(
+                        extra.at,
+                        "text behind the last body of `if`",
+                        "want nothing more",
+                    ));
                 }
                 return tcl.evaluate(host, &body.value);
             }

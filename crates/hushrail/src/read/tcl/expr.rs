@@ -38,7 +38,11 @@ pub(super) fn command(tcl: &mut Interpreter, host: &mut dyn Host, words: &[Word]
 pub(super) fn condition(tcl: &mut Interpreter, host: &mut dyn Host, word: &Word) -> Result<bool, Stop> {
     let value = evaluate(tcl, host, &word.value)?;
     truth(value.text()).ok_or_else(|| {
-        tcl.wrong(word.at, format!("`{}` is no truth value", short(value.text())), "want a number or a boolean")
+        tcl.wrong(
+            word.at,
+            format!("`{}` is no truth value", short(value.text())),
+            "want a number or a boolean",
+        )
     })
 }
 
@@ -275,7 +279,11 @@ impl Expression<'_, '_> {
                 let value = self.choice(live)?;
                 self.blanks();
                 if self.cursor.peek() != Some(b')') {
-                    return Err(self.tcl.wrong(open, "a parenthesis that is not closed", "close it with `)`"));
+                    return Err(self.tcl.wrong(
+                        open,
+                        "a parenthesis that is not closed",
+                        "close it with `)`",
+                    ));
                 }
                 self.cursor.pos += 1;
                 Ok(value)

@@ -108,8 +108,7 @@ fn unescaped(list: &Value, from: usize, to: usize) -> Value {
 pub(super) fn escape(text: &str) -> (char, usize) {
     let mut rest = text.chars().skip(1);
     let hex = |skip: usize, most: usize, empty: char| {
-        let digits: String =
-            text.chars().skip(skip).take_while(char::is_ascii_hexdigit).take(most).collect();
+        let digits: String = text.chars().skip(skip).take_while(char::is_ascii_hexdigit).take(most).collect();
         match u32::from_str_radix(&digits, 16).ok().and_then(char::from_u32) {
             Some(c) => (c, skip + digits.len()),
             None => (empty, skip),

@@ -200,8 +200,9 @@ impl Interpreter {
     /// The elements of a word that is a list.
     pub fn list(&mut self, word: &Value) -> Result<Vec<Value>, Stop> {
         self.spend(word.text().len(), word.spot())?;
-        list::elements(word)
-            .map_err(|(byte, what)| self.wrong(word.spot_of(byte), what, "want a list, with its braces closed"))
+        list::elements(word).map_err(|(byte, what)| {
+            self.wrong(word.spot_of(byte), what, "want a list, with its braces closed")
+        })
     }
 
     /// Where a byte of a value was written.
@@ -251,10 +252,11 @@ impl Interpreter {
         self.open.pop();
         match outcome {
             Err(Stop::Return(value)) => Ok(value),
-            Err(stop @ (Stop::Break(_) | Stop::Continue(_))) => Err(self.finished(Err(stop)).map_or_else(
-                Stop::from,
-                |_| self.wrong(name.at, "a loop's end outside a loop", "want it inside"),
-            )),
+            Err(stop @ (Stop::Break(_) | Stop::Continue(_))) => {
+                Err(self.finished(Err(stop)).map_or_else(Stop::from, |_| {
+                    self.wrong(name.at, "a loop's end outside a loop", "want it inside")
+                }))
+            }
             other => other,
         }
     }
@@ -284,11 +286,7 @@ impl Interpreter {
     }
 
     /// Goes one level down.
-    fn deeper<T>(
-        &mut self,
-        at: Spot,
-        work: impl FnOnce(&mut Self) -> Result<T, Stop>,
-    ) -> Result<T, Stop> {
+    fn deeper<T>(&mut self, at: Spot, work: impl FnOnce(&mut Self) -> Result<T, Stop>) -> Result<T, Stop> {
         if self.depth >= self.limits.depth {
             return Err(Stop::Limit(Box::new(ReadError::Syntax {
                 at: self.place(at),
@@ -305,5 +303,9 @@ impl Interpreter {
 
 /// A text cut for a message.
 pub(super) fn short(text: &str) -> String {
-    if text.chars().count() <= 60 { text.to_owned() } else { text.chars().take(57).collect::<String>() + "…" }
+    if text.chars().count() <= 60 {
+        text.to_owned()
+    } else {
+        text.chars().take(57).collect::<String>() + "…"
+    }
 }

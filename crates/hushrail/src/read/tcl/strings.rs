@@ -68,7 +68,8 @@ fn string(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
     let fold = |w: &Word| if nocase { w.text().to_lowercase() } else { w.text().to_owned() };
     let flag = |b: bool| Ok(Value::new(if b { "1" } else { "0" }, at));
     let trimmed = |w: &Word, chars: &[Word], left: bool, right: bool| {
-        let set: Vec<char> = chars.first().map_or_else(|| " \t\r\n".chars().collect(), |w| w.text().chars().collect());
+        let set: Vec<char> =
+            chars.first().map_or_else(|| " \t\r\n".chars().collect(), |w| w.text().chars().collect());
         let mut text = w.text();
         if left {
             text = text.trim_start_matches(&set[..]);
@@ -123,9 +124,8 @@ fn string(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
             let mut out = String::new();
             let mut left = text.text();
             while let Some(c) = left.chars().next() {
-                let hit = pairs
-                    .chunks_exact(2)
-                    .find(|p| !p[0].text().is_empty() && left.starts_with(p[0].text()));
+                let hit =
+                    pairs.chunks_exact(2).find(|p| !p[0].text().is_empty() && left.starts_with(p[0].text()));
                 let used = if let Some(p) = hit {
                     out.push_str(p[1].text());
                     p[0].text().len()

@@ -5,7 +5,8 @@ use proptest::prelude::*;
 use super::*;
 
 fn run_with(text: &str, limits: Limits) -> Result<String, ReadError> {
-    let env = BTreeMap::from([("HOME".to_owned(), "/none".to_owned()), ("MODE".to_owned(), "amber".to_owned())]);
+    let env =
+        BTreeMap::from([("HOME".to_owned(), "/none".to_owned()), ("MODE".to_owned(), "amber".to_owned())]);
     let mut tcl = Interpreter::new(&env, limits);
     tcl.run(&mut (), &Source::from_text("s.tcl", text)).map(|v| v.text().to_owned())
 }
@@ -16,6 +17,7 @@ fn run(text: &str) -> String {
 
 #[test]
 fn plain_scripts_give_what_the_language_says() {
+    let mut wrong = Vec::new();
     for (text, wanted) in [
         ("set a 1; set b $a$a", "11"),
         ("set a {x y}; llength $a", "2"),
@@ -66,7 +68,7 @@ fn plain_scripts_give_what_the_language_says() {
         ("split a/b//c /", "a b {} c"),
         ("concat {a b} c {d}", "a b c d"),
         ("string toupper ab", "AB"),
-        ("string match u_*\\[0\\] u_x\\[0\\]", "1"),
+        ("string match {u_*\\[0\\]} {u_x[0]}", "1"),
         ("string range abcdef 1 end-2", "bcd"),
         ("string map {a 1 b 2} aabbc", "1122c"),
         ("string first b abc", "1"),
@@ -87,20 +89,31 @@ fn plain_scripts_give_what_the_language_says() {
         ("set é 1; set é", "1"),
         ("", ""),
     ] {
-        assert_eq!(run(text), wanted, "{text}");
+        let got = run(text);
+        if got != wanted {
+            wrong.push(format!("{text}\n got {got}\nwant {wanted}"));
+        }
     }
+    assert!(wrong.is_empty(), "{}", wrong.join("\n"));
 }
 
 #[test]
 fn errors_stand_at_the_word() {
+    let mut wrong = Vec::new();
     for (text, wanted) in [
         ("set a 1\nbogus x", "s.tcl:2:1: command `bogus` is not defined"),
         ("foreahc x {1} {}", "s.tcl:1:1: command `foreahc` is not defined; did you mean `foreach`?"),
-        ("set abc 1\nif {1} {\n  set b $abd\n}", "s.tcl:3:9: variable `abd` is not defined; did you mean `abc`?"),
-        ("set ::env(MODES)", "s.tcl:1:5: variable of the environment `MODES` is not defined; did you mean `MODE`?"),
+        (
+            "set abc 1\nif {1} {\n  set b $abd\n}",
+            "s.tcl:3:9: variable `abd` is not defined; did you mean `abc`?",
+        ),
+        (
+            "set ::env(MODES)",
+            "s.tcl:1:5: variable of the environment `MODES` is not defined; did you mean `MODE`?",
+        ),
         ("set a {", "s.tcl:1:7: a brace that is not closed"),
         ("set a \"x\nset b 1", "s.tcl:1:7: a quote that is not closed"),
-        ("set a [set b", "s.tcl:1:7: a bracket that is not closed"),
+        ("set a [set b 1", "s.tcl:1:7: a bracket that is not closed"),
         ("set a {x}y", "s.tcl:1:10: text right behind a brace"),
         ("set a b c", "s.tcl:1:1: `set` with 3 words behind it; want `set name ?value?`"),
         ("set a \\\n", "s.tcl:1:7: the text ends behind a backslash"),
@@ -120,15 +133,21 @@ fn errors_stand_at_the_word() {
         ("source none.tcl", "s.tcl:1:8: `none.tcl` cannot be read: no such file"),
         ("source /", "s.tcl:1:8: `/` is no file"),
         ("error {no power}", "s.tcl:1:1: no power; the script itself says so"),
-        ("string lenght a", "s.tcl:1:8: subcommand of string `lenght` is not defined; did you mean `length`?"),
+        (
+            "string lenght a",
+            "s.tcl:1:8: subcommand of string `lenght` is not defined; did you mean `length`?",
+        ),
         ("llength \"a \\{b\"", "s.tcl:1:"),
         ("set l {a {b}c}; lindex $l 0", "s.tcl:1:13: text right behind a brace"),
         ("incr a x", "s.tcl:1:8: `x` is no whole number"),
         ("set é [bogus]", "s.tcl:1:8: command `bogus`"),
     ] {
         let got = run(text);
-        assert!(got.starts_with(wanted), "{text}\n got {got}\nwant {wanted}");
+        if !got.starts_with(wanted) {
+            wrong.push(format!("{text}\n got {got}\nwant {wanted}"));
+        }
     }
+    assert!(wrong.is_empty(), "{}", wrong.join("\n"));
 }
 
 #[test]
@@ -146,7 +165,7 @@ fn scripts_without_end_are_stopped() {
         assert!(e.contains("more than 20000 steps"), "{text}: {e}");
     }
     let deep = "[list ".repeat(10_000);
-    let parens = format!("expr {{{}", "(".repeat(10_000));
+    let parens = format!("expr {{{}}}", "(".repeat(10_000));
     let signs = format!("expr {{{}1}}", "!".repeat(10_000));
     let arrays = format!("set x $a{}", "($a".repeat(10_000));
     for text in ["proc f x {f $x}\nf 1", "proc f x {catch {f $x}}\nf 1", &deep, &parens, &signs, &arrays] {
@@ -185,15 +204,7 @@ fn values_keep_the_place_they_were_written_at() {
         .unwrap();
     assert_eq!(
         keep.0,
-        [
-            "one s:3:3",
-            "two_15 s:4:3",
-            "three s:4:10",
-            "four s:6:14",
-            "five s:6:20",
-            "a s:8:21",
-            "b s:9:2"
-        ]
+        ["one s:3:3", "two_15 s:4:3", "three s:4:10", "four s:6:14", "five s:6:20", "a s:8:21", "b s:9:2"]
     );
 }
 

@@ -49,7 +49,8 @@ impl Interpreter {
             return (0, global);
         }
         let top = self.frames.len().saturating_sub(1);
-        let linked = self.frames.last().is_some_and(|f| matches!(f.variables.get(name), Some(Variable::Global)));
+        let linked =
+            self.frames.last().is_some_and(|f| matches!(f.variables.get(name), Some(Variable::Global)));
         (if linked { 0 } else { top }, name)
     }
 
@@ -256,7 +257,11 @@ pub(super) fn array(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
         ("set", 4) => {
             let all = tcl.list(&words[3].value)?;
             if !all.len().is_multiple_of(2) {
-                return Err(tcl.wrong(words[3].at, "a list of an odd length", "want keys and values in turn"));
+                return Err(tcl.wrong(
+                    words[3].at,
+                    "a list of an odd length",
+                    "want keys and values in turn",
+                ));
             }
             for pair in all.chunks_exact(2) {
                 let key = format!("{}({})", name.text(), pair[0].text());

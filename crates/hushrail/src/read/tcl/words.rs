@@ -197,7 +197,11 @@ fn word(
 pub(super) fn braced(tcl: &mut Interpreter, cursor: &mut Cursor<'_>) -> Outcome {
     let open = cursor.pos;
     let Some(end) = brace_end(cursor.bytes(), open) else {
-        return Err(tcl.wrong(cursor.spot(), "a brace that is not closed", "close it with `}`; is the file cut off?"));
+        return Err(tcl.wrong(
+            cursor.spot(),
+            "a brace that is not closed",
+            "close it with `}`; is the file cut off?",
+        ));
     };
     cursor.pos = end + 1;
     let mut value = cursor.script.slice(open + 1, end);
@@ -220,7 +224,11 @@ pub(super) fn quoted(
     cursor.pos += 1;
     let value = substitute(tcl, host, cursor, live, &|bytes, i| bytes[i] == b'"')?;
     if cursor.peek() != Some(b'"') {
-        return Err(tcl.wrong(open, "a quote that is not closed", "close it with `\"`; is the file cut off?"));
+        return Err(tcl.wrong(
+            open,
+            "a quote that is not closed",
+            "close it with `\"`; is the file cut off?",
+        ));
     }
     cursor.pos += 1;
     Ok(value)
@@ -315,7 +323,11 @@ pub(super) fn variable(
     let start = cursor.pos + 1;
     if cursor.bytes().get(start) == Some(&b'{') {
         let Some(end) = cursor.bytes()[start..].iter().position(|b| *b == b'}') else {
-            return Err(tcl.wrong(at, "a brace that is not closed", "close the name of the variable with `}`"));
+            return Err(tcl.wrong(
+                at,
+                "a brace that is not closed",
+                "close the name of the variable with `}`",
+            ));
         };
         let name = cursor.script.slice(start + 1, start + end);
         cursor.pos = start + end + 1;
@@ -344,7 +356,11 @@ pub(super) fn variable(
     cursor.pos += 1;
     let index = tcl.deeper(at, |tcl| substitute(tcl, host, cursor, live, &|bytes, i| bytes[i] == b')'))?;
     if cursor.peek() != Some(b')') {
-        return Err(tcl.wrong(at, "a parenthesis that is not closed", "close the index of the array with `)`"));
+        return Err(tcl.wrong(
+            at,
+            "a parenthesis that is not closed",
+            "close the index of the array with `)`",
+        ));
     }
     cursor.pos += 1;
     if !live {
