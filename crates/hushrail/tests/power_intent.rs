@@ -153,7 +153,7 @@ fn objects_are_found_in_the_netlist() {
     assert_eq!(intent.domains[0].elements.len(), 8);
     assert_eq!(intent.domains[0].elements[3].path, "u_link/u_finger3");
     let e = read_intent(&[source], &IntentOptions::default()).expect_err("no netlist");
-    assert!(e.to_string().starts_with("a.upf:1:33: `find_objects` without a netlist"), "{e}");
+    assert!(e.to_string().starts_with("a.upf:1:34: `find_objects` without a netlist"), "{e}");
 }
 
 #[test]
@@ -189,8 +189,8 @@ fn what_does_not_fit_the_netlist_is_named_with_the_nearest() {
             "create_power_domain A -include_scope\ncreate_power_domain B -elements .\n".to_owned(),
             "x.upf:2:33: `the top` is in two power domains",
         ),
-        (switch("u_dsp/rum"), "x.upf:6:103: net `u_dsp/rum` is not defined; did you mean `u_dsp/run`?"),
-        (switch("wake[7]"), "x.upf:6:103: net `wake[7]` is not defined; did you mean `wake["),
+        (switch("u_dsp/rum"), "x.upf:6:107: net `u_dsp/rum` is not defined; did you mean `u_dsp/run`?"),
+        (switch("wake[7]"), "x.upf:6:107: net `wake[7]` is not defined; did you mean `wake["),
         (
             "set_scope u_dps\ncreate_power_domain A\n".to_owned(),
             "x.upf:1:11: scope `u_dps` is not defined; did you mean `u_dsp`?",
@@ -317,10 +317,20 @@ header = {{ model = "psw", width_m = 8e-4, length_m = 8e-8 }}
     let against: Vec<_> =
         loaded.notes.iter().filter(|n| n.code == "scheme-against-intent").map(|n| n.text.as_str()).collect();
     assert_eq!(against.len(), 2, "{against:?}");
-    assert!(against[0].starts_with("scheme `header` gives domain `link` a header; the intent's switch `link_footer` ("));
-    assert_eq!(against[1], "scheme `header` switches domain `keeper`, which the intent's `PD_KEEP` leaves always on");
+    assert!(
+        against[0]
+            .starts_with("scheme `header` gives domain `link` a header; the intent's switch `link_footer` (")
+    );
+    assert_eq!(
+        against[1],
+        "scheme `header` switches domain `keeper`, which the intent's `PD_KEEP` leaves always on"
+    );
     for (from, to, wanted) in [
-        ("\"PD_DSP\"", "\"PD_DPS\"", "s.toml:1:1: power domain `PD_DPS` is not defined; did you mean `PD_DSP`?"),
+        (
+            "\"PD_DSP\"",
+            "\"PD_DPS\"",
+            "s.toml:1:1: power domain `PD_DPS` is not defined; did you mean `PD_DSP`?",
+        ),
         ("verilog = [\"buoy_hub.v\"]", "", "no netlist for domain `dsp` of the power intent"),
         ("intent = \"PD_DSP\"", "intent = \"PD_DSP\"\npath = \"u_dsp\"", "has `intent` beside"),
         ("env = { ", "evn = { ", "key `evn` is not defined; did you mean `env`?"),

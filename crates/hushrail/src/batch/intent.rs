@@ -6,11 +6,11 @@ use std::sync::Arc;
 use indexmap::IndexMap;
 
 use super::study::{DomainSpec, IntentSpec, Study};
+use crate::read::Input;
 use crate::read::deck::Note;
 use crate::read::intent::{DomainMap, IntentOptions, MappedDomain, MappedSwitch, read_intent, resolve};
 use crate::read::source::{Place, ReadError, Source};
 use crate::read::verilog::connect::{ConnectOptions, connect};
-use crate::read::Input;
 use crate::standby::Scheme;
 
 /// Netlists with the intent mapped onto them, each read once.

@@ -4,7 +4,7 @@ use super::super::tcl::{Interpreter, Outcome, Stop, Value, list};
 use super::locate::{instance_error, is_instance, is_module_instance};
 use super::model::Domain;
 use super::table::{Args, cut};
-use super::{Named, Reader};
+use super::{Named, Reader, twice};
 
 impl Reader<'_> {
     pub(super) fn upf_version(&mut self, tcl: &mut Interpreter, args: &Args) -> Result<(), Stop> {
@@ -121,7 +121,7 @@ impl Reader<'_> {
             }
             (Some(i), false) => {
                 let first = self.intent.domains[i].at.clone();
-                return Err(self.twice(tcl, word.at, "power domain", word, &first));
+                return Err(twice(tcl, word.at, "power domain", word, &first));
             }
             (None, true) => {
                 self.domain_named(tcl, word)?;

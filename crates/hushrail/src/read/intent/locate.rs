@@ -46,7 +46,11 @@ pub(super) fn instance_error(net: &Connected, named: &Named, kind: &'static str)
 
 /// The error for a net that is not there, with the nearest that is.
 pub(super) fn net_error(net: &Connected, named: &Named) -> ReadError {
-    missing(named, "net", net.nets().filter(|n| !n.is_constant()).map(|n| net.net_path(n)))
+    let (parent, start) = named.path.rsplit_once('/').map_or(("", 0), |(p, _)| (p, p.len() + 1));
+    match net.nets_in(parent) {
+        Some(names) => missing(named, "net", names.iter().map(|n| format!("{}{n}", &named.path[..start]))),
+        None => missing(named, "net", net.module_instances()),
+    }
 }
 
 /// Looks where the path leaves what is there, and names what comes nearest from there on.

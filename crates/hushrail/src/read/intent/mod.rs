@@ -234,21 +234,6 @@ impl Reader<'_> {
         };
         names.into_iter().filter_map(inside).collect()
     }
-
-    fn twice(
-        &self,
-        tcl: &Interpreter,
-        at: Spot,
-        what: &str,
-        word: &Word,
-        first: &super::source::Place,
-    ) -> Stop {
-        tcl.wrong(
-            at,
-            format!("{what} `{}` is defined twice; first in {first}", cut(word.text())),
-            "want another name, or `-update` to add to the first",
-        )
-    }
 }
 
 /// A path below a scope, as one path: without escapes, from the top.
@@ -275,4 +260,13 @@ fn join(scope: &str, name: &str) -> String {
         (plain, true) => plain.to_owned(),
         (plain, false) => format!("{scope}/{plain}"),
     }
+}
+
+/// The error for a second definition of one name.
+fn twice(tcl: &Interpreter, at: Spot, what: &str, word: &Word, first: &super::source::Place) -> Stop {
+    tcl.wrong(
+        at,
+        format!("{what} `{}` is defined twice; first in {first}", cut(word.text())),
+        "want another name, or `-update` to add to the first",
+    )
 }

@@ -1,9 +1,9 @@
 //! States of supplies, tables of them, power states.
 
 use super::super::tcl::{Interpreter, Stop, Value};
-use super::Reader;
 use super::model::{PowerState, StateTable, SupplyState, TableRow};
 use super::table::{Args, cut};
+use super::{Reader, twice};
 
 impl Reader<'_> {
     pub(super) fn add_supply_states(&mut self, tcl: &mut Interpreter, args: &Args) -> Result<(), Stop> {
@@ -58,7 +58,7 @@ impl Reader<'_> {
         let word = &args.words[0];
         let name = self.whole(word);
         if let Some(first) = self.intent.state_tables.iter().find(|t| t.name == name) {
-            return Err(self.twice(tcl, word.at, "state table", word, &first.at));
+            return Err(twice(tcl, word.at, "state table", word, &first.at));
         }
         let mut supplies = Vec::new();
         if let Some(list) = args.word("supplies") {

@@ -1,9 +1,9 @@
 //! Isolation, retention and level shifters.
 
 use super::super::tcl::{Interpreter, Stop, Word};
-use super::Reader;
 use super::model::{Isolation, LevelShifter, Named, Retention, Trigger};
 use super::table::{Args, cut};
+use super::{Reader, twice};
 
 /// Checks a word against those that may stand there.
 fn among(tcl: &Interpreter, word: &Word, kind: &'static str, known: &[&str]) -> Result<String, Stop> {
@@ -48,7 +48,7 @@ impl Reader<'_> {
         let name = &args.words[0];
         let index = old.iter().position(|o| o.0 == name.text() && o.1 == domain);
         match (index, args.has("update") || control) {
-            (Some(i), false) => Err(self.twice(tcl, name.at, kind, name, old[i].2)),
+            (Some(i), false) => Err(twice(tcl, name.at, kind, name, old[i].2)),
             (None, true) => {
                 let known = old.iter().filter(|o| o.1 == domain).map(|o| o.0);
                 Err(tcl.unknown(name.at, kind, name.text(), known))

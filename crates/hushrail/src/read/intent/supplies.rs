@@ -5,7 +5,7 @@ use indexmap::IndexMap;
 use super::super::tcl::{Interpreter, Spot, Stop, Word};
 use super::model::{Connection, SupplyNet, SupplyPort, SupplySet};
 use super::table::{Args, cut};
-use super::{Reader, Value};
+use super::{Reader, Value, twice};
 
 /// Functions of a supply set.
 const FUNCTIONS: [&str; 6] = ["power", "ground", "nwell", "pwell", "deepnwell", "deeppwell"];
@@ -25,7 +25,7 @@ impl Reader<'_> {
         }
         let name = self.whole(word);
         if let Some(first) = self.intent.supply_ports.iter().find(|p| p.name == name) {
-            return Err(self.twice(tcl, word.at, "supply port", word, &first.at));
+            return Err(twice(tcl, word.at, "supply port", word, &first.at));
         }
         let direction = direction.to_owned();
         self.intent.supply_ports.push(SupplyPort { name, direction, at: tcl.place(word.at) });
@@ -124,7 +124,7 @@ impl Reader<'_> {
             (Some(i), true) => i,
             (Some(i), false) => {
                 let first = self.intent.supply_sets[i].at.clone();
-                return Err(self.twice(tcl, word.at, "supply set", word, &first));
+                return Err(twice(tcl, word.at, "supply set", word, &first));
             }
             (None, true) if !handle => {
                 self.supply_set(tcl, word)?;

@@ -3,7 +3,7 @@
 use super::super::tcl::{Interpreter, Spot, Stop, Value, Word};
 use super::model::{PowerSwitch, SwitchControl, SwitchState, SwitchSupply};
 use super::table::{Args, cut};
-use super::{Condition, Reader};
+use super::{Condition, Reader, twice};
 
 impl Reader<'_> {
     pub(super) fn create_power_switch(&mut self, tcl: &mut Interpreter, args: &Args) -> Result<(), Stop> {
@@ -15,7 +15,7 @@ impl Reader<'_> {
             (Some(i), true) => self.intent.switches[i].clone(),
             (Some(i), false) => {
                 let first = self.intent.switches[i].at.clone();
-                return Err(self.twice(tcl, word.at, "power switch", word, &first));
+                return Err(twice(tcl, word.at, "power switch", word, &first));
             }
             (None, true) => {
                 let known = self.known(self.intent.switches.iter().map(|s| s.name.as_str()));

@@ -67,7 +67,7 @@ pub(super) fn call(
     Some(match name {
         "set" => variables::set(tcl, words),
         "unset" => variables::unset(tcl, words),
-        "global" => variables::global(tcl, words),
+        "global" => Ok(variables::global(tcl, words)),
         "incr" => variables::incr(tcl, words),
         "append" => variables::append(tcl, words),
         "lappend" => variables::lappend(tcl, words),

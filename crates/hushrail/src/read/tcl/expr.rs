@@ -261,13 +261,11 @@ impl Expression<'_, '_> {
             (_, Some(Number::Whole(n))) => Some(Number::Whole(!n)),
             _ => None,
         };
-        match made {
-            Some(n) => Ok(self.made(n.text())),
-            None => {
-                let found = format!("`{}` is no number for `{}`", short(value.text()), char::from(op));
-                Err(self.tcl.wrong(self.cursor.script.spot_of(at), found, "want a number"))
-            }
-        }
+        let Some(n) = made else {
+            let found = format!("`{}` is no number for `{}`", short(value.text()), char::from(op));
+            return Err(self.tcl.wrong(self.cursor.script.spot_of(at), found, "want a number"));
+        };
+        Ok(self.made(n.text()))
     }
 
     fn operand(&mut self, live: bool) -> Outcome {

@@ -175,7 +175,7 @@ pub(super) fn unset(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
     Ok(Value::new("", words[0].at))
 }
 
-pub(super) fn global(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
+pub(super) fn global(tcl: &mut Interpreter, words: &[Word]) -> Value {
     if tcl.frames.len() > 1 {
         for word in &words[1..] {
             let name = word.text().trim_start_matches("::").to_owned();
@@ -184,7 +184,7 @@ pub(super) fn global(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
             }
         }
     }
-    Ok(Value::new("", words[0].at))
+    Value::new("", words[0].at)
 }
 
 pub(super) fn incr(tcl: &mut Interpreter, words: &[Word]) -> Outcome {
