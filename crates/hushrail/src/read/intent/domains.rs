@@ -179,8 +179,10 @@ impl Reader<'_> {
             let inside = deep || !below.contains('/');
             let fits = if args.has("exact") { name == pattern } else { list::fits(pattern, name) };
             if inside && fits && is_instance(design, &path) {
-                let shown = if self.scope.is_empty() { path.as_str() } else { below };
-                found.push(shown.to_owned());
+                // as one would name it here
+                let here = path.strip_prefix(&self.scope).and_then(|p| p.strip_prefix('/'));
+                let shown = if self.scope.is_empty() { Some(path.as_str()) } else { here };
+                found.push(shown.map_or_else(|| format!("/{path}"), str::to_owned));
             }
         }
         if found.is_empty() {

@@ -181,7 +181,7 @@ impl PowerSwitch {
             let values: Vec<_> = states.iter().map(|s| s.condition.value(known)).collect();
             if values.contains(&Some(true)) {
                 Some(true)
-            } else if values.iter().all(|v| *v == Some(false)) {
+            } else if !values.is_empty() && values.iter().all(|v| *v == Some(false)) {
                 Some(false)
             } else {
                 None

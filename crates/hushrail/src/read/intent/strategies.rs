@@ -78,16 +78,12 @@ impl Reader<'_> {
         args.word(option).map(|w| self.supply(tcl, &w.value)).transpose()
     }
 
-    pub(super) fn set_isolation(&mut self, tcl: &mut Interpreter, args: &Args) -> Result<(), Stop> {
-        let control = args.has("isolation_signal") && !args.has("update") && {
-            // a control command names what is there already
-            let name = args.words[0].text();
-            let domain = args.word("domain").map(|w| self.whole(w));
-            self.intent
-                .isolations
-                .iter()
-                .any(|i| i.name == name && Some(&i.domain) == domain.as_ref() && i.signals.is_empty())
-        };
+    pub(super) fn set_isolation(
+        &mut self,
+        tcl: &mut Interpreter,
+        args: &Args,
+        control: bool,
+    ) -> Result<(), Stop> {
         let old: Vec<_> =
             self.intent.isolations.iter().map(|i| (i.name.as_str(), i.domain.as_str(), &i.at)).collect();
         let head = self.head(tcl, args, ("isolation strategy", control), &old)?;
@@ -174,15 +170,12 @@ impl Reader<'_> {
         Ok(Some(Trigger { net: self.whole_text(net.text()), edge, at: tcl.place(net.spot()) }))
     }
 
-    pub(super) fn set_retention(&mut self, tcl: &mut Interpreter, args: &Args) -> Result<(), Stop> {
-        let control = args.has("save_signal") && !args.has("update") && {
-            let name = args.words[0].text();
-            let domain = args.word("domain").map(|w| self.whole(w));
-            self.intent
-                .retentions
-                .iter()
-                .any(|r| r.name == name && Some(&r.domain) == domain.as_ref() && r.save.is_none())
-        };
+    pub(super) fn set_retention(
+        &mut self,
+        tcl: &mut Interpreter,
+        args: &Args,
+        control: bool,
+    ) -> Result<(), Stop> {
         let old: Vec<_> =
             self.intent.retentions.iter().map(|i| (i.name.as_str(), i.domain.as_str(), &i.at)).collect();
         let head = self.head(tcl, args, ("retention strategy", control), &old)?;

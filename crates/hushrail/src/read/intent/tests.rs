@@ -116,6 +116,14 @@ fn mistakes_are_named_at_their_word() {
             "set_isolation i -domain PD_A\nset_isolation j -domain PD_A -update",
             "x.upf:4:15: isolation strategy `j` is not defined; did you mean `i`?",
         ),
+        (
+            "set_isolation_control i -domain PD_A -isolation_signal s",
+            "x.upf:3:23: isolation strategy `i` is not defined",
+        ),
+        (
+            "set_isolation i -domain PD_A\nset_isolation i -domain PD_A -isolation_signal s",
+            "x.upf:4:15: isolation strategy `i` is defined twice; first in x.upf:3:15",
+        ),
         ("set_retention r -domain PD_A -save_signal {s up}", "x.upf:3:46: level of a signal `up`"),
         ("set_retention r -domain PD_A -save_signal s", "x.upf:3:43: `s` is no signal with its level"),
         ("set_level_shifter l -domain PD_A -rule low_high", "x.upf:3:40: rule `low_high`"),
@@ -184,6 +192,8 @@ fn forms_of_real_files_are_understood() {
     assert_eq!(two.conducts(&|port| Some(port == "b")), Some(true));
     assert_eq!(two.conducts(&|port| (port == "b").then_some(false)), Some(false));
     assert_eq!(two.conducts(&|_| None), None);
+    let silent = read(&format!("{RAILS}{SWITCH}\n")).unwrap();
+    assert_eq!(silent.switches[0].conducts(&|_| Some(true)), None);
     assert_eq!(two.acks[0].condition.as_ref().unwrap().to_string(), "!a");
     assert_eq!(i.switch("three").unwrap().on_states[0].input.as_deref(), Some("in"));
     let run = &i.power_states[0];
