@@ -25,7 +25,7 @@ def test_what_the_files_say_comes_as_frozen_records() -> None:
     header = intent.switches[0]
     assert header.on_states[0].condition == "run_n"
     assert header.controls[0].net == "u_keeper/wake[0]"
-    assert header.at.endswith("buoy_hub.upf:30:21")
+    assert header.at.endswith("buoy_hub.upf:27:21")
     with pytest.raises(FrozenInstanceError):
         header.name = "x"  # type: ignore[misc]
 

@@ -220,7 +220,6 @@ def compare(
 def count(
     files: Sequence[str], *, top: str | None = None, path: str = ""
 ) -> tuple[str, list[tuple[str, int]]]: ...
-
 def read_intent(
     files: Sequence[str],
     env: Mapping[str, str],
