@@ -185,10 +185,10 @@ impl Reader<'_> {
             "set_domain_supply_net" => self.set_domain_supply_net(tcl, args)?,
             "create_power_switch" => self.create_power_switch(tcl, args)?,
             "set_isolation" | "set_isolation_control" => {
-                self.set_isolation(tcl, args, name.ends_with("_control"))?
+                self.set_isolation(tcl, args, name.ends_with("_control"))?;
             }
             "set_retention" | "set_retention_control" => {
-                self.set_retention(tcl, args, name.ends_with("_control"))?
+                self.set_retention(tcl, args, name.ends_with("_control"))?;
             }
             "set_level_shifter" => self.set_level_shifter(tcl, args)?,
             "add_port_state" | "add_supply_state" => self.add_supply_states(tcl, args)?,
