@@ -3,16 +3,19 @@
 The main job is one call: :func:`estimate` runs a study, a TOML file that names cards, cell netlists, domains,
 sleep schemes and corners. :func:`cells` gives the leakage table behind it, :func:`compare` holds it against a
 published one, :func:`count` counts the instances of a netlist, :func:`read_liberty` and :func:`write_liberty`
-take leakage from Liberty libraries and to them. :class:`Process` and :class:`Device` give the currents of
-single transistors as NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without cards, and
-``hushrail.fit`` calibrates the former. ``hushrail.awake`` tells what a switch costs while its domain works
-and the lowest rail that keeps state, ``hushrail.optimum`` the best overdrive, well bias or width and the
-choice under limits. Plots are in ``hushrail.plot``, the demonstration in ``hushrail.demo``.
+take leakage from Liberty libraries and to them, :func:`read_intent` and :func:`map_intent` read power intent
+and map it onto a netlist. :class:`Process` and :class:`Device` give the currents of single transistors as
+NumPy arrays; :class:`CompactModel` and :class:`TableModel` do so without cards, and ``hushrail.fit``
+calibrates the former. ``hushrail.awake`` tells what a switch costs while its domain works and the lowest rail
+that keeps state, ``hushrail.transition`` what lies in between, ``hushrail.optimum`` the best overdrive, well
+bias or width and the choice under limits, ``hushrail.parked`` the states of a netlist and the vector that
+leaks least. Plots are in ``hushrail.plot``, the demonstration in ``hushrail.demo``.
 """
 
 from hushrail._core import __version__
 from hushrail.device import TERMINALS, CompactModel, Device, Parameter, Process, TableModel
 from hushrail.errors import HushrailError, RangeError, ReadError, SolveError
+from hushrail.intent import map_intent, read_intent
 from hushrail.leakage import (
     Compared,
     ComparedRow,
@@ -95,6 +98,8 @@ __all__ = [
     "compare",
     "count",
     "estimate",
+    "map_intent",
+    "read_intent",
     "read_liberty",
     "sensitivities",
     "write_liberty",

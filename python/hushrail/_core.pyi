@@ -26,10 +26,12 @@ __all__ = [
     "estimate",
     "liberty_of_table",
     "liberty_text",
+    "map_intent",
     "optima_asked",
     "optimum",
     "oxide_lifetime",
     "park",
+    "read_intent",
     "read_liberty",
     "sensitivities",
     "transitions",
@@ -234,3 +236,17 @@ def compare(
 def count(
     files: Sequence[str], *, top: str | None = None, path: str = ""
 ) -> tuple[str, list[tuple[str, int]]]: ...
+def read_intent(
+    files: Sequence[str],
+    env: Mapping[str, str],
+    *,
+    verilog: Sequence[str] = ...,
+    top: str | None = None,
+) -> str: ...
+def map_intent(
+    files: Sequence[str],
+    env: Mapping[str, str],
+    verilog: Sequence[str],
+    *,
+    top: str | None = None,
+) -> str: ...

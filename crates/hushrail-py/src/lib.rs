@@ -5,6 +5,7 @@
 mod awake;
 mod device;
 mod error;
+mod intent;
 mod liberty;
 mod optimum;
 mod own;
@@ -22,6 +23,8 @@ mod _core {
     use crate::awake::{awake_domains, awake_droop, awake_figure, awake_keep, awake_margins, awake_rail};
     #[pymodule_export]
     use crate::device::{Device, Process};
+    #[pymodule_export]
+    use crate::intent::{map_intent, read_intent};
     #[pymodule_export]
     use crate::liberty::{liberty_of_table, liberty_text, read_liberty};
     #[pymodule_export]

@@ -8,6 +8,7 @@ use indexmap::IndexMap;
 use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 
+use super::intent::Designs;
 use super::parked::{self, ParkedDomain};
 use super::study::{LibertySpec, Limits, ProcessSpec, Study};
 use crate::block::build::fits_pattern;
@@ -19,6 +20,7 @@ use crate::device::spec::DeviceSpec;
 use crate::read::Input;
 use crate::read::counts::{InstanceCounts, read_counts_csv};
 use crate::read::deck::{Deck, Note};
+use crate::read::intent::MappedDomain;
 use crate::read::liberty::{LibertyOptions, read_liberty};
 use crate::read::source::{Place, ReadError, Source, nearest};
 use crate::read::spice::{DeckOptions, read_deck};
@@ -36,6 +38,8 @@ pub struct LoadedDomain {
     pub block: Block,
     /// What the counts say.
     pub summary: DomainSummary,
+    /// What the power intent says, for a domain taken from it.
+    pub intent: Option<MappedDomain>,
 }
 
 /// Numbers of a domain for reports.
@@ -254,9 +258,13 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
     let mut notes = library.notes.clone();
     let tables = load_tables(&study.liberty, folder, &mut notes)?;
     let mut netlists: IndexMap<&[String], crate::read::verilog::Netlist> = IndexMap::new();
+    let mut designs = Designs::default();
     let mut domains = Vec::new();
     for d in &study.domain {
-        let counts: InstanceCounts = if let Some(f) = &d.counts {
+        let mapped = designs.domain(study, d, origin, folder, &mut notes)?;
+        let counts: InstanceCounts = if let Some(mapped) = &mapped {
+            mapped.counts.clone()
+        } else if let Some(f) = &d.counts {
             read_counts_csv(&Source::open(&folder.join(f))?)?
         } else {
             if !netlists.contains_key(d.verilog.as_slice()) {
@@ -288,7 +296,7 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
             uncovered: block.uncovered.clone(),
             certainty,
         };
-        domains.push(LoadedDomain { name: d.name.clone(), block, summary });
+        domains.push(LoadedDomain { name: d.name.clone(), block, summary, intent: mapped });
     }
     let mut added = IndexMap::new();
     for name in study.scheme.iter().flat_map(|s| s.added.keys()) {

@@ -3,6 +3,7 @@
 pub mod awake;
 pub mod characterise;
 pub mod compare;
+mod intent;
 pub mod keep;
 pub mod load;
 pub mod optimum;

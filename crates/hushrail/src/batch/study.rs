@@ -42,6 +42,9 @@ pub struct Study {
     /// Corners as all combinations.
     #[serde(default)]
     pub grid: Option<Grid>,
+    /// Power intent, which domains may be taken from.
+    #[serde(default)]
+    pub intent: Option<IntentSpec>,
     /// Domains.
     #[serde(default)]
     pub domain: Vec<DomainSpec>,
@@ -136,7 +139,24 @@ pub struct Grid {
     pub temp_c: Vec<f64>,
 }
 
-/// A domain and where its instance counts come from: `verilog` (with `top`, `path`) or `counts`.
+/// Where the power intent is, and the netlist it is about.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct IntentSpec {
+    /// Files of IEEE 1801 commands, read in order.
+    pub files: Vec<String>,
+    /// Structural Verilog files; a domain may name its own.
+    #[serde(default)]
+    pub verilog: Vec<String>,
+    /// Top module, when it is not the only one.
+    #[serde(default)]
+    pub top: Option<String>,
+    /// What the scripts find in `::env`.
+    #[serde(default)]
+    pub env: IndexMap<String, String>,
+}
+
+/// A domain and where its instance counts come from: `verilog` (with `top`, `path`), `counts`, or `intent`.
 #[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
 #[serde(deny_unknown_fields)]
 pub struct DomainSpec {
@@ -154,6 +174,9 @@ pub struct DomainSpec {
     /// CSV file with `cell,count`.
     #[serde(default)]
     pub counts: Option<String>,
+    /// Power domain of the study's power intent, by its whole name.
+    #[serde(default)]
+    pub intent: Option<String>,
     /// Masters without netlist: pattern → policy.
     #[serde(default)]
     pub policy: IndexMap<String, Policy>,
@@ -273,11 +296,26 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
         }
     }
     for d in &study.domain {
-        if d.parked.is_some() && d.verilog.is_empty() {
+        if d.parked.is_some() && (d.verilog.is_empty() || d.intent.is_some()) {
             return empty(
-                &format!("domain `{}` has a `parked` table without connections", d.name),
-                "want `verilog` with it",
+                &format!("domain `{}` has a `parked` table without connections of its own", d.name),
+                "want `verilog` with it, and `path` instead of `intent`",
             );
+        }
+        if d.intent.is_some() {
+            let Some(intent) = &study.intent else {
+                let found = format!("domain `{}` is taken from power intent", d.name);
+                return empty(&found, "want a table [intent] with its files");
+            };
+            if d.counts.is_some() || !d.path.is_empty() {
+                let found = format!("domain `{}` has `intent` beside `counts` or `path`", d.name);
+                return empty(&found, "want one of them");
+            }
+            if d.verilog.is_empty() && intent.verilog.is_empty() {
+                let found = format!("no netlist for domain `{}` of the power intent", d.name);
+                return empty(&found, "want `verilog` in the table [intent] or in the domain's");
+            }
+            continue;
         }
         if d.verilog.is_empty() == d.counts.is_none() {
             return empty(
@@ -286,7 +324,7 @@ fn check(study: &Study, source: &Source) -> Result<(), ReadError> {
                     d.name,
                     if d.counts.is_none() { "no" } else { "two" }
                 ),
-                "want either `verilog` or `counts`",
+                "want `verilog`, `counts` or `intent`",
             );
         }
     }
@@ -384,6 +422,8 @@ name = "on"
             ("process = [\"tt\"]", "process = [\"ttt\"]", "process `ttt` is not defined; did you mean `tt`?"),
             ("counts = \"n.csv\"", "top = \"x\"", "names no sources of counts"),
             ("name = \"on\"", "nam = \"on\"", "did you mean `name`?"),
+            ("counts = \"n.csv\"", "intent = \"PD\"", "want a table [intent]"),
+            ("counts = \"n.csv\"", "counts = \"n.csv\"\nverilog = [\"a.v\"]", "names two sources of counts"),
             ("[[scheme]]", "[[scheme", "s.toml:"),
         ] {
             let e = read(&GOOD.replace(from, to)).expect_err(to).to_string();

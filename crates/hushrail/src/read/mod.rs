@@ -6,12 +6,14 @@ pub mod deck;
 pub mod def;
 pub mod expression;
 pub mod instances;
+pub mod intent;
 pub mod liberty;
 pub mod lines;
 pub mod number;
 pub mod pattern;
 pub mod source;
 pub mod spice;
+pub mod tcl;
 pub mod verilog;
 mod window;
 

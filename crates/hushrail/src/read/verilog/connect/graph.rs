@@ -480,6 +480,35 @@ impl Connected {
         Some(out)
     }
 
+    /// The paths of all module instances below the top, level by level.
+    pub fn module_instances(&self) -> impl Iterator<Item = String> {
+        (1..self.scopes.len()).map(|scope| {
+            let mut path = self.scope_path(scope);
+            path.pop();
+            path
+        })
+    }
+
+    /// The names of the nets in the module instance at a path, ports among them, bit by bit; the empty path is the
+    /// top. Nothing when there is no such instance.
+    pub fn nets_in(&self, path: &str) -> Option<Vec<String>> {
+        let scope =
+            if path.is_empty() { 0 } else { self.search(path, |scope, name| self.child_scope(scope, name))? };
+        let shape = &self.shapes[self.scopes[scope].module as usize];
+        let mut out = Vec::new();
+        for decl in &shape.decls {
+            let name = self.names.get(decl.name);
+            if decl.width() == 1 {
+                out.push(name.to_owned());
+            } else {
+                out.extend(
+                    (decl.base..decl.base + decl.width()).map(|l| format!("{name}[{}]", decl.index(l))),
+                );
+            }
+        }
+        Some(out)
+    }
+
     /// Number and member of what a name stands for among the instances of a scope.
     fn entry(&self, scope: usize, name: &str) -> Option<(u32, u32)> {
         let shape = &self.shapes[self.scopes[scope].module as usize];
