@@ -12,10 +12,10 @@ import threading
 import time
 from collections.abc import Callable, Iterable, Sequence
 from pathlib import Path
-from typing import Any, NoReturn, TextIO, TypeVar
+from typing import Any, NoReturn, Protocol, TextIO, TypeVar
 
 from hushrail import __doc__ as hushrail_doc
-from hushrail import __version__, asked, costs, parked, report, study
+from hushrail import __version__, asked, awake, costs, parked, report, study, transition
 from hushrail.errors import HushrailError
 from hushrail.leakage import Comparison
 from hushrail.results import Failure, Note
@@ -26,6 +26,16 @@ __all__ = ["interrupted", "main", "terminal_width", "watched"]
 OK, LIMIT, FAILED, INTERRUPTED = 0, 1, 2, 130
 
 T = TypeVar("T")
+
+
+class _Answer(Protocol):
+    """What every answer to a study's table can do."""
+
+    def to_json(self, indent: int | None = None) -> str: ...
+    def flat(self) -> Iterable[dict[str, Any]]: ...
+
+
+A = TypeVar("A", bound=_Answer)
 
 EXITS = """exit status:
   0  done
@@ -186,70 +196,62 @@ def _estimate(args: argparse.Namespace) -> int:
     return LIMIT if result.broken else OK
 
 
-def _awake(args: argparse.Namespace) -> int:
+def _asked(
+    args: argparse.Namespace,
+    what: str,
+    question: Callable[[str, Progress], A],
+    to_text: Callable[[A, int], str],
+    notes: Callable[[A], Sequence[Note]] = lambda _: (),
+) -> A:
+    """Answer a table of the study and deliver what was found."""
     _check_outputs(args, [args.study])
-    result = watched("points", lambda progress: asked.awake(args.study, progress), quiet=args.quiet)
+    result = watched(what, lambda progress: question(args.study, progress), quiet=args.quiet)
     _deliver(
         args,
         result.to_json,
         result.flat(),
-        notes=result.notes,
-        to_text=lambda width: costs.of_awake(result, width, failures=False),
+        notes=notes(result),
+        to_text=lambda width: to_text(result, width),
     )
-    return _listed_failures(result.failures)
+    return result
+
+
+def _awake(args: argparse.Namespace) -> int:
+    def text(result: awake.Report, width: int) -> str:
+        return costs.of_awake(result, width, failures=False)
+
+    return _listed_failures(_asked(args, "points", asked.awake, text, lambda r: r.notes).failures)
 
 
 def _keep(args: argparse.Namespace) -> int:
-    _check_outputs(args, [args.study])
-    result = watched("cells", lambda progress: asked.keep(args.study, progress), quiet=args.quiet)
-    _deliver(
-        args,
-        result.to_json,
-        result.flat(),
-        to_text=lambda width: costs.of_keep(result, width, failures=False),
-    )
-    return _listed_failures(result.failures)
+    def text(result: awake.Kept, width: int) -> str:
+        return costs.of_keep(result, width, failures=False)
+
+    return _listed_failures(_asked(args, "cells", asked.keep, text).failures)
 
 
 def _transitions(args: argparse.Namespace) -> int:
-    _check_outputs(args, [args.study])
-    result = watched("points", lambda progress: asked.transitions(args.study, progress), quiet=args.quiet)
-    _deliver(
-        args,
-        result.to_json,
-        result.flat(),
-        notes=result.notes,
-        to_text=lambda width: costs.of_transitions(result, width, failures=False),
-    )
-    code = _listed_failures(result.failures)
-    return code or (LIMIT if any(not p.stress.holds for p in result.points) else OK)
+    def text(result: transition.Transitions, width: int) -> str:
+        return costs.of_transitions(result, width, failures=False)
+
+    result = _asked(args, "points", asked.transitions, text, lambda r: r.notes)
+    broken = any(not p.stress.holds for p in result.points)
+    return _listed_failures(result.failures) or (LIMIT if broken else OK)
 
 
 def _optimum(args: argparse.Namespace) -> int:
-    _check_outputs(args, [args.study])
-    result = watched("corners", lambda progress: asked.optima(args.study, progress), quiet=args.quiet)
-    notes = [n for each in result.answers for n in each.notes]
-    _deliver(
-        args,
-        result.to_json,
-        result.flat(),
-        notes=notes,
-        to_text=lambda width: costs.of_optima(result, width),
-    )
+    def notes(result: asked.Optima) -> Sequence[Note]:
+        return [n for each in result.answers for n in each.notes]
+
+    _asked(args, "corners", asked.optima, costs.of_optima, notes)
     return OK
 
 
 def _choose(args: argparse.Namespace) -> int:
-    _check_outputs(args, [args.study])
-    result = watched("candidates", lambda progress: asked.choices(args.study, progress), quiet=args.quiet)
-    notes = [n for each in result.answers for n in each.notes]
-    _deliver(
-        args,
-        result.to_json,
-        result.flat(),
-        notes=notes,
-        to_text=lambda width: costs.of_choices(result, width),
-    )
+    def notes(result: asked.Choices) -> Sequence[Note]:
+        return [n for each in result.answers for n in each.notes]
+
+    result = _asked(args, "candidates", asked.choices, costs.of_choices, notes)
     return LIMIT if any(each.chosen.infeasible is not None for each in result.answers) else OK
 
 

@@ -5,12 +5,13 @@
 //! The rooms, in the order data flows; a room uses those before it and none after it:
 //!
 //! - [`physics`], [`corner`]: constants with their sources; process, supply and temperature under one name.
-//! - [`read`]: SPICE and CDL, structural Verilog, count tables. Every record keeps its place; every error names file, line,
+//! - [`read`]: SPICE and CDL, structural Verilog, DEF, Liberty, power intent, count tables. Every record keeps its place; every error names file, line,
 //!   column, what was found and what would be right.
 //! - [`device`]: terminal currents by mechanism with exact derivatives, BSIM4 from the foundry's text, behind the trait
 //!   [`device::Device`] that a model of your own may implement.
 //! - [`circuit`]: node voltages of networks of devices, judged by current balance.
 //! - [`cell`]: cells, their states (stored ones found by solving), the current of every terminal in every state.
+//! - [`states`]: what every instance of a connected netlist holds while parked, and the vector that leaks least.
 //! - [`block`]: counts × state weights × currents, as a function of rails and wells.
 //! - [`standby`]: schemes, switches, the rest point of the virtual rails, every real supply.
 //! - [`awake`]: what the switch costs while the domain works (on-resistance, droop, width, noise margins, delay), and what

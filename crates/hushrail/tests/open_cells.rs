@@ -29,13 +29,19 @@ fn data() -> Option<PathBuf> {
 fn published_leakage_is_predicted_without_fitted_constants() {
     let Some(dir) = data() else { return };
     let out = std::env::temp_dir().join(format!("hushrail-accuracy-{}.json", std::process::id()));
-    let status = Command::new(env!("CARGO"))
-        .args(["run", "--quiet", "--offline", "--locked", "--example", "accuracy", "--"])
+    // for the whole workspace, so that features are those of a test run and nothing is compiled a second time
+    let built = Command::new(env!("CARGO"))
+        .args(["build", "--quiet", "--offline", "--locked", "--workspace", "--example", "accuracy"])
+        .current_dir(PathBuf::from(env!("CARGO_MANIFEST_DIR")).join("../.."))
+        .output()
+        .expect("cargo runs");
+    assert!(built.status.success(), "{}", String::from_utf8_lossy(&built.stderr));
+    let folder = std::env::current_exe().expect("a path");
+    let program = folder.ancestors().nth(2).expect("two up").join("examples/accuracy");
+    let status = Command::new(program)
         .arg(dir.join("sky130"))
         .arg("--json")
         .arg(&out)
-        // from the top, so that features are those of the whole workspace and nothing is compiled a second time
-        .current_dir(PathBuf::from(env!("CARGO_MANIFEST_DIR")).join("../.."))
         .output()
         .expect("accuracy runs");
     assert!(status.status.success(), "{}", String::from_utf8_lossy(&status.stderr));

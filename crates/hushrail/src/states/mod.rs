@@ -4,8 +4,8 @@
 //! - [`circuit`]: a netlist with functions, in an order in which drivers come first.
 //! - [`values`]: zeros, ones and unknowns through a circuit, sixty-four vectors at a time.
 //! - [`probability`]: how likely each net is at one.
-//! - [`shares`]: both turned into weights of the states of every cell, and how much of them is known.
-//! - [`search`]: the vector that leaks least.
+//! - [`mod@shares`]: both turned into weights of the states of every cell, and how much of them is known.
+//! - [`mod@search`]: the vector that leaks least.
 //!
 //! Values are zero-delay and of a settled circuit. Unknown is unknown: it stays a probability and is said to be assumed.
 
