@@ -11,7 +11,6 @@ states it.
 
 from __future__ import annotations
 
-import json
 import os
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass
@@ -551,7 +550,7 @@ def domains(
         "cells": _names(cells),
         "swing": swing,
     }
-    text = _core.awake_domains(os.fspath(study), _json(request), progress=progress)
+    text = _core.awake_domains(os.fspath(study), records.to_request(request), progress=progress)
     return records.from_text(Report, text, "awake")
 
 
@@ -610,7 +609,7 @@ def keep(
         "need": {"margin_v": margin_v, "population": population},
         "domain": domain,
     }
-    text = _core.awake_keep(os.fspath(study), _json(request), progress=progress)
+    text = _core.awake_keep(os.fspath(study), records.to_request(request), progress=progress)
     return records.from_text(Kept, text, "awake")
 
 
@@ -646,7 +645,7 @@ def margins(
         "receiver_droop_v": list(receiver_droop_v),
         "corners": _names(corners),
     }
-    text = _core.awake_margins(os.fspath(study), _json(request), progress=progress)
+    text = _core.awake_margins(os.fspath(study), records.to_request(request), progress=progress)
     return records.from_text(_Corners, f'{{"corners": {text}}}', "awake").corners
 
 
@@ -695,7 +694,7 @@ def figure(
         "vdd_v": vdd_v,
         "temp_c": temp_c,
     }
-    text = _core.awake_figure(process._core, _json(request))
+    text = _core.awake_figure(process._core, records.to_request(request))
     return records.from_text(_Figure, f'{{"points": {text}}}', "awake").points
 
 
@@ -722,7 +721,9 @@ def droop(load: Load, *, vdd_v: float, ohm: float) -> Droop:
     >>> round(1e3 * d.droop_v, 3)
     45.79
     """
-    return records.from_text(Droop, _core.awake_droop(_json(dict(load.form)), vdd_v, ohm), "awake")
+    return records.from_text(
+        Droop, _core.awake_droop(records.to_request(dict(load.form)), vdd_v, ohm), "awake"
+    )
 
 
 def row(
@@ -775,7 +776,7 @@ def row(
         "temp_c": temp_c,
         "loads": [dict(load.form) for load in loads],
     }
-    text = _core.awake_rail(_json(request), None if process is None else process._core)
+    text = _core.awake_rail(records.to_request(request), None if process is None else process._core)
     return records.from_text(RowDroop, text, "awake")
 
 
@@ -801,10 +802,3 @@ def _names(names: Sequence[str] | str) -> list[str]:
 
 def _list(values: ArrayLike) -> list[float]:
     return [float(v) for v in np.asarray(values, dtype=float).reshape(-1)]
-
-
-def _json(request: Mapping[str, Any]) -> str:
-    try:
-        return json.dumps(request, allow_nan=False)
-    except ValueError:
-        raise RangeError("a number of the request is not finite; want finite numbers") from None

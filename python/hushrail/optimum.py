@@ -10,13 +10,13 @@ Keshavarzi et al., ISLPED 1999 (from memory).
 
 from __future__ import annotations
 
-import json
 import os
 from collections.abc import Mapping, Sequence
 from dataclasses import asdict, dataclass
 from typing import TYPE_CHECKING, Literal
 
 from hushrail import _core, records
+from hushrail.awake import Density
 from hushrail.errors import RangeError
 from hushrail.results import Corner, Note
 from hushrail.transition import Rail, WakeSpec, wake_request
@@ -88,15 +88,6 @@ class Limits:
     span_v: float | None = None
     retention_margin_v: float | None = None
     standby_w: float | None = None
-
-
-@dataclass(frozen=True)
-class Density:
-    """Layout of switch cells: m² for each m of width, m² for each row, m of width in a row."""
-
-    m2_per_m: float
-    row_overhead_m2: float
-    width_per_row_m: float
 
 
 @dataclass(frozen=True)
@@ -340,7 +331,7 @@ def optimum(
         "range": {"knob": knob, "low": low, "high": high},
         "goal": _goal(goal, weights),
     }
-    text = _core.optimum(os.fspath(path), _text(spec), progress=progress)
+    text = _core.optimum(os.fspath(path), records.to_request(spec), progress=progress)
     return records.from_text(Optimum, text, "optimum")
 
 
@@ -427,7 +418,9 @@ def choose(
             "tolerance": tolerance,
         },
     }
-    return records.from_text(Choice, _core.choose(os.fspath(path), _text(spec), progress=progress), "choice")
+    return records.from_text(
+        Choice, _core.choose(os.fspath(path), records.to_request(spec), progress=progress), "choice"
+    )
 
 
 def _goal(goal: str, weights: Sequence[float]) -> object:
@@ -436,10 +429,3 @@ def _goal(goal: str, weights: Sequence[float]) -> object:
     if len(weights) > 0:
         raise RangeError(f"goal `{goal}` takes no weights; want `mean` with them")
     return goal
-
-
-def _text(spec: object) -> str:
-    try:
-        return json.dumps(spec, allow_nan=False)
-    except ValueError:
-        raise RangeError("a number of the request is not finite; want finite numbers") from None

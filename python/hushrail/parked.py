@@ -132,5 +132,5 @@ def search(
         "corner": corner,
         "search": {"seed": seed, "flips": flips, "registers": registers},
     }
-    text = _core.park(os.fspath(study), json.dumps(request), progress=progress)
+    text = _core.park(os.fspath(study), records.to_request(request), progress=progress)
     return records.from_text(Parked, text, "park")

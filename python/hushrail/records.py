@@ -15,9 +15,9 @@ from collections.abc import Mapping
 from functools import cache
 from typing import Any, TypeVar
 
-from hushrail.errors import ReadError
+from hushrail.errors import RangeError, ReadError
 
-__all__ = ["from_text", "to_text"]
+__all__ = ["from_text", "to_request", "to_text"]
 
 T = TypeVar("T")
 
@@ -53,6 +53,20 @@ def from_text(kind: type[T], text: str, name: str) -> T:
 def to_text(value: object, indent: int | None = None) -> str:
     """Write a dataclass as JSON text."""
     return json.dumps(_plain(value), indent=indent, ensure_ascii=False, allow_nan=False)
+
+
+def to_request(spec: object) -> str:
+    """Write what is asked of the core as JSON text.
+
+    Raises
+    ------
+    RangeError
+        A number that is not finite.
+    """
+    try:
+        return json.dumps(spec, allow_nan=False)
+    except ValueError:
+        raise RangeError("a number of the request is not finite; want finite numbers") from None
 
 
 @cache

@@ -12,7 +12,6 @@ and Hu, power law after Wu et al. 2002 (from memory).
 
 from __future__ import annotations
 
-import json
 import os
 from collections.abc import Iterator
 from dataclasses import asdict, dataclass
@@ -516,7 +515,9 @@ def transitions(
         "schemes": list(schemes),
         "corners": list(corners),
     }
-    return Transitions.from_json(_core.transitions(os.fspath(path), _text(spec), progress=progress))
+    return Transitions.from_json(
+        _core.transitions(os.fspath(path), records.to_request(spec), progress=progress)
+    )
 
 
 def oxide_lifetime(
@@ -548,18 +549,11 @@ def oxide_lifetime(
     RangeError
         A number that is missing or cannot be.
     """
-    scaled = None if area is None else _text(asdict(area))
+    scaled = None if area is None else records.to_request(asdict(area))
     life_s, notes = _core.oxide_lifetime(
-        _text({"law": law, **numbers}), voltage_v, oxide_m, temp_c, area=scaled
+        records.to_request({"law": law, **numbers}), voltage_v, oxide_m, temp_c, area=scaled
     )
     return Lifetime(life_s, tuple(Note(code, text) for code, text in notes))
-
-
-def _text(spec: object) -> str:
-    try:
-        return json.dumps(spec, allow_nan=False)
-    except ValueError:
-        raise RangeError("a number of the request is not finite; want finite numbers") from None
 
 
 def wake_request(wake: WakeSpec) -> dict[str, Any]:

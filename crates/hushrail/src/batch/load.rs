@@ -275,7 +275,7 @@ pub fn load_study(study: &Study, origin: &str, folder: &Path) -> Result<Loaded, 
         };
         let (mut weights, mut certainty) = (IndexMap::new(), None);
         if d.parked.is_some() {
-            let parked = ParkedDomain::read(d, &library, folder, &mut notes)?;
+            let parked = ParkedDomain::read(d, &library, folder, &counts, &mut notes)?;
             let shares = parked.shares(d, &Arc::from(origin))?;
             weights = parked::weights(&shares);
             certainty = Some(shares.certainty);

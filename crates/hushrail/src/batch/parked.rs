@@ -14,9 +14,11 @@ use crate::cell::bound::supply_power;
 use crate::cell::{BoundCell, CellReader, DeviceShelf, Levels};
 use crate::circuit::newton::{SolveOptions, Workspace};
 use crate::corner::Corner;
+use crate::read::counts::InstanceCounts;
 use crate::read::deck::Note;
 use crate::read::source::{Input, Place, ReadError, Source, nearest};
 use crate::read::verilog::connect::{CellPorts, ConnectOptions, Connected, Direction, Port, connect};
+use crate::read::verilog::read_verilog_from;
 use crate::states::circuit::Source as Entry;
 use crate::states::probability::{Ground, Held, carry, resolve};
 use crate::states::{CellFunction, Certainty, Circuit, SearchSpec, StateShares, search, shares};
@@ -52,7 +54,7 @@ pub struct ParkedDomain {
 }
 
 impl ParkedDomain {
-    /// Reads a domain with its connections; `policies` say which cells stand for others.
+    /// Reads a domain with its connections; `counts` are its instances, whose masters need functions.
     ///
     /// # Errors
     /// A netlist or cell that cannot be read, a path that is not there, cells with pins that do not fit.
@@ -60,14 +62,11 @@ impl ParkedDomain {
         d: &DomainSpec,
         library: &Library,
         folder: &Path,
+        counts: &InstanceCounts,
         notes: &mut Vec<Note>,
     ) -> Result<Self, ReadError> {
-        let mut inputs: Vec<Input> = d.verilog.iter().map(|f| Input::file(&folder.join(f))).collect();
-        // masters are known once the netlist is counted
-        let masters =
-            crate::read::verilog::read_verilog_from(&mut inputs)?.counts_under(d.top.as_deref(), &d.path)?;
         let functions =
-            library.with_reader(|reader| functions(masters.counts.keys(), d, library, reader, notes))?;
+            library.with_reader(|reader| functions(counts.counts.keys(), d, library, reader, notes))?;
         let mut inputs: Vec<Input> = d.verilog.iter().map(|f| Input::file(&folder.join(f))).collect();
         let net = connect(&mut inputs, d.top.as_deref(), &functions, &ConnectOptions::default())?;
         let at = || Place::new(&Arc::from(d.verilog.first().map_or("netlist", String::as_str)), 1, 1);
@@ -81,6 +80,18 @@ impl ParkedDomain {
             })?;
         notes.extend(circuit.notes.iter().cloned());
         Ok(Self { net, circuit, path: d.path.clone(), functions })
+    }
+
+    /// The same of a domain that is not counted yet.
+    fn counted(
+        d: &DomainSpec,
+        library: &Library,
+        folder: &Path,
+        notes: &mut Vec<Note>,
+    ) -> Result<Self, ReadError> {
+        let mut inputs: Vec<Input> = d.verilog.iter().map(|f| Input::file(&folder.join(f))).collect();
+        let counts = read_verilog_from(&mut inputs)?.counts_under(d.top.as_deref(), &d.path)?;
+        Self::read(d, library, folder, &counts, notes)
     }
 
     /// What is known by net, with names checked.
@@ -174,7 +185,7 @@ pub fn states_of_study(study: &Path, domain: Option<&str>) -> Result<DomainState
     let library = Library::load(&study, &source.folder)?;
     let d = pick("domain", &study.domain, |d| &d.name, domain, false, &source.path)?;
     let mut notes = Vec::new();
-    let parked = ParkedDomain::read(d, &library, &source.folder, &mut notes)?;
+    let parked = ParkedDomain::counted(d, &library, &source.folder, &mut notes)?;
     let p = carry(&parked.circuit, &parked.given(d, &source.path)?);
     let found = shares(&parked.net, &p);
     let mut out = DomainStates {
@@ -306,7 +317,7 @@ pub fn park_study(
     let c: &Corner =
         pick("corner", &library.corners, |c| &c.name, request.corner.as_deref(), true, &source.path)?;
     let mut notes = Vec::new();
-    let parked = ParkedDomain::read(d, &library, &source.folder, &mut notes)?;
+    let parked = ParkedDomain::counted(d, &library, &source.folder, &mut notes)?;
     let leaks = leaks(&parked, &library, c, options, &source.path)?;
     let given = parked.given(d, &source.path)?;
     let (mut fixed, mut free) = (Vec::new(), Vec::new());

@@ -11,19 +11,17 @@ use rustc_hash::FxHashMap;
 
 use super::function::CellFunction;
 use crate::read::deck::Note;
-use crate::read::verilog::connect::{Connected, Direction, InstanceId, NetId};
+use crate::read::verilog::connect::{Connected, InstanceId, NetId};
 
 /// A circuit that cannot be made.
 #[derive(Debug, Clone, PartialEq, thiserror::Error)]
 #[non_exhaustive]
 pub enum CircuitError {
     /// A path that the netlist does not have.
-    #[error("the netlist has no instance `{path}`{}", near.as_ref().map_or(String::new(), |n| format!("; did you mean `{n}`?")))]
+    #[error("the netlist has no instance `{path}`")]
     NoPath {
         /// The path.
         path: String,
-        /// The nearest known one.
-        near: Option<String>,
     },
     /// A cell whose pins are not those of its netlist.
     #[error("cell `{master}` has no pin `{pin}` in the netlist of the design; it has {known}")]
@@ -92,9 +90,8 @@ impl Circuit {
         path: &str,
         functions: &dyn Fn(&str) -> Option<Arc<CellFunction>>,
     ) -> Result<Self, CircuitError> {
-        let instances = net
-            .instances_under(path)
-            .ok_or_else(|| CircuitError::NoPath { path: path.to_owned(), near: None })?;
+        let instances =
+            net.instances_under(path).ok_or_else(|| CircuitError::NoPath { path: path.to_owned() })?;
         let mut made: Vec<Option<(u32, Vec<u32>)>> = Vec::new();
         let mut list = Vec::new();
         // for each master: its function, and where the pins of its variables and outputs are
@@ -327,11 +324,6 @@ impl Circuit {
             _ => None,
         };
         self.sources.iter().filter_map(|(s, _)| name(s)).collect()
-    }
-
-    /// Whether a top port or another part of the design drives a source.
-    pub fn is_input(net: &Connected, source: NetId) -> bool {
-        net.top_ports().iter().any(|(n, d)| *n == source && *d != Some(Direction::Output))
     }
 }
 

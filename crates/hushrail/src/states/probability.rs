@@ -93,11 +93,6 @@ pub struct Probabilities<'a> {
     pub unsettled: f64,
 }
 
-/// A matching of names, literal first.
-fn fits(pattern: &str, name: &str) -> bool {
-    pattern == name || pattern.contains('*') && fits_pattern(pattern, name)
-}
-
 /// Carries what is known through a circuit: values where they follow, probabilities elsewhere, the variables of a gate taken
 /// as independent; names start at the instance path `under` or at the top (Parker and McCluskey, *IEEE Trans. Comput.* C-24 (1975) 668, first order, from memory).
 ///
@@ -136,7 +131,8 @@ pub fn resolve(
         Vec::new()
     };
     let matches = |pattern: &str, path: &str| {
-        fits(pattern, path) || path.strip_prefix(&inside).is_some_and(|own| fits(pattern, own))
+        fits_pattern(pattern, path)
+            || path.strip_prefix(&inside).is_some_and(|own| fits_pattern(pattern, own))
     };
     for (name, one) in &parking.nets {
         let mut found = false;

@@ -60,18 +60,10 @@ enum Head {
 
 impl Parser<'_> {
     fn file(&mut self) -> Result<(), ReadError> {
-        loop {
-            let token = self.lex.next()?;
-            match (token.kind, self.lex.keyword(token)) {
-                (Kind::End, _) => return Ok(()),
-                (_, Some(Keyword::Module)) => self.module(token.spot)?,
-                (_, Some(Keyword::Behaviour)) => return Err(self.lex.behaviour(token)),
-                _ => {
-                    let found = format!("{} outside of a module", self.lex.shown(token));
-                    return Err(self.lex.syntax(token.spot, found, "want `module` or the end of the file"));
-                }
-            }
+        while let Some(start) = self.lex.next_module()? {
+            self.module(start)?;
         }
+        Ok(())
     }
 
     fn intern(&mut self, token: Token) -> usize {

@@ -10,6 +10,20 @@ impl Lexer<'_> {
         if token.kind == Kind::Word { keyword(self.text(token)) } else { None }
     }
 
+    /// Reads the keyword of the next module and gives its place; nothing at the end of the file.
+    pub(super) fn next_module(&mut self) -> Result<Option<Spot>, ReadError> {
+        let token = self.next()?;
+        match (token.kind, self.keyword(token)) {
+            (Kind::End, _) => Ok(None),
+            (_, Some(Keyword::Module)) => Ok(Some(token.spot)),
+            (_, Some(Keyword::Behaviour)) => Err(self.behaviour(token)),
+            _ => {
+                let found = format!("{} outside of a module", self.shown(token));
+                Err(self.syntax(token.spot, found, "want `module` or the end of the file"))
+            }
+        }
+    }
+
     /// Whether the token is a name somebody chose.
     pub(super) fn is_name(&self, token: Token) -> bool {
         match token.kind {
